@@ -1,0 +1,1 @@
+//! Forecast of the short circuit.

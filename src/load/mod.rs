@@ -1,0 +1,4 @@
+//! The load: force to stress, load axis, expected axis, dose.
+
+pub mod axis;
+pub mod fixture;

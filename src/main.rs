@@ -1,0 +1,7 @@
+//! The program: parse, call, exit code.
+
+use std::process::ExitCode;
+
+fn main() -> ExitCode {
+    veerlog::cli::main()
+}

@@ -1,0 +1,1 @@
+//! The stages in order: read, correct, trace, measure, forecast, write.

@@ -1,0 +1,1 @@
+//! Tables, figures, overlay and page. Computes nothing.

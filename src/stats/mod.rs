@@ -1,0 +1,1 @@
+//! Statistics: pure functions on slices, no images.

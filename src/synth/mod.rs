@@ -1,0 +1,1 @@
+//! Frames with known truth, and a run scored against it.

@@ -1,0 +1,1 @@
+//! The program as its user runs it: exit codes, messages, files, table cells.
