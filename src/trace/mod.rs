@@ -1,9 +1,22 @@
 //! From scenes to filaments. The result, [`Trace`], is one forest of centre-lines that only grows;
 //! every table reads from it: at frame k the filament is what has `arrival <= k`.
 
+mod attach;
+pub mod centreline;
+mod dating;
+pub mod edges;
+mod finish;
+mod forest;
 pub mod graph;
+mod growth;
+mod link;
+pub mod recent;
+pub mod ridge;
+mod settle;
 pub mod thin;
 pub mod threshold;
+
+pub use growth::{TraceSettings, Tracer, WINDOW};
 
 use serde::{Deserialize, Serialize};
 
@@ -50,7 +63,7 @@ pub struct TracePoint {
     pub u_across: f64,
 }
 
-/// A stretch of centre-line between two nodes, root to tip, points about 1 px apart.
+/// A stretch of centre-line between two nodes, root to tip, points half a pixel apart.
 /// Arrivals never fall along it.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 pub struct TracePath {

@@ -1,0 +1,220 @@
+//! From pixel lines to strands: tied to what they start from, moved onto the ridge, evenly spaced.
+
+use ndarray::Array2;
+
+use super::Root;
+use super::centreline::{distance, normal, onto_ridge, resample, smooth, tangents, unit};
+use super::edges::Edges;
+use super::forest::{Filament, Forest, Joint, SPACING, Strand, Vertex, vertices_in};
+use super::link::{Line, Start};
+
+/// Width of a strand of which nothing is known yet, px.
+const FIRST_WIDTH: f64 = 3.5;
+/// Length of the old line that guides the new one across the seam, px.
+const OVERLAP: f64 = 6.0;
+/// How far from a pixel line its ridge is searched, px.
+const SEARCH: f64 = 2.5;
+/// Length along which positions are averaged, to either side, px.
+const ALONG: f64 = 3.0;
+/// Length of a first stretch whose direction carries back to the electrode's edge, px.
+const AIM: usize = 8;
+
+/// Adds lines to the forest as proposals.
+#[derive(Clone, Copy)]
+pub struct Attachment<'a> {
+    /// The plane the lines were found in.
+    pub plane: &'a Array2<f32>,
+    /// The electrodes.
+    pub edges: &'a Edges,
+}
+
+impl Attachment<'_> {
+    /// Adds the lines of one component; gives the indices of the strands that changed.
+    pub fn attach(&self, lines: &[Line], forest: &mut Forest) -> Vec<usize> {
+        let mut made: Vec<Option<usize>> = Vec::new();
+        for line in lines {
+            let index = match line.start {
+                Start::Tip(strand) => Some(self.go_on(strand, line, forest)).flatten(),
+                Start::Side(joint) => self.branch(joint, line, forest),
+                Start::Line(earlier, pixel) => {
+                    made.get(earlier).copied().flatten().and_then(|strand| {
+                        self.branch(
+                            nearest_joint(strand, lines[earlier].pixels[pixel], forest)?,
+                            line,
+                            forest,
+                        )
+                    })
+                }
+                Start::Plating => self.root(Root::Plating, line, forest),
+                Start::Far => self.root(Root::Far, line, forest),
+                Start::Inside => self.root(Root::Inside, line, forest),
+            };
+            made.push(index);
+        }
+        made.into_iter().flatten().collect()
+    }
+
+    /// Goes on from a strand's tip; where another line of this frame has done so already, branches there.
+    fn go_on(&self, index: usize, line: &Line, forest: &mut Forest) -> Option<usize> {
+        let strand = &forest.strands[index];
+        if strand.vertices.len() > strand.decided || strand.vertices.is_empty() {
+            let vertex = strand.decided.checked_sub(1)?;
+            return self.branch(
+                Joint {
+                    strand: index,
+                    vertex,
+                },
+                line,
+                forest,
+            );
+        }
+        let from = strand.vertices.len().saturating_sub(vertices_in(OVERLAP));
+        let guide: Vec<[f64; 2]> = strand.vertices[from..].iter().map(|v| v.p).collect();
+        let new = self.drawn(&guide, &line.pixels);
+        forest.strands[index].vertices.extend(new);
+        Some(index)
+    }
+
+    fn branch(&self, joint: Joint, line: &Line, forest: &mut Forest) -> Option<usize> {
+        let parent = &forest.strands[joint.strand];
+        let at = parent.vertices.get(joint.vertex)?.p;
+        let reach = 0.5 * parent.width + 2.0;
+        let tip = *line.pixels.last()?;
+        if distance(at, point(tip)) < reach + 2.0 {
+            return None;
+        }
+        let (filament, width, contrast) = (parent.filament, parent.width, parent.contrast);
+        let mut vertices = self.drawn(&[at], &line.pixels);
+        vertices.insert(0, Vertex::new(at, vertices.first()?.n));
+        forest
+            .strands
+            .push(strand(filament, Some(joint), vertices, width, contrast));
+        Some(forest.strands.len() - 1)
+    }
+
+    fn root(&self, root: Root, line: &Line, forest: &mut Forest) -> Option<usize> {
+        let pixels: Vec<[f64; 2]> = line.pixels.iter().map(|&p| point(p)).collect();
+        let first = *pixels.first()?;
+        let foot = match root {
+            Root::Inside => first,
+            Root::Plating => self.foot(&self.edges.plating, &pixels),
+            Root::Far => self.foot(&self.edges.far, &pixels),
+        };
+        let vertices = match root {
+            Root::Inside => self.drawn(&[], &line.pixels),
+            _ => {
+                let mut vertices = self.drawn(&[foot], &line.pixels);
+                vertices.insert(0, Vertex::new(foot, vertices.first()?.n));
+                vertices
+            }
+        };
+        if vertices.len() < 3 {
+            return None;
+        }
+        forest.filaments.push(Filament {
+            root,
+            root_px: foot,
+        });
+        forest.strands.push(strand(
+            forest.filaments.len() - 1,
+            None,
+            vertices,
+            FIRST_WIDTH,
+            0.0,
+        ));
+        Some(forest.strands.len() - 1)
+    }
+
+    /// Where a line's first stretch, carried on backwards, meets the edge; the nearest point of the edge
+    /// where that would lead far aside.
+    fn foot(&self, edge: &super::edges::Polyline, pixels: &[[f64; 2]]) -> [f64; 2] {
+        let first = pixels[0];
+        let near = edge.nearest(first);
+        let aim = pixels[AIM.min(pixels.len() - 1)];
+        let Some(back) = unit([first[0] - aim[0], first[1] - aim[1]]) else {
+            return near.foot;
+        };
+        let across = [near.direction[1], -near.direction[0]];
+        let off = (first[0] - near.foot[0]) * across[0] + (first[1] - near.foot[1]) * across[1];
+        let closing = back[0] * across[0] + back[1] * across[1];
+        if off.abs() < 1e-9 || off * closing >= 0.0 {
+            return near.foot;
+        }
+        let run = -off / closing;
+        if run > 1.6 * near.distance {
+            return near.foot;
+        }
+        [first[0] + run * back[0], first[1] + run * back[1]]
+    }
+
+    /// New vertices along `pixels`, led in by the points of `guide`.
+    fn drawn(&self, guide: &[[f64; 2]], pixels: &[[usize; 2]]) -> Vec<Vertex> {
+        let mut points: Vec<[f64; 2]> = guide.to_vec();
+        points.extend(pixels.iter().map(|&p| point(p)));
+        let seam = guide.last().copied();
+        let along = vertices_in(ALONG);
+        let rough = smooth(&resample(&points, SPACING), along);
+        let ridge = onto_ridge(
+            &onto_ridge(&rough, self.plane, along, SEARCH),
+            self.plane,
+            along,
+            SEARCH,
+        );
+        let tidy = smooth(&ridge, along);
+        let from = seam.map_or(0, |s| nearest_index(&tidy, s, guide.len() + along) + 1);
+        let mut line: Vec<[f64; 2]> = seam.into_iter().collect();
+        line.extend(tidy.into_iter().skip(from));
+        let spaced = resample(&line, SPACING);
+        let directions = tangents(&spaced, along);
+        let skip = usize::from(seam.is_some());
+        spaced
+            .iter()
+            .zip(directions)
+            .skip(skip)
+            .map(|(&p, t)| Vertex::new(p, normal(t)))
+            .collect()
+    }
+}
+
+fn point(pixel: [usize; 2]) -> [f64; 2] {
+    [pixel[1] as f64, pixel[0] as f64]
+}
+
+fn nearest_index(points: &[[f64; 2]], to: [f64; 2], within: usize) -> usize {
+    let n = points.len().min(within.max(1));
+    (0..n)
+        .min_by(|&a, &b| distance(points[a], to).total_cmp(&distance(points[b], to)))
+        .unwrap_or(0)
+}
+
+fn nearest_joint(index: usize, pixel: [usize; 2], forest: &Forest) -> Option<Joint> {
+    let vertices = &forest.strands[index].vertices;
+    let to = point(pixel);
+    let vertex = (0..vertices.len())
+        .min_by(|&a, &b| distance(vertices[a].p, to).total_cmp(&distance(vertices[b].p, to)))?;
+    Some(Joint {
+        strand: index,
+        vertex,
+    })
+}
+
+fn strand(
+    filament: usize,
+    parent: Option<Joint>,
+    vertices: Vec<Vertex>,
+    width: f64,
+    contrast: f64,
+) -> Strand {
+    Strand {
+        filament,
+        parent,
+        vertices,
+        decided: 0,
+        meets: None,
+        reached_far: None,
+        width,
+        contrast,
+        withdrawn: false,
+        provisional: Vec::new(),
+    }
+}

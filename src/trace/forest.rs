@@ -1,0 +1,224 @@
+//! The forest of strands: one skeleton that only grows.
+//!
+//! A strand is a line of vertices [`SPACING`] apart from where it starts to its tip. Its first `decided`
+//! vertices have an arrival and stay; the rest is a proposal that the next frame makes anew.
+
+use ndarray::Array2;
+
+use super::Root;
+use super::centreline::{Profile, distance};
+
+/// Distance between neighbouring vertices of a strand, px: half a pixel, so that a tip is placed within a quarter.
+pub const SPACING: f64 = 0.5;
+
+/// A length in pixels as a number of vertices.
+#[must_use]
+pub fn vertices_in(px: f64) -> usize {
+    (px / SPACING).round() as usize
+}
+
+/// One vertex of a strand.
+#[derive(Debug, Clone)]
+pub struct Vertex {
+    /// Position, px.
+    pub p: [f64; 2],
+    /// Unit normal of the line here.
+    pub n: [f64; 2],
+    /// Ordinal of the usable frame at which it arrived.
+    pub arrival: Option<usize>,
+    /// Ordinal of the usable frame from which it is no longer visible.
+    pub retreat: Option<usize>,
+    /// What the frames since its arrival show across the line.
+    pub profile: Profile,
+    /// Smoothed contrast of the latest frames, for retreat and withdrawal.
+    pub recent: f32,
+}
+
+impl Vertex {
+    /// A vertex that has not arrived yet.
+    #[must_use]
+    pub fn new(p: [f64; 2], n: [f64; 2]) -> Self {
+        Self {
+            p,
+            n,
+            arrival: None,
+            retreat: None,
+            profile: Profile::default(),
+            recent: f32::NAN,
+        }
+    }
+}
+
+/// Where a strand's first vertex is tied to.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct Joint {
+    /// Index of the parent strand.
+    pub strand: usize,
+    /// Vertex of the parent.
+    pub vertex: usize,
+}
+
+/// A line from its start to its tip.
+#[derive(Debug, Clone)]
+pub struct Strand {
+    /// Index of its filament.
+    pub filament: usize,
+    /// Where it leaves its parent; `None` at a root.
+    pub parent: Option<Joint>,
+    /// Root to tip.
+    pub vertices: Vec<Vertex>,
+    /// How many vertices are decided.
+    pub decided: usize,
+    /// The strand and vertex that its end ran into.
+    pub meets: Option<Joint>,
+    /// Ordinal of the frame at which its end touched the far edge.
+    pub reached_far: Option<usize>,
+    /// Full width, px.
+    pub width: f64,
+    /// Contrast.
+    pub contrast: f64,
+    /// Withdrawn: it gained no evidence later.
+    pub withdrawn: bool,
+    /// Vertices reached in the frames after the last decided one, oldest first.
+    pub provisional: Vec<usize>,
+}
+
+/// A root and its strands.
+#[derive(Debug, Clone)]
+pub struct Filament {
+    /// Where it starts.
+    pub root: Root,
+    /// Root position, px.
+    pub root_px: [f64; 2],
+}
+
+/// All strands.
+#[derive(Debug, Clone, Default)]
+pub struct Forest {
+    /// In order of discovery.
+    pub strands: Vec<Strand>,
+    /// In order of discovery.
+    pub filaments: Vec<Filament>,
+}
+
+/// Which strand owns a pixel.
+#[derive(Debug, Clone)]
+pub struct Owners {
+    /// Strand index + 1, 0 for bare ceramic.
+    pub strand: Array2<u32>,
+    /// Vertex of that strand.
+    pub vertex: Array2<u32>,
+}
+
+impl Owners {
+    /// Nobody owns anything.
+    #[must_use]
+    pub fn new(shape: (usize, usize)) -> Self {
+        Self {
+            strand: Array2::zeros(shape),
+            vertex: Array2::zeros(shape),
+        }
+    }
+
+    /// The owner of a pixel.
+    #[must_use]
+    pub fn at(&self, pixel: [usize; 2]) -> Option<Joint> {
+        let strand = self.strand[pixel];
+        (strand > 0).then(|| Joint {
+            strand: strand as usize - 1,
+            vertex: self.vertex[pixel] as usize,
+        })
+    }
+
+    /// Gives a strand the pixels within `margin` px of its ink, from vertex `from` on.
+    pub fn claim(&mut self, index: usize, strand: &Strand, from: usize, margin: f64) {
+        let radius = 0.5 * strand.width + margin;
+        for (v, vertex) in strand.vertices.iter().enumerate().skip(from) {
+            for pixel in disc(vertex.p, radius, self.strand.dim()) {
+                let mine = index as u32 + 1;
+                let nearer = match self.at(pixel) {
+                    None => true,
+                    Some(old) if old.strand == index => {
+                        let at = [pixel[1] as f64, pixel[0] as f64];
+                        strand
+                            .vertices
+                            .get(old.vertex)
+                            .is_none_or(|o| distance(o.p, at) > distance(vertex.p, at))
+                    }
+                    Some(_) => false,
+                };
+                if nearer {
+                    self.strand[pixel] = mine;
+                    self.vertex[pixel] = v as u32;
+                }
+            }
+        }
+    }
+}
+
+/// Pixels [row, col] whose centres lie within `radius` of `p`, inside a plane of the given shape.
+pub fn disc(p: [f64; 2], radius: f64, shape: (usize, usize)) -> impl Iterator<Item = [usize; 2]> {
+    let low = |v: f64| (v - radius).ceil().max(0.0) as usize;
+    let high = |v: f64, n: usize| ((v + radius).floor() + 1.0).clamp(0.0, n as f64) as usize;
+    let (r0, r1) = (low(p[1]), high(p[1], shape.0));
+    let (c0, c1) = (low(p[0]), high(p[0], shape.1));
+    (r0..r1)
+        .flat_map(move |r| (c0..c1).map(move |c| [r, c]))
+        .filter(move |&[r, c]| {
+            let (dx, dy) = (c as f64 - p[0], r as f64 - p[1]);
+            dx * dx + dy * dy <= radius * radius
+        })
+}
+
+impl Strand {
+    /// Lets go of everything that is not decided.
+    pub fn truncate(&mut self) {
+        self.vertices.truncate(self.decided);
+        self.provisional.clear();
+        if self.reached_far.is_none() {
+            self.meets = self.meets.filter(|_| {
+                self.decided > 0 && self.vertices.len() == self.decided && self.closed()
+            });
+        }
+    }
+
+    /// Whether the end is tied to other metal for good.
+    fn closed(&self) -> bool {
+        self.meets.is_some() && self.vertices.last().is_some_and(|v| v.arrival.is_some())
+    }
+
+    /// Unit direction at its end, over its last `reach` vertices.
+    #[must_use]
+    pub fn heading(&self, reach: usize) -> Option<[f64; 2]> {
+        let end = self.vertices.len().checked_sub(1)?;
+        let start = end.checked_sub(reach.min(end))?;
+        let (a, b) = (self.vertices[start].p, self.vertices[end].p);
+        super::centreline::unit([b[0] - a[0], b[1] - a[1]])
+    }
+
+    /// Whether growth can go on from its end.
+    #[must_use]
+    pub fn live(&self) -> bool {
+        !self.withdrawn && self.meets.is_none() && self.reached_far.is_none()
+    }
+}
+
+impl Forest {
+    /// Drops all proposals, and strands and filaments of which nothing is decided.
+    pub fn truncate(&mut self) {
+        self.strands.iter_mut().for_each(Strand::truncate);
+        while self.strands.last().is_some_and(|s| s.vertices.is_empty()) {
+            self.strands.pop();
+        }
+        while self.filaments.len()
+            > self
+                .strands
+                .iter()
+                .map(|s| s.filament + 1)
+                .max()
+                .unwrap_or(0)
+        {
+            self.filaments.pop();
+        }
+    }
+}

@@ -1,0 +1,310 @@
+//! Decides what has arrived, keeps watch over what is decided, and withdraws what later frames deny.
+
+use super::centreline::pooled;
+use super::dating::{Contrast, contrast, positions, strength};
+use super::forest::{SPACING, Strand, vertices_in};
+use super::growth::Tracer;
+
+/// Evidence that the first stretch of a new filament must show in each of three frames, sd.
+const NEW_EACH: f64 = 3.0;
+/// And in all three together.
+const NEW_ALL: f64 = 7.5;
+/// The same for a branch.
+const BRANCH_EACH: f64 = 2.0;
+/// And in all three together.
+const BRANCH_ALL: f64 = 6.0;
+/// Least first stretch, px.
+const LEAST_FIRST: f64 = 4.0;
+/// Length over which neighbouring vertices share their noise, px.
+const SHARED_NOISE: f64 = 1.6;
+/// Share of the half width by which the half-contrast point of a round end lies beyond the centre of its last
+/// full disc: there the chord is half the width, cos 60° = ½ → sin 60°.
+const ROUND_END: f64 = 0.866;
+/// Length at the tip over which width and contrast are read, px.
+const TIP_READ: f64 = 24.0;
+/// Frames that a profile remembers.
+const PROFILE_MEMORY: f32 = 24.0;
+/// Share of the contrast below which a vertex is no longer seen.
+const GONE: f64 = 0.3;
+/// Least length that can retreat or be withdrawn, px.
+const GONE_RUN: f64 = 4.0;
+/// Frames within which a stretch that fades was never there; later it has retreated.
+const YOUNG: usize = 6;
+/// Ink this close to the far edge touches it: the edge's own blur, px.
+pub(super) const EDGE_BLUR: f64 = 2.5;
+/// Contrasts of vertices this close to an edge are not read: the electrode's blur, px.
+const EDGE_SHADE: f64 = 3.0;
+/// Weight of the newest frame in the running contrast.
+const NEWEST: f32 = 0.4;
+
+/// Dates the proposals of all strands, parents first, and decides what has its witnesses.
+pub(super) fn date(tracer: &mut Tracer) {
+    for index in 0..tracer.forest.strands.len() {
+        if tracer.forest.strands[index].vertices.len() > tracer.forest.strands[index].decided {
+            date_strand(tracer, index);
+        }
+    }
+}
+
+fn date_strand(tracer: &mut Tracer, index: usize) {
+    let Some(earliest) = earliest_arrival(tracer, index) else {
+        return;
+    };
+    let now = tracer.frames.len() - 1;
+    let held = tracer.recent.frames().len();
+    let first = (now + 1 - held).max(earliest);
+    let strand = &tracer.forest.strands[index];
+    let rows = contrast_rows(tracer, strand, first);
+    let Some(height) = height_of(strand, &rows) else {
+        return;
+    };
+    let reached = positions(&rows, height);
+    let decided_frame = now
+        .checked_sub(tracer.settings.confirm_frames)
+        .filter(|&k| k >= first);
+    let ends_free = strand.meets.is_none();
+    let end_off = if ends_free {
+        ROUND_END * 0.5 * strand.width
+    } else {
+        0.0
+    };
+    let centre = |s: usize| (s as f64 - end_off / SPACING).round().max(0.0) as usize;
+    let reached: Vec<usize> = reached.into_iter().map(centre).collect();
+    let known = decided_frame.map_or(0, |k| k + 1 - first);
+    let sure = known > 0 && confirmed(strand, &rows, reached[known - 1], known);
+    let start = strand.decided;
+    let strand = &mut tracer.forest.strands[index];
+    if !sure {
+        return;
+    }
+    for i in 0..reached[known - 1] {
+        let arrival = reached[..known]
+            .iter()
+            .position(|&s| s > i)
+            .map(|j| first + j);
+        strand.vertices[start + i].arrival = arrival;
+    }
+    strand.decided = start + reached[known - 1];
+    strand.provisional = reached[known..].iter().map(|&s| start + s).collect();
+    let edges = &tracer.edges;
+    if let Some(end) = strand.vertices[..strand.decided].last().copied_end() {
+        if strand.reached_far.is_none() && edges.remaining(end.0) <= 0.5 * strand.width + EDGE_BLUR
+        {
+            strand.reached_far = end.1;
+        }
+    }
+}
+
+/// Position and arrival of the last decided vertex.
+trait CopiedEnd {
+    fn copied_end(self) -> Option<([f64; 2], Option<usize>)>;
+}
+
+impl CopiedEnd for Option<&super::forest::Vertex> {
+    fn copied_end(self) -> Option<([f64; 2], Option<usize>)> {
+        self.map(|v| (v.p, v.arrival))
+    }
+}
+
+/// The ordinal before which nothing of this strand's proposal can have arrived; `None` while its parent
+/// has not come that far.
+fn earliest_arrival(tracer: &Tracer, index: usize) -> Option<usize> {
+    let strand = &tracer.forest.strands[index];
+    let floor = tracer.settings.bare;
+    if let Some(last) = strand.decided.checked_sub(1) {
+        return strand.vertices[last].arrival.map(|a| a.max(floor));
+    }
+    match strand.parent {
+        None => Some(floor),
+        Some(joint) => tracer.forest.strands[joint.strand]
+            .vertices
+            .get(joint.vertex)?
+            .arrival
+            .map(|a| a.max(floor)),
+    }
+}
+
+/// Contrast of each proposed vertex in each frame of the window from ordinal `first` on.
+fn contrast_rows(tracer: &Tracer, strand: &Strand, first: usize) -> Vec<Vec<Option<Contrast>>> {
+    let now = tracer.frames.len() - 1;
+    let oldest = now + 1 - tracer.recent.frames().len();
+    tracer
+        .recent
+        .frames()
+        .iter()
+        .enumerate()
+        .filter(|(k, _)| oldest + k >= first)
+        .map(|(_, frame)| {
+            strand.vertices[strand.decided..]
+                .iter()
+                .map(|v| {
+                    let shaded = tracer.edges.depth(v.p) < EDGE_SHADE
+                        || tracer.edges.remaining(v.p) < EDGE_SHADE;
+                    if shaded {
+                        None
+                    } else {
+                        contrast(frame, &tracer.noise, v.p, v.n, strand.width)
+                    }
+                })
+                .collect()
+        })
+        .collect()
+}
+
+/// The strand's contrast, or for one not yet known that of the upper part of its proposal in the latest frames.
+fn height_of(strand: &Strand, rows: &[Vec<Option<Contrast>>]) -> Option<f64> {
+    if strand.decided >= vertices_in(LEAST_FIRST) && strand.contrast > 0.0 {
+        return Some(strand.contrast);
+    }
+    let last = &rows[rows.len().saturating_sub(3)..];
+    let n = last.first()?.len();
+    let mut means: Vec<f64> = (0..n)
+        .filter_map(|i| {
+            let mut known: Vec<f64> = last.iter().filter_map(|r| r[i].map(|c| c.value)).collect();
+            known.sort_by(f64::total_cmp);
+            known.get(known.len() / 2).copied()
+        })
+        .collect();
+    means.sort_by(f64::total_cmp);
+    let height = *means.get(means.len() * 2 / 3)?;
+    (height > 0.0).then_some(height)
+}
+
+/// Whether the first stretch of a strand is sure enough to be decided; one that goes on always is.
+fn confirmed(
+    strand: &Strand,
+    rows: &[Vec<Option<Contrast>>],
+    reached: usize,
+    known: usize,
+) -> bool {
+    if strand.decided > 0 {
+        return true;
+    }
+    if reached < vertices_in(LEAST_FIRST) {
+        return false;
+    }
+    let (each, all) = if strand.parent.is_some() {
+        (BRANCH_EACH, BRANCH_ALL)
+    } else {
+        (NEW_EACH, NEW_ALL)
+    };
+    let witnesses: Vec<f64> = rows[known - 1..]
+        .iter()
+        .map(|r| strength(&r[..reached], SHARED_NOISE / SPACING))
+        .collect();
+    let together = witnesses.iter().sum::<f64>() / (witnesses.len() as f64).sqrt();
+    witnesses.iter().all(|&w| w >= each) && together >= all
+}
+
+/// Adds the newest frame to the profiles of all decided vertices and reads width and contrast near the tips.
+pub(super) fn observe(tracer: &mut Tracer) {
+    let Some(frame) = tracer.recent.frames().back() else {
+        return;
+    };
+    let noise = &tracer.noise;
+    for strand in &mut tracer.forest.strands {
+        let (decided, width) = (strand.decided, strand.width);
+        for vertex in &mut strand.vertices[..decided] {
+            vertex
+                .profile
+                .add(&frame.residual, vertex.p, vertex.n, PROFILE_MEMORY);
+            if let Some(c) = contrast(frame, noise, vertex.p, vertex.n, width) {
+                let value = c.value as f32;
+                vertex.recent = if vertex.recent.is_nan() {
+                    value
+                } else {
+                    vertex.recent + NEWEST * (value - vertex.recent)
+                };
+            }
+        }
+        read_tip(strand);
+    }
+}
+
+/// Width and contrast of a strand from the pooled profile of its last decided vertices.
+fn read_tip(strand: &mut Strand) {
+    if strand.decided < vertices_in(LEAST_FIRST) {
+        return;
+    }
+    let from = strand.decided.saturating_sub(vertices_in(TIP_READ));
+    let profiles: Vec<_> = strand.vertices[from..strand.decided]
+        .iter()
+        .map(|v| v.profile.clone())
+        .collect();
+    if let Some(section) = pooled(&profiles, profiles.len() / 2, profiles.len()).section(1.5) {
+        strand.width = section.width.clamp(1.5, 14.0);
+    }
+    let mut values: Vec<f32> = strand.vertices[from..strand.decided]
+        .iter()
+        .map(|v| v.recent)
+        .filter(|v| !v.is_nan())
+        .collect();
+    if values.is_empty() {
+        return;
+    }
+    values.sort_by(f32::total_cmp);
+    let middle = f64::from(values[values.len() / 2]);
+    // A strand that fades keeps the contrast it was decided with: the track stays.
+    if middle > 0.5 * strand.contrast {
+        strand.contrast = middle;
+    }
+}
+
+/// Marks stretches at a free end that are no longer seen: withdrawn when young, else retreated.
+pub(super) fn withdraw(tracer: &mut Tracer) {
+    let now = tracer.frames.len() - 1;
+    let has_children: Vec<usize> = furthest_joints(&tracer.forest.strands);
+    for (index, strand) in tracer.forest.strands.iter_mut().enumerate() {
+        if strand.withdrawn || strand.decided == 0 {
+            continue;
+        }
+        let seen = |v: &super::forest::Vertex| {
+            v.recent.is_nan() || f64::from(v.recent) > GONE * strand.contrast
+        };
+        let visible = strand.vertices[..strand.decided]
+            .iter()
+            .rposition(seen)
+            .map_or(0, |i| i + 1);
+        let run = strand.decided - visible;
+        if run < vertices_in(GONE_RUN).min(strand.decided) {
+            restore(strand);
+            continue;
+        }
+        let born = strand.vertices[visible].arrival.unwrap_or(now);
+        let keep = visible.max(has_children[index]);
+        if now - born.min(now) <= YOUNG {
+            strand.vertices.truncate(keep);
+            strand.decided = strand.decided.min(keep);
+            strand.meets = None;
+            tracer.withdrawn += 1;
+            if keep <= 1 {
+                strand.withdrawn = true;
+                strand.vertices.clear();
+                strand.decided = 0;
+            }
+        } else {
+            for vertex in strand.vertices[visible..]
+                .iter_mut()
+                .filter(|v| v.retreat.is_none() && v.arrival.is_some())
+            {
+                vertex.retreat = Some(now);
+            }
+        }
+    }
+}
+
+/// Metal that is seen again has not retreated.
+fn restore(strand: &mut Strand) {
+    strand.vertices.iter_mut().for_each(|v| v.retreat = None);
+}
+
+/// For each strand the number of vertices that its children need.
+fn furthest_joints(strands: &[Strand]) -> Vec<usize> {
+    let mut need = vec![0; strands.len()];
+    for strand in strands.iter().filter(|s| !s.withdrawn && s.decided > 0) {
+        if let Some(joint) = strand.parent {
+            need[joint.strand] = need[joint.strand].max(joint.vertex + 1);
+        }
+    }
+    need
+}
