@@ -27,13 +27,19 @@ pub struct SceneBuilder {
 impl SceneBuilder {
     /// An empty builder.
     pub fn new(settings: SceneSettings) -> Self {
-        Self { settings, frames: Vec::new() }
+        Self {
+            settings,
+            frames: Vec::new(),
+        }
     }
 
     /// Takes the next usable bare frame, in grey levels, all of one shape. Frames after the first [`MOST_BARE`] are
     /// not kept.
     pub fn push(&mut self, frame: &Array2<f32>) {
-        let fits = self.frames.first().is_none_or(|first| first.dim() == frame.dim());
+        let fits = self
+            .frames
+            .first()
+            .is_none_or(|first| first.dim() == frame.dim());
         if fits && self.frames.len() < MOST_BARE {
             self.frames.push(frame.as_standard_layout().to_owned());
         }
@@ -64,7 +70,14 @@ impl SceneBuilder {
         let model = measured_noise(&reference, &slope, &laid, noise);
         let sd = model.sd(&reference, &slope);
         let likeness = median(&mut laid.iter().map(|l| l.likeness as f32).collect()).unwrap_or(0.0);
-        Some(Scene::assemble(self.settings, Mode::Bare, reference, &sd, laid.len(), f64::from(likeness)))
+        Some(Scene::assemble(
+            self.settings,
+            Mode::Bare,
+            reference,
+            &sd,
+            laid.len(),
+            f64::from(likeness),
+        ))
     }
 }
 
@@ -84,13 +97,17 @@ fn lay_all(aligner: &Aligner, frames: &[Array2<f32>], guess: &[f64; 2]) -> Vec<L
         guess = one.fitted.motion.shift;
         aligned.push((frame, one));
     }
-    let usual = median(&mut aligned.iter().map(|(_, a)| a.likeness as f32).collect()).unwrap_or(0.0);
-    let origin = aligned.first().map_or([0.0; 2], |(_, a)| a.fitted.motion.shift);
+    let usual =
+        median(&mut aligned.iter().map(|(_, a)| a.likeness as f32).collect()).unwrap_or(0.0);
+    let origin = aligned
+        .first()
+        .map_or([0.0; 2], |(_, a)| a.fitted.motion.shift);
     let shown = |(i, (_, a)): &(usize, (&Array2<f32>, Aligned))| {
         *i == 0 || unlike(a.likeness, f64::from(usual), a.pixels).is_none()
     };
     let kept = aligned.into_iter().enumerate().filter(shown);
-    kept.map(|(_, (frame, one))| lay(aligner, frame, &one, origin)).collect()
+    kept.map(|(_, (frame, one))| lay(aligner, frame, &one, origin))
+        .collect()
 }
 
 fn lay(aligner: &Aligner, frame: &Array2<f32>, aligned: &Aligned, origin: [f64; 2]) -> Laid {
@@ -103,12 +120,18 @@ fn lay(aligner: &Aligner, frame: &Array2<f32>, aligned: &Aligned, origin: [f64; 
             *value /= aligned.fitted.light_at(shape, x as f64, y as f64).max(0.05) as f32;
         }
     });
-    Laid { plane, noise_gain: aligner.interpolator().noise_gain(&motion), likeness: aligned.likeness }
+    Laid {
+        plane,
+        noise_gain: aligner.interpolator().noise_gain(&motion),
+        likeness: aligned.likeness,
+    }
 }
 
 /// Mean over frames of each pixel, without those far from its middle; frames that do not reach it do not count.
 fn robust_mean(laid: &[Laid], noise: f32) -> Array2<f32> {
-    let Some(first) = laid.first() else { return Array2::zeros((0, 0)) };
+    let Some(first) = laid.first() else {
+        return Array2::zeros((0, 0));
+    };
     let mut mean = first.plane.clone();
     // The scatter of the middle itself is part of the distance.
     let limit = 1.5 * OUTLIER * noise;
@@ -125,7 +148,11 @@ fn robust_mean(laid: &[Laid], noise: f32) -> Array2<f32> {
 /// Mean of the finite values within `limit` of their median (of all when fewer than three).
 fn middle_mean(values: &mut Vec<f32>, limit: f32) -> Option<f32> {
     let middle = median(values)?;
-    let limit = if values.len() < 3 { f32::INFINITY } else { limit };
+    let limit = if values.len() < 3 {
+        f32::INFINITY
+    } else {
+        limit
+    };
     let near = |v: &&f32| (**v - middle).abs() <= limit;
     let count = values.iter().filter(near).count();
     Some(values.iter().filter(near).sum::<f32>() / count as f32)
@@ -135,12 +162,21 @@ fn middle_mean(values: &mut Vec<f32>, limit: f32) -> Option<f32> {
 pub(crate) fn gradient_magnitude(plane: &Array2<f32>) -> Array2<f32> {
     let smooth = blur(plane, 1.0);
     let central = [-0.5, 0.0, 0.5];
-    combine(&separable(&smooth, &central, &[1.0]), &separable(&smooth, &[1.0], &central), f32::hypot)
+    combine(
+        &separable(&smooth, &central, &[1.0]),
+        &separable(&smooth, &[1.0], &central),
+        f32::hypot,
+    )
 }
 
 /// Noise model from the bare frames' own scatter about their mean. A frame's residual against a mean that holds it has
 /// (1 − 1/n) of its variance, a later frame's (1 + 1/n).
-fn measured_noise(reference: &Array2<f32>, slope: &Array2<f32>, laid: &[Laid], fallback: f32) -> NoiseModel {
+fn measured_noise(
+    reference: &Array2<f32>,
+    slope: &Array2<f32>,
+    laid: &[Laid],
+    fallback: f32,
+) -> NoiseModel {
     let n = laid.len() as f32;
     if laid.len() < 2 {
         return NoiseModel::even(fallback * std::f32::consts::SQRT_2);
@@ -149,7 +185,12 @@ fn measured_noise(reference: &Array2<f32>, slope: &Array2<f32>, laid: &[Laid], f
     let mut all = Vec::new();
     for one in laid {
         let residual = combine(&one.plane, reference, |frame, mean| frame - mean);
-        all.extend(looks(reference, slope, &residual, to_new_frame / one.noise_gain));
+        all.extend(looks(
+            reference,
+            slope,
+            &residual,
+            to_new_frame / one.noise_gain,
+        ));
     }
     NoiseModel::measure(&mut all)
 }

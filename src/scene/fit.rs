@@ -87,7 +87,14 @@ impl Fitted {
         let mut light = [0.0; LIGHT];
         light[0] = 1.0;
         let motion = Motion { shift, turn: 0.0 };
-        Self { light, blur: [0.0; 2], motion, noise: 1.0, cost: f64::INFINITY, u_shift: [f64::INFINITY; 2] }
+        Self {
+            light,
+            blur: [0.0; 2],
+            motion,
+            noise: 1.0,
+            cost: f64::INFINITY,
+            u_shift: [f64::INFINITY; 2],
+        }
     }
 
     /// Light over a picture of this shape.
@@ -98,7 +105,12 @@ impl Fitted {
     /// Amplitude that detail of this wavelength (px) keeps against the reference; 1 = as sharp.
     pub(crate) fn transfer(&self, wavelength: f64) -> f64 {
         let exponent = |sigma: f64| -2.0 * (std::f64::consts::PI * sigma / wavelength).powi(2);
-        1.0 + self.blur.iter().zip(BLURS).map(|(s, sigma)| s * (libm::exp(exponent(sigma)) - 1.0)).sum::<f64>()
+        1.0 + self
+            .blur
+            .iter()
+            .zip(BLURS)
+            .map(|(s, sigma)| s * (libm::exp(exponent(sigma)) - 1.0))
+            .sum::<f64>()
     }
 }
 
@@ -115,10 +127,21 @@ fn dot<const N: usize>(a: &[f64; N], b: &[f64; N]) -> f64 {
 impl Template {
     /// Prepares a level. `plane`: the reference binned by `bin`; `sd`: noise of one frame at each of its pixels;
     /// `frames`: how many were averaged into the reference; at most `most` pixels, the steepest of each tile.
-    pub(crate) fn new(plane: &Array2<f32>, bin: usize, sd: &Array2<f32>, frames: usize, most: usize) -> Self {
+    pub(crate) fn new(
+        plane: &Array2<f32>,
+        bin: usize,
+        sd: &Array2<f32>,
+        frames: usize,
+        most: usize,
+    ) -> Self {
         let gaussian = gaussian_kernel(INSTRUMENT_SIGMA);
         let smooth_slope = kernel_chain(&gaussian, &DERIVATIVE);
-        let slopes = |along: &[f32], other: &[f32]| [separable(plane, along, other), separable(plane, other, along)];
+        let slopes = |along: &[f32], other: &[f32]| {
+            [
+                separable(plane, along, other),
+                separable(plane, other, along),
+            ]
+        };
         let raw = slopes(&DERIVATIVE, &[1.0]);
         let smooth = slopes(&smooth_slope, &gaussian);
         let blurs = BLURS.map(|sigma| blur(plane, sigma) - plane);
@@ -140,7 +163,8 @@ impl Template {
         let blur_self = [peak(&kernels[0]) - 1.0, peak(&kernels[1]) - 1.0];
         let blur_noise = std::array::from_fn(|j| {
             std::array::from_fn(|k| {
-                kernel_dot(&kernels[j], &kernels[k]).powi(2) - peak(&kernels[j]) - peak(&kernels[k]) + 1.0
+                kernel_dot(&kernels[j], &kernels[k]).powi(2) - peak(&kernels[j]) - peak(&kernels[k])
+                    + 1.0
             })
         });
         Self {
@@ -148,7 +172,8 @@ impl Template {
             shape: plane.dim(),
             pixels,
             noise_share: 1.0 / frames as f64,
-            gradient_noise: kernel_dot(&smooth_slope, &DERIVATIVE) * f64::from(gaussian[gaussian.len() / 2]),
+            gradient_noise: kernel_dot(&smooth_slope, &DERIVATIVE)
+                * f64::from(gaussian[gaussian.len() / 2]),
             blur_noise,
             blur_self,
         }
@@ -158,21 +183,46 @@ impl Template {
     /// kept in directions the picture does not tell (px of the full picture); `turning`: whether a turn may be
     /// looked for.
     pub(crate) fn fit(
-        &self, interpolator: &Interpolator, frame: &Array2<f32>, metal: Option<&Array2<bool>>, start: Fitted,
-        guess: [f64; 2], turning: bool, steps: usize,
+        &self,
+        interpolator: &Interpolator,
+        frame: &Array2<f32>,
+        metal: Option<&Array2<bool>>,
+        start: Fitted,
+        guess: [f64; 2],
+        turning: bool,
+        steps: usize,
     ) -> Fitted {
         let mut state = self.scaled(start, 1.0 / self.bin as f64);
         let guess = guess.map(|g| g / self.bin as f64);
         let mut turn_free = state.motion.turns();
-        let view = View { interpolator, frame, metal };
+        let view = View {
+            interpolator,
+            frame,
+            metal,
+        };
         for step in 0..steps {
-            let Some(residuals) = self.residuals(&view, &mut state) else { break };
+            let Some(residuals) = self.residuals(&view, &mut state) else {
+                break;
+            };
             let sums = self.sums(&residuals, &state);
-            let Some(update) = self.solve(&sums, &state, guess, turn_free) else { break };
+            let Some(update) = self.solve(&sums, &state, guess, turn_free) else {
+                break;
+            };
             let moved = update.shift.map(f64::abs);
-            state.motion.shift = [state.motion.shift[0] + update.shift[0], state.motion.shift[1] + update.shift[1]];
-            state.light.iter_mut().zip(update.light).for_each(|(l, d)| *l += d);
-            state.blur.iter_mut().zip(update.blur).for_each(|(s, d)| *s = (*s + d).clamp(-3.0, 3.0));
+            state.motion.shift = [
+                state.motion.shift[0] + update.shift[0],
+                state.motion.shift[1] + update.shift[1],
+            ];
+            state
+                .light
+                .iter_mut()
+                .zip(update.light)
+                .for_each(|(l, d)| *l += d);
+            state
+                .blur
+                .iter_mut()
+                .zip(update.blur)
+                .for_each(|(s, d)| *s = (*s + d).clamp(-3.0, 3.0));
             state.motion.turn += if turn_free { update.turn } else { 0.0 };
             state.u_shift = update.u_shift;
             let settled = moved[0].max(moved[1]) < SETTLED_PX && step > 1;
@@ -211,9 +261,12 @@ impl Template {
                     return f32::NAN;
                 }
                 let (x, y) = state.motion.apply(f64::from(p.x) - cx, f64::from(p.y) - cy);
-                let Some(value) = view.interpolator.at(view.frame, x + cx, y + cy) else { return f32::NAN };
+                let Some(value) = view.interpolator.at(view.frame, x + cx, y + cy) else {
+                    return f32::NAN;
+                };
                 let light = state.light_at(self.shape, f64::from(p.x), f64::from(p.y)) as f32;
-                let model = p.value + state.blur[0] as f32 * p.blurs[0] + state.blur[1] as f32 * p.blurs[1];
+                let model =
+                    p.value + state.blur[0] as f32 * p.blurs[0] + state.blur[1] as f32 * p.blurs[1];
                 (value - light * model) * p.inverse_sd
             })
             .collect();
@@ -224,7 +277,11 @@ impl Template {
         let limit = 2.0 * TUKEY;
         let loss = |r: f32| f64::from(1.0 - (1.0 - (r / limit).powi(2)).max(0.0).powi(3));
         let count = residuals.iter().filter(|r| r.is_finite()).count();
-        let total: f64 = residuals.iter().filter(|r| r.is_finite()).map(|&r| loss(r)).sum();
+        let total: f64 = residuals
+            .iter()
+            .filter(|r| r.is_finite())
+            .map(|&r| loss(r))
+            .sum();
         state.cost = total / count.max(1) as f64;
         Some(residuals)
     }
@@ -274,18 +331,28 @@ impl Template {
     }
 
     /// One Gauss–Newton step.
-    fn solve(&self, sums: &Sums, state: &Fitted, guess: [f64; 2], turn_free: bool) -> Option<Update> {
+    fn solve(
+        &self,
+        sums: &Sums,
+        state: &Fitted,
+        guess: [f64; 2],
+        turn_free: bool,
+    ) -> Option<Update> {
         let nuisance = if turn_free { SHIFT } else { TURN };
         let reduced = eliminate(sums, nuisance)?;
         let noise2 = state.noise * state.noise;
         let (eigenvalues, axes) = eigen2(reduced.shift);
-        let floor = 4.0 * self.noise_share * sums.light_squared * self.gradient_noise / sums.count.max(1.0).sqrt();
+        let floor = 4.0 * self.noise_share * sums.light_squared * self.gradient_noise
+            / sums.count.max(1.0).sqrt();
         let unsure = UNSURE_PX / self.bin as f64;
         let mut shift = [0.0; 2];
         let mut u_shift = [f64::INFINITY; 2];
         for (i, axis) in axes.iter().enumerate() {
             let along = |v: [f64; 2]| v[0] * axis[0] + v[1] * axis[1];
-            let to_guess = along([guess[0] - state.motion.shift[0], guess[1] - state.motion.shift[1]]);
+            let to_guess = along([
+                guess[0] - state.motion.shift[0],
+                guess[1] - state.motion.shift[1],
+            ]);
             let score = along(reduced.score);
             let variance = noise2 * quadratic(&sums.score_variance, axis);
             let mut step = to_guess;
@@ -300,17 +367,29 @@ impl Template {
             shift[1] += step * axis[1];
         }
         let nuisances: Vec<f64> = (0..nuisance)
-            .map(|i| reduced.rest[i][2] - reduced.rest[i][0] * shift[0] - reduced.rest[i][1] * shift[1])
+            .map(|i| {
+                reduced.rest[i][2] - reduced.rest[i][0] * shift[0] - reduced.rest[i][1] * shift[1]
+            })
             .collect();
         let (turn, u_turn) = if turn_free {
             (nuisances[TURN], 0.0)
         } else {
             let information = sums.matrix[TURN][TURN].max(f64::MIN_POSITIVE);
-            (sums.right[TURN] / information, (noise2 * sums.turn_variance).sqrt() / information)
+            (
+                sums.right[TURN] / information,
+                (noise2 * sums.turn_variance).sqrt() / information,
+            )
         };
         let mut light = [0.0; LIGHT];
         light.copy_from_slice(&nuisances[..LIGHT]);
-        Some(Update { light, blur: [nuisances[LIGHT], nuisances[LIGHT + 1]], turn, u_turn, shift, u_shift })
+        Some(Update {
+            light,
+            blur: [nuisances[LIGHT], nuisances[LIGHT + 1]],
+            turn,
+            u_turn,
+            shift,
+            u_shift,
+        })
     }
 }
 
@@ -343,12 +422,21 @@ struct Sums {
 }
 
 impl Sums {
-    fn add(&mut self, shape: (usize, usize), p: &Pixel, residual: f32, weight: f32, state: &Fitted) {
+    fn add(
+        &mut self,
+        shape: (usize, usize),
+        p: &Pixel,
+        residual: f32,
+        weight: f32,
+        state: &Fitted,
+    ) {
         let (x, y) = (f64::from(p.x), f64::from(p.y));
         let terms = light_terms(shape, x, y);
         let inverse_sd = f64::from(p.inverse_sd);
         let light = dot(&state.light, &terms) * inverse_sd;
-        let value = f64::from(p.value) + state.blur[0] * f64::from(p.blurs[0]) + state.blur[1] * f64::from(p.blurs[1]);
+        let value = f64::from(p.value)
+            + state.blur[0] * f64::from(p.blurs[0])
+            + state.blur[1] * f64::from(p.blurs[1]);
         let (cx, cy) = centre(shape);
         let mut model = [0.0; UNKNOWNS];
         for (slot, term) in model.iter_mut().zip(terms) {
@@ -382,10 +470,21 @@ impl Sums {
     }
 
     fn merge(&mut self, other: &Self) {
-        let pairs = self.matrix.iter_mut().flatten().zip(other.matrix.iter().flatten());
+        let pairs = self
+            .matrix
+            .iter_mut()
+            .flatten()
+            .zip(other.matrix.iter().flatten());
         pairs.for_each(|(a, b)| *a += b);
-        self.right.iter_mut().zip(other.right).for_each(|(a, b)| *a += b);
-        let pairs = self.score_variance.iter_mut().flatten().zip(other.score_variance.iter().flatten());
+        self.right
+            .iter_mut()
+            .zip(other.right)
+            .for_each(|(a, b)| *a += b);
+        let pairs = self
+            .score_variance
+            .iter_mut()
+            .flatten()
+            .zip(other.score_variance.iter().flatten());
         pairs.for_each(|(a, b)| *a += b);
         self.turn_variance += other.turn_variance;
         self.light_squared += other.light_squared;
@@ -403,9 +502,18 @@ struct Reduced {
 
 /// Eliminates the first `nuisance` unknowns.
 fn eliminate(sums: &Sums, nuisance: usize) -> Option<Reduced> {
-    let mut matrix: Vec<Vec<f64>> = (0..nuisance).map(|i| sums.matrix[i][..nuisance].to_vec()).collect();
-    let mut rest: Vec<[f64; 3]> =
-        (0..nuisance).map(|i| [sums.matrix[i][SHIFT], sums.matrix[i][SHIFT + 1], sums.right[i]]).collect();
+    let mut matrix: Vec<Vec<f64>> = (0..nuisance)
+        .map(|i| sums.matrix[i][..nuisance].to_vec())
+        .collect();
+    let mut rest: Vec<[f64; 3]> = (0..nuisance)
+        .map(|i| {
+            [
+                sums.matrix[i][SHIFT],
+                sums.matrix[i][SHIFT + 1],
+                sums.right[i],
+            ]
+        })
+        .collect();
     solve_in_place(&mut matrix, &mut rest)?;
     let mut shift = [[0.0; 2]; 2];
     let mut score = [0.0; 2];
@@ -425,13 +533,16 @@ fn eliminate(sums: &Sums, nuisance: usize) -> Option<Reduced> {
 /// Gaussian elimination with partial pivoting on unknowns scaled by their diagonal; `None` when singular.
 fn solve_in_place(matrix: &mut [Vec<f64>], right: &mut [[f64; 3]]) -> Option<()> {
     let n = matrix.len();
-    let scale: Vec<f64> = (0..n).map(|i| matrix[i][i].abs().sqrt().max(f64::MIN_POSITIVE)).collect();
+    let scale: Vec<f64> = (0..n)
+        .map(|i| matrix[i][i].abs().sqrt().max(f64::MIN_POSITIVE))
+        .collect();
     for i in 0..n {
         (0..n).for_each(|k| matrix[i][k] /= scale[i] * scale[k]);
         right[i].iter_mut().for_each(|r| *r /= scale[i]);
     }
     for col in 0..n {
-        let pivot = (col..n).max_by(|&a, &b| matrix[a][col].abs().total_cmp(&matrix[b][col].abs()))?;
+        let pivot =
+            (col..n).max_by(|&a, &b| matrix[a][col].abs().total_cmp(&matrix[b][col].abs()))?;
         if matrix[pivot][col].abs() < 1e-10 {
             return None;
         }
@@ -450,7 +561,9 @@ fn solve_in_place(matrix: &mut [Vec<f64>], right: &mut [[f64; 3]]) -> Option<()>
         }
     }
     for i in 0..n {
-        right[i].iter_mut().for_each(|r| *r /= matrix[i][i] * scale[i]);
+        right[i]
+            .iter_mut()
+            .for_each(|r| *r /= matrix[i][i] * scale[i]);
     }
     Some(())
 }
@@ -475,7 +588,9 @@ const TILE: usize = 32;
 fn informative(gradient: &[Array2<f32>; 2], most: usize) -> Vec<(usize, usize)> {
     let (height, width) = gradient[0].dim();
     let everywhere = |y0: usize, x0: usize, y1: usize, x1: usize| -> Vec<(usize, usize)> {
-        (y0..y1).flat_map(|y| (x0..x1).map(move |x| (y, x))).collect()
+        (y0..y1)
+            .flat_map(|y| (x0..x1).map(move |x| (y, x)))
+            .collect()
     };
     if height * width <= most {
         return everywhere(0, 0, height, width);
@@ -486,7 +601,9 @@ fn informative(gradient: &[Array2<f32>; 2], most: usize) -> Vec<(usize, usize)> 
         for x0 in (0..width).step_by(TILE) {
             let mut tile = everywhere(y0, x0, (y0 + TILE).min(height), (x0 + TILE).min(width));
             let keep = ((tile.len() as f64 * share).round() as usize).clamp(1, tile.len());
-            let steepness = |&(y, x): &(usize, usize)| gradient[0][[y, x]].powi(2) + gradient[1][[y, x]].powi(2);
+            let steepness = |&(y, x): &(usize, usize)| {
+                gradient[0][[y, x]].powi(2) + gradient[1][[y, x]].powi(2)
+            };
             tile.sort_by(|a, b| steepness(b).total_cmp(&steepness(a)).then(a.cmp(b)));
             tile.truncate(keep);
             tile.sort_unstable();

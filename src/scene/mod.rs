@@ -101,7 +101,11 @@ impl Scene {
 
     /// Puts a scene together. `sd`: noise of a new frame's residual, grey levels.
     pub(crate) fn assemble(
-        settings: SceneSettings, mode: Mode, reference: Array2<f32>, sd: &Array2<f32>, frames: usize,
+        settings: SceneSettings,
+        mode: Mode,
+        reference: Array2<f32>,
+        sd: &Array2<f32>,
+        frames: usize,
         usual_likeness: f64,
     ) -> Self {
         let middle = quantile(&mut sample(&reference, LOOKED_AT), 0.5).unwrap_or(1.0);
@@ -141,7 +145,12 @@ impl Scene {
 
     /// Lays a frame (grey levels, same shape) on the reference. `metal`: true where filament is known, in reference
     /// coordinates, left out of every fit; `guess`: shift of the previous usable frame, px.
-    pub fn correct(&self, frame: &Array2<f32>, metal: Option<&Array2<bool>>, guess: [f64; 2]) -> Corrected {
+    pub fn correct(
+        &self,
+        frame: &Array2<f32>,
+        metal: Option<&Array2<bool>>,
+        guess: [f64; 2],
+    ) -> Corrected {
         if let Some(reason) = self.unusable(frame) {
             return self.set_aside(guess, reason);
         }
@@ -171,7 +180,9 @@ impl Scene {
     fn unusable(&self, frame: &Array2<f32>) -> Option<String> {
         if frame.dim() != self.reference.dim() {
             let ((h, w), (rh, rw)) = (frame.dim(), self.reference.dim());
-            return Some(format!("is {w} × {h} px, the first usable frame {rw} × {rh}"));
+            return Some(format!(
+                "is {w} × {h} px, the first usable frame {rw} × {rh}"
+            ));
         }
         quality::unreadable(frame)
     }
@@ -190,7 +201,12 @@ impl Scene {
     }
 
     /// Residual against the bare mean under the frame's light and focus, what slow light is left taken off.
-    fn bare_residual(&self, mut laid: Array2<f32>, metal: Option<&Array2<bool>>, fitted: &Fitted) -> Array2<f32> {
+    fn bare_residual(
+        &self,
+        mut laid: Array2<f32>,
+        metal: Option<&Array2<bool>>,
+        fitted: &Fitted,
+    ) -> Array2<f32> {
         let sign = if self.settings.darker { 1.0 } else { -1.0 };
         let [soft, softer] = fitted.blur.map(|s| s as f32);
         let shape = laid.dim();
@@ -198,7 +214,8 @@ impl Scene {
             for (x, value) in row.iter_mut().enumerate() {
                 let reference = self.reference[[y, x]];
                 let light = fitted.light_at(shape, x as f64, y as f64).max(0.05) as f32;
-                let model = reference + soft * self.blurred[0][[y, x]] + softer * self.blurred[1][[y, x]];
+                let model =
+                    reference + soft * self.blurred[0][[y, x]] + softer * self.blurred[1][[y, x]];
                 *value = sign * (model - *value / light) / reference.max(self.floor);
             }
         });
@@ -208,12 +225,18 @@ impl Scene {
     }
 
     /// Robust spread of the residual over the noise expected, resampling allowed for.
-    fn noise_factor(&self, residual: &Array2<f32>, metal: Option<&Array2<bool>>, fitted: &Fitted) -> f32 {
+    fn noise_factor(
+        &self,
+        residual: &Array2<f32>,
+        metal: Option<&Array2<bool>>,
+        fitted: &Fitted,
+    ) -> f32 {
         let mut scaled = combine(residual, &self.noise, |r, n| r / n);
         if let Some(metal) = metal {
             scaled.zip_mut_with(metal, |v, &m| *v = if m { f32::NAN } else { *v });
         }
-        let spread = robust_spread(&mut sample(&scaled, LOOKED_AT)).map_or(f32::INFINITY, |(_, sd)| sd);
+        let spread =
+            robust_spread(&mut sample(&scaled, LOOKED_AT)).map_or(f32::INFINITY, |(_, sd)| sd);
         match self.mode {
             Mode::Bare => {
                 // Only the frame's share of the variance goes through the resampling.
@@ -228,10 +251,14 @@ impl Scene {
 
 /// Background of a frame and its residual against it. A second pass leaves out what the first showed to be filament.
 fn own_residual(
-    plane: &Array2<f32>, metal: Option<&Array2<bool>>, darker: bool, floor: f32,
+    plane: &Array2<f32>,
+    metal: Option<&Array2<bool>>,
+    darker: bool,
+    floor: f32,
 ) -> (Array2<f32>, Array2<f32>) {
     let sign = if darker { 1.0 } else { -1.0 };
-    let relative = |ground: &Array2<f32>| combine(plane, ground, |p, g| sign * (g - p) / g.max(floor));
+    let relative =
+        |ground: &Array2<f32>| combine(plane, ground, |p, g| sign * (g - p) / g.max(floor));
     let first = relative(&background(plane, metal, OWN_BACKGROUND));
     let spread = robust_spread(&mut sample(&first, LOOKED_AT)).map_or(0.0, |(_, sd)| sd);
     let mut excluded = first.mapv(|r| r > 2.5 * spread);

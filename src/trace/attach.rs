@@ -5,7 +5,7 @@ use ndarray::Array2;
 use super::Root;
 use super::centreline::{distance, normal, onto_ridge, resample, smooth, tangents, unit};
 use super::edges::Edges;
-use super::forest::{Filament, Forest, Joint, SPACING, Strand, Vertex, vertices_in};
+use super::forest::{Filament, Forest, Joint, Owners, SPACING, Strand, Vertex, disc, vertices_in};
 use super::link::{Line, Start};
 
 /// Width of a strand of which nothing is known yet, px.
@@ -18,6 +18,17 @@ const SEARCH: f64 = 2.5;
 const ALONG: f64 = 3.0;
 /// Length of a first stretch whose direction carries back to the electrode's edge, px.
 const AIM: usize = 8;
+
+/// Length over which a strand's heading is taken, px.
+const HEADING: f64 = 10.0;
+/// How far along the crossed strand, beyond its width, the two sides of a crossing may lie apart, px.
+const CROSSING_SLACK: f64 = 6.0;
+/// Cosine of the largest turn at a crossing: 35°.
+const CROSSING_COSINE: f64 = 0.82;
+/// Bare ceramic between a strand's ink and the claim of the metal it runs into, px.
+const MEETING_REACH: f64 = 1.5;
+/// Cosine of the largest angle between a strand's heading and what it runs into: 50°.
+const MEETING_COSINE: f64 = 0.64;
 
 /// Adds lines to the forest as proposals.
 #[derive(Clone, Copy)]
@@ -34,8 +45,11 @@ impl Attachment<'_> {
         let mut made: Vec<Option<usize>> = Vec::new();
         for line in lines {
             let index = match line.start {
-                Start::Tip(strand) => Some(self.go_on(strand, line, forest)).flatten(),
-                Start::Side(joint) => self.branch(joint, line, forest),
+                Start::Tip(strand) => self.go_on(strand, line, forest),
+                Start::Side(joint) => match self.crossing(joint, line, forest) {
+                    Some(strand) => self.go_on(strand, line, forest),
+                    None => self.branch(joint, line, forest),
+                },
                 Start::Line(earlier, pixel) => {
                     made.get(earlier).copied().flatten().and_then(|strand| {
                         self.branch(
@@ -75,6 +89,77 @@ impl Attachment<'_> {
         Some(index)
     }
 
+    /// The strand that ran into this place from the other side and heads the way the line goes: a crossing, no branch.
+    fn crossing(&self, joint: Joint, line: &Line, forest: &mut Forest) -> Option<usize> {
+        let host = &forest.strands[joint.strand];
+        let slack = vertices_in(host.width + CROSSING_SLACK);
+        let first = point(*line.pixels.first()?);
+        let aim = point(line.pixels[AIM.min(line.pixels.len() - 1)]);
+        let goes = unit([aim[0] - first[0], aim[1] - first[1]])?;
+        let found = (0..forest.strands.len()).find(|&s| {
+            let strand = &forest.strands[s];
+            let met = strand.meets.is_some_and(|m| {
+                m.strand == joint.strand && m.vertex.abs_diff(joint.vertex) <= slack
+            });
+            let straight = || {
+                strand
+                    .heading(vertices_in(HEADING))
+                    .is_some_and(|h| h[0] * goes[0] + h[1] * goes[1] > CROSSING_COSINE)
+            };
+            met && strand.closed() && strand.reached_far.is_none() && straight()
+        })?;
+        forest.strands[found].meets = None;
+        Some(found)
+    }
+
+    /// Ties the end of a strand to other metal that it runs into: within `owners`' claim of another strand ahead.
+    pub fn meet(&self, index: usize, forest: &mut Forest, owners: &Owners) {
+        let strand = &forest.strands[index];
+        let (Some(end), Some(heading)) =
+            (strand.vertices.last(), strand.heading(vertices_in(HEADING)))
+        else {
+            return;
+        };
+        if strand.meets.is_some() || strand.reached_far.is_some() {
+            return;
+        }
+        let (p, n) = (end.p, end.n);
+        let near_own_joint = |j: Joint| {
+            strand.parent.is_some_and(|own| {
+                own.strand == j.strand && own.vertex.abs_diff(j.vertex) < vertices_in(12.0)
+            })
+        };
+        let met = disc(p, 0.5 * strand.width + MEETING_REACH, owners.strand.dim())
+            .filter_map(|pixel| owners.at(pixel))
+            .filter(|j| j.strand != index && !near_own_joint(*j))
+            .filter_map(|j| {
+                forest.strands[j.strand]
+                    .vertices
+                    .get(j.vertex)
+                    .map(|v| (j, v.p, distance(v.p, p)))
+            })
+            .min_by(|a, b| a.2.total_cmp(&b.2));
+        let Some((joint, target, gap)) = met else {
+            return;
+        };
+        let toward = unit([target[0] - p[0], target[1] - p[1]]).unwrap_or(heading);
+        if toward[0] * heading[0] + toward[1] * heading[1] < MEETING_COSINE {
+            return;
+        }
+        let steps = vertices_in(gap);
+        let bridge = (1..=steps).map(|k| {
+            let t = k as f64 / steps as f64;
+            Vertex::new(
+                [p[0] + t * (target[0] - p[0]), p[1] + t * (target[1] - p[1])],
+                n,
+                self.edges,
+            )
+        });
+        let strand = &mut forest.strands[index];
+        strand.vertices.extend(bridge);
+        strand.meets = Some(joint);
+    }
+
     fn branch(&self, joint: Joint, line: &Line, forest: &mut Forest) -> Option<usize> {
         let parent = &forest.strands[joint.strand];
         let at = parent.vertices.get(joint.vertex)?.p;
@@ -85,7 +170,7 @@ impl Attachment<'_> {
         }
         let (filament, width, contrast) = (parent.filament, parent.width, parent.contrast);
         let mut vertices = self.drawn(&[at], &line.pixels);
-        vertices.insert(0, Vertex::new(at, vertices.first()?.n));
+        vertices.insert(0, Vertex::new(at, vertices.first()?.n, self.edges));
         forest
             .strands
             .push(strand(filament, Some(joint), vertices, width, contrast));
@@ -104,7 +189,7 @@ impl Attachment<'_> {
             Root::Inside => self.drawn(&[], &line.pixels),
             _ => {
                 let mut vertices = self.drawn(&[foot], &line.pixels);
-                vertices.insert(0, Vertex::new(foot, vertices.first()?.n));
+                vertices.insert(0, Vertex::new(foot, vertices.first()?.n, self.edges));
                 vertices
             }
         };
@@ -171,7 +256,7 @@ impl Attachment<'_> {
             .iter()
             .zip(directions)
             .skip(skip)
-            .map(|(&p, t)| Vertex::new(p, normal(t)))
+            .map(|(&p, t)| Vertex::new(p, normal(t), self.edges))
             .collect()
     }
 }

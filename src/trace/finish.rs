@@ -1,6 +1,6 @@
 //! The final trace: geometry refined from all frames, strands cut into paths at their branchings, numbered.
 
-use super::centreline::{Profile, distance, normal, pooled, smooth, tangents};
+use super::centreline::{Profile, distance, pooled, smooth};
 use super::forest::{SPACING, Strand, Vertex, vertices_in};
 use super::growth::Tracer;
 use super::{EndsIn, Root, Trace, TracePath, TracePoint, TracedFilament};
@@ -170,7 +170,7 @@ fn lead_in(tracer: &Tracer, strand: &Strand) -> usize {
         None => strand
             .vertices
             .iter()
-            .take_while(|v| tracer.edges.depth(v.p) < 4.0 || tracer.edges.remaining(v.p) < 4.0)
+            .take_while(|v| v.depth < 4.0 || v.remaining < 4.0)
             .count(),
     }
     .min(strand.decided / 2)
@@ -292,13 +292,4 @@ fn arrivals_rise(mut points: Vec<TracePoint>) -> Vec<TracePoint> {
     }
     points.dedup_by(|b, a| distance([a.x, a.y], [b.x, b.y]) < 1e-6);
     points
-}
-
-/// Unit normals of a finished path.
-#[must_use]
-pub fn normals(points: &[[f64; 2]]) -> Vec<[f64; 2]> {
-    tangents(points, vertices_in(POOL))
-        .into_iter()
-        .map(normal)
-        .collect()
 }

@@ -7,6 +7,7 @@ use ndarray::Array2;
 
 use super::Root;
 use super::centreline::{Profile, distance};
+use super::edges::Edges;
 
 /// Distance between neighbouring vertices of a strand, px: half a pixel, so that a tip is placed within a quarter.
 pub const SPACING: f64 = 0.5;
@@ -32,12 +33,16 @@ pub struct Vertex {
     pub profile: Profile,
     /// Smoothed contrast of the latest frames, for retreat and withdrawal.
     pub recent: f32,
+    /// Depth from the plating edge, px.
+    pub depth: f64,
+    /// Distance to the far edge, px.
+    pub remaining: f64,
 }
 
 impl Vertex {
     /// A vertex that has not arrived yet.
     #[must_use]
-    pub fn new(p: [f64; 2], n: [f64; 2]) -> Self {
+    pub fn new(p: [f64; 2], n: [f64; 2], edges: &Edges) -> Self {
         Self {
             p,
             n,
@@ -45,6 +50,8 @@ impl Vertex {
             retreat: None,
             profile: Profile::default(),
             recent: f32::NAN,
+            depth: edges.depth(p),
+            remaining: edges.remaining(p),
         }
     }
 }
@@ -183,7 +190,8 @@ impl Strand {
     }
 
     /// Whether the end is tied to other metal for good.
-    fn closed(&self) -> bool {
+    #[must_use]
+    pub fn closed(&self) -> bool {
         self.meets.is_some() && self.vertices.last().is_some_and(|v| v.arrival.is_some())
     }
 

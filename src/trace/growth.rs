@@ -106,7 +106,7 @@ impl Tracer {
         if let Some((median, sd)) = self.recent.median() {
             self.extend(&median, sd);
         }
-        settle::date(self);
+        settle::date(self, self.settings.confirm_frames);
         settle::observe(self);
         settle::withdraw(self);
     }
@@ -153,6 +153,7 @@ impl Tracer {
                     edges: &self.edges,
                 };
                 for index in attachment.attach(&lines, &mut self.forest) {
+                    attachment.meet(index, &mut self.forest, &self.owners);
                     self.owners
                         .claim(index, &self.forest.strands[index], 0, CLAIM_MARGIN);
                 }
@@ -192,8 +193,29 @@ impl Tracer {
         }
         let mask = threshold::hysteresis(&boosted, LOW_Z, self.high_z);
         let mask = threshold::clean(&mask, LEAST_PIXELS);
-        skeleton_components(&mask)
+        let mut components = skeleton_components(&mask);
+        let tips: Vec<[f64; 2]> = self
+            .forest
+            .strands
+            .iter()
+            .filter(|s| s.live())
+            .filter_map(|s| s.vertices.last())
+            .map(|v| v.p)
+            .collect();
+        components.sort_by_cached_key(|c| (nearest_square(&c.pixels, &tips), c.pixels[0]));
+        components
     }
+}
+
+/// Squared distance, px², of a component to the nearest tip: what goes on from a tip is linked first.
+fn nearest_square(pixels: &[[usize; 2]], tips: &[[f64; 2]]) -> u64 {
+    let square = |p: &[usize; 2], t: &[f64; 2]| {
+        ((p[1] as f64 - t[0]).powi(2) + (p[0] as f64 - t[1]).powi(2)) as u64
+    };
+    tips.iter()
+        .flat_map(|t| pixels.iter().map(move |p| square(p, t)))
+        .min()
+        .unwrap_or(u64::MAX)
 }
 
 /// Evidence that bare ceramic reaches `rate` times a frame over `area` pixels (Bonferroni over independent tests).
@@ -215,10 +237,89 @@ fn skeleton_components(mask: &Array2<bool>) -> Vec<Component> {
         .collect()
 }
 
+/// How deep a filament had come by each used frame, as decided when asked.
+#[derive(Debug, Clone, PartialEq)]
+pub struct DepthCourse {
+    /// Number of the filament in order of discovery; stays the same from frame to frame.
+    pub filament: usize,
+    /// Ordinal of the used frame of the first entry.
+    pub first: usize,
+    /// Depth of its deepest point by frame, px; never falls.
+    pub depth_px: Vec<f64>,
+    /// Distance of that point to the far edge, px.
+    pub remaining_px: Vec<f64>,
+    /// Whether its ink touches the far edge.
+    pub bridged: bool,
+}
+
 impl Tracer {
-    /// The final trace from all frames taken in.
+    /// Depth by frame of every filament rooted on the plating edge, from its first arrival to the latest used frame.
+    /// The last `confirm_frames` entries are provisional. Uses nothing later than the latest frame.
     #[must_use]
-    pub fn finish(&self) -> super::Trace {
-        super::finish::finish(self)
+    pub fn depth_courses(&self) -> Vec<DepthCourse> {
+        let count = self.frames.len();
+        let sure = count.saturating_sub(self.settings.confirm_frames);
+        let mut out = Vec::new();
+        for filament in (0..self.forest.filaments.len())
+            .filter(|&f| self.forest.filaments[f].root == super::Root::Plating)
+        {
+            let mut by_frame: Vec<Option<(f64, f64)>> = vec![None; count];
+            let mut bridged = false;
+            for strand in self
+                .forest
+                .strands
+                .iter()
+                .filter(|s| s.filament == filament && !s.withdrawn)
+            {
+                bridged |= strand.reached_far.is_some();
+                let decided = strand.vertices[..strand.decided]
+                    .iter()
+                    .filter_map(|v| v.arrival.map(|a| (a, v)));
+                let later = strand.provisional.iter().enumerate().flat_map(|(k, &n)| {
+                    strand.vertices[strand.decided.min(n)..n]
+                        .iter()
+                        .map(move |v| (sure + k, v))
+                });
+                for (ordinal, vertex) in decided.chain(later) {
+                    let best = &mut by_frame[ordinal.min(count - 1)];
+                    if best.is_none_or(|b| vertex.depth > b.0) {
+                        *best = Some((vertex.depth, vertex.remaining));
+                    }
+                }
+            }
+            out.extend(rising(filament, &by_frame, bridged));
+        }
+        out
+    }
+}
+
+/// A course from the deepest arrival of each frame; `None` when nothing arrived.
+fn rising(filament: usize, by_frame: &[Option<(f64, f64)>], bridged: bool) -> Option<DepthCourse> {
+    let first = by_frame.iter().position(Option::is_some)?;
+    let mut now = (0.0, f64::INFINITY);
+    let (mut depth_px, mut remaining_px) = (Vec::new(), Vec::new());
+    for entry in &by_frame[first..] {
+        if let Some(deeper) = entry.filter(|e| e.0 > now.0 || now.1.is_infinite()) {
+            now = deeper;
+        }
+        depth_px.push(now.0.max(0.0));
+        remaining_px.push(now.1.max(0.0));
+    }
+    Some(DepthCourse {
+        filament,
+        first,
+        depth_px,
+        remaining_px,
+        bridged,
+    })
+}
+
+impl Tracer {
+    /// The final trace from all frames taken in: the last frames are decided with the witnesses they have.
+    #[must_use]
+    pub fn finish(mut self) -> super::Trace {
+        settle::date(&mut self, 0);
+        settle::observe_new(&mut self);
+        super::finish::finish(&self)
     }
 }

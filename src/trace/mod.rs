@@ -16,7 +16,7 @@ mod settle;
 pub mod thin;
 pub mod threshold;
 
-pub use growth::{TraceSettings, Tracer, WINDOW};
+pub use growth::{DepthCourse, TraceSettings, Tracer, WINDOW};
 
 use serde::{Deserialize, Serialize};
 

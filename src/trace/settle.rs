@@ -9,6 +9,8 @@ use super::growth::Tracer;
 const NEW_EACH: f64 = 3.0;
 /// And in all three together.
 const NEW_ALL: f64 = 7.5;
+/// Frames, from the deciding one on, that bear witness to a new line; at the end of a run its last ones.
+const WITNESSES: usize = 3;
 /// The same for a branch.
 const BRANCH_EACH: f64 = 2.0;
 /// And in all three together.
@@ -37,16 +39,16 @@ const EDGE_SHADE: f64 = 3.0;
 /// Weight of the newest frame in the running contrast.
 const NEWEST: f32 = 0.4;
 
-/// Dates the proposals of all strands, parents first, and decides what has its witnesses.
-pub(super) fn date(tracer: &mut Tracer) {
+/// Dates the proposals of all strands, parents first, and decides what has `confirm` later frames as witnesses.
+pub(super) fn date(tracer: &mut Tracer, confirm: usize) {
     for index in 0..tracer.forest.strands.len() {
         if tracer.forest.strands[index].vertices.len() > tracer.forest.strands[index].decided {
-            date_strand(tracer, index);
+            date_strand(tracer, index, confirm);
         }
     }
 }
 
-fn date_strand(tracer: &mut Tracer, index: usize) {
+fn date_strand(tracer: &mut Tracer, index: usize, confirm: usize) {
     let Some(earliest) = earliest_arrival(tracer, index) else {
         return;
     };
@@ -59,9 +61,7 @@ fn date_strand(tracer: &mut Tracer, index: usize) {
         return;
     };
     let reached = positions(&rows, height);
-    let decided_frame = now
-        .checked_sub(tracer.settings.confirm_frames)
-        .filter(|&k| k >= first);
+    let decided_frame = now.checked_sub(confirm).filter(|&k| k >= first);
     let ends_free = strand.meets.is_none();
     let end_off = if ends_free {
         ROUND_END * 0.5 * strand.width
@@ -86,24 +86,11 @@ fn date_strand(tracer: &mut Tracer, index: usize) {
     }
     strand.decided = start + reached[known - 1];
     strand.provisional = reached[known..].iter().map(|&s| start + s).collect();
-    let edges = &tracer.edges;
-    if let Some(end) = strand.vertices[..strand.decided].last().copied_end() {
-        if strand.reached_far.is_none() && edges.remaining(end.0) <= 0.5 * strand.width + EDGE_BLUR
-        {
-            strand.reached_far = end.1;
-        }
-    }
-}
-
-/// Position and arrival of the last decided vertex.
-trait CopiedEnd {
-    fn copied_end(self) -> Option<([f64; 2], Option<usize>)>;
-}
-
-impl CopiedEnd for Option<&super::forest::Vertex> {
-    fn copied_end(self) -> Option<([f64; 2], Option<usize>)> {
-        self.map(|v| (v.p, v.arrival))
-    }
+    let end = strand.decided.checked_sub(1).map(|i| &strand.vertices[i]);
+    let touching = end
+        .filter(|v| v.remaining <= 0.5 * strand.width + EDGE_BLUR)
+        .and_then(|v| v.arrival);
+    strand.reached_far = strand.reached_far.or(touching);
 }
 
 /// The ordinal before which nothing of this strand's proposal can have arrived; `None` while its parent
@@ -215,6 +202,27 @@ pub(super) fn observe(tracer: &mut Tracer) {
                 } else {
                     vertex.recent + NEWEST * (value - vertex.recent)
                 };
+            }
+        }
+        read_tip(strand);
+    }
+}
+
+/// Gives the vertices decided at the very end the frames of the window that show them.
+pub(super) fn observe_new(tracer: &mut Tracer) {
+    let oldest = tracer.frames.len() - tracer.recent.frames().len();
+    for strand in &mut tracer.forest.strands {
+        let decided = strand.decided;
+        for vertex in strand.vertices[..decided]
+            .iter_mut()
+            .filter(|v| v.profile.is_empty())
+        {
+            for (k, frame) in tracer.recent.frames().iter().enumerate() {
+                if vertex.arrival.is_some_and(|a| oldest + k >= a) {
+                    vertex
+                        .profile
+                        .add(&frame.residual, vertex.p, vertex.n, PROFILE_MEMORY);
+                }
             }
         }
         read_tip(strand);
