@@ -1,6 +1,32 @@
 //! The command line: one file a command, clap definitions beside it.
 
+pub mod synth;
+use clap::Parser;
+
+#[derive(Parser)]
+struct Cli {
+    #[command(subcommand)]
+    command: Command,
+}
+
+#[derive(clap::Subcommand)]
+enum Command {
+    Synth(synth::SynthArgs),
+}
+
 /// Parses the arguments, runs the command and gives its exit code.
 pub fn main() -> std::process::ExitCode {
-    std::process::ExitCode::SUCCESS
+    let result = match Cli::parse().command {
+        Command::Synth(args) => synth::run(&args).map(|f| format!("{} runs", f.len())),
+    };
+    match result {
+        Ok(text) => {
+            println!("{text}");
+            std::process::ExitCode::SUCCESS
+        }
+        Err(e) => {
+            eprintln!("{:?}", miette::Report::new(e));
+            std::process::ExitCode::from(2)
+        }
+    }
 }
