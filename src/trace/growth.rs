@@ -13,7 +13,7 @@ use super::forest::{Forest, Owners, disc};
 use super::link::{self, Component, Ground};
 use super::recent::{Corrected, Recent};
 use super::ridge::line_evidence;
-use super::settle;
+use super::settle::{self, EDGE_SHADE};
 use super::{graph, thin, threshold};
 
 /// Corrected frames held at once: how far back a line that is found late can be dated.
@@ -75,7 +75,7 @@ impl Tracer {
         let shape = noise.dim();
         let inside = Array2::from_shape_fn(shape, |(row, col)| {
             let p = [col as f64, row as f64];
-            edges.depth(p) > 0.5 && edges.remaining(p) > 0.5
+            edges.depth(p) > EDGE_SHADE && edges.remaining(p) > EDGE_SHADE
         });
         let area = inside.iter().filter(|&&b| b).count();
         let high_z = sure_z(area, settings.false_alarms_per_frame);
@@ -144,6 +144,7 @@ impl Tracer {
             let mut left = Vec::new();
             for component in waiting {
                 let lines = link::lines(&component, ground, &self.forest, &self.owners, free);
+                if std::env::var("VD").is_ok() { eprintln!("f{} comp {} px first {:?} ends {:?} free {free} lines {:?}", self.frames.len()-1, component.pixels.len(), component.pixels[0], component.ends, lines.iter().map(|l| (l.start, l.pixels.len(), l.pixels[0])).collect::<Vec<_>>()); }
                 if lines.is_empty() {
                     left.push(component);
                     continue;
@@ -165,9 +166,10 @@ impl Tracer {
     fn evidence(&self, median: &Array2<f32>, sd: f32) -> Array2<f32> {
         let whitened = Zip::from(median)
             .and(&self.noise)
-            .par_map_collect(|&m, &n| {
+            .and(&self.inside)
+            .par_map_collect(|&m, &n, &inside| {
                 let u = m / (n * sd);
-                if u.is_finite() {
+                if inside && u.is_finite() {
                     u.clamp(-30.0, 30.0)
                 } else {
                     0.0

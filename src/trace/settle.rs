@@ -33,9 +33,9 @@ const GONE_RUN: f64 = 4.0;
 /// Frames within which a stretch that fades was never there; later it has retreated.
 const YOUNG: usize = 6;
 /// Ink this close to the far edge touches it: the edge's own blur, px.
-pub(super) const EDGE_BLUR: f64 = 2.5;
+pub(super) const EDGE_BLUR: f64 = 3.0;
 /// Contrasts of vertices this close to an edge are not read: the electrode's blur, px.
-const EDGE_SHADE: f64 = 3.0;
+pub(super) const EDGE_SHADE: f64 = 3.0;
 /// Weight of the newest frame in the running contrast.
 const NEWEST: f32 = 0.4;
 
@@ -72,6 +72,7 @@ fn date_strand(tracer: &mut Tracer, index: usize, confirm: usize) {
     let reached: Vec<usize> = reached.into_iter().map(centre).collect();
     let known = decided_frame.map_or(0, |k| k + 1 - first);
     let sure = known > 0 && confirmed(strand, &rows, reached[known - 1], known);
+    if std::env::var("VD").is_ok() { eprintln!("f{now} s{index} par {:?} n {} dec {} h {height:.4} w {:.1} reached {:?} first {first} known {known} sure {sure} start {:?}", strand.parent, strand.vertices.len(), strand.decided, strand.width, &reached, strand.vertices[0].p); }
     let start = strand.decided;
     let strand = &mut tracer.forest.strands[index];
     if !sure {
