@@ -13,6 +13,8 @@ pub(crate) mod noise;
 pub(crate) mod plane;
 pub(crate) mod quality;
 pub(crate) mod resample;
+#[cfg(test)]
+mod trials;
 
 use ndarray::Array2;
 use rayon::prelude::*;
