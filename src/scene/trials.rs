@@ -353,7 +353,7 @@ fn look_at_trials() {
         ("hard paper", Grade { texture: Texture::Paper, ..HARD }),
         ("edges", Grade { texture: Texture::Edges, ..TYPICAL }),
         ("hard edges", Grade { texture: Texture::Edges, ..HARD }),
-    ].into_iter().filter(|(n, _)| pick.is_empty() || pick == *n) {{
+    ].into_iter().filter(|(n, _)| pick.is_empty() || pick == *n) {
         for know in [true, false].into_iter().take(if pick.is_empty() { 2 } else { 1 }) {
             for seed in 1..=if pick.is_empty() { 3 } else { 2 } {
                 let start = std::time::Instant::now();
