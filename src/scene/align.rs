@@ -13,10 +13,10 @@ use rayon::prelude::*;
 const COARSE_SIDE: usize = 640;
 /// Most pixels the fit looks at on the coarse and the full level.
 const COARSE_PIXELS: usize = 40_000;
-const FULL_PIXELS: usize = 200_000;
+pub(crate) const FULL_PIXELS: usize = 200_000;
 /// Most Gauss–Newton steps on the coarse and the full level.
 const COARSE_STEPS: usize = 15;
-const FULL_STEPS: usize = 12;
+pub(crate) const FULL_STEPS: usize = 12;
 /// Scale above which brightness counts as light, not as detail, px of the coarse level.
 const DETAIL_SIGMA: f64 = 6.0;
 /// Detail is clipped at this many robust standard deviations: dust and metal weigh no more than texture.

@@ -64,6 +64,9 @@ pub struct Scene {
     floor: f32,
     usual_likeness: f64,
     frames: usize,
+    /// Fingerprints of the bare frames and how they were found to lie against the mean of the others: laid on the
+    /// whole mean they would be held by their own noise.
+    bare: Vec<(u64, Fitted)>,
 }
 
 /// A frame laid on the reference.
@@ -98,6 +101,7 @@ impl Scene {
         let mut scene = Self::assemble(settings, Mode::OwnBackground, first.clone(), &sd, 1, 1.0);
         let (_, residual) = own_residual(&first, None, settings.darker, scene.floor);
         scene.noise = local_spread(&residual);
+        scene.bare.push((build::fingerprint(&first), Fitted::start([0.0; 2])));
         scene
     }
 
@@ -117,6 +121,7 @@ impl Scene {
             floor,
             usual_likeness,
             frames,
+            bare: Vec::new(),
             reference,
         }
     }
@@ -148,16 +153,14 @@ impl Scene {
             return self.set_aside(guess, reason);
         }
         let frame = frame.as_standard_layout().to_owned();
-        let aligned = self.aligner.align(&frame, metal, guess);
-        let fitted = aligned.fitted;
+        let (fitted, unlike) = self.lay(&frame, metal, guess);
         let laid = self.aligner.interpolator().resample(&frame, &fitted.motion);
         let residual = match self.mode {
             Mode::Bare => self.bare_residual(laid, metal, &fitted),
             Mode::OwnBackground => own_residual(&laid, metal, self.settings.darker, self.floor).1,
         };
         let noise_factor = self.noise_factor(&residual, metal, &fitted);
-        let verdict = quality::unlike(aligned.likeness, self.usual_likeness, aligned.pixels)
-            .or_else(|| quality::hopeless(noise_factor));
+        let verdict = unlike.or_else(|| quality::hopeless(noise_factor));
         Corrected {
             residual,
             drift_px: fitted.motion.shift,
@@ -168,6 +171,16 @@ impl Scene {
             noise_factor,
             verdict,
         }
+    }
+
+    /// How a frame lies, and whether it shows something else.
+    fn lay(&self, frame: &Array2<f32>, metal: Option<&Array2<bool>>, guess: [f64; 2]) -> (Fitted, Option<String>) {
+        let print = build::fingerprint(frame);
+        if let Some((_, known)) = self.bare.iter().find(|(bare, _)| *bare == print) {
+            return (*known, None);
+        }
+        let aligned = self.aligner.align(frame, metal, guess);
+        (aligned.fitted, quality::unlike(aligned.likeness, self.usual_likeness, aligned.pixels))
     }
 
     fn unusable(&self, frame: &Array2<f32>) -> Option<String> {
