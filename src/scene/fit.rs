@@ -28,6 +28,16 @@ const INSTRUMENT_SIGMA: f64 = 1.0;
 const DERIVATIVE: [f32; 5] = [1.0 / 12.0, -8.0 / 12.0, 0.0, 8.0 / 12.0, -1.0 / 12.0];
 /// Standard deviation at which a direction counts as half unknown, px of the picture.
 const UNSURE_PX: f64 = 1.0;
+/// Texture counts from this share of what the reference's noise feigns (how well that noise is known),
+const NOISE_DOUBT: f64 = 0.05;
+/// plus this many times its scatter: the sum runs over pixels correlated over about five neighbours, three sigma.
+const NOISE_SCATTER: f64 = 10.0;
+/// Slope less than this many times what noise feigns must be confirmed by the frame's own slope,
+const DOUBTFUL: f64 = 4.0;
+/// of which at least this share must be found (a blurred frame shows less).
+const CONFIRMED: f64 = 0.4;
+/// Cosine from which two axes are one.
+const SAME_DIRECTION: f64 = 0.8;
 /// Shift below which the fit has settled, px of the level.
 const SETTLED_PX: f64 = 0.002;
 /// Pixels whose sums are taken in one piece: fixes the order of additions on any number of threads.
@@ -163,12 +173,27 @@ impl Template {
     ) -> Fitted {
         let mut state = self.scaled(start, 1.0 / self.bin as f64);
         let guess = guess.map(|g| g / self.bin as f64);
+        let view = View { interpolator, frame, metal, guess };
+        let last = self.settle(&view, &mut state, turning, &[], steps);
+        let held = last.map_or(Vec::new(), |sums| self.unconfirmed(&view, &state, &sums));
+        if !held.is_empty() {
+            self.settle(&view, &mut state, turning, &held, steps);
+        }
+        self.residuals(&view, &mut state);
+        self.scaled(state, self.bin as f64)
+    }
+
+    /// Gauss–Newton steps until the shift stays; `held`: directions that keep their guess. Returns the last sums.
+    fn settle(
+        &self, view: &View<'_>, state: &mut Fitted, turning: bool, held: &[[f64; 2]], steps: usize,
+    ) -> Option<Sums> {
         let mut turn_free = state.motion.turns();
-        let view = View { interpolator, frame, metal };
+        let mut last = None;
         for step in 0..steps {
-            let Some(residuals) = self.residuals(&view, &mut state) else { break };
-            let sums = self.sums(&residuals, &state);
-            let Some(update) = self.solve(&sums, &state, guess, turn_free) else { break };
+            let residuals = self.residuals(view, state)?;
+            let sums = self.sums(&residuals, state);
+            let update = self.solve(&sums, state, view.guess, held, turn_free)?;
+            last = Some(sums);
             let moved = update.shift.map(f64::abs);
             state.motion.shift = [state.motion.shift[0] + update.shift[0], state.motion.shift[1] + update.shift[1]];
             state.light.iter_mut().zip(update.light).for_each(|(l, d)| *l += d);
@@ -182,8 +207,51 @@ impl Template {
                 break;
             }
         }
-        self.residuals(&view, &mut state);
-        self.scaled(state, self.bin as f64)
+        last
+    }
+
+    /// Directions in which the slope of the reference is not found again in the frame: there it was noise. Only asked
+    /// where noise could feign the slope; the frame's own noise is independent of the reference's.
+    fn unconfirmed(&self, view: &View<'_>, state: &Fitted, sums: &Sums) -> Vec<[f64; 2]> {
+        let shift = [0, 1].map(|i| [0, 1].map(|k| sums.matrix[SHIFT + i][SHIFT + k]));
+        let (values, axes) = eigen2(shift);
+        let feigned = self.noise_share * sums.light_squared * self.gradient_noise;
+        let doubtful = |i: &usize| values[*i] < DOUBTFUL * feigned;
+        if !(0..2).any(|i| doubtful(&i)) {
+            return Vec::new();
+        }
+        let seen = self.seen_slope(view, state);
+        let confirmed = |i: &usize| values[*i] > 0.0 && quadratic(&seen, &axes[*i]) > CONFIRMED * values[*i];
+        (0..2).filter(|i| doubtful(i) && !confirmed(i)).map(|i| axes[i]).collect()
+    }
+
+    /// Sums of instrument × the frame's own slope.
+    fn seen_slope(&self, view: &View<'_>, state: &Fitted) -> [[f64; 2]; 2] {
+        let (cx, cy) = centre(self.shape);
+        let pieces: Vec<[[f64; 2]; 2]> = self
+            .pixels
+            .par_chunks(PIECE)
+            .map(|pixels| {
+                let mut sums = [[0.0; 2]; 2];
+                for p in pixels.iter().filter(|p| !view.is_metal(p)) {
+                    let (x, y) = state.motion.apply(f64::from(p.x) - cx, f64::from(p.y) - cy);
+                    let at = |dx: f64, dy: f64| view.interpolator.at(view.frame, x + cx + dx, y + cy + dy);
+                    let (Some(e), Some(w), Some(s), Some(n)) = (at(1.0, 0.0), at(-1.0, 0.0), at(0.0, 1.0), at(0.0, -1.0))
+                    else {
+                        continue;
+                    };
+                    let scale = f64::from(p.inverse_sd * p.inverse_sd);
+                    let slope = [e - w, s - n].map(|d| f64::from(d / 2.0) * scale);
+                    for i in 0..2 {
+                        for k in 0..2 {
+                            sums[i][k] += f64::from(p.smooth[i]) * slope[k];
+                        }
+                    }
+                }
+                sums
+            })
+            .collect();
+        [0, 1].map(|i| [0, 1].map(|k| pieces.iter().map(|piece| piece[i][k]).sum()))
     }
 
     /// Converts lengths between px of the full picture and of the level.
@@ -202,12 +270,11 @@ impl Template {
     /// Residual of every pixel over its expected noise (NaN where left out); sets the state's noise and cost.
     fn residuals(&self, view: &View<'_>, state: &mut Fitted) -> Option<Vec<f32>> {
         let (cx, cy) = centre(self.shape);
-        let metal = view.metal.and_then(|m| m.as_slice());
         let residuals: Vec<f32> = self
             .pixels
             .par_iter()
             .map(|p| {
-                if metal.is_some_and(|m| m[p.index as usize]) {
+                if view.is_metal(p) {
                     return f32::NAN;
                 }
                 let (x, y) = state.motion.apply(f64::from(p.x) - cx, f64::from(p.y) - cy);
@@ -274,12 +341,15 @@ impl Template {
     }
 
     /// One Gauss–Newton step.
-    fn solve(&self, sums: &Sums, state: &Fitted, guess: [f64; 2], turn_free: bool) -> Option<Update> {
+    fn solve(
+        &self, sums: &Sums, state: &Fitted, guess: [f64; 2], held: &[[f64; 2]], turn_free: bool,
+    ) -> Option<Update> {
         let nuisance = if turn_free { SHIFT } else { TURN };
         let reduced = eliminate(sums, nuisance)?;
         let noise2 = state.noise * state.noise;
         let (eigenvalues, axes) = eigen2(reduced.shift);
-        let floor = 4.0 * self.noise_share * sums.light_squared * self.gradient_noise / sums.count.max(1.0).sqrt();
+        let feigned = self.noise_share * sums.light_squared * self.gradient_noise;
+        let floor = feigned * (NOISE_DOUBT + NOISE_SCATTER / sums.count.max(1.0).sqrt());
         let unsure = UNSURE_PX / self.bin as f64;
         let mut shift = [0.0; 2];
         let mut u_shift = [f64::INFINITY; 2];
@@ -289,13 +359,13 @@ impl Template {
             let score = along(reduced.score);
             let variance = noise2 * quadratic(&sums.score_variance, axis);
             let mut step = to_guess;
-            if eigenvalues[i] > floor {
+            let is_held = held.iter().any(|h| along(*h).abs() > SAME_DIRECTION);
+            if eigenvalues[i] > floor && !is_held {
                 let newton = score / eigenvalues[i];
                 u_shift[i] = variance.max(0.0).sqrt() / eigenvalues[i];
                 let keep = 1.0 / (1.0 + (u_shift[i] / unsure).powi(4));
-                step = to_guess + keep * (newton - to_guess);
+                step = (to_guess + keep * (newton - to_guess)).clamp(-2.0, 2.0);
             }
-            let step = step.clamp(-2.0, 2.0);
             shift[0] += step * axis[0];
             shift[1] += step * axis[1];
         }
@@ -319,6 +389,14 @@ struct View<'a> {
     interpolator: &'a Interpolator,
     frame: &'a Array2<f32>,
     metal: Option<&'a Array2<bool>>,
+    /// Shift kept in directions the picture does not tell, px of the level.
+    guess: [f64; 2],
+}
+
+impl View<'_> {
+    fn is_metal(&self, pixel: &Pixel) -> bool {
+        self.metal.and_then(|m| m.as_slice()).is_some_and(|m| m[pixel.index as usize])
+    }
 }
 
 /// A Gauss–Newton step.
