@@ -47,8 +47,8 @@ pub(crate) struct Aligned {
 }
 
 impl Aligner {
-    /// `sd`: noise of one frame, grey levels; `frames`: how many were averaged into the reference.
-    pub(crate) fn new(reference: &Array2<f32>, sd: &Array2<f32>, frames: usize) -> Self {
+    /// `sd`: noise of one frame, grey levels; `noise_share`: the reference's own noise variance over one frame's.
+    pub(crate) fn new(reference: &Array2<f32>, sd: &Array2<f32>, noise_share: f64) -> Self {
         let longest = reference.nrows().max(reference.ncols());
         let factor = longest.div_ceil(COARSE_SIDE).next_power_of_two().max(if longest > 200 { 2 } else { 1 });
         let small = bin(reference, factor);
@@ -56,8 +56,8 @@ impl Aligner {
         let detail = detail(&small);
         Self {
             interpolator: Interpolator::new(),
-            coarse: Template::new(&small, factor, &small_sd, frames, COARSE_PIXELS),
-            full: Template::new(reference, 1, sd, frames, FULL_PIXELS),
+            coarse: Template::new(&small, factor, &small_sd, noise_share, COARSE_PIXELS),
+            full: Template::new(reference, 1, sd, noise_share, FULL_PIXELS),
             spectrum: Spectrum::new(&windowed(&detail)),
             detail,
         }

@@ -73,7 +73,10 @@ impl SceneBuilder {
         let model = measured_noise(&interpolator, &reference, &slope, &bare, noise);
         let sd = model.sd(&reference, &slope);
         let likeness = median(&mut bare.iter().map(|b| b.likeness as f32).collect()).unwrap_or(0.0);
-        let mut scene = Scene::assemble(self.settings, Mode::Bare, reference, &sd, bare.len(), f64::from(likeness));
+        let share = noise_share(&interpolator, bare.iter());
+        let mut scene = Scene::assemble(self.settings, Mode::Bare, reference, &sd, share);
+        scene.frames = bare.len();
+        scene.usual_likeness = f64::from(likeness);
         scene.bare = bare.iter().map(|b| (fingerprint(b.frame), b.fitted)).collect();
         Some(scene)
     }
@@ -89,7 +92,7 @@ struct Bare<'a> {
 
 /// Lays every frame on the first. Those that do not show the scene are left out.
 fn on_first<'a>(first: &'a Array2<f32>, frames: &'a [Array2<f32>], sd: &Array2<f32>) -> Vec<Bare<'a>> {
-    let aligner = Aligner::new(first, sd, 1);
+    let aligner = Aligner::new(first, sd, 1.0);
     let mut bare = vec![Bare { frame: first, fitted: Fitted::start([0.0; 2]), likeness: 1.0 }];
     let mut guess = [0.0; 2];
     let mut aligned = Vec::with_capacity(frames.len());
@@ -117,17 +120,18 @@ fn on_each_other<'a>(
     if n < 2 {
         return bare;
     }
-    let share = (n as f64 - 1.0) / n as f64;
+    let step = (n as f64 - 1.0) / n as f64;
     let laid = planes(interpolator, &bare);
     let mut moved: Vec<Bare<'a>> = Vec::with_capacity(n);
     for (k, one) in bare.iter().enumerate() {
         let others: Vec<&Array2<f32>> = laid.iter().enumerate().filter(|&(i, _)| i != k).map(|(_, p)| p).collect();
-        let template = Template::new(&robust_mean(&others, noise), 1, sd, n - 1, FULL_PIXELS);
+        let share = noise_share(interpolator, bare.iter().enumerate().filter(|&(i, _)| i != k).map(|(_, b)| b));
+        let template = Template::new(&robust_mean(&others, noise), 1, sd, share, FULL_PIXELS);
         let before = one.fitted.motion.shift;
         let mut fitted =
             template.fit(interpolator, one.frame, None, one.fitted, before, one.fitted.motion.turns(), FULL_STEPS);
         for axis in 0..2 {
-            fitted.motion.shift[axis] = before[axis] + share * (fitted.motion.shift[axis] - before[axis]);
+            fitted.motion.shift[axis] = before[axis] + step * (fitted.motion.shift[axis] - before[axis]);
         }
         moved.push(Bare { fitted, ..*one });
     }
@@ -138,6 +142,14 @@ fn on_each_other<'a>(
         }
     }
     moved
+}
+
+/// Noise variance of the frames' mean over one frame's: 1/n of it, less what resampling smooths away.
+fn noise_share<'a>(interpolator: &Interpolator, bare: impl Iterator<Item = &'a Bare<'a>>) -> f64 {
+    let (sum, n) = bare.fold((0.0, 0.0), |(sum, n), b| {
+        (sum + f64::from(interpolator.noise_gain(&b.fitted.motion)).powi(2), n + 1.0)
+    });
+    sum / (n * n)
 }
 
 /// The frames in reference coordinates, light removed.

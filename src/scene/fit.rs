@@ -16,6 +16,10 @@ use super::resample::{Interpolator, Motion, centre};
 const LIGHT: usize = 6;
 /// Blurs whose difference to the reference models a change of focus, px.
 pub(crate) const BLURS: [f64; 2] = [0.8, 1.8];
+/// Most of each blur that is taken from or added to the reference.
+const BLUR_MOST: f64 = 1.5;
+/// Weight of "as sharp as the reference" against the fit, as a share of what the reference's noise feigns.
+const BLUR_DOUBT: f64 = 0.1;
 const TURN: usize = LIGHT + BLURS.len();
 const SHIFT: usize = TURN + 1;
 const UNKNOWNS: usize = SHIFT + 2;
@@ -34,8 +38,10 @@ const NOISE_DOUBT: f64 = 0.05;
 const NOISE_SCATTER: f64 = 10.0;
 /// Slope less than this many times what noise feigns must be confirmed by the frame's own slope,
 const DOUBTFUL: f64 = 4.0;
-/// of which at least this share must be found (a blurred frame shows less).
-const CONFIRMED: f64 = 0.4;
+/// of which at least this share must be found (a blurred frame shows less),
+const CONFIRMED: f64 = 0.15;
+/// and this many times its own scatter.
+const CONFIRMED_SIGMA: f64 = 5.0;
 /// Cosine from which two axes are one.
 const SAME_DIRECTION: f64 = 0.8;
 /// Shift below which the fit has settled, px of the level.
@@ -57,7 +63,9 @@ struct Pixel {
     raw: [f32; 2],
     /// Gradient of the smoothed reference.
     smooth: [f32; 2],
+    /// Change of the reference by each blur, and the same smoothed.
     blurs: [f32; 2],
+    smooth_blurs: [f32; 2],
     inverse_sd: f32,
     index: u32,
 }
@@ -68,7 +76,7 @@ pub(crate) struct Template {
     pub(crate) bin: usize,
     shape: (usize, usize),
     pixels: Vec<Pixel>,
-    /// Share of a frame's noise variance that the reference carries itself (1 / frames averaged).
+    /// Noise variance of the reference over that of a frame.
     noise_share: f64,
     /// What unit white noise in the reference adds per pixel to instrument × gradient.
     gradient_noise: f64,
@@ -112,6 +120,19 @@ impl Fitted {
     }
 }
 
+/// What unit white noise adds per pixel to smoothed blur j × blur k, and to smoothed blur j × the noise itself. The
+/// kernels are G_s∗G_j − G_s and G_k − 1; two-dimensional Gaussians are products of two equal ones.
+fn blur_noise(smoothing: &[f32]) -> ([[f64; 2]; 2], [f64; 2]) {
+    let kernels = BLURS.map(gaussian_kernel);
+    let chained = [0, 1].map(|j| kernel_chain(smoothing, &kernels[j]));
+    let dot2 = |a: &[f32], b: &[f32]| kernel_dot(a, b).powi(2);
+    let own = [0, 1].map(|j| dot2(&chained[j], &[1.0]) - dot2(smoothing, &[1.0]));
+    let pairs = [0, 1].map(|j| {
+        [0, 1].map(|k| dot2(&chained[j], &kernels[k]) - dot2(smoothing, &kernels[k]) - own[j])
+    });
+    (pairs, own)
+}
+
 fn light_terms(shape: (usize, usize), x: f64, y: f64) -> [f64; LIGHT] {
     let (cx, cy) = centre(shape);
     let (u, v) = ((x - cx) / cx.max(1.0), (y - cy) / cy.max(1.0));
@@ -124,14 +145,16 @@ fn dot<const N: usize>(a: &[f64; N], b: &[f64; N]) -> f64 {
 
 impl Template {
     /// Prepares a level. `plane`: the reference binned by `bin`; `sd`: noise of one frame at each of its pixels;
-    /// `frames`: how many were averaged into the reference; at most `most` pixels, the steepest of each tile.
-    pub(crate) fn new(plane: &Array2<f32>, bin: usize, sd: &Array2<f32>, frames: usize, most: usize) -> Self {
+    /// `noise_share`: the reference's own noise variance over one frame's; at most `most` pixels, the steepest of
+    /// each tile.
+    pub(crate) fn new(plane: &Array2<f32>, bin: usize, sd: &Array2<f32>, noise_share: f64, most: usize) -> Self {
         let gaussian = gaussian_kernel(INSTRUMENT_SIGMA);
         let smooth_slope = kernel_chain(&gaussian, &DERIVATIVE);
         let slopes = |along: &[f32], other: &[f32]| [separable(plane, along, other), separable(plane, other, along)];
         let raw = slopes(&DERIVATIVE, &[1.0]);
         let smooth = slopes(&smooth_slope, &gaussian);
         let blurs = BLURS.map(|sigma| blur(plane, sigma) - plane);
+        let smooth_blurs = [0, 1].map(|j| blur(&blurs[j], INSTRUMENT_SIGMA));
         let pixels = informative(&smooth, most)
             .into_iter()
             .map(|(y, x)| Pixel {
@@ -141,23 +164,17 @@ impl Template {
                 raw: [raw[0][[y, x]], raw[1][[y, x]]],
                 smooth: [smooth[0][[y, x]], smooth[1][[y, x]]],
                 blurs: [blurs[0][[y, x]], blurs[1][[y, x]]],
+                smooth_blurs: [smooth_blurs[0][[y, x]], smooth_blurs[1][[y, x]]],
                 inverse_sd: 1.0 / sd[[y, x]],
                 index: (y * plane.ncols() + x) as u32,
             })
             .collect();
-        let kernels = BLURS.map(gaussian_kernel);
-        let peak = |k: &[f32]| f64::from(k[k.len() / 2]).powi(2);
-        let blur_self = [peak(&kernels[0]) - 1.0, peak(&kernels[1]) - 1.0];
-        let blur_noise = std::array::from_fn(|j| {
-            std::array::from_fn(|k| {
-                kernel_dot(&kernels[j], &kernels[k]).powi(2) - peak(&kernels[j]) - peak(&kernels[k]) + 1.0
-            })
-        });
+        let (blur_noise, blur_self) = blur_noise(&gaussian);
         Self {
             bin,
             shape: plane.dim(),
             pixels,
-            noise_share: 1.0 / frames as f64,
+            noise_share,
             gradient_noise: kernel_dot(&smooth_slope, &DERIVATIVE) * f64::from(gaussian[gaussian.len() / 2]),
             blur_noise,
             blur_self,
@@ -197,7 +214,7 @@ impl Template {
             let moved = update.shift.map(f64::abs);
             state.motion.shift = [state.motion.shift[0] + update.shift[0], state.motion.shift[1] + update.shift[1]];
             state.light.iter_mut().zip(update.light).for_each(|(l, d)| *l += d);
-            state.blur.iter_mut().zip(update.blur).for_each(|(s, d)| *s = (*s + d).clamp(-3.0, 3.0));
+            state.blur.iter_mut().zip(update.blur).for_each(|(s, d)| *s = (*s + d).clamp(-BLUR_MOST, BLUR_MOST));
             state.motion.turn += if turn_free { update.turn } else { 0.0 };
             state.u_shift = update.u_shift;
             let settled = moved[0].max(moved[1]) < SETTLED_PX && step > 1;
@@ -221,7 +238,12 @@ impl Template {
             return Vec::new();
         }
         let seen = self.seen_slope(view, state);
-        let confirmed = |i: &usize| values[*i] > 0.0 && quadratic(&seen, &axes[*i]) > CONFIRMED * values[*i];
+        let confirmed = |i: &usize| {
+            let found = quadratic(&seen, &axes[*i]);
+            // A central difference of white noise has half its variance.
+            let scatter = state.noise * (0.5 * quadratic(&sums.score_variance, &axes[*i])).sqrt();
+            found > CONFIRMED * values[*i] && found > CONFIRMED_SIGMA * scatter
+        };
         (0..2).filter(|i| doubtful(i) && !confirmed(i)).map(|i| axes[i]).collect()
     }
 
@@ -333,8 +355,8 @@ impl Template {
             }
             let own = self.blur_self[j] + dot(&state.blur, &self.blur_noise[j]);
             sums.right[LIGHT + j] += noise * own;
-            // Holds the focus terms where there is no texture to tell them: standard deviation 1.
-            let doubt = 1.0 + 4.0 * noise * self.blur_noise[j][j] / (sums.count.max(1.0)).sqrt();
+            // Holds the focus terms where there is no texture to tell them.
+            let doubt = 1.0 + BLUR_DOUBT * noise * self.blur_noise[j][j];
             sums.matrix[LIGHT + j][LIGHT + j] += doubt;
             sums.right[LIGHT + j] -= doubt * state.blur[j];
         }
@@ -435,6 +457,8 @@ impl Sums {
         model[LIGHT] = light * f64::from(p.blurs[0]);
         model[LIGHT + 1] = light * f64::from(p.blurs[1]);
         let mut instrument = model;
+        instrument[LIGHT] = light * f64::from(p.smooth_blurs[0]);
+        instrument[LIGHT + 1] = light * f64::from(p.smooth_blurs[1]);
         for (row, gradient) in [(&mut model, p.raw), (&mut instrument, p.smooth)] {
             let (gx, gy) = (f64::from(gradient[0]), f64::from(gradient[1]));
             row[TURN] = -light * (gx * (y - cy) - gy * (x - cx));

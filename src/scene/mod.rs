@@ -98,17 +98,17 @@ impl Scene {
     pub fn without_bare(first: &Array2<f32>, settings: SceneSettings) -> Self {
         let first = first.as_standard_layout().to_owned();
         let sd = Array2::from_elem(first.dim(), own_noise(&first).max(0.29));
-        let mut scene = Self::assemble(settings, Mode::OwnBackground, first.clone(), &sd, 1, 1.0);
+        let mut scene = Self::assemble(settings, Mode::OwnBackground, first.clone(), &sd, 1.0);
         let (_, residual) = own_residual(&first, None, settings.darker, scene.floor);
         scene.noise = local_spread(&residual);
         scene.bare.push((build::fingerprint(&first), Fitted::start([0.0; 2])));
         scene
     }
 
-    /// Puts a scene together. `sd`: noise of a new frame's residual, grey levels.
+    /// Puts a scene together. `sd`: noise of a new frame's residual, grey levels; `noise_share`: noise variance of
+    /// the reference over one frame's.
     pub(crate) fn assemble(
-        settings: SceneSettings, mode: Mode, reference: Array2<f32>, sd: &Array2<f32>, frames: usize,
-        usual_likeness: f64,
+        settings: SceneSettings, mode: Mode, reference: Array2<f32>, sd: &Array2<f32>, noise_share: f64,
     ) -> Self {
         let middle = quantile(&mut sample(&reference, LOOKED_AT), 0.5).unwrap_or(1.0);
         let floor = (DARK_SHARE * middle).max(DARK_LEVEL);
@@ -117,10 +117,10 @@ impl Scene {
             mode,
             blurred: BLURS.map(|sigma| blur(&reference, sigma) - &reference),
             noise: combine(sd, &reference, |sd, r| sd / r.max(floor)),
-            aligner: Aligner::new(&reference, sd, frames),
+            aligner: Aligner::new(&reference, sd, noise_share),
             floor,
-            usual_likeness,
-            frames,
+            usual_likeness: 1.0,
+            frames: 1,
             bare: Vec::new(),
             reference,
         }
