@@ -13,10 +13,10 @@ use rayon::prelude::*;
 const COARSE_SIDE: usize = 640;
 /// Most pixels the fit looks at on the coarse and the full level.
 const COARSE_PIXELS: usize = 40_000;
-const FULL_PIXELS: usize = 200_000;
+pub(crate) const FULL_PIXELS: usize = 200_000;
 /// Most Gauss–Newton steps on the coarse and the full level.
 const COARSE_STEPS: usize = 15;
-const FULL_STEPS: usize = 12;
+pub(crate) const FULL_STEPS: usize = 12;
 /// Scale above which brightness counts as light, not as detail, px of the coarse level.
 const DETAIL_SIGMA: f64 = 6.0;
 /// Detail is clipped at this many robust standard deviations: dust and metal weigh no more than texture.
@@ -47,8 +47,8 @@ pub(crate) struct Aligned {
 }
 
 impl Aligner {
-    /// `sd`: noise of one frame, grey levels; `frames`: how many were averaged into the reference.
-    pub(crate) fn new(reference: &Array2<f32>, sd: &Array2<f32>, frames: usize) -> Self {
+    /// `sd`: noise of one frame, grey levels; `noise_share`: the reference's own noise variance over one frame's.
+    pub(crate) fn new(reference: &Array2<f32>, sd: &Array2<f32>, noise_share: f64) -> Self {
         let longest = reference.nrows().max(reference.ncols());
         let factor = longest
             .div_ceil(COARSE_SIDE)
@@ -59,8 +59,8 @@ impl Aligner {
         let detail = detail(&small);
         Self {
             interpolator: Interpolator::new(),
-            coarse: Template::new(&small, factor, &small_sd, frames, COARSE_PIXELS),
-            full: Template::new(reference, 1, sd, frames, FULL_PIXELS),
+            coarse: Template::new(&small, factor, &small_sd, noise_share, COARSE_PIXELS),
+            full: Template::new(reference, 1, sd, noise_share, FULL_PIXELS),
             spectrum: Spectrum::new(&windowed(&detail)),
             detail,
         }

@@ -13,6 +13,8 @@ pub(crate) mod noise;
 pub(crate) mod plane;
 pub(crate) mod quality;
 pub(crate) mod resample;
+#[cfg(test)]
+mod trials;
 
 use ndarray::Array2;
 use rayon::prelude::*;
@@ -62,6 +64,9 @@ pub struct Scene {
     floor: f32,
     usual_likeness: f64,
     frames: usize,
+    /// Fingerprints of the bare frames and how they were found to lie against the mean of the others: laid on the
+    /// whole mean they would be held by their own noise.
+    bare: Vec<(u64, Fitted)>,
 }
 
 /// A frame laid on the reference.
@@ -93,20 +98,17 @@ impl Scene {
     pub fn without_bare(first: &Array2<f32>, settings: SceneSettings) -> Self {
         let first = first.as_standard_layout().to_owned();
         let sd = Array2::from_elem(first.dim(), own_noise(&first).max(0.29));
-        let mut scene = Self::assemble(settings, Mode::OwnBackground, first.clone(), &sd, 1, 1.0);
+        let mut scene = Self::assemble(settings, Mode::OwnBackground, first.clone(), &sd, 1.0);
         let (_, residual) = own_residual(&first, None, settings.darker, scene.floor);
         scene.noise = local_spread(&residual);
+        scene.bare.push((build::fingerprint(&first), Fitted::start([0.0; 2])));
         scene
     }
 
-    /// Puts a scene together. `sd`: noise of a new frame's residual, grey levels.
+    /// Puts a scene together. `sd`: noise of a new frame's residual, grey levels; `noise_share`: noise variance of
+    /// the reference over one frame's.
     pub(crate) fn assemble(
-        settings: SceneSettings,
-        mode: Mode,
-        reference: Array2<f32>,
-        sd: &Array2<f32>,
-        frames: usize,
-        usual_likeness: f64,
+        settings: SceneSettings, mode: Mode, reference: Array2<f32>, sd: &Array2<f32>, noise_share: f64,
     ) -> Self {
         let middle = quantile(&mut sample(&reference, LOOKED_AT), 0.5).unwrap_or(1.0);
         let floor = (DARK_SHARE * middle).max(DARK_LEVEL);
@@ -115,10 +117,11 @@ impl Scene {
             mode,
             blurred: BLURS.map(|sigma| blur(&reference, sigma) - &reference),
             noise: combine(sd, &reference, |sd, r| sd / r.max(floor)),
-            aligner: Aligner::new(&reference, sd, frames),
+            aligner: Aligner::new(&reference, sd, noise_share),
             floor,
-            usual_likeness,
-            frames,
+            usual_likeness: 1.0,
+            frames: 1,
+            bare: Vec::new(),
             reference,
         }
     }
@@ -145,26 +148,19 @@ impl Scene {
 
     /// Lays a frame (grey levels, same shape) on the reference. `metal`: true where filament is known, in reference
     /// coordinates, left out of every fit; `guess`: shift of the previous usable frame, px.
-    pub fn correct(
-        &self,
-        frame: &Array2<f32>,
-        metal: Option<&Array2<bool>>,
-        guess: [f64; 2],
-    ) -> Corrected {
+    pub fn correct(&self, frame: &Array2<f32>, metal: Option<&Array2<bool>>, guess: [f64; 2]) -> Corrected {
         if let Some(reason) = self.unusable(frame) {
             return self.set_aside(guess, reason);
         }
         let frame = frame.as_standard_layout().to_owned();
-        let aligned = self.aligner.align(&frame, metal, guess);
-        let fitted = aligned.fitted;
+        let (fitted, unlike) = self.lay(&frame, metal, guess);
         let laid = self.aligner.interpolator().resample(&frame, &fitted.motion);
         let residual = match self.mode {
             Mode::Bare => self.bare_residual(laid, metal, &fitted),
             Mode::OwnBackground => own_residual(&laid, metal, self.settings.darker, self.floor).1,
         };
         let noise_factor = self.noise_factor(&residual, metal, &fitted);
-        let verdict = quality::unlike(aligned.likeness, self.usual_likeness, aligned.pixels)
-            .or_else(|| quality::hopeless(noise_factor));
+        let verdict = unlike.or_else(|| quality::hopeless(noise_factor));
         Corrected {
             residual,
             drift_px: fitted.motion.shift,
@@ -177,12 +173,20 @@ impl Scene {
         }
     }
 
+    /// How a frame lies, and whether it shows something else.
+    fn lay(&self, frame: &Array2<f32>, metal: Option<&Array2<bool>>, guess: [f64; 2]) -> (Fitted, Option<String>) {
+        let print = build::fingerprint(frame);
+        if let Some((_, known)) = self.bare.iter().find(|(bare, _)| *bare == print) {
+            return (*known, None);
+        }
+        let aligned = self.aligner.align(frame, metal, guess);
+        (aligned.fitted, quality::unlike(aligned.likeness, self.usual_likeness, aligned.pixels))
+    }
+
     fn unusable(&self, frame: &Array2<f32>) -> Option<String> {
         if frame.dim() != self.reference.dim() {
             let ((h, w), (rh, rw)) = (frame.dim(), self.reference.dim());
-            return Some(format!(
-                "is {w} × {h} px, the first usable frame {rw} × {rh}"
-            ));
+            return Some(format!("is {w} × {h} px, the first usable frame {rw} × {rh}"));
         }
         quality::unreadable(frame)
     }
@@ -201,12 +205,7 @@ impl Scene {
     }
 
     /// Residual against the bare mean under the frame's light and focus, what slow light is left taken off.
-    fn bare_residual(
-        &self,
-        mut laid: Array2<f32>,
-        metal: Option<&Array2<bool>>,
-        fitted: &Fitted,
-    ) -> Array2<f32> {
+    fn bare_residual(&self, mut laid: Array2<f32>, metal: Option<&Array2<bool>>, fitted: &Fitted) -> Array2<f32> {
         let sign = if self.settings.darker { 1.0 } else { -1.0 };
         let [soft, softer] = fitted.blur.map(|s| s as f32);
         let shape = laid.dim();
@@ -214,8 +213,7 @@ impl Scene {
             for (x, value) in row.iter_mut().enumerate() {
                 let reference = self.reference[[y, x]];
                 let light = fitted.light_at(shape, x as f64, y as f64).max(0.05) as f32;
-                let model =
-                    reference + soft * self.blurred[0][[y, x]] + softer * self.blurred[1][[y, x]];
+                let model = reference + soft * self.blurred[0][[y, x]] + softer * self.blurred[1][[y, x]];
                 *value = sign * (model - *value / light) / reference.max(self.floor);
             }
         });
@@ -225,18 +223,12 @@ impl Scene {
     }
 
     /// Robust spread of the residual over the noise expected, resampling allowed for.
-    fn noise_factor(
-        &self,
-        residual: &Array2<f32>,
-        metal: Option<&Array2<bool>>,
-        fitted: &Fitted,
-    ) -> f32 {
+    fn noise_factor(&self, residual: &Array2<f32>, metal: Option<&Array2<bool>>, fitted: &Fitted) -> f32 {
         let mut scaled = combine(residual, &self.noise, |r, n| r / n);
         if let Some(metal) = metal {
             scaled.zip_mut_with(metal, |v, &m| *v = if m { f32::NAN } else { *v });
         }
-        let spread =
-            robust_spread(&mut sample(&scaled, LOOKED_AT)).map_or(f32::INFINITY, |(_, sd)| sd);
+        let spread = robust_spread(&mut sample(&scaled, LOOKED_AT)).map_or(f32::INFINITY, |(_, sd)| sd);
         match self.mode {
             Mode::Bare => {
                 // Only the frame's share of the variance goes through the resampling.
@@ -251,14 +243,10 @@ impl Scene {
 
 /// Background of a frame and its residual against it. A second pass leaves out what the first showed to be filament.
 fn own_residual(
-    plane: &Array2<f32>,
-    metal: Option<&Array2<bool>>,
-    darker: bool,
-    floor: f32,
+    plane: &Array2<f32>, metal: Option<&Array2<bool>>, darker: bool, floor: f32,
 ) -> (Array2<f32>, Array2<f32>) {
     let sign = if darker { 1.0 } else { -1.0 };
-    let relative =
-        |ground: &Array2<f32>| combine(plane, ground, |p, g| sign * (g - p) / g.max(floor));
+    let relative = |ground: &Array2<f32>| combine(plane, ground, |p, g| sign * (g - p) / g.max(floor));
     let first = relative(&background(plane, metal, OWN_BACKGROUND));
     let spread = robust_spread(&mut sample(&first, LOOKED_AT)).map_or(0.0, |(_, sd)| sd);
     let mut excluded = first.mapv(|r| r > 2.5 * spread);

@@ -220,7 +220,7 @@ mod tests {
         let truth = waves(60, 80, 0.0, 0.0);
         for y in 6..54 {
             for x in 6..70 {
-                assert!((restored[[y, x]] - truth[[y, x]]).abs() < 0.25, "{y} {x}");
+                assert!((restored[[y, x]] - truth[[y, x]]).abs() < 0.5, "{y} {x}");
             }
         }
         assert!(restored[[0, 10]].is_nan() && restored[[10, 79]].is_nan());
