@@ -47,7 +47,9 @@ impl NoiseModel {
     /// Measures the model from looks at bare frames.
     pub(crate) fn measure(looks: &mut [Look]) -> Self {
         let mut slopes: Vec<f32> = looks.iter().map(|l| l.slope).collect();
-        let Some(steep) = quantile(&mut slopes, 0.5) else { return Self::even(1.0) };
+        let Some(steep) = quantile(&mut slopes, 0.5) else {
+            return Self::even(1.0);
+        };
         looks.sort_unstable_by(|a, b| a.grey.total_cmp(&b.grey));
         let flat: Vec<Look> = looks.iter().filter(|l| l.slope <= steep).copied().collect();
         let by_grey = flat.chunks(flat.len().div_ceil(CLASSES).max(1)).filter_map(class).collect();
@@ -66,7 +68,9 @@ impl NoiseModel {
             let mut excess: Vec<f32> = looks.iter().map(|l| l.square / self.flat_variance(l.grey)).collect();
             let base: f32 = looks.iter().map(|l| self.flat_variance(l.grey)).sum::<f32>() / looks.len() as f32;
             let square = looks.iter().map(|l| l.slope * l.slope).sum::<f32>() / looks.len() as f32;
-            let Some(middle) = quantile(&mut excess, 0.5) else { continue };
+            let Some(middle) = quantile(&mut excess, 0.5) else {
+                continue;
+            };
             top += square * base * (middle / MEDIAN_SQUARE - 1.0);
             bottom += square * square;
         }
@@ -97,7 +101,10 @@ fn class(looks: &[Look]) -> Option<(f32, f32)> {
 
 /// Looks at one bare frame: `residual` in grey levels (NaN where not covered), scaled by `to_new_frame`.
 pub(crate) fn looks(
-    reference: &Array2<f32>, slope: &Array2<f32>, residual: &Array2<f32>, to_new_frame: f32,
+    reference: &Array2<f32>,
+    slope: &Array2<f32>,
+    residual: &Array2<f32>,
+    to_new_frame: f32,
 ) -> Vec<Look> {
     let columns = [reference, slope, residual].map(|plane| sample(plane, LOOKED_AT));
     (0..columns[2].len())

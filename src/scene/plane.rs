@@ -15,8 +15,7 @@ const GAUSSIAN_REACH: f64 = 3.5;
 /// Normalised samples of a Gaussian, `2·half + 1` of them.
 pub(crate) fn gaussian_kernel(sigma: f64) -> Vec<f32> {
     let half = (GAUSSIAN_REACH * sigma).ceil().max(1.0) as i32;
-    let weights: Vec<f64> =
-        (-half..=half).map(|k| libm::exp(-0.5 * f64::from(k * k) / (sigma * sigma))).collect();
+    let weights: Vec<f64> = (-half..=half).map(|k| libm::exp(-0.5 * f64::from(k * k) / (sigma * sigma))).collect();
     let total: f64 = weights.iter().sum();
     weights.iter().map(|w| (w / total) as f32).collect()
 }

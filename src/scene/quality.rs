@@ -32,9 +32,8 @@ pub(crate) fn unreadable(frame: &Array2<f32>) -> Option<String> {
     }
     let (darkest, brightest) =
         values.iter().fold((f32::INFINITY, f32::NEG_INFINITY), |(a, b), &v| (a.min(v), b.max(v)));
-    let share = |level: f32| {
-        values.iter().filter(|&&v| (v - level).abs() < f32::EPSILON).count() as f64 / values.len() as f64
-    };
+    let share =
+        |level: f32| values.iter().filter(|&&v| (v - level).abs() < f32::EPSILON).count() as f64 / values.len() as f64;
     for (level, name) in [(brightest, "saturated"), (darkest, "black")] {
         if share(level) > CLIPPED_SHARE {
             return Some(format!("{name}: {:.0} % of its pixels are at grey level {level}", 100.0 * share(level)));

@@ -109,7 +109,9 @@ impl Interpolator {
     /// One row of a purely shifted frame: down the columns first, then along the row.
     fn shifted_row(&self, frame: &Array2<f32>, y: f64, shift_x: f64, buffer: &mut Vec<f32>, out: &mut [f32]) {
         let (height, width) = frame.dim();
-        let Some((y0, down)) = self.locate(y, height) else { return };
+        let Some((y0, down)) = self.locate(y, height) else {
+            return;
+        };
         buffer.clear();
         buffer.resize(width, 0.0);
         for (k, &weight) in down.iter().enumerate() {
