@@ -159,9 +159,7 @@ fn detail(plane: &Array2<f32>) -> Array2<f32> {
 
 /// Fades a picture out towards its border (Hann), so that what enters and leaves the view does not count.
 fn windowed(plane: &Array2<f32>) -> Array2<f32> {
-    let hann = |i: usize, n: usize| {
-        (0.5 - 0.5 * libm::cos(std::f64::consts::TAU * (i as f64 + 0.5) / n as f64)) as f32
-    };
+    let hann = |i: usize, n: usize| (0.5 - 0.5 * libm::cos(std::f64::consts::TAU * (i as f64 + 0.5) / n as f64)) as f32;
     let (height, width) = plane.dim();
     let across: Vec<f32> = (0..width).map(|x| hann(x, width)).collect();
     let down: Vec<f32> = (0..height).map(|y| hann(y, height)).collect();

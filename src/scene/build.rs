@@ -113,9 +113,7 @@ fn on_first<'a>(first: &'a Array2<f32>, frames: &'a [Array2<f32>], sd: &Array2<f
 /// Lays every frame on the mean of the others, then moves all so that the first is at the origin.
 /// With e_k the place found for frame k against the mean of the others, moving it by (n − 1)/n · e_k brings all to
 /// one common mean.
-fn on_each_other<'a>(
-    interpolator: &Interpolator, bare: Vec<Bare<'a>>, sd: &Array2<f32>, noise: f32,
-) -> Vec<Bare<'a>> {
+fn on_each_other<'a>(interpolator: &Interpolator, bare: Vec<Bare<'a>>, sd: &Array2<f32>, noise: f32) -> Vec<Bare<'a>> {
     let n = bare.len();
     if n < 2 {
         return bare;
@@ -146,9 +144,8 @@ fn on_each_other<'a>(
 
 /// Noise variance of the frames' mean over one frame's: 1/n of it, less what resampling smooths away.
 fn noise_share<'a>(interpolator: &Interpolator, bare: impl Iterator<Item = &'a Bare<'a>>) -> f64 {
-    let (sum, n) = bare.fold((0.0, 0.0), |(sum, n), b| {
-        (sum + f64::from(interpolator.noise_gain(&b.fitted.motion)).powi(2), n + 1.0)
-    });
+    let (sum, n) = bare
+        .fold((0.0, 0.0), |(sum, n), b| (sum + f64::from(interpolator.noise_gain(&b.fitted.motion)).powi(2), n + 1.0));
     sum / (n * n)
 }
 
@@ -190,7 +187,9 @@ fn robust_mean<P: Borrow<Array2<f32>> + Sync>(laid: &[P], noise: f32) -> Array2<
 fn fill_uncovered(plane: &mut Array2<f32>) {
     for axis in [1, 0] {
         for mut lane in plane.lanes_mut(ndarray::Axis(axis)) {
-            let Some(first) = lane.iter().position(|v| v.is_finite()) else { continue };
+            let Some(first) = lane.iter().position(|v| v.is_finite()) else {
+                continue;
+            };
             let mut last = lane[first];
             for value in lane.iter_mut() {
                 if value.is_finite() {
@@ -222,7 +221,11 @@ pub(crate) fn gradient_magnitude(plane: &Array2<f32>) -> Array2<f32> {
 /// Noise model from the bare frames' own scatter about their mean. A frame's residual against a mean that holds it has
 /// (1 − 1/n) of its variance, a later frame's (1 + 1/n).
 fn measured_noise(
-    interpolator: &Interpolator, reference: &Array2<f32>, slope: &Array2<f32>, bare: &[Bare<'_>], fallback: f32,
+    interpolator: &Interpolator,
+    reference: &Array2<f32>,
+    slope: &Array2<f32>,
+    bare: &[Bare<'_>],
+    fallback: f32,
 ) -> NoiseModel {
     let n = bare.len() as f32;
     if bare.len() < 2 {
@@ -240,7 +243,8 @@ fn measured_noise(
 /// Tells a recorded frame from all others: the bits of its pixels, FNV-1a (Fowler, Noll & Vo).
 pub(crate) fn fingerprint(frame: &Array2<f32>) -> u64 {
     let step = (frame.len() / FINGERPRINT_PIXELS).max(1) | 1;
-    frame.iter().step_by(step).fold(0xcbf2_9ce4_8422_2325, |hash, value| {
-        (hash ^ u64::from(value.to_bits())).wrapping_mul(0x0100_0000_01b3)
-    })
+    frame
+        .iter()
+        .step_by(step)
+        .fold(0xcbf2_9ce4_8422_2325, |hash, value| (hash ^ u64::from(value.to_bits())).wrapping_mul(0x0100_0000_01b3))
 }

@@ -127,9 +127,7 @@ fn blur_noise(smoothing: &[f32]) -> ([[f64; 2]; 2], [f64; 2]) {
     let chained = [0, 1].map(|j| kernel_chain(smoothing, &kernels[j]));
     let dot2 = |a: &[f32], b: &[f32]| kernel_dot(a, b).powi(2);
     let own = [0, 1].map(|j| dot2(&chained[j], &[1.0]) - dot2(smoothing, &[1.0]));
-    let pairs = [0, 1].map(|j| {
-        [0, 1].map(|k| dot2(&chained[j], &kernels[k]) - dot2(smoothing, &kernels[k]) - own[j])
-    });
+    let pairs = [0, 1].map(|j| [0, 1].map(|k| dot2(&chained[j], &kernels[k]) - dot2(smoothing, &kernels[k]) - own[j]));
     (pairs, own)
 }
 
@@ -185,8 +183,14 @@ impl Template {
     /// kept in directions the picture does not tell (px of the full picture); `turning`: whether a turn may be
     /// looked for.
     pub(crate) fn fit(
-        &self, interpolator: &Interpolator, frame: &Array2<f32>, metal: Option<&Array2<bool>>, start: Fitted,
-        guess: [f64; 2], turning: bool, steps: usize,
+        &self,
+        interpolator: &Interpolator,
+        frame: &Array2<f32>,
+        metal: Option<&Array2<bool>>,
+        start: Fitted,
+        guess: [f64; 2],
+        turning: bool,
+        steps: usize,
     ) -> Fitted {
         let mut state = self.scaled(start, 1.0 / self.bin as f64);
         let guess = guess.map(|g| g / self.bin as f64);
@@ -202,7 +206,12 @@ impl Template {
 
     /// Gauss–Newton steps until the shift stays; `held`: directions that keep their guess. Returns the last sums.
     fn settle(
-        &self, view: &View<'_>, state: &mut Fitted, turning: bool, held: &[[f64; 2]], steps: usize,
+        &self,
+        view: &View<'_>,
+        state: &mut Fitted,
+        turning: bool,
+        held: &[[f64; 2]],
+        steps: usize,
     ) -> Option<Sums> {
         let mut turn_free = state.motion.turns();
         let mut last = None;
@@ -258,7 +267,8 @@ impl Template {
                 for p in pixels.iter().filter(|p| !view.is_metal(p)) {
                     let (x, y) = state.motion.apply(f64::from(p.x) - cx, f64::from(p.y) - cy);
                     let at = |dx: f64, dy: f64| view.interpolator.at(view.frame, x + cx + dx, y + cy + dy);
-                    let (Some(e), Some(w), Some(s), Some(n)) = (at(1.0, 0.0), at(-1.0, 0.0), at(0.0, 1.0), at(0.0, -1.0))
+                    let (Some(e), Some(w), Some(s), Some(n)) =
+                        (at(1.0, 0.0), at(-1.0, 0.0), at(0.0, 1.0), at(0.0, -1.0))
                     else {
                         continue;
                     };
@@ -300,7 +310,9 @@ impl Template {
                     return f32::NAN;
                 }
                 let (x, y) = state.motion.apply(f64::from(p.x) - cx, f64::from(p.y) - cy);
-                let Some(value) = view.interpolator.at(view.frame, x + cx, y + cy) else { return f32::NAN };
+                let Some(value) = view.interpolator.at(view.frame, x + cx, y + cy) else {
+                    return f32::NAN;
+                };
                 let light = state.light_at(self.shape, f64::from(p.x), f64::from(p.y)) as f32;
                 let model = p.value + state.blur[0] as f32 * p.blurs[0] + state.blur[1] as f32 * p.blurs[1];
                 (value - light * model) * p.inverse_sd
@@ -364,7 +376,12 @@ impl Template {
 
     /// One Gauss–Newton step.
     fn solve(
-        &self, sums: &Sums, state: &Fitted, guess: [f64; 2], held: &[[f64; 2]], turn_free: bool,
+        &self,
+        sums: &Sums,
+        state: &Fitted,
+        guess: [f64; 2],
+        held: &[[f64; 2]],
+        turn_free: bool,
     ) -> Option<Update> {
         let nuisance = if turn_free { SHIFT } else { TURN };
         let reduced = eliminate(sums, nuisance)?;

@@ -34,6 +34,8 @@ const DARK_LEVEL: f32 = 3.0;
 const SHARPNESS_WAVELENGTH: f64 = 8.0;
 /// Pixels from which a frame's noise is taken.
 const LOOKED_AT: usize = 100_000;
+/// Shift error that interpolation leaves on noiseless trial films, px (measured; see `trials`).
+const INTERPOLATION_PX: f64 = 0.01;
 /// Mean absolute deviation of a normal variable to its standard deviation: √(π/2).
 const MEAN_ABS_TO_SD: f32 = 1.253_314_1;
 
@@ -108,7 +110,11 @@ impl Scene {
     /// Puts a scene together. `sd`: noise of a new frame's residual, grey levels; `noise_share`: noise variance of
     /// the reference over one frame's.
     pub(crate) fn assemble(
-        settings: SceneSettings, mode: Mode, reference: Array2<f32>, sd: &Array2<f32>, noise_share: f64,
+        settings: SceneSettings,
+        mode: Mode,
+        reference: Array2<f32>,
+        sd: &Array2<f32>,
+        noise_share: f64,
     ) -> Self {
         let middle = quantile(&mut sample(&reference, LOOKED_AT), 0.5).unwrap_or(1.0);
         let floor = (DARK_SHARE * middle).max(DARK_LEVEL);
@@ -164,7 +170,7 @@ impl Scene {
         Corrected {
             residual,
             drift_px: fitted.motion.shift,
-            u_drift_px: fitted.u_shift,
+            u_drift_px: fitted.u_shift.map(with_origin),
             rotation_deg: fitted.motion.turn.to_degrees(),
             exposure: fitted.light[0],
             sharpness: fitted.transfer(SHARPNESS_WAVELENGTH).max(0.0),
@@ -241,9 +247,18 @@ impl Scene {
     }
 }
 
+/// Adds to the uncertainty of a fitted shift that of the origin (the first frame's own place, found as well) and of
+/// interpolation.
+fn with_origin(fitted_px: f64) -> f64 {
+    (2.0 * fitted_px * fitted_px + INTERPOLATION_PX * INTERPOLATION_PX).sqrt()
+}
+
 /// Background of a frame and its residual against it. A second pass leaves out what the first showed to be filament.
 fn own_residual(
-    plane: &Array2<f32>, metal: Option<&Array2<bool>>, darker: bool, floor: f32,
+    plane: &Array2<f32>,
+    metal: Option<&Array2<bool>>,
+    darker: bool,
+    floor: f32,
 ) -> (Array2<f32>, Array2<f32>) {
     let sign = if darker { 1.0 } else { -1.0 };
     let relative = |ground: &Array2<f32>| combine(plane, ground, |p, g| sign * (g - p) / g.max(floor));

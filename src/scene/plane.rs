@@ -15,23 +15,15 @@ const GAUSSIAN_REACH: f64 = 3.5;
 /// Normalised samples of a Gaussian, `2·half + 1` of them.
 pub(crate) fn gaussian_kernel(sigma: f64) -> Vec<f32> {
     let half = (GAUSSIAN_REACH * sigma).ceil().max(1.0) as i32;
-    let weights: Vec<f64> = (-half..=half)
-        .map(|k| libm::exp(-0.5 * f64::from(k * k) / (sigma * sigma)))
-        .collect();
+    let weights: Vec<f64> = (-half..=half).map(|k| libm::exp(-0.5 * f64::from(k * k) / (sigma * sigma))).collect();
     let total: f64 = weights.iter().sum();
     weights.iter().map(|w| (w / total) as f32).collect()
 }
 
 /// The rows of a freshly made plane (standard layout), with their numbers, in parallel.
-pub(crate) fn rows_mut<T: Send>(
-    plane: &mut Array2<T>,
-) -> impl IndexedParallelIterator<Item = (usize, &mut [T])> {
+pub(crate) fn rows_mut<T: Send>(plane: &mut Array2<T>) -> impl IndexedParallelIterator<Item = (usize, &mut [T])> {
     let width = plane.ncols().max(1);
-    plane
-        .as_slice_mut()
-        .unwrap_or_default()
-        .par_chunks_mut(width)
-        .enumerate()
+    plane.as_slice_mut().unwrap_or_default().par_chunks_mut(width).enumerate()
 }
 
 /// Correlates a plane with `down` along columns and `across` along rows (odd lengths); the border pixel is
@@ -56,11 +48,7 @@ pub(crate) fn separable(plane: &Array2<f32>, across: &[f32], down: &[f32]) -> Ar
             padded[..half_across].fill(first);
             padded[half_across + width..].fill(last);
             for (x, value) in row.iter_mut().enumerate() {
-                *value = across
-                    .iter()
-                    .zip(&padded[x..])
-                    .map(|(weight, v)| weight * v)
-                    .sum();
+                *value = across.iter().zip(&padded[x..]).map(|(weight, v)| weight * v).sum();
             }
         },
     );
@@ -88,9 +76,7 @@ pub(crate) fn bin(plane: &Array2<f32>, factor: usize) -> Array2<f32> {
         for source in y * factor..(y + 1) * factor {
             let values = plane.row(source);
             for (x, sum) in row.iter_mut().enumerate() {
-                *sum += (x * factor..(x + 1) * factor)
-                    .map(|i| values[i])
-                    .sum::<f32>();
+                *sum += (x * factor..(x + 1) * factor).map(|i| values[i]).sum::<f32>();
             }
         }
         row.iter_mut().for_each(|sum| *sum *= scale);
@@ -99,17 +85,10 @@ pub(crate) fn bin(plane: &Array2<f32>, factor: usize) -> Array2<f32> {
 }
 
 /// Applies `f` to every pair of pixels of two planes of one shape.
-pub(crate) fn combine(
-    a: &Array2<f32>,
-    b: &Array2<f32>,
-    f: impl Fn(f32, f32) -> f32 + Sync,
-) -> Array2<f32> {
+pub(crate) fn combine(a: &Array2<f32>, b: &Array2<f32>, f: impl Fn(f32, f32) -> f32 + Sync) -> Array2<f32> {
     let mut out = a.as_standard_layout().to_owned();
-    rows_mut(&mut out).for_each(|(y, row)| {
-        row.iter_mut()
-            .zip(b.row(y))
-            .for_each(|(value, &other)| *value = f(*value, other))
-    });
+    rows_mut(&mut out)
+        .for_each(|(y, row)| row.iter_mut().zip(b.row(y)).for_each(|(value, &other)| *value = f(*value, other)));
     out
 }
 
@@ -159,11 +138,7 @@ pub(crate) fn own_noise(plane: &Array2<f32>) -> f32 {
 pub(crate) fn kernel_dot(a: &[f32], b: &[f32]) -> f64 {
     let (long, short) = if a.len() >= b.len() { (a, b) } else { (b, a) };
     let offset = (long.len() - short.len()) / 2;
-    short
-        .iter()
-        .zip(&long[offset..])
-        .map(|(x, y)| f64::from(*x) * f64::from(*y))
-        .sum()
+    short.iter().zip(&long[offset..]).map(|(x, y)| f64::from(*x) * f64::from(*y)).sum()
 }
 
 /// Correlation of two kernels (odd lengths): what applying both in turn amounts to.

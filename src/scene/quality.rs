@@ -28,29 +28,15 @@ pub(crate) fn unreadable(frame: &Array2<f32>) -> Option<String> {
     let low = quantile(&mut values.clone(), 0.01)?;
     let high = quantile(&mut values.clone(), 0.99)?;
     if high - low < BLANK_SPREAD {
-        return Some(format!(
-            "blank: 98 % of its pixels lie within {:.1} grey levels",
-            high - low
-        ));
+        return Some(format!("blank: 98 % of its pixels lie within {:.1} grey levels", high - low));
     }
-    let (darkest, brightest) = values
-        .iter()
-        .fold((f32::INFINITY, f32::NEG_INFINITY), |(a, b), &v| {
-            (a.min(v), b.max(v))
-        });
-    let share = |level: f32| {
-        values
-            .iter()
-            .filter(|&&v| (v - level).abs() < f32::EPSILON)
-            .count() as f64
-            / values.len() as f64
-    };
+    let (darkest, brightest) =
+        values.iter().fold((f32::INFINITY, f32::NEG_INFINITY), |(a, b), &v| (a.min(v), b.max(v)));
+    let share =
+        |level: f32| values.iter().filter(|&&v| (v - level).abs() < f32::EPSILON).count() as f64 / values.len() as f64;
     for (level, name) in [(brightest, "saturated"), (darkest, "black")] {
         if share(level) > CLIPPED_SHARE {
-            return Some(format!(
-                "{name}: {:.0} % of its pixels are at grey level {level}",
-                100.0 * share(level)
-            ));
+            return Some(format!("{name}: {:.0} % of its pixels are at grey level {level}", 100.0 * share(level)));
         }
     }
     None
@@ -67,9 +53,8 @@ pub(crate) fn unlike(likeness: f64, usual: f64, pixels: usize) -> Option<String>
 
 /// Reason to set a frame aside by the noise left after the fit.
 pub(crate) fn hopeless(noise_factor: f32) -> Option<String> {
-    (noise_factor > HOPELESS_NOISE).then(|| {
-        format!("unreadable: its noise is {noise_factor:.0} times that of the bare frames")
-    })
+    (noise_factor > HOPELESS_NOISE)
+        .then(|| format!("unreadable: its noise is {noise_factor:.0} times that of the bare frames"))
 }
 
 #[cfg(test)]
@@ -80,14 +65,9 @@ mod tests {
     fn a_blank_and_a_saturated_frame_are_told() {
         let blank = Array2::from_elem((50, 60), 12.0);
         assert!(unreadable(&blank).is_some_and(|r| r.starts_with("blank")));
-        let clipped =
-            Array2::from_shape_fn(
-                (50, 60),
-                |(y, x)| if x < 40 { 255.0 } else { (y * x % 97) as f32 },
-            );
+        let clipped = Array2::from_shape_fn((50, 60), |(y, x)| if x < 40 { 255.0 } else { (y * x % 97) as f32 });
         assert!(unreadable(&clipped).is_some_and(|r| r.starts_with("saturated")));
-        let fine =
-            Array2::from_shape_fn((50, 60), |(y, x)| 100.0 + ((y * 31 + x * 17) % 23) as f32);
+        let fine = Array2::from_shape_fn((50, 60), |(y, x)| 100.0 + ((y * 31 + x * 17) % 23) as f32);
         assert_eq!(unreadable(&fine), None);
     }
 

@@ -27,6 +27,8 @@ const CROSSING_SLACK: f64 = 6.0;
 const CROSSING_COSINE: f64 = 0.82;
 /// Bare ceramic between a strand's ink and the claim of the metal it runs into, px.
 const MEETING_REACH: f64 = 1.5;
+/// How far a branch's end must lie from its parent's ink, px.
+const BRANCH_CLEAR: f64 = 4.5;
 /// Cosine of the largest angle between a strand's heading and what it runs into: 50°.
 const MEETING_COSINE: f64 = 0.64;
 
@@ -163,9 +165,9 @@ impl Attachment<'_> {
     fn branch(&self, joint: Joint, line: &Line, forest: &mut Forest) -> Option<usize> {
         let parent = &forest.strands[joint.strand];
         let at = parent.vertices.get(joint.vertex)?.p;
-        let reach = 0.5 * parent.width + 2.0;
-        let tip = *line.pixels.last()?;
-        if distance(at, point(tip)) < reach + 2.0 {
+        let tip = point(*line.pixels.last()?);
+        let clear = parent.vertices.iter().all(|v| distance(v.p, tip) > 0.5 * parent.width + BRANCH_CLEAR);
+        if !clear {
             return None;
         }
         let (filament, width, contrast) = (parent.filament, parent.width, parent.contrast);

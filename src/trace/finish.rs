@@ -43,7 +43,9 @@ pub(super) fn finish(tracer: &Tracer) -> Trace {
             } else {
                 LEAST_ROOTED
             };
-            (long >= least).then_some((f, root))
+            let gone = refined[root].points.iter().filter(|p| p.retreat.is_some()).count();
+            let passing = tracer.forest.filaments[f].root == Root::Inside && 2 * gone > refined[root].points.len();
+            (long >= least && !passing).then_some((f, root))
         })
         .collect();
     order.sort_by_key(|&(f, root)| {
@@ -143,17 +145,19 @@ fn refine(tracer: &Tracer, strand: &Strand) -> Refined {
     }
     straighten(&mut positions, lead);
     let positions = smooth(&positions, vertices_in(POOL));
-    let points = (0..vertices.len())
-        .map(|i| trace_point(tracer, &vertices[i], positions[i], widths[i]))
+    let setback = strand.setback(&tracer.tip_shape).min(vertices.len() - 2);
+    let shown = vertices.len() - setback;
+    let points = (0..shown)
+        .map(|i| trace_point(tracer, &vertices[i], vertices[i + setback].arrival, positions[i], widths[i]))
         .collect();
     Refined { points }
 }
 
-fn trace_point(tracer: &Tracer, vertex: &Vertex, p: [f64; 2], width: f64) -> TracePoint {
+fn trace_point(tracer: &Tracer, vertex: &Vertex, arrival: Option<usize>, p: [f64; 2], width: f64) -> TracePoint {
     TracePoint {
         x: p[0],
         y: p[1],
-        arrival: tracer.frames[vertex.arrival.unwrap_or(0)],
+        arrival: tracer.frames[arrival.unwrap_or(0)],
         retreat: vertex.retreat.map(|o| tracer.frames[o]),
         width,
         u_across: 0.1,

@@ -8,6 +8,7 @@ use ndarray::Array2;
 use super::Root;
 use super::centreline::{Profile, distance};
 use super::edges::Edges;
+use super::tip::TipShape;
 
 /// Distance between neighbouring vertices of a strand, px: half a pixel, so that a tip is placed within a quarter.
 pub const SPACING: f64 = 0.5;
@@ -25,7 +26,7 @@ pub struct Vertex {
     pub p: [f64; 2],
     /// Unit normal of the line here.
     pub n: [f64; 2],
-    /// Ordinal of the usable frame at which it arrived.
+    /// Ordinal of the usable frame at which the ink reached it.
     pub arrival: Option<usize>,
     /// Ordinal of the usable frame from which it is no longer visible.
     pub retreat: Option<usize>,
@@ -202,6 +203,13 @@ impl Strand {
         let start = end.checked_sub(reach.min(end))?;
         let (a, b) = (self.vertices[start].p, self.vertices[end].p);
         super::centreline::unit([b[0] - a[0], b[1] - a[1]])
+    }
+
+    /// Vertices by which the centre-line ends behind the ink: none where the end is tied to other metal or the far edge.
+    #[must_use]
+    pub fn setback(&self, shape: &TipShape) -> usize {
+        let free = self.meets.is_none() && self.reached_far.is_none();
+        if free { vertices_in(shape.setback() * 0.5 * self.width) } else { 0 }
     }
 
     /// Whether growth can go on from its end.

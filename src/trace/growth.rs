@@ -10,20 +10,23 @@ use ndarray::{Array2, Zip};
 use super::attach::Attachment;
 use super::edges::Edges;
 use super::forest::{Forest, Owners, disc};
-use super::link::{self, Component, Ground};
+use super::link::{self, Component, Ground, Start};
 use super::recent::{Corrected, Recent};
 use super::ridge::line_evidence;
 use super::settle::{self, EDGE_SHADE};
+use super::tip::TipShape;
 use super::{graph, thin, threshold};
 
 /// Corrected frames held at once: how far back a line that is found late can be dated.
 pub const WINDOW: usize = 8;
 /// Room left about traced ink in which nothing new is looked for, px.
-const CLAIM_MARGIN: f64 = 1.75;
+const CLAIM_MARGIN: f64 = 2.5;
 /// Distance ahead of a live tip within which less evidence is asked for, px.
 const AHEAD: f64 = 10.0;
 /// How much less, sd.
 const AHEAD_BONUS: f32 = 1.7;
+/// Pixels of the frame's rim that are not looked at: the evidence needs a neighbourhood.
+const RIM: usize = 3;
 /// Evidence down to which a component that holds a sure pixel is followed, sd.
 const LOW_Z: f32 = 3.2;
 /// Least pixels of a component.
@@ -63,6 +66,7 @@ pub struct Tracer {
     /// Index over all files of each usable frame, by ordinal.
     pub(super) frames: Vec<usize>,
     pub(super) withdrawn: usize,
+    pub(super) tip_shape: TipShape,
     inside: Array2<bool>,
     owners: Owners,
     high_z: f32,
@@ -75,7 +79,8 @@ impl Tracer {
         let shape = noise.dim();
         let inside = Array2::from_shape_fn(shape, |(row, col)| {
             let p = [col as f64, row as f64];
-            edges.depth(p) > EDGE_SHADE && edges.remaining(p) > EDGE_SHADE
+            let in_frame = row.min(shape.0 - 1 - row) >= RIM && col.min(shape.1 - 1 - col) >= RIM;
+            in_frame && edges.depth(p) > EDGE_SHADE && edges.remaining(p) > EDGE_SHADE
         });
         let area = inside.iter().filter(|&&b| b).count();
         let high_z = sure_z(area, settings.false_alarms_per_frame);
@@ -88,6 +93,7 @@ impl Tracer {
             recent,
             frames: Vec::new(),
             withdrawn: 0,
+            tip_shape: TipShape::default(),
             inside,
             owners: Owners::new(shape),
             high_z,
@@ -104,7 +110,7 @@ impl Tracer {
         self.forest.truncate();
         self.claim_all();
         if let Some((median, sd)) = self.recent.median() {
-            self.extend(&median, sd);
+            self.extend(&median, sd, false);
         }
         settle::date(self, self.settings.confirm_frames);
         settle::observe(self);
@@ -130,33 +136,29 @@ impl Tracer {
         }
     }
 
-    /// Finds what is new in the median plane and adds it to the forest as proposals.
-    fn extend(&mut self, median: &Array2<f32>, sd: f32) {
-        let z = self.evidence(median, sd);
-        let ground = Ground {
-            z: &z,
-            low: LOW_Z,
-            inside: &self.inside,
-            edges: &self.edges,
-        };
+    /// Finds what is new in `plane` and adds it to the forest as proposals; `ahead`: only what goes on from a tip.
+    fn extend(&mut self, plane: &Array2<f32>, sd: f32, ahead: bool) {
+        let z = self.evidence(plane, sd);
+        let ground = Ground { z: &z, low: LOW_Z, inside: &self.inside, edges: &self.edges };
         let mut waiting = self.components(&z);
         for free in [false, false, true] {
             let mut left = Vec::new();
             for component in waiting {
-                let lines = link::lines(&component, ground, &self.forest, &self.owners, free);
-                if std::env::var("VD").is_ok() { eprintln!("f{} comp {} px first {:?} ends {:?} free {free} lines {:?}", self.frames.len()-1, component.pixels.len(), component.pixels[0], component.ends, lines.iter().map(|l| (l.start, l.pixels.len(), l.pixels[0])).collect::<Vec<_>>()); }
+                let mut lines = link::lines(&component, ground, &self.forest, &self.owners, free && !ahead);
+                if ahead && !matches!(lines.first().map(|l| l.start), Some(Start::Tip(_))) {
+                    continue;
+                }
+                if ahead {
+                    lines.truncate(1);
+                }
                 if lines.is_empty() {
                     left.push(component);
                     continue;
                 }
-                let attachment = Attachment {
-                    plane: median,
-                    edges: &self.edges,
-                };
+                let attachment = Attachment { plane, edges: &self.edges };
                 for index in attachment.attach(&lines, &mut self.forest) {
                     attachment.meet(index, &mut self.forest, &self.owners);
-                    self.owners
-                        .claim(index, &self.forest.strands[index], 0, CLAIM_MARGIN);
+                    self.owners.claim(index, &self.forest.strands[index], 0, CLAIM_MARGIN);
                 }
             }
             waiting = left;
@@ -273,14 +275,13 @@ impl Tracer {
                 .iter()
                 .filter(|s| s.filament == filament && !s.withdrawn)
             {
+                let setback = strand.setback(&self.tip_shape);
                 bridged |= strand.reached_far.is_some();
-                let decided = strand.vertices[..strand.decided]
-                    .iter()
-                    .filter_map(|v| v.arrival.map(|a| (a, v)));
+                let decided = strand.vertices[..strand.decided].iter().skip(setback).zip(&strand.vertices);
+                let decided = decided.filter_map(|(ink, centre)| ink.arrival.map(|a| (a, centre)));
                 let later = strand.provisional.iter().enumerate().flat_map(|(k, &n)| {
-                    strand.vertices[strand.decided.min(n)..n]
-                        .iter()
-                        .map(move |v| (sure + k, v))
+                    let reached = strand.decided.saturating_sub(setback)..n.saturating_sub(setback);
+                    strand.vertices[reached.start.min(reached.end)..reached.end].iter().map(move |v| (sure + k, v))
                 });
                 for (ordinal, vertex) in decided.chain(later) {
                     let best = &mut by_frame[ordinal.min(count - 1)];
@@ -321,6 +322,12 @@ impl Tracer {
     #[must_use]
     pub fn finish(mut self) -> super::Trace {
         settle::date(&mut self, 0);
+        if let Some(last) = self.recent.frames().back().cloned().filter(|_| self.frames.len() > 2) {
+            self.forest.truncate();
+            self.claim_all();
+            self.extend(&last.residual, last.noise_factor, true);
+            settle::date(&mut self, 0);
+        }
         settle::observe_new(&mut self);
         super::finish::finish(&self)
     }

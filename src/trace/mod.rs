@@ -15,6 +15,7 @@ pub mod ridge;
 mod settle;
 pub mod thin;
 pub mod threshold;
+mod tip;
 
 pub use growth::{DepthCourse, TraceSettings, Tracer, WINDOW};
 

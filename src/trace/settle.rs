@@ -3,6 +3,7 @@
 use super::centreline::pooled;
 use super::dating::{Contrast, contrast, positions, strength};
 use super::forest::{SPACING, Strand, vertices_in};
+use super::Root;
 use super::growth::Tracer;
 
 /// Evidence that the first stretch of a new filament must show in each of three frames, sd.
@@ -15,13 +16,21 @@ const WITNESSES: usize = 3;
 const BRANCH_EACH: f64 = 2.0;
 /// And in all three together.
 const BRANCH_ALL: f64 = 6.0;
+/// Evidence that a filament on no edge must show in each frame and in all together, sd, and its least length, px.
+const INSIDE_EACH: f64 = 4.5;
+/// In all together.
+const INSIDE_ALL: f64 = 11.0;
+/// Least length, px.
+const INSIDE_LENGTH: f64 = 12.0;
+/// Distance from the edge that a filament on it must have reached before it is believed, px: the rough rim of the
+/// electrode stays below it.
+const ROOT_DEPTH: f64 = 8.0;
+/// Share of the usual contrast below which a new line is a shadow of old ones.
+const LEAST_CONTRAST: f64 = 0.3;
 /// Least first stretch, px.
 const LEAST_FIRST: f64 = 4.0;
 /// Length over which neighbouring vertices share their noise, px.
 const SHARED_NOISE: f64 = 1.6;
-/// Share of the half width by which the half-contrast point of a round end lies beyond the centre of its last
-/// full disc: there the chord is half the width, cos 60° = ½ → sin 60°.
-const ROUND_END: f64 = 0.866;
 /// Length at the tip over which width and contrast are read, px.
 const TIP_READ: f64 = 24.0;
 /// Frames that a profile remembers.
@@ -33,7 +42,7 @@ const GONE_RUN: f64 = 4.0;
 /// Frames within which a stretch that fades was never there; later it has retreated.
 const YOUNG: usize = 6;
 /// Ink this close to the far edge touches it: the edge's own blur, px.
-pub(super) const EDGE_BLUR: f64 = 3.0;
+pub(super) const EDGE_BLUR: f64 = 3.6;
 /// Contrasts of vertices this close to an edge are not read: the electrode's blur, px.
 pub(super) const EDGE_SHADE: f64 = 3.0;
 /// Weight of the newest frame in the running contrast.
@@ -62,22 +71,12 @@ fn date_strand(tracer: &mut Tracer, index: usize, confirm: usize) {
     };
     let reached = positions(&rows, height);
     let decided_frame = now.checked_sub(confirm).filter(|&k| k >= first);
-    let ends_free = strand.meets.is_none();
-    let end_off = if ends_free {
-        ROUND_END * 0.5 * strand.width
-    } else {
-        0.0
-    };
-    let centre = |s: usize| (s as f64 - end_off / SPACING).round().max(0.0) as usize;
-    let reached: Vec<usize> = reached.into_iter().map(centre).collect();
     let known = decided_frame.map_or(0, |k| k + 1 - first);
-    let sure = known > 0 && confirmed(strand, &rows, reached[known - 1], known);
-    if std::env::var("VD").is_ok() { eprintln!("f{now} s{index} par {:?} n {} dec {} h {height:.4} w {:.1} reached {:?} first {first} known {known} sure {sure} start {:?}", strand.parent, strand.vertices.len(), strand.decided, strand.width, &reached, strand.vertices[0].p); }
-    let start = strand.decided;
-    let strand = &mut tracer.forest.strands[index];
-    if !sure {
+    if known == 0 || !confirmed(tracer, index, &rows, reached[known - 1], known, height) {
         return;
     }
+    let start = strand.decided;
+    let strand = &mut tracer.forest.strands[index];
     for i in 0..reached[known - 1] {
         let arrival = reached[..known]
             .iter()
@@ -89,9 +88,30 @@ fn date_strand(tracer: &mut Tracer, index: usize, confirm: usize) {
     strand.provisional = reached[known..].iter().map(|&s| start + s).collect();
     let end = strand.decided.checked_sub(1).map(|i| &strand.vertices[i]);
     let touching = end
-        .filter(|v| v.remaining <= 0.5 * strand.width + EDGE_BLUR)
+        .filter(|v| v.remaining <= EDGE_BLUR)
         .and_then(|v| v.arrival);
     strand.reached_far = strand.reached_far.or(touching);
+    if reached[known - 1] > 0 {
+        picture_tip(tracer, index, first + known - 1);
+    }
+}
+
+/// Adds the tip of a strand as the frame of the given ordinal shows it to the run's mean tip.
+fn picture_tip(tracer: &mut Tracer, index: usize, ordinal: usize) {
+    let strand = &tracer.forest.strands[index];
+    let oldest = tracer.frames.len() - tracer.recent.frames().len();
+    let settled = strand.decided as f64 * SPACING > 3.0 * strand.width && strand.contrast > 0.0;
+    let free = strand.meets.is_none() && strand.reached_far.is_none();
+    let Some(frame) = ordinal.checked_sub(oldest).and_then(|k| tracer.recent.frames().get(k)) else { return };
+    if !(settled && free) {
+        return;
+    }
+    let end = strand.decided - 1;
+    let line: Vec<_> = (0..=end.min(vertices_in(1.2 * strand.width)))
+        .map(|back| (back as f64 * SPACING, strand.vertices[end - back].p, strand.vertices[end - back].n))
+        .collect();
+    let (width, contrast) = (strand.width, strand.contrast);
+    tracer.tip_shape.add(&frame.residual, &line, width, contrast);
 }
 
 /// The ordinal before which nothing of this strand's proposal can have arrived; `None` while its parent
@@ -160,28 +180,58 @@ fn height_of(strand: &Strand, rows: &[Vec<Option<Contrast>>]) -> Option<f64> {
 
 /// Whether the first stretch of a strand is sure enough to be decided; one that goes on always is.
 fn confirmed(
-    strand: &Strand,
-    rows: &[Vec<Option<Contrast>>],
-    reached: usize,
-    known: usize,
+    tracer: &Tracer, index: usize, rows: &[Vec<Option<Contrast>>], reached: usize, known: usize, height: f64,
 ) -> bool {
+    let strand = &tracer.forest.strands[index];
     if strand.decided > 0 {
         return true;
     }
-    if reached < vertices_in(LEAST_FIRST) {
+    let demand = demand_on(tracer, strand);
+    let deepest = strand.vertices[..reached].iter().map(|v| v.depth.min(v.remaining)).fold(0.0, f64::max);
+    if (reached as f64) * SPACING < demand.length || deepest < demand.depth || height < demand.contrast {
         return false;
     }
-    let (each, all) = if strand.parent.is_some() {
-        (BRANCH_EACH, BRANCH_ALL)
-    } else {
-        (NEW_EACH, NEW_ALL)
-    };
-    let witnesses: Vec<f64> = rows[known - 1..]
-        .iter()
-        .map(|r| strength(&r[..reached], SHARED_NOISE / SPACING))
-        .collect();
+    let from = (known - 1).min(rows.len().saturating_sub(WITNESSES));
+    let witnesses: Vec<f64> = rows[from..].iter().map(|r| strength(&r[..reached], SHARED_NOISE / SPACING)).collect();
     let together = witnesses.iter().sum::<f64>() / (witnesses.len() as f64).sqrt();
-    witnesses.iter().all(|&w| w >= each) && together >= all
+    witnesses.iter().all(|&w| w >= demand.each) && together >= demand.all
+}
+
+/// What the first stretch of a new line must show.
+struct Demand {
+    /// Length, px.
+    length: f64,
+    /// Distance that it gets from the edges, px.
+    depth: f64,
+    /// Contrast.
+    contrast: f64,
+    /// Evidence in each witness frame, sd.
+    each: f64,
+    /// Evidence in all together, sd.
+    all: f64,
+}
+
+/// More is asked of a line that nothing holds than of one on an edge, and least of a branch.
+fn demand_on(tracer: &Tracer, strand: &Strand) -> Demand {
+    let usual = match strand.parent {
+        Some(joint) => tracer.forest.strands[joint.strand].contrast,
+        None => usual_contrast(&tracer.forest.strands),
+    };
+    let contrast = LEAST_CONTRAST * usual;
+    let inside = tracer.forest.filaments[strand.filament].root == Root::Inside;
+    match strand.parent {
+        Some(_) => Demand { length: LEAST_FIRST, depth: 0.0, contrast, each: BRANCH_EACH, all: BRANCH_ALL },
+        None if inside => Demand { length: INSIDE_LENGTH, depth: 0.0, contrast, each: INSIDE_EACH, all: INSIDE_ALL },
+        None => Demand { length: LEAST_FIRST, depth: ROOT_DEPTH, contrast, each: NEW_EACH, all: NEW_ALL },
+    }
+}
+
+/// Median contrast of the established strands, 0 while there is none.
+fn usual_contrast(strands: &[Strand]) -> f64 {
+    let established = |s: &&Strand| !s.withdrawn && s.decided >= vertices_in(TIP_READ);
+    let mut values: Vec<f64> = strands.iter().filter(established).map(|s| s.contrast).collect();
+    values.sort_by(f64::total_cmp);
+    values.get(values.len() / 2).copied().unwrap_or(0.0)
 }
 
 /// Adds the newest frame to the profiles of all decided vertices and reads width and contrast near the tips.
