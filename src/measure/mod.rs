@@ -2,6 +2,8 @@
 //!
 //! Field names are the column names of the tables. `None` is an absent value; it is never written as 0.
 
+mod charge;
 mod rows;
 
+pub use charge::{C_PER_MAH, FARADAY_C_PER_MOL, METALS, Metal};
 pub use rows::{FilamentRow, ForecastRow, FrameRow, GrowthRow, PathRow};

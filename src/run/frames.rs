@@ -496,7 +496,8 @@ fn numbering_gaps(entries: &[FrameEntry], interval_s: f64) -> Option<String> {
         .collect();
     let mut sorted: Vec<u64> = steps.iter().copied().filter(|step| *step > 0).collect();
     sorted.sort_unstable();
-    let usual = *sorted.get(sorted.len() / 2)?;
+    // The lower median, so that of two steps the smaller counts as usual.
+    let usual = *sorted.get(sorted.len().saturating_sub(1) / 2)?;
     let jumps: Vec<usize> = (0..steps.len()).filter(|at| steps[*at] > usual).collect();
     let first = *jumps.first()?;
     let missing: u64 = jumps.iter().map(|at| (steps[*at] - usual) / usual).sum();

@@ -1,5 +1,6 @@
 //! What was recorded: the manifest, the frames, the logs.
 
+mod block;
 mod clock;
 mod decode;
 pub mod draft;
@@ -11,10 +12,14 @@ mod load_section;
 pub mod logs;
 pub mod manifest;
 mod order;
+mod propose;
 mod series;
+mod stamps;
+mod tags;
 mod textlog;
 mod times;
 
+pub use block::block_mean;
 pub use clock::{Clock, ClockError, parse_offset, parse_stamp};
 pub use decode::{Decoded, FrameFault, MAX_PIXELS, repeats};
 pub use frames::{FrameEntry, FrameSequence, FramesError};
