@@ -5,6 +5,7 @@ use imageproc::drawing::draw_line_segment_mut;
 use ndarray::Array2;
 
 use crate::run::block_mean;
+use crate::run::manifest::clip;
 
 /// Shades of the text picture, dark to bright.
 const SHADES: [char; 8] = [' ', '.', ':', '-', '=', '+', '*', '%'];
@@ -40,7 +41,7 @@ impl Sketch<'_> {
             .clamp(1, TEXT.1.min(height));
         let mut cells: Vec<Vec<char>> = self.cells(columns, rows);
         let mut mark = |edge: &[[f64; 2]], letter: char| {
-            for [x, y] in walk(edge, 0.25 * as_f64(width) / as_f64(columns)) {
+            for [x, y] in walk(edge, 0.25 * as_f64(width) / as_f64(columns), width, height) {
                 let place = |at: f64, size: usize, cells: usize| {
                     let inside = at >= -0.5 && at < as_f64(size) - 0.5;
                     inside.then(|| floor((at + 0.5) * as_f64(cells) / as_f64(size)).min(cells - 1))
@@ -115,7 +116,7 @@ impl Sketch<'_> {
         });
         let scale = as_f64(factor);
         for (edge, colour) in [(self.far, FAR), (self.plating, PLATING)] {
-            for ends in edge.windows(2) {
+            for ends in inside(edge, width, height) {
                 let at = |point: [f64; 2]| (single(point[0] / scale), single(point[1] / scale));
                 draw_line_segment_mut(&mut picture, at(ends[0]), at(ends[1]), colour);
             }
@@ -124,19 +125,26 @@ impl Sketch<'_> {
     }
 }
 
-/// Points along a polyline at most `step` apart.
-fn walk(edge: &[[f64; 2]], step: f64) -> Vec<[f64; 2]> {
-    /// Points on one segment at most: edges drawn far outside the picture stay cheap.
-    const MOST: usize = 10_000;
+/// The segments of a polyline as far as they lie inside a picture.
+fn inside(edge: &[[f64; 2]], width: usize, height: usize) -> Vec<[[f64; 2]; 2]> {
+    let part = |ends: &[[f64; 2]]| {
+        let (enter, leave) = clip(ends[0], ends[1], as_f64(width), as_f64(height))?;
+        let at =
+            |share: f64| [0, 1].map(|axis| ends[0][axis] + share * (ends[1][axis] - ends[0][axis]));
+        Some([at(enter), at(leave)])
+    };
+    edge.windows(2).filter_map(part).collect()
+}
+
+/// Points along the part of a polyline inside a picture, at most `step` apart.
+fn walk(edge: &[[f64; 2]], step: f64, width: usize, height: usize) -> Vec<[f64; 2]> {
     let mut points = Vec::new();
-    for ends in edge.windows(2) {
-        let (dx, dy) = (ends[1][0] - ends[0][0], ends[1][1] - ends[0][1]);
-        let count = floor(libm::hypot(dx, dy) / step)
-            .saturating_add(1)
-            .min(MOST);
+    for [from, to] in inside(edge, width, height) {
+        let (dx, dy) = (to[0] - from[0], to[1] - from[1]);
+        let count = floor(libm::hypot(dx, dy) / step) + 1;
         points.extend((0..=count).map(|at| {
             let share = as_f64(at) / as_f64(count);
-            [ends[0][0] + share * dx, ends[0][1] + share * dy]
+            [from[0] + share * dx, from[1] + share * dy]
         }));
     }
     points

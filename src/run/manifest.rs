@@ -806,16 +806,21 @@ fn distance(a: [f64; 2], b: [f64; 2]) -> f64 {
     libm::hypot(a[0] - b[0], a[1] - b[1])
 }
 
-/// Whether a segment meets the picture, whose pixels reach half a pixel beyond their centres
-/// (clipping after Liang & Barsky 1984, ACM Trans. Graphics 3, 1–22).
+/// Whether a segment meets the picture.
 fn touches(a: [f64; 2], b: [f64; 2], width: f64, height: f64) -> bool {
+    clip(a, b, width, height).is_some()
+}
+
+/// The part of a segment inside the picture, as shares of its length; none where it lies outside. Pixels reach half a
+/// pixel beyond their centres (Liang & Barsky 1984, ACM Trans. Graphics 3, 1–22).
+pub(crate) fn clip(a: [f64; 2], b: [f64; 2], width: f64, height: f64) -> Option<(f64, f64)> {
     let (mut enter, mut leave) = (0.0_f64, 1.0_f64);
     for (axis, size) in [width, height].into_iter().enumerate() {
         let (from, step) = (a[axis], b[axis] - a[axis]);
         for (toward, room) in [(-step, from + 0.5), (step, size - 0.5 - from)] {
             if toward.abs() <= 0.0 {
                 if room < 0.0 {
-                    return false;
+                    return None;
                 }
             } else if toward < 0.0 {
                 enter = enter.max(room / toward);
@@ -824,7 +829,7 @@ fn touches(a: [f64; 2], b: [f64; 2], width: f64, height: f64) -> bool {
             }
         }
     }
-    enter <= leave
+    (enter <= leave).then_some((enter, leave))
 }
 
 #[cfg(test)]

@@ -24,7 +24,11 @@ fn tiff_scale(path: &Path) -> Option<(f64, &'static str)> {
     if let Some(um) = described.as_deref().and_then(ome_scale) {
         return Some((um, "PhysicalSizeX in the TIFF description"));
     }
-    let per_unit = decoder.get_tag_f64(Tag::XResolution).ok()?;
+    let resolution = decoder.get_tag_u32_vec(Tag::XResolution).ok()?;
+    let &[numerator, denominator] = resolution.as_slice() else {
+        return None;
+    };
+    let per_unit = f64::from(numerator) / f64::from(denominator);
     /// Resolution units of TIFF 6.0: inch (also the default) and centimetre.
     const CENTIMETRE: u32 = 3;
     const INCH: u32 = 2;
