@@ -223,64 +223,97 @@ impl FrameSequence {
 fn find(folder: &Path, manifest: &Manifest) -> Result<Vec<String>, crate::Error> {
     let pattern = &manifest.frames.files;
     manifest.inside("frames", "files", pattern)?;
-    let whole = format!("{}/{pattern}", Pattern::escape(&folder.to_string_lossy()));
-    let options = MatchOptions {
-        require_literal_leading_dot: true,
-        ..MatchOptions::new()
-    };
-    let matches = glob::glob_with(&whole, options).map_err(|error| {
+    let parts = pattern.split('/').filter(|part| !matches!(*part, "" | "."));
+    let parts: Result<Vec<Pattern>, _> = parts.map(Pattern::new).collect();
+    let parts = parts.map_err(|error| {
+        let what = format!("`{pattern}` is no file pattern: {error}");
         manifest.fault(
             "frames",
             "files",
-            format!("`{pattern}` is no file pattern: {error}"),
+            what,
             "type one like files = \"frames/*.png\"",
         )
     })?;
     let mut names = Vec::new();
-    for found in matches {
-        let path = found.map_err(|error| FramesError::Io {
-            path: error.path().to_path_buf(),
-            source: error.into(),
-        })?;
-        if path.is_dir() {
-            continue;
-        }
-        if leaves(folder, &path) {
-            let what = format!(
-                "{} is a link that leads out of the run folder",
-                path.display()
-            );
-            return Err(manifest
-                .fault("frames", "files", what, "copy the file into the run folder")
-                .into());
-        }
-        let name = path.strip_prefix(folder).unwrap_or(&path);
-        names.push(name.to_string_lossy().replace('\\', "/"));
-    }
-    refuse_unnameable(folder, pattern)?;
+    expand(folder, "", &parts, &mut names)?;
     if names.is_empty() {
         return Err(nothing_found(folder, pattern).into());
     }
+    if let Some(name) = names.iter().find(|name| leaves(folder, &folder.join(name))) {
+        let what = format!("{name} is a link that leads out of the run folder");
+        return Err(manifest
+            .fault("frames", "files", what, "copy the file into the run folder")
+            .into());
+    }
     names.sort_by(|a, b| order::natural(a, b));
+    names.dedup();
     Ok(names)
 }
 
-/// A name that is not UTF-8 never matches a pattern: say so, rather than lose a frame without a word.
-fn refuse_unnameable(folder: &Path, pattern: &str) -> Result<(), FramesError> {
-    let place = folder.join(pattern.rsplit_once('/').map_or("", |(place, _)| place));
-    let Ok(listed) = std::fs::read_dir(&place) else {
+/// Adds the files below `folder/place` that match the parts of a pattern. A name that is not UTF-8 is an error where it could
+/// match: a frame must not be lost without a word. `**` does not follow links.
+fn expand(
+    folder: &Path,
+    place: &str,
+    parts: &[Pattern],
+    found: &mut Vec<String>,
+) -> Result<(), FramesError> {
+    let here = folder.join(place);
+    let Some((part, rest)) = parts.split_first() else {
+        if !here.is_dir() {
+            found.push(place.to_owned());
+        }
         return Ok(());
     };
-    let odd = listed
-        .flatten()
-        .map(|entry| entry.file_name())
-        .find(|name| name.to_str().is_none());
-    odd.map_or(Ok(()), |name| {
-        Err(FramesError::Name {
-            folder: place,
-            name: name.to_string_lossy().into_owned(),
-        })
-    })
+    let below = |name: &str| {
+        if place.is_empty() {
+            name.to_owned()
+        } else {
+            format!("{place}/{name}")
+        }
+    };
+    if Pattern::escape(part.as_str()) == part.as_str() {
+        let next = below(part.as_str());
+        let there = folder.join(&next).symlink_metadata().is_ok();
+        return if there {
+            expand(folder, &next, rest, found)
+        } else {
+            Ok(())
+        };
+    }
+    if !here.is_dir() {
+        return Ok(());
+    }
+    let deep = part.as_str() == "**";
+    if deep {
+        expand(folder, place, rest, found)?;
+    }
+    let options = MatchOptions {
+        require_literal_leading_dot: true,
+        ..MatchOptions::new()
+    };
+    let io = |source| FramesError::Io {
+        path: here.clone(),
+        source,
+    };
+    for entry in std::fs::read_dir(&here).map_err(io)? {
+        let entry = entry.map_err(io)?;
+        let name = entry
+            .file_name()
+            .into_string()
+            .map_err(|name| FramesError::Name {
+                folder: here.clone(),
+                name: name.to_string_lossy().into_owned(),
+            })?;
+        let real_folder =
+            entry.file_type().is_ok_and(|kind| kind.is_dir()) && !name.starts_with('.');
+        if deep && real_folder {
+            expand(folder, &below(&name), parts, found)?;
+        } else if !deep && part.matches_with(&name, options) {
+            expand(folder, &below(&name), rest, found)?;
+        }
+    }
+    Ok(())
 }
 
 fn nothing_found(folder: &Path, pattern: &str) -> FramesError {
@@ -656,6 +689,38 @@ mod tests {
         assert_eq!(sequence.entries[2].file, "frames/stack.png#2");
         let frame = sequence.decode(2).unwrap();
         assert_eq!((frame.plane[[0, 1]], frame.bits), (2001.0, 16));
+    }
+
+    #[test]
+    fn patterns_over_folders() {
+        let (folder, _) = run(&["a.png", "b.png"], "interval_s = 1");
+        let deep = folder.path().join("frames/day 2");
+        std::fs::create_dir_all(deep.join(".thumbs")).unwrap();
+        std::fs::copy(folder.path().join("frames/a.png"), deep.join("c[1].png")).unwrap();
+        std::fs::copy(
+            folder.path().join("frames/a.png"),
+            deep.join(".thumbs/a.png"),
+        )
+        .unwrap();
+        let found = |pattern: &str| {
+            let parts: Vec<Pattern> = pattern
+                .split('/')
+                .map(|part| Pattern::new(part).unwrap())
+                .collect();
+            let mut found = Vec::new();
+            expand(folder.path(), "", &parts, &mut found).unwrap();
+            found.sort();
+            found
+        };
+        assert_eq!(found("frames/*.png"), ["frames/a.png", "frames/b.png"]);
+        assert_eq!(found("*/day ?/*.png"), ["frames/day 2/c[1].png"]);
+        assert_eq!(
+            found("**/*.png"),
+            ["frames/a.png", "frames/b.png", "frames/day 2/c[1].png"]
+        );
+        assert_eq!(found("frames/day 2/c[[]1].png"), ["frames/day 2/c[1].png"]);
+        assert!(found("nowhere/*.png").is_empty() && found("frames/c.png").is_empty());
+        assert_eq!(found("frames/a.png"), ["frames/a.png"]);
     }
 
     #[cfg(unix)]
