@@ -159,7 +159,8 @@ fn nearest_segment(edge: &[[f64; 2]], px: [f64; 2]) -> Option<&[[f64; 2]]> {
         };
         libm::hypot(qx - share * dx, qy - share * dy)
     };
-    let long = |ends: &&[[f64; 2]]| ends[0] != ends[1];
+    let long =
+        |ends: &&[[f64; 2]]| libm::hypot(ends[1][0] - ends[0][0], ends[1][1] - ends[0][1]) > 0.0;
     edge.windows(2)
         .filter(long)
         .min_by(|a, b| distance(a).total_cmp(&distance(b)))

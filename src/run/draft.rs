@@ -1,5 +1,5 @@
 //! A folder → a proposed `run.toml`, commented, with a mark on every line that a person must confirm.
-//! What is looked at: names and counts of frame files, headers and tags of the first, up to [`LOOKED`] frames decoded,
+//! What is looked at: names and counts of frame files, headers and tags of the first, up to sixteen frames decoded,
 //! headings of text logs. Nothing is taken for granted: a guess is always marked.
 
 use std::collections::BTreeMap;

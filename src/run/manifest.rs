@@ -5,6 +5,7 @@
 
 use std::ops::Range;
 use std::path::{Component, Path, PathBuf};
+use std::sync::Arc;
 
 use miette::{NamedSource, SourceSpan};
 use serde::{Deserialize, Serialize};
@@ -183,7 +184,7 @@ pub struct ManifestError {
     #[help]
     pub help: String,
     #[source_code]
-    text: NamedSource<String>,
+    text: Arc<NamedSource<String>>,
     #[label("here")]
     span: SourceSpan,
 }
@@ -636,7 +637,7 @@ impl Origin {
             .count()
             + 1;
         ManifestError {
-            text: NamedSource::new(&path, self.text.clone()).with_language("toml"),
+            text: Arc::new(NamedSource::new(&path, self.text.clone()).with_language("toml")),
             span: SourceSpan::from(start..span.end.clamp(start, self.text.len())),
             path,
             line,

@@ -246,7 +246,7 @@ mod tests {
         Array2::from_shape_fn((120, 200), |(row, column)| {
             let noise =
                 f32::from(u8::try_from((row * 37 + column * 91 + row * column) % 7).unwrap());
-            let band = if column < 20 || column >= 185 {
+            let band = if !(20..185).contains(&column) {
                 -60.0
             } else {
                 0.0

@@ -2,6 +2,8 @@
 //! Sources: CODATA 2018 and 2022 (exact values of the SI) for F; IUPAC abridged atomic weight 6.94 and the density
 //! 0.534 g/cm³ of the CRC Handbook (from memory) for what follows from them by arithmetic.
 
+#![expect(clippy::unwrap_used, reason = "a test that cannot go on must fail")]
+
 use approx::assert_relative_eq;
 use veerlog::measure::{C_PER_MAH, FARADAY_C_PER_MOL, Metal};
 

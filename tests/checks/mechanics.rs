@@ -2,6 +2,8 @@
 //! Sources, from memory, with the arithmetic done apart: ASTM C1161 and ISO 14704 (three and four points), beam theory
 //! (cantilever), ASTM C1499 (ring-on-ring), Stoney 1909 in its biaxial form, Timoshenko 1925.
 
+#![expect(clippy::unwrap_used, reason = "a test that cannot go on must fail")]
+
 use std::path::Path;
 
 use approx::assert_relative_eq;

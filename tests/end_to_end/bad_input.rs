@@ -1,6 +1,8 @@
 //! Input that is wrong: each fault ends in the right exit code and in a message that says what happened, where, and
 //! what to type. The run is invented: two dark bands, a line that grows between them.
 
+#![expect(clippy::unwrap_used, reason = "a test that cannot go on must fail")]
+
 use std::fs;
 use std::path::Path;
 
@@ -37,7 +39,7 @@ fn run() -> TempDir {
         let picture = image::GrayImage::from_fn(64, 40, |x, y| {
             let texture = u8::try_from((x * 37 + y * 91 + x * y + frame) % 5).unwrap();
             let line = (18..21).contains(&y) && (8..8 + 5 * frame.saturating_sub(1)).contains(&x);
-            let level = if x < 8 || x > 55 {
+            let level = if !(8..=55).contains(&x) {
                 60
             } else if line {
                 80
