@@ -2,16 +2,8 @@
 
 pub mod axis;
 pub mod fixture;
+mod state;
 
-/// The load in force.
-#[derive(Debug, Clone, Copy, Default, PartialEq)]
-pub struct LoadState {
-    /// Force, N.
-    pub force_n: Option<f64>,
-    /// Load axis, degrees.
-    pub direction_deg: Option<f64>,
-    /// Stress, MPa.
-    pub stress_mpa: Option<f64>,
-    /// Its standard uncertainty.
-    pub u_stress_mpa: Option<f64>,
-}
+pub use axis::{AxisRule, acute_deg, dose_mpa, expected_axis_deg, image_direction_deg};
+pub use fixture::Fixture;
+pub use state::{Load, LoadState};

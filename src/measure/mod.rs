@@ -5,8 +5,10 @@
 mod build;
 pub mod course;
 pub mod geometry;
+mod charge;
 mod rows;
 mod uncertainty;
 
 pub use build::{Measured, Scale, UsedFrame, measure};
+pub use charge::{C_PER_MAH, FARADAY_C_PER_MOL, METALS, Metal};
 pub use rows::{FilamentRow, ForecastRow, FrameRow, GrowthRow, PathRow};
