@@ -103,11 +103,12 @@ fn growth(dice: &mut Dice) -> GrowthPlan {
         wander_per_px: dice.log_within([0.006, 0.03]),
         wander_memory_px: dice.log_within([12.0, 60.0]),
         root_spread_deg: dice.between(5.0, 25.0),
-        branches_per_100_px: dice.pick(&[0.0, 0.3, 0.6, 1.0]),
+        branch_limit: 1 + dice.below(5),
+        branches_per_100_px: dice.pick(&[0.0, 0.15, 0.3, 0.6]),
         width_noise: dice.between(0.0, 0.1),
         widen_s: dice.pick(&[0.0, 0.0, 30.0, 80.0]),
         tip: dice.pick(&[TipShape::Round, TipShape::Round, TipShape::Tapered]),
-        meeting: dice.pick(&[Meeting::Stop, Meeting::Stop, Meeting::Cross]),
+        meeting: dice.pick(&[Meeting::Stop, Meeting::Stop, Meeting::Stop, Meeting::Cross]),
         ..GrowthPlan::default()
     }
 }

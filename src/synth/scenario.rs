@@ -263,7 +263,7 @@ pub struct GrowthPlan {
     pub start_s: [f64; 2],
     /// Full widths, px.
     pub width_px: [f64; 2],
-    /// Tip speeds at nominal current, px/s; [0, 0]: such that a straight one would need 0.9–2 times the time there is.
+    /// Tip speeds at nominal current, px/s; [0, 0]: such that a straight one would need 0.6–1.8 times the time there is.
     pub speed_px_per_s: [f64; 2],
     /// Speed against age.
     pub law: SpeedLaw,
@@ -283,6 +283,8 @@ pub struct GrowthPlan {
     pub root_spread_deg: f64,
     /// Side branches per 100 px of growth.
     pub branches_per_100_px: f64,
+    /// Most side branches of one filament.
+    pub branch_limit: usize,
     /// Angle of a side branch off its parent, degrees.
     pub branch_angle_deg: [f64; 2],
     /// Relative change of width along a track (standard deviation).
@@ -316,6 +318,7 @@ impl Default for GrowthPlan {
             wander_memory_px: 25.0,
             root_spread_deg: 15.0,
             branches_per_100_px: 0.3,
+            branch_limit: 4,
             branch_angle_deg: [30.0, 65.0],
             width_noise: 0.06,
             widen_s: 0.0,
