@@ -1,5 +1,6 @@
 //! The command line: one file a command, clap definitions beside it.
 
+pub mod score;
 pub mod synth;
 use clap::Parser;
 
@@ -12,12 +13,14 @@ struct Cli {
 #[derive(clap::Subcommand)]
 enum Command {
     Synth(synth::SynthArgs),
+    Score(score::ScoreArgs),
 }
 
 /// Parses the arguments, runs the command and gives its exit code.
 pub fn main() -> std::process::ExitCode {
     let result = match Cli::parse().command {
         Command::Synth(args) => synth::run(&args).map(|f| format!("{} runs", f.len())),
+        Command::Score(args) => score::run(&args),
     };
     match result {
         Ok(text) => {

@@ -7,6 +7,7 @@
 //!     └ recorder drift, light, focus, dust, lost frames
 //!        └ ceramic → canvas → render   the scene, its samples, one frame
 //!           └ files    run folder and truth/
+//! score     an output against that truth
 //! ```
 //! All specimens are invented. The simulator is a judge of the tracer, not a model of a real cell.
 
@@ -23,6 +24,7 @@ pub mod polyline;
 pub mod recorder;
 pub mod render;
 pub mod scenario;
+pub mod score;
 pub mod truth;
 
 pub use draw::{draw, draw_bare};
