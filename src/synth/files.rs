@@ -141,7 +141,7 @@ fn png(scenario: &Scenario, levels: &[f64]) -> Result<Vec<u8>, SynthError> {
         (levels.iter().map(|v| (v * 255.0).round().clamp(0.0, 255.0) as u8).collect(), ExtendedColorType::L8)
     };
     let mut out = Vec::new();
-    PngEncoder::new_with_quality(&mut out, CompressionType::Best, FilterType::Up)
+    PngEncoder::new_with_quality(&mut out, CompressionType::Best, FilterType::Avg)
         .write_image(&bytes, scenario.width, scenario.height, colour)?;
     Ok(out)
 }

@@ -208,7 +208,7 @@ impl<'a> Field<'a> {
                 }
                 along = dice.between(0.12, 0.88);
             }
-            roots.push(RootPlan { along, start_s: None, width_px: None, speed_px_per_s: None });
+            roots.push(RootPlan { along, start_s: None, width_px: None, speed_px_per_s: None, lean_deg: None });
         }
         let left = (self.scenario.end_s() - self.scenario.bare_until_s()).max(self.scenario.interval_s);
         let gap = self.plating.gap(&self.far);
@@ -221,8 +221,9 @@ impl<'a> Field<'a> {
             });
             let (place, tangent) = self.plating.at(root.along);
             let normal = scaled([-tangent[1], tangent[0]], self.side);
-            let lean = (self.plan.root_spread_deg * dice.normal()).clamp(-50.0, 50.0).to_radians();
-            let angle = libm::atan2(normal[1], normal[0]) + lean;
+            let lean = root.lean_deg.unwrap_or_else(|| (self.plan.root_spread_deg * dice.normal()).clamp(-50.0, 50.0));
+            // Image angles run clockwise as displayed (y down), leans anticlockwise.
+            let angle = libm::atan2(normal[1], normal[0]) - lean.to_radians();
             // A track starts only after the last bare frame, whatever was asked for.
             let start = start.max(self.scenario.bare_until_s() + 1e-3);
             self.sprout(i as u32 + 1, None, GrownPoint { x: place[0], y: place[1], time_s: start, width }, angle, speed, i + 1);

@@ -342,6 +342,8 @@ pub struct RootPlan {
     pub width_px: Option<f64>,
     /// Tip speed, px/s.
     pub speed_px_per_s: Option<f64>,
+    /// Direction at the root, degrees off the edge's normal, positive anticlockwise as displayed.
+    pub lean_deg: Option<f64>,
 }
 
 impl Scenario {

@@ -15,6 +15,9 @@ pub const WINDOW_WIDTHS: f64 = 1.5;
 /// at least over ± this many px.
 pub const WINDOW_PX: f64 = 4.0;
 
+/// Spacing of the points written, px.
+const SPACING_PX: f64 = 0.5;
+
 /// Truth of one frame.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 pub struct FrameTruth {
@@ -82,9 +85,26 @@ pub fn paths(growth: &Growth) -> Vec<PathTruth> {
                 TrackEnd::Contact => "far",
             }
             .to_owned(),
-            points: track.points.iter().map(|p| [rounded(p.x), rounded(p.y), rounded(p.time_s), rounded(p.width)]).collect(),
+            points: spaced(track),
         })
         .collect()
+}
+
+/// Points about `SPACING_PX` apart, the first and the last among them.
+fn spaced(track: &Track) -> Vec<[f64; 4]> {
+    let to_write = |i: usize| {
+        let p = track.points[i];
+        [p.x, p.y, p.time_s, p.width].map(|v| (v * 1e4).round() / 1e4)
+    };
+    let (last, mut written) = (track.points.len() - 1, f64::NEG_INFINITY);
+    let kept = (0..=last).filter(|&i| {
+        let keep = i == last || track.arc[i] - written >= SPACING_PX;
+        if keep {
+            written = track.arc[i];
+        }
+        keep
+    });
+    kept.map(to_write).collect()
 }
 
 /// The short of a growth.
