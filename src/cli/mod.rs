@@ -19,7 +19,7 @@ enum Command {
 /// Parses the arguments, runs the command and gives its exit code.
 pub fn main() -> std::process::ExitCode {
     let result = match Cli::parse().command {
-        Command::Synth(args) => synth::run(&args).map(|f| format!("{} runs", f.len())),
+        Command::Synth(args) => synth::run(&args),
         Command::Score(args) => score::run(&args),
     };
     match result {

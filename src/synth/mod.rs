@@ -30,6 +30,6 @@ pub mod truth;
 pub use draw::{draw, draw_bare};
 pub use error::SynthError;
 pub use files::{rebuild, write_run};
-pub use grow::{Growth, GrownPoint, Track, TrackEnd, direction_at, grow};
+pub use grow::{GrownPoint, Growth, Track, TrackEnd, direction_at, grow};
 pub use imaging::{Grade, Imaging, Light, Psf, Texture};
 pub use scenario::{Polarity, Scenario};

@@ -1,1 +1,3 @@
 //! The program as its user runs it: exit codes, messages, files, table cells.
+
+mod synth;
