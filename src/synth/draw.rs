@@ -4,9 +4,8 @@
 
 use super::dice::{Dice, Stream};
 use super::imaging::{Grade, Imaging, Light, Psf, Texture};
-use super::scenario::{
-    FixtureKind, GrowthPlan, LoadPlan, LoadStage, Meeting, Polarity, Scenario, SpeedLaw, TipShape,
-};
+use super::plan::{FixtureKind, GrowthPlan, LoadPlan, LoadStage, Meeting, SpeedLaw, TipShape};
+use super::scenario::{Polarity, Scenario};
 
 /// A 480 × 360 run of 40 frames, six of them bare, drawn from `seed` within a grade.
 ///

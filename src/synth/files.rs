@@ -15,22 +15,20 @@ use serde::Serialize;
 use super::SynthError;
 use super::ceramic::Ceramic;
 use super::dice::{Dice, Stream};
-use super::grow::{Growth, grow};
-use super::history::{current_ma, force_n, loading};
+use super::grow::grow;
+use super::logs::{cell_log, load_log};
+use super::plan::FixtureKind;
 use super::recorder::{Loss, Shot, shots};
 use super::render;
-use super::scenario::{FixtureKind, Scenario};
+use super::runfile::manifest;
+use super::scenario::Scenario;
+use super::track::Growth;
 use super::truth;
 
 /// Frames rendered at a time.
 const BATCH: usize = 16;
 /// Scene kept around the picture besides the drift, px: point spread and interpolation.
 const MARGIN_PX: f64 = 10.0;
-/// Voltage after the short, V: what contacts and leads leave (common practice).
-const SHORTED_V: f64 = 0.002;
-/// Resistance that tension of the leads and the ceramic add, as growth of the voltage over a run (common practice).
-const VOLTAGE_RISE: f64 = 0.15;
-
 /// Simulates, renders and writes a settled scenario into `folder`, which must be absent or empty.
 /// # Errors
 /// [`SynthError::Occupied`] when the folder holds anything, [`SynthError::Io`] or [`SynthError::Encode`] when writing fails.
@@ -193,180 +191,6 @@ fn write_logs(scenario: &Scenario, growth: &Growth, folder: &Path) -> Result<(),
         )?;
     }
     Ok(())
-}
-
-/// Sample times of a log: at the given spacing, or a fifth of the frame interval; one sample beyond the last frame.
-fn log_times(scenario: &Scenario, every_s: f64) -> impl Iterator<Item = f64> {
-    let every = if every_s > 0.0 {
-        every_s
-    } else {
-        scenario.interval_s / 5.0
-    };
-    let n = (scenario.end_s() / every).ceil() as usize + 1;
-    (0..=n).map(move |i| i as f64 * every)
-}
-
-fn load_log(scenario: &Scenario, dice: &mut Dice) -> String {
-    let plan = &scenario.load;
-    let has_direction = plan.fixture != FixtureKind::Stack;
-    let value = if plan.fixture == FixtureKind::Stress {
-        "stress_mpa"
-    } else {
-        "force_n"
-    };
-    let mut text = format!(
-        "time_s,{value}{}\n",
-        if has_direction { ",direction_deg" } else { "" }
-    );
-    for time in log_times(scenario, plan.log_every_s) {
-        let load = loading(plan, time, [0.0, 1.0]);
-        let stress = load.stress_mpa + plan.noise_mpa * dice.normal();
-        let shown = force_n(plan, stress).unwrap_or(stress);
-        let direction = load
-            .axis_deg
-            .filter(|_| has_direction)
-            .map_or(String::new(), |a| format!(",{a:.2}"));
-        let _ = writeln!(text, "{time:.3},{shown:.4}{direction}");
-    }
-    text
-}
-
-fn cell_log(scenario: &Scenario, growth: &Growth, dice: &mut Dice) -> String {
-    let plan = &scenario.cell;
-    let mut text = String::from("time_s,current_ma,voltage_v\n");
-    for time in log_times(scenario, 0.0) {
-        let current = current_ma(plan, time);
-        let drive = current / plan.current_ma;
-        let shorted = growth.contact.is_some_and(|(at, _)| at <= time);
-        let open = plan.voltage_v * (1.0 + VOLTAGE_RISE * time / scenario.end_s().max(1.0));
-        let voltage = if shorted { SHORTED_V } else { open } * drive + plan.noise_v * dice.normal();
-        let _ = writeln!(text, "{time:.3},{current:.5},{voltage:.6}");
-    }
-    text
-}
-
-/// `run.toml` as a reader of the run needs it.
-#[derive(Serialize)]
-struct Manifest<'a> {
-    run: &'a str,
-    #[serde(skip_serializing_if = "Option::is_none")]
-    specimen: Option<&'a str>,
-    #[serde(skip_serializing_if = "Option::is_none")]
-    note: Option<&'a str>,
-    frames: FramesTable,
-    cell: CellTable<'a>,
-    load: LoadTable,
-}
-
-#[derive(Serialize)]
-struct FramesTable {
-    files: &'static str,
-    interval_s: f64,
-    um_per_px: f64,
-    filament: super::Polarity,
-    bare: usize,
-}
-
-#[derive(Serialize)]
-struct CellTable<'a> {
-    plating_edge: &'a [[f64; 2]],
-    far_edge: &'a [[f64; 2]],
-    #[serde(skip_serializing_if = "Option::is_none")]
-    log: Option<&'static str>,
-    area_mm2: f64,
-    view_depth_mm: f64,
-    metal: &'static str,
-    ended: &'static str,
-}
-
-#[derive(Default, Serialize)]
-struct LoadTable {
-    #[serde(skip_serializing_if = "Option::is_none")]
-    log: Option<&'static str>,
-    fixture: &'static str,
-    #[serde(skip_serializing_if = "Option::is_none")]
-    area_mm2: Option<f64>,
-    #[serde(skip_serializing_if = "Option::is_none")]
-    width_mm: Option<f64>,
-    #[serde(skip_serializing_if = "Option::is_none")]
-    thickness_mm: Option<f64>,
-    #[serde(skip_serializing_if = "Option::is_none")]
-    arm_mm: Option<f64>,
-    #[serde(skip_serializing_if = "Option::is_none")]
-    side: Option<&'static str>,
-}
-
-fn manifest(scenario: &Scenario, growth: &Growth) -> Result<String, SynthError> {
-    let manifest = Manifest {
-        run: &scenario.name,
-        specimen: scenario.specimen.as_deref(),
-        note: scenario.note.as_deref(),
-        frames: FramesTable {
-            files: "frames/*.png",
-            interval_s: scenario.interval_s,
-            um_per_px: scenario.um_per_px,
-            filament: scenario.filament,
-            bare: scenario.bare,
-        },
-        cell: CellTable {
-            plating_edge: &scenario.plating_edge,
-            far_edge: &scenario.far_edge,
-            log: scenario.cell.log.then_some("cell.csv"),
-            area_mm2: scenario.cell.area_mm2,
-            view_depth_mm: scenario.cell.view_depth_mm,
-            metal: "Li",
-            ended: if growth.contact.is_some() {
-                "short"
-            } else {
-                "stopped"
-            },
-        },
-        load: load_table(scenario),
-    };
-    let body = toml::to_string(&manifest).map_err(|e| SynthError::Format {
-        what: "run.toml",
-        message: e.to_string(),
-    })?;
-    Ok(format!(
-        "# Synthetic frames with known truth (truth/); invented, no real specimen.\n{body}"
-    ))
-}
-
-fn load_table(scenario: &Scenario) -> LoadTable {
-    let plan = &scenario.load;
-    let log = Some("load.csv");
-    match plan.fixture {
-        FixtureKind::None => LoadTable {
-            fixture: "none",
-            ..LoadTable::default()
-        },
-        FixtureKind::Stress => LoadTable {
-            log,
-            fixture: "stress",
-            ..LoadTable::default()
-        },
-        FixtureKind::Uniaxial => LoadTable {
-            log,
-            fixture: "uniaxial",
-            area_mm2: Some(plan.area_mm2),
-            ..LoadTable::default()
-        },
-        FixtureKind::Stack => LoadTable {
-            log,
-            fixture: "stack",
-            area_mm2: Some(plan.area_mm2),
-            ..LoadTable::default()
-        },
-        FixtureKind::Cantilever => LoadTable {
-            log,
-            fixture: "cantilever",
-            width_mm: Some(plan.width_mm),
-            thickness_mm: Some(plan.thickness_mm),
-            arm_mm: Some(plan.arm_mm),
-            side: Some("compressed"),
-            ..LoadTable::default()
-        },
-    }
 }
 
 fn write_truth(

@@ -7,8 +7,11 @@
 
 use super::dice::{Dice, Stream};
 use super::history::{current_ma, loading};
-use super::polyline::{Polyline, distance, dot, minus, plus, scaled};
-use super::scenario::{GrowthPlan, Meeting, RootPlan, Scenario, SpeedLaw};
+use super::plan::{GrowthPlan, Meeting, RootPlan};
+use super::polyline::{Polyline, distance, dot, plus, scaled};
+use super::scenario::Scenario;
+use super::tip::Tip;
+use super::track::{GrownPoint, Growth, Track, TrackEnd};
 
 /// Longest step of a tip, px.
 const STEP_PX: f64 = 0.4;
@@ -18,168 +21,6 @@ const BORDER_PX: f64 = 6.0;
 const BRANCH_SPACING_PX: f64 = 15.0;
 /// Regrowth along an emptied track is this much faster than new growth (common practice: the crack is there already).
 const REFILL: f64 = 3.0;
-
-/// One point of a true centre-line.
-#[derive(Debug, Clone, Copy, PartialEq)]
-pub struct GrownPoint {
-    /// Picture x, px.
-    pub x: f64,
-    /// Picture y, px.
-    pub y: f64,
-    /// First arrival, s.
-    pub time_s: f64,
-    /// Full width once grown, px.
-    pub width: f64,
-}
-
-impl GrownPoint {
-    /// Its place.
-    #[must_use]
-    pub fn place(&self) -> [f64; 2] {
-        [self.x, self.y]
-    }
-}
-
-/// Why a track's end is where it is.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum TrackEnd {
-    /// A free end.
-    Free,
-    /// It ran into another track.
-    Met,
-    /// It touched the far edge.
-    Contact,
-}
-
-/// All that one tip left behind, from its root or branching to its end.
-#[derive(Debug, Clone, PartialEq)]
-pub struct Track {
-    /// Filament, from 1.
-    pub filament: u32,
-    /// Track it branched from, as an index.
-    pub parent: Option<usize>,
-    /// Root to tip; at most 0.6 px apart.
-    pub points: Vec<GrownPoint>,
-    /// Arc length at each point, px.
-    pub arc: Vec<f64>,
-    /// What the end is.
-    pub end: TrackEnd,
-    /// Arc length filled with metal at each frame, px (below the grown length after stripping).
-    pub front: Vec<f64>,
-    /// Time at which it stopped for good, s (end of run when it never did).
-    pub stopped_s: f64,
-}
-
-/// All growth of a run.
-#[derive(Debug, Clone, PartialEq)]
-pub struct Growth {
-    /// In order of appearance; a parent stands before its children.
-    pub tracks: Vec<Track>,
-    /// First contact with the far edge: (time in s, index of the track).
-    pub contact: Option<(f64, usize)>,
-}
-
-impl Track {
-    /// Arc length grown by `time_s`, px.
-    #[must_use]
-    pub fn grown(&self, time_s: f64) -> f64 {
-        let n = self.points.partition_point(|p| p.time_s <= time_s);
-        match n {
-            0 => 0.0,
-            n if n == self.points.len() => self.arc[n - 1],
-            n => {
-                let (a, b) = (self.points[n - 1].time_s, self.points[n].time_s);
-                self.arc[n - 1] + (self.arc[n] - self.arc[n - 1]) * (time_s - a) / (b - a)
-            }
-        }
-    }
-
-    /// The point at arc length `s`, between points by straight line.
-    #[must_use]
-    pub fn at(&self, s: f64) -> GrownPoint {
-        let n = self
-            .arc
-            .partition_point(|&a| a <= s)
-            .clamp(1, self.arc.len().max(2) - 1);
-        let (Some(a), Some(b)) = (self.points.get(n - 1), self.points.get(n)) else {
-            return self.points[0];
-        };
-        let span = self.arc[n] - self.arc[n - 1];
-        let share = if span > 0.0 {
-            ((s - self.arc[n - 1]) / span).clamp(0.0, 1.0)
-        } else {
-            0.0
-        };
-        let mix = |p: f64, q: f64| p + share * (q - p);
-        GrownPoint {
-            x: mix(a.x, b.x),
-            y: mix(a.y, b.y),
-            time_s: mix(a.time_s, b.time_s),
-            width: mix(a.width, b.width),
-        }
-    }
-
-    /// The points up to arc length `s`, the last one between points; empty when s is 0 or nothing has grown.
-    #[must_use]
-    pub fn until(&self, s: f64) -> Vec<GrownPoint> {
-        if s <= 0.0 || self.points.len() < 2 {
-            return Vec::new();
-        }
-        let n = self.arc.partition_point(|&a| a < s);
-        let mut points = self.points[..n].to_vec();
-        points.push(self.at(s));
-        points
-    }
-
-    /// Total arc length, px.
-    #[must_use]
-    pub fn length(&self) -> f64 {
-        self.arc.last().copied().unwrap_or(0.0)
-    }
-
-    fn new(filament: u32, parent: Option<usize>, first: GrownPoint) -> Self {
-        let (points, arc) = (vec![first], vec![0.0]);
-        Self {
-            filament,
-            parent,
-            points,
-            arc,
-            end: TrackEnd::Free,
-            front: Vec::new(),
-            stopped_s: f64::INFINITY,
-        }
-    }
-
-    fn push(&mut self, point: GrownPoint) {
-        let step = self
-            .points
-            .last()
-            .map_or(0.0, |p| distance(p.place(), point.place()));
-        if step > 0.0 {
-            self.arc.push(self.length() + step);
-            self.points.push(point);
-        }
-    }
-}
-
-/// The moving end of a track.
-struct Tip {
-    track: usize,
-    start_s: f64,
-    speed: f64,
-    width: f64,
-    place: [f64; 2],
-    angle: f64,
-    curvature: f64,
-    log_speed: f64,
-    width_wave: f64,
-    toggle_s: f64,
-    branched_at: f64,
-    running: bool,
-    front: f64,
-    alive: bool,
-    dice: Dice,
-}
 
 /// Simulates the growth of a settled scenario.
 ///
@@ -564,56 +405,10 @@ impl<'a> Field<'a> {
     }
 }
 
-impl Tip {
-    /// Speed at `time`, px/s, with its noise moved on by `dt`.
-    fn pace(&mut self, plan: &GrowthPlan, time: f64, dt: f64, end_s: f64) -> f64 {
-        let memory = libm::exp(-dt / plan.speed_memory_s);
-        self.log_speed = self.log_speed * memory
-            + plan.speed_noise * self.dice.normal() * (1.0 - memory * memory).sqrt();
-        let tau = 0.25 * (end_s - self.start_s).max(dt);
-        let age = (time - self.start_s) / tau;
-        let law = match plan.law {
-            SpeedLaw::Steady => 1.0,
-            // Normalised so that age 0 → 4 (the end) has mean near 1.
-            SpeedLaw::Slowing => 1.6 / (1.0 + age).sqrt(),
-            SpeedLaw::Accelerating => (1.0 + age) / 3.0,
-            SpeedLaw::StopAndGo => {
-                if time >= self.toggle_s {
-                    self.running = !self.running;
-                    self.toggle_s = time + self.dice.wait(0.1 * end_s);
-                }
-                if self.running { 1.6 } else { 0.0 }
-            }
-        };
-        let spread = plan.speed_noise * plan.speed_noise;
-        self.speed * law * libm::exp(self.log_speed - 0.5 * spread)
-    }
-}
-
-/// Unit direction of `points` at index `i` over ± `reach` px of arc: the chord of that window.
-#[must_use]
-pub fn direction_at(track: &Track, i: usize, reach: f64) -> [f64; 2] {
-    let here = track.arc[i];
-    let low = track.arc.partition_point(|&a| a < here - reach);
-    let high = track.arc.partition_point(|&a| a <= here + reach).max(1) - 1;
-    let (low, high) = if low == high {
-        (low.saturating_sub(1), (high + 1).min(track.arc.len() - 1))
-    } else {
-        (low, high)
-    };
-    let chord = minus(track.points[high].place(), track.points[low].place());
-    let size = dot(chord, chord).sqrt();
-    if size > 0.0 {
-        scaled(chord, 1.0 / size)
-    } else {
-        [1.0, 0.0]
-    }
-}
-
 #[cfg(test)]
 mod tests {
-    use super::super::polyline::cross;
-    use super::super::scenario::{FixtureKind, LoadPlan, LoadStage};
+    use super::super::plan::{FixtureKind, LoadPlan, LoadStage};
+    use super::super::polyline::{cross, minus};
     use super::*;
 
     fn loaded(stress_mpa: f64, direction_deg: f64, seed: u64) -> Scenario {
@@ -699,7 +494,7 @@ mod tests {
 
     #[test]
     fn stripping_moves_the_front_back_and_plating_refills_it() {
-        use super::super::scenario::CurrentStage;
+        use super::super::plan::CurrentStage;
         let mut scenario = Scenario {
             seed: 5,
             ..Scenario::default()

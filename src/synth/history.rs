@@ -1,8 +1,8 @@
 //! Load and current at any time of a scenario, from its stages.
 //! Source of the bending formula: elementary beam theory, σ = 6FL/(bh²). Limit: a ramp that the next stage cuts short ends there.
 
-use super::polyline::{axis_deg, scaled};
-use super::scenario::{CellPlan, FixtureKind, LoadPlan};
+use super::plan::{CellPlan, FixtureKind, LoadPlan};
+use super::polyline::{axis_deg, unit};
 
 /// The load in force.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -58,10 +58,7 @@ fn stages(plan: &LoadPlan, time_s: f64) -> (f64, f64) {
         stress += share * (stage.stress_mpa - stress);
         direction += share * turn;
     }
-    (
-        stress,
-        axis_deg(scaled(super::polyline::unit(direction), 1.0)),
-    )
+    (stress, axis_deg(unit(direction)))
 }
 
 /// Force that gives `stress_mpa` in the fixture, N; `None` where the log holds the stress.
@@ -89,7 +86,7 @@ pub fn current_ma(plan: &CellPlan, time_s: f64) -> f64 {
 
 #[cfg(test)]
 mod tests {
-    use super::super::scenario::LoadStage;
+    use super::super::plan::LoadStage;
     use super::*;
 
     fn plan(fixture: FixtureKind) -> LoadPlan {

@@ -7,11 +7,12 @@
 use super::canvas::{OVER, Plane};
 use super::ceramic::Ceramic;
 use super::dice::{Dice, Stream};
-use super::grow::{GrownPoint, Growth, Track, TrackEnd};
 use super::imaging::{Light, Psf};
+use super::plan::TipShape;
 use super::polyline::{distance, dot, minus, plus, scaled};
 use super::recorder::{Shot, Speck};
-use super::scenario::{Polarity, Scenario, TipShape};
+use super::scenario::{Polarity, Scenario};
+use super::track::{GrownPoint, Growth, Track, TrackEnd};
 
 /// Samples around the frame so that blur has something to draw on.
 const PAD: usize = 12;

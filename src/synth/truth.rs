@@ -4,11 +4,11 @@
 
 use serde::{Deserialize, Serialize};
 
-use super::grow::{Growth, Track, TrackEnd, direction_at};
 use super::history::loading;
 use super::polyline::{Polyline, acute_deg, axis_deg, distance};
 use super::recorder::Shot;
 use super::scenario::Scenario;
+use super::track::{Growth, Track, TrackEnd, direction_at};
 
 /// A local direction is taken over ± this many widths of centre-line, and
 pub const WINDOW_WIDTHS: f64 = 1.5;

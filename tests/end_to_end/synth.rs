@@ -1,15 +1,15 @@
 //! Synthetic runs: the same bytes every time, nothing overwritten, a truth that scores itself perfectly, and a demo campaign that
 //! shows the facts of the trade.
 
+#![expect(clippy::unwrap_used, reason = "a test fails by panicking")]
+
 use std::collections::BTreeMap;
 use std::fs;
 use std::path::{Path, PathBuf};
 
 use tempfile::tempdir;
 use veerlog::synth::score::{Recorded, Summary, score_run};
-use veerlog::synth::{
-    Grade, Imaging, Scenario, SynthError, draw, draw_bare, grow, rebuild, write_run,
-};
+use veerlog::synth::{Grade, Imaging, Scenario, SynthError, draw_bare, grow, rebuild, write_run};
 
 fn campaign() -> PathBuf {
     Path::new(env!("CARGO_MANIFEST_DIR")).join("synthetic-frames")
@@ -183,7 +183,7 @@ fn write_perfect_output(run: &Path) {
     );
     let mut filaments = String::from("filament,root\n");
     for p in &truth.paths {
-        let [x, y, time, _] = *p.points.last().unwrap();
+        let [x, y, ..] = *p.points.last().unwrap();
         paths += &format!("{last},{x},{y},{}\n", p.ends_in);
         traces += &format!(
             "{}\n",
@@ -224,8 +224,14 @@ fn write_perfect_output(run: &Path) {
 fn the_truth_itself_scores_perfectly() {
     for seed in [3, 8] {
         let folder = tempdir().unwrap();
-        let mut scenario = draw(Grade::Clear, seed);
-        scenario.frames = 24;
+        let mut scenario = Scenario {
+            width: 240,
+            height: 180,
+            frames: 24,
+            seed,
+            ..Scenario::default()
+        };
+        scenario.growth.width_px = [2.0, 4.0];
         write_run(&scenario.settle().unwrap(), folder.path()).unwrap();
         write_perfect_output(folder.path());
         let score = score_run(folder.path(), None).unwrap();
