@@ -4,7 +4,10 @@
 
 use super::dice::{Dice, Stream};
 use super::imaging::{Grade, Imaging, Light, Psf, Texture};
-use super::plan::{FixtureKind, GrowthPlan, LoadPlan, LoadStage, Meeting, SpeedLaw, TipShape};
+use super::plan::{
+    CellPlan, CurrentStage, FixtureKind, GrowthPlan, LoadPlan, LoadStage, Meeting, SpeedLaw,
+    TipShape,
+};
 use super::scenario::{Polarity, Scenario};
 
 /// A 480 × 360 run of 40 frames, six of them bare, drawn from `seed` within a grade.
@@ -20,10 +23,16 @@ pub fn draw(grade: Grade, seed: u64) -> Scenario {
     let mut dice = Dice::new(seed, Stream::Scenario, grade as usize);
     let blank = Scenario::default();
     let load = load(&mut dice, blank.interval_s * blank.frames as f64);
-    let growth = growth(&mut dice);
+    let mut growth = growth(&mut dice);
+    let cell = cell(&mut dice, &mut growth, &blank);
     let imaging = imaging(&mut dice, grade);
     let (plating_edge, far_edge) =
         edges(&mut dice, f64::from(blank.width), f64::from(blank.height));
+    let filament = if dice.chance(0.2) {
+        Polarity::Brighter
+    } else {
+        Polarity::Darker
+    };
     let name = format!("{grade:?}-{seed}").to_lowercase();
     let note = Some("drawn by chance within its grade".to_owned());
     Scenario {
@@ -31,13 +40,40 @@ pub fn draw(grade: Grade, seed: u64) -> Scenario {
         note,
         seed,
         grade: Some(grade),
+        filament,
         plating_edge,
         far_edge,
         load,
+        cell,
         growth,
         imaging,
         ..blank
     }
+}
+
+/// Constant plating, or a rest or a stripping half-cycle on the way.
+fn cell(dice: &mut Dice, growth: &mut GrowthPlan, blank: &Scenario) -> CellPlan {
+    let plan = CellPlan::default();
+    let kind = dice.below(8);
+    if kind > 1 {
+        return plan;
+    }
+    let from = (blank.end_s() * dice.between(0.4, 0.7)).round();
+    let until = (from + blank.interval_s * dice.between(2.0, 5.0)).round();
+    let current_ma = if kind == 0 { 0.0 } else { -plan.current_ma };
+    growth.retreat_px_per_s = dice.between(0.3, 1.0);
+    growth.stripped_contrast = dice.between(0.0, 0.5);
+    let stages = vec![
+        CurrentStage {
+            at_s: from,
+            current_ma,
+        },
+        CurrentStage {
+            at_s: until,
+            current_ma: plan.current_ma,
+        },
+    ];
+    CellPlan { stages, ..plan }
 }
 
 /// The same picture without any growth.
@@ -191,15 +227,6 @@ fn imaging(dice: &mut Dice, grade: Grade) -> Imaging {
         far_level: dice.pick(&[0.4, 0.6, 1.3]),
         bits: if dice.chance(0.2) { 16 } else { 8 },
         ..drawn
-    }
-}
-
-impl Scenario {
-    /// The same run with filaments brighter than the ceramic.
-    #[must_use]
-    pub fn brighter(mut self) -> Self {
-        self.filament = Polarity::Brighter;
-        self
     }
 }
 
