@@ -52,35 +52,46 @@ impl From<GradeArg> for Grade {
     }
 }
 
-/// Runs the command and gives the folders written, in order.
+/// Runs the command and gives the text to print.
 /// # Errors
 /// A scenario that cannot be read, or a folder that is not empty or cannot be written.
-pub fn run(args: &SynthArgs) -> Result<Vec<PathBuf>, SynthError> {
+pub fn run(args: &SynthArgs) -> Result<String, SynthError> {
     if args.rebuild {
         crate::synth::rebuild(&args.dir)?;
-        return Ok(vec![args.dir.clone()]);
-    }
-    if let Some(path) = &args.scenario {
+    } else if let Some(path) = &args.scenario {
         write_run(&Scenario::load(path)?, &args.dir)?;
-        return Ok(vec![args.dir.clone()]);
+    } else if let Some(count) = args.fleet {
+        for i in 0..count {
+            drawn(
+                args,
+                args.seed + i,
+                &args.dir.join(format!("run-{:03}", i + 1)),
+            )?;
+        }
+        return Ok(format!(
+            "{count} runs in {}; the truth of each is in its truth/",
+            args.dir.display()
+        ));
+    } else {
+        drawn(args, args.seed, &args.dir)?;
     }
-    let grade = args.grade.unwrap_or(GradeArg::Clear);
-    let Some(count) = args.fleet else {
-        drawn(args, grade, args.seed, &args.dir)?;
-        return Ok(vec![args.dir.clone()]);
-    };
-    (0..count)
-        .map(|i| {
-            let folder = args.dir.join(format!("run-{:03}", i + 1));
-            drawn(args, grade, args.seed + i, &folder)?;
-            Ok(folder)
-        })
-        .collect()
+    Ok(format!(
+        "{}: a run with its truth in truth/",
+        args.dir.display()
+    ))
 }
 
 /// Draws and writes one run.
-fn drawn(args: &SynthArgs, grade: GradeArg, seed: u64, folder: &Path) -> Result<(), SynthError> {
-    let scenario = if args.no_growth { draw_bare(grade.into(), seed) } else { draw(grade.into(), seed) };
-    let settled = scenario.settle().map_err(|message| SynthError::Scenario { path: folder.to_owned(), message })?;
+fn drawn(args: &SynthArgs, seed: u64, folder: &Path) -> Result<(), SynthError> {
+    let grade = args.grade.unwrap_or(GradeArg::Clear).into();
+    let scenario = if args.no_growth {
+        draw_bare(grade, seed)
+    } else {
+        draw(grade, seed)
+    };
+    let settled = scenario.settle().map_err(|message| SynthError::Scenario {
+        path: folder.to_owned(),
+        message,
+    })?;
     write_run(&settled, folder)
 }

@@ -1,5 +1,5 @@
 //! The still scene: ceramic with grains, clouds, polishing lines, pores and scratches between two electrodes.
-//! Method: jittered-grid Voronoi cells (Worley 1996, SIGGRAPH, 291–294), value noise with smooth blending (Perlin 1985, SIGGRAPH, 287–296).
+//! Method: patterns of `texture` multiplied together, electrodes laid over them with a soft, rough boundary.
 //! Values are brightness relative to the clean ceramic (1). Limit: two-dimensional; nothing refracts.
 
 use super::canvas::{OVER, Plane};
@@ -7,6 +7,7 @@ use super::dice::{Dice, Stream};
 use super::imaging::Texture;
 use super::polyline::{Polyline, dot, minus, plus, scaled, unit};
 use super::scenario::Scenario;
+use super::texture::{Grains, Noise, line};
 
 /// The still scene on an oversampled plane, with room around the picture for drift.
 #[derive(Debug, Clone)]
@@ -26,7 +27,10 @@ impl Ceramic {
         let across = |n: u32| (f64::from(n) + 2.0 * margin) as usize * OVER;
         let (cols, rows) = (across(scenario.width), across(scenario.height));
         let place = move |col: usize, row: usize| {
-            [col as f64 / OVER as f64 - margin, row as f64 / OVER as f64 - margin]
+            [
+                col as f64 / OVER as f64 - margin,
+                row as f64 / OVER as f64 - margin,
+            ]
         };
         let window = electrodes(scenario, cols, rows, &place);
         let body = Body::draw(scenario, margin);
@@ -44,14 +48,24 @@ impl Ceramic {
             let i = row * cols + col;
             (1.0 - window.0.data[i]) * (1.0 - window.1.data[i])
         });
-        Self { brightness, window, margin }
+        Self {
+            brightness,
+            window,
+            margin,
+        }
     }
 
     /// Brightness and share of ceramic at a place of the picture (px of the first usable frame).
     #[must_use]
     pub fn at(&self, p: [f64; 2]) -> (f32, f32) {
-        let (x, y) = ((p[0] + self.margin) * OVER as f64, (p[1] + self.margin) * OVER as f64);
-        (self.brightness.cubic(x, y), self.window.cubic(x, y).clamp(0.0, 1.0))
+        let (x, y) = (
+            (p[0] + self.margin) * OVER as f64,
+            (p[1] + self.margin) * OVER as f64,
+        );
+        (
+            self.brightness.cubic(x, y),
+            self.window.cubic(x, y).clamp(0.0, 1.0),
+        )
     }
 }
 
@@ -62,8 +76,14 @@ fn electrodes(
     rows: usize,
     place: &(impl Fn(usize, usize) -> [f64; 2] + Sync),
 ) -> (Plane, Plane) {
-    let (Some(plating), Some(far)) = (Polyline::new(&scenario.plating_edge), Polyline::new(&scenario.far_edge)) else {
-        return (Plane::filled(cols, rows, 0.0), Plane::filled(cols, rows, 0.0));
+    let (Some(plating), Some(far)) = (
+        Polyline::new(&scenario.plating_edge),
+        Polyline::new(&scenario.far_edge),
+    ) else {
+        return (
+            Plane::filled(cols, rows, 0.0),
+            Plane::filled(cols, rows, 0.0),
+        );
     };
     let imaging = &scenario.imaging;
     let cover = |edge: &Polyline, inner: f64, index: usize| {
@@ -73,10 +93,14 @@ fn electrodes(
             let p = place(col, row);
             let near = edge.nearest(p, true);
             let depth = near.distance * near.side * inner + rough.at(dot(near.point, near.tangent));
-            (0.5 * libm::erfc(depth / (std::f64::consts::SQRT_2 * imaging.edge_blur_px.max(0.2)))) as f32
+            (0.5 * libm::erfc(depth / (std::f64::consts::SQRT_2 * imaging.edge_blur_px.max(0.2))))
+                as f32
         })
     };
-    (cover(&plating, plating.side_of(&far), 0), cover(&far, far.side_of(&plating), 1))
+    (
+        cover(&plating, plating.side_of(&far), 0),
+        cover(&far, far.side_of(&plating), 1),
+    )
 }
 
 /// A rough line: a few sines of random phase and length.
@@ -86,11 +110,24 @@ impl Waves {
     fn draw(dice: &mut Dice, deviation: f64) -> Self {
         const COUNT: usize = 6;
         let size = deviation * (2.0 / COUNT as f64).sqrt();
-        Self((0..COUNT).map(|_| [size, 1.0 / dice.log_within([2.0, 25.0]), dice.between(0.0, std::f64::consts::TAU)]).collect())
+        Self(
+            (0..COUNT)
+                .map(|_| {
+                    [
+                        size,
+                        1.0 / dice.log_within([2.0, 25.0]),
+                        dice.between(0.0, std::f64::consts::TAU),
+                    ]
+                })
+                .collect(),
+        )
     }
 
     fn at(&self, s: f64) -> f64 {
-        self.0.iter().map(|[size, k, phase]| size * libm::sin(k * s + phase)).sum()
+        self.0
+            .iter()
+            .map(|[size, k, phase]| size * libm::sin(k * s + phase))
+            .sum()
     }
 }
 
@@ -126,22 +163,41 @@ impl Body {
         let imaging = &scenario.imaging;
         let mut dice = Dice::new(scenario.seed, Stream::Ceramic, 0);
         let (w, h) = (f64::from(scenario.width), f64::from(scenario.height));
-        let anywhere = |dice: &mut Dice| [dice.between(-margin, w + margin), dice.between(-margin, h + margin)];
+        let anywhere = |dice: &mut Dice| {
+            [
+                dice.between(-margin, w + margin),
+                dice.between(-margin, h + margin),
+            ]
+        };
         let pores = (0..imaging.pores)
-            .map(|_| Pore { place: anywhere(&mut dice), radius: dice.log_within([0.6, 3.5]), loss: dice.between(0.08, 0.4) })
+            .map(|_| Pore {
+                place: anywhere(&mut dice),
+                radius: dice.log_within([0.6, 3.5]),
+                loss: dice.between(0.08, 0.4),
+            })
             .collect();
         let scratches = (0..imaging.scratches)
             .map(|_| {
                 let (from, along) = (anywhere(&mut dice), dice.between(0.0, 180.0));
                 let to = plus(from, scaled(unit(along), dice.log_within([40.0, 300.0])));
                 let sign = if dice.chance(0.5) { 1.0 } else { -1.0 };
-                Scratch { from, to, half_width: dice.between(0.35, 0.8), gain: sign * dice.between(0.03, 0.12) }
+                Scratch {
+                    from,
+                    to,
+                    half_width: dice.between(0.35, 0.8),
+                    gain: sign * dice.between(0.03, 0.12),
+                }
             })
             .collect();
         Self {
             texture: imaging.texture,
             strength: imaging.texture_contrast,
-            grains: Grains::draw(&mut dice, imaging.grain_px.max(4.0), [-margin, -margin], [w + margin, h + margin]),
+            grains: Grains::draw(
+                &mut dice,
+                imaging.grain_px.max(4.0),
+                [-margin, -margin],
+                [w + margin, h + margin],
+            ),
             cloud: Noise::draw(&mut dice),
             fine: Noise::draw(&mut dice),
             brush: unit(dice.between(0.0, 180.0)),
@@ -152,7 +208,8 @@ impl Body {
 
     /// Brightness of the pattern at `p`, without pores and scratches.
     fn at(&self, p: [f64; 2]) -> f64 {
-        let roughness = 0.25 * self.fine.at(scaled(p, 1.0 / 1.6)) + 0.25 * self.fine.at(scaled(p, 1.0 / 4.0));
+        let roughness =
+            0.25 * self.fine.at(scaled(p, 1.0 / 1.6)) + 0.25 * self.fine.at(scaled(p, 1.0 / 4.0));
         let pattern = match self.texture {
             Texture::Plain => 0.0,
             Texture::Cloud => {
@@ -161,7 +218,8 @@ impl Body {
             }
             Texture::Brushed => {
                 let (along, across) = (dot(p, self.brush), dot(p, [-self.brush[1], self.brush[0]]));
-                self.cloud.at([along / 90.0, across / 1.8]) + 0.6 * self.cloud.at([along / 40.0 + 50.0, across / 5.0])
+                self.cloud.at([along / 90.0, across / 1.8])
+                    + 0.6 * self.cloud.at([along / 40.0 + 50.0, across / 5.0])
             }
             Texture::Grains => {
                 let grain = self.grains.at(p);
@@ -178,13 +236,22 @@ impl Body {
     /// Puts pores and scratches on a plane, each only where it is.
     fn mark(&self, plane: &mut Plane, margin: f64) {
         for pore in &self.pores {
-            mark_within(plane, margin, pore.place, pore.place, pore.radius + 1.5, |p| {
-                let away = dot(minus(p, pore.place), minus(p, pore.place)).sqrt();
-                1.0 - pore.loss * (0.5 + (pore.radius - away) / 1.5).clamp(0.0, 1.0)
-            });
+            mark_within(
+                plane,
+                margin,
+                pore.place,
+                pore.place,
+                pore.radius + 1.5,
+                |p| {
+                    let away = dot(minus(p, pore.place), minus(p, pore.place)).sqrt();
+                    1.0 - pore.loss * (0.5 + (pore.radius - away) / 1.5).clamp(0.0, 1.0)
+                },
+            );
         }
         for scratch in &self.scratches {
-            let Some(edge) = Polyline::new(&[scratch.from, scratch.to]) else { continue };
+            let Some(edge) = Polyline::new(&[scratch.from, scratch.to]) else {
+                continue;
+            };
             mark_within(plane, margin, scratch.from, scratch.to, 3.0, |p| {
                 1.0 + scratch.gain * line(edge.nearest(p, false).distance, scratch.half_width)
             });
@@ -207,95 +274,12 @@ fn mark_within(
     };
     for row in span(1, plane.rows) {
         for col in span(0, plane.cols) {
-            let p = [col as f64 / OVER as f64 - margin, row as f64 / OVER as f64 - margin];
+            let p = [
+                col as f64 / OVER as f64 - margin,
+                row as f64 / OVER as f64 - margin,
+            ];
             plane.data[row * plane.cols + col] *= factor(p) as f32;
         }
-    }
-}
-
-/// Profile of a soft line at `away` from its middle.
-fn line(away: f64, half_width: f64) -> f64 {
-    libm::exp(-(away * away) / (half_width * half_width))
-}
-
-/// Voronoi grains on a jittered grid.
-struct Grains {
-    size: f64,
-    origin: [f64; 2],
-    cols: usize,
-    rows: usize,
-    seeds: Vec<([f64; 2], f64)>,
-}
-
-/// What the grains are at a place.
-struct Grain {
-    /// Distance to the nearest boundary, px.
-    to_border: f64,
-    /// Tone of the grain, standard normal.
-    tone: f64,
-    /// Strength of the nearest boundary, 0.2 to 1.
-    seam: f64,
-}
-
-impl Grains {
-    fn draw(dice: &mut Dice, size: f64, low: [f64; 2], high: [f64; 2]) -> Self {
-        let count = |axis: usize| ((high[axis] - low[axis]) / size).ceil() as usize + 4;
-        let (cols, rows) = (count(0), count(1));
-        let origin = [low[0] - 2.0 * size, low[1] - 2.0 * size];
-        let seeds = (0..cols * rows)
-            .map(|i| {
-                let cell = [(i % cols) as f64 + dice.between(0.05, 0.95), (i / cols) as f64 + dice.between(0.05, 0.95)];
-                (plus(origin, scaled(cell, size)), dice.normal())
-            })
-            .collect();
-        Self { size, origin, cols, rows, seeds }
-    }
-
-    fn at(&self, p: [f64; 2]) -> Grain {
-        let cell = |axis: usize, n: usize| (((p[axis] - self.origin[axis]) / self.size).floor() as isize).clamp(2, n as isize - 3);
-        let (cx, cy) = (cell(0, self.cols), cell(1, self.rows));
-        let (mut first, mut second) = ((f64::INFINITY, 0), (f64::INFINITY, 0));
-        for y in cy - 2..=cy + 2 {
-            for x in cx - 2..=cx + 2 {
-                let i = y as usize * self.cols + x as usize;
-                let off = minus(p, self.seeds[i].0);
-                let away = dot(off, off);
-                if away < first.0 {
-                    (second, first) = (first, (away, i));
-                } else if away < second.0 {
-                    second = (away, i);
-                }
-            }
-        }
-        let between = minus(self.seeds[first.1].0, self.seeds[second.1].0);
-        let apart = dot(between, between).sqrt().max(1e-9);
-        let pair = self.seeds[first.1].1 + self.seeds[second.1].1;
-        let seam = 0.2 + 0.8 * (pair * 7.0 - (pair * 7.0).floor());
-        Grain { to_border: (second.0 - first.0) / (2.0 * apart), tone: self.seeds[first.1].1, seam }
-    }
-}
-
-/// Value noise: standard normal values on a 64 × 64 torus, blended smoothly.
-struct Noise(Vec<f64>);
-
-const TORUS: usize = 64;
-
-impl Noise {
-    fn draw(dice: &mut Dice) -> Self {
-        Self((0..TORUS * TORUS).map(|_| dice.normal()).collect())
-    }
-
-    fn at(&self, p: [f64; 2]) -> f64 {
-        let (x0, y0) = (p[0].floor(), p[1].floor());
-        let fade = |t: f64| t * t * (3.0 - 2.0 * t);
-        let (fx, fy) = (fade(p[0] - x0), fade(p[1] - y0));
-        let value = |dx: f64, dy: f64| {
-            let wrap = |v: f64| v.rem_euclid(TORUS as f64) as usize % TORUS;
-            self.0[wrap(y0 + dy) * TORUS + wrap(x0 + dx)]
-        };
-        let top = value(0.0, 0.0) + fx * (value(1.0, 0.0) - value(0.0, 0.0));
-        let low = value(0.0, 1.0) + fx * (value(1.0, 1.0) - value(0.0, 1.0));
-        top + fy * (low - top)
     }
 }
 
@@ -305,30 +289,63 @@ mod tests {
 
     #[test]
     fn electrodes_lie_behind_their_edges() {
-        let mut scenario = Scenario { width: 160, height: 120, ..Scenario::default() };
+        let mut scenario = Scenario {
+            width: 160,
+            height: 120,
+            ..Scenario::default()
+        };
         scenario.imaging.pores = 0;
         let scenario = scenario.settle().unwrap();
         let ceramic = Ceramic::draw(&scenario, 8.0);
         let levels = [2.0, 80.0, 158.0].map(|x| ceramic.at([x, 60.0]));
-        assert!((f64::from(levels[0].0) - scenario.imaging.plating_level).abs() < 0.05, "{levels:?}");
+        assert!(
+            (f64::from(levels[0].0) - scenario.imaging.plating_level).abs() < 0.05,
+            "{levels:?}"
+        );
         assert!(levels[1].1 > 0.99 && levels[0].1 < 0.01 && levels[2].1 < 0.01);
         assert!((levels[1].0 - 1.0).abs() < 0.15);
         // On the edge itself half is ceramic, but for the roughness.
         let edge = scenario.plating_edge[0][0];
-        let mean = (0..100).map(|y| ceramic.at([edge, f64::from(y)]).1).sum::<f32>() / 100.0;
+        let mean = (0..100)
+            .map(|y| ceramic.at([edge, f64::from(y)]).1)
+            .sum::<f32>()
+            / 100.0;
         assert!((mean - 0.5).abs() < 0.15, "{mean}");
     }
 
     #[test]
     fn every_texture_varies_but_keeps_its_mean() {
-        for texture in [Texture::Grains, Texture::Tones, Texture::Cloud, Texture::Brushed, Texture::Plain] {
-            let mut scenario = Scenario { width: 200, height: 200, ..Scenario::default() };
-            scenario.imaging = super::super::Imaging { texture, texture_contrast: 0.1, pores: 0, ..scenario.imaging };
+        for texture in [
+            Texture::Grains,
+            Texture::Tones,
+            Texture::Cloud,
+            Texture::Brushed,
+            Texture::Plain,
+        ] {
+            let mut scenario = Scenario {
+                width: 200,
+                height: 200,
+                ..Scenario::default()
+            };
+            scenario.imaging = super::super::Imaging {
+                texture,
+                texture_contrast: 0.1,
+                pores: 0,
+                ..scenario.imaging
+            };
             let ceramic = Ceramic::draw(&scenario.settle().unwrap(), 4.0);
-            let values: Vec<f32> = (0..80).flat_map(|i| (0..80).map(move |j| (i, j))).map(|(i, j)| ceramic.at([60.0 + f64::from(i), 60.0 + f64::from(j)]).0).collect();
+            let values: Vec<f32> = (0..80)
+                .flat_map(|i| (0..80).map(move |j| (i, j)))
+                .map(|(i, j)| ceramic.at([60.0 + f64::from(i), 60.0 + f64::from(j)]).0)
+                .collect();
             let mean = values.iter().sum::<f32>() / values.len() as f32;
-            let deviation = (values.iter().map(|v| (v - mean) * (v - mean)).sum::<f32>() / values.len() as f32).sqrt();
-            assert!((mean - 1.0).abs() < 0.12 && deviation > 0.01 && deviation < 0.25, "{texture:?} {mean} {deviation}");
+            let deviation = (values.iter().map(|v| (v - mean) * (v - mean)).sum::<f32>()
+                / values.len() as f32)
+                .sqrt();
+            assert!(
+                (mean - 1.0).abs() < 0.12 && deviation > 0.01 && deviation < 0.25,
+                "{texture:?} {mean} {deviation}"
+            );
         }
     }
 }

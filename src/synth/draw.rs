@@ -4,7 +4,11 @@
 
 use super::dice::{Dice, Stream};
 use super::imaging::{Grade, Imaging, Light, Psf, Texture};
-use super::scenario::{FixtureKind, GrowthPlan, LoadPlan, LoadStage, Meeting, Polarity, Scenario, SpeedLaw, TipShape};
+use super::plan::{
+    CellPlan, CurrentStage, FixtureKind, GrowthPlan, LoadPlan, LoadStage, Meeting, SpeedLaw,
+    TipShape,
+};
+use super::scenario::{Polarity, Scenario};
 
 /// A 480 × 360 run of 40 frames, six of them bare, drawn from `seed` within a grade.
 ///
@@ -19,12 +23,57 @@ pub fn draw(grade: Grade, seed: u64) -> Scenario {
     let mut dice = Dice::new(seed, Stream::Scenario, grade as usize);
     let blank = Scenario::default();
     let load = load(&mut dice, blank.interval_s * blank.frames as f64);
-    let growth = growth(&mut dice);
+    let mut growth = growth(&mut dice);
+    let cell = cell(&mut dice, &mut growth, &blank);
     let imaging = imaging(&mut dice, grade);
-    let (plating_edge, far_edge) = edges(&mut dice, f64::from(blank.width), f64::from(blank.height));
+    let (plating_edge, far_edge) =
+        edges(&mut dice, f64::from(blank.width), f64::from(blank.height));
+    let filament = if dice.chance(0.2) {
+        Polarity::Brighter
+    } else {
+        Polarity::Darker
+    };
     let name = format!("{grade:?}-{seed}").to_lowercase();
     let note = Some("drawn by chance within its grade".to_owned());
-    Scenario { name, note, seed, grade: Some(grade), plating_edge, far_edge, load, growth, imaging, ..blank }
+    Scenario {
+        name,
+        note,
+        seed,
+        grade: Some(grade),
+        filament,
+        plating_edge,
+        far_edge,
+        load,
+        cell,
+        growth,
+        imaging,
+        ..blank
+    }
+}
+
+/// Constant plating, or a rest or a stripping half-cycle on the way.
+fn cell(dice: &mut Dice, growth: &mut GrowthPlan, blank: &Scenario) -> CellPlan {
+    let plan = CellPlan::default();
+    let kind = dice.below(8);
+    if kind > 1 {
+        return plan;
+    }
+    let from = (blank.end_s() * dice.between(0.4, 0.7)).round();
+    let until = (from + blank.interval_s * dice.between(2.0, 5.0)).round();
+    let current_ma = if kind == 0 { 0.0 } else { -plan.current_ma };
+    growth.retreat_px_per_s = dice.between(0.3, 1.0);
+    growth.stripped_contrast = dice.between(0.0, 0.5);
+    let stages = vec![
+        CurrentStage {
+            at_s: from,
+            current_ma,
+        },
+        CurrentStage {
+            at_s: until,
+            current_ma: plan.current_ma,
+        },
+    ];
+    CellPlan { stages, ..plan }
 }
 
 /// The same picture without any growth.
@@ -52,7 +101,10 @@ fn edges(dice: &mut Dice, w: f64, h: f64) -> (Vec<[f64; 2]>, Vec<[f64; 2]>) {
         line[1][1] += bow;
         line
     };
-    let (bow_a, bow_b) = (dice.between(-4.0, 4.0).round(), dice.between(-4.0, 4.0).round());
+    let (bow_a, bow_b) = (
+        dice.between(-4.0, 4.0).round(),
+        dice.between(-4.0, 4.0).round(),
+    );
     match dice.below(6) {
         0..=2 => (upright(near, bow_a), upright(far, bow_b)),
         3 => (upright(far, bow_a), upright(near, bow_b)),
@@ -76,17 +128,43 @@ fn load(dice: &mut Dice, duration_s: f64) -> LoadPlan {
     let stages = match dice.below(8) {
         0 => return LoadPlan::default(),
         1 | 2 => vec![stage(0.0, stress, axis, 0.0)],
-        3 => vec![stage(0.0, stress, axis, 0.0), stage(middle, stress, axis + turn, 0.0)],
-        4 => vec![stage(0.0, stress, axis, 0.0), stage(middle, stress, axis + turn, ramp)],
-        5 => vec![stage(0.0, 0.0, axis, 0.0), stage(middle, stress, axis, ramp)],
-        6 => vec![stage(0.0, stress, axis, 0.0), stage(middle, -stress, axis, 0.0)],
+        3 => vec![
+            stage(0.0, stress, axis, 0.0),
+            stage(middle, stress, axis + turn, 0.0),
+        ],
+        4 => vec![
+            stage(0.0, stress, axis, 0.0),
+            stage(middle, stress, axis + turn, ramp),
+        ],
+        5 => vec![
+            stage(0.0, 0.0, axis, 0.0),
+            stage(middle, stress, axis, ramp),
+        ],
+        6 => vec![
+            stage(0.0, stress, axis, 0.0),
+            stage(middle, -stress, axis, 0.0),
+        ],
         _ => {
             let period = duration_s * dice.between(0.12, 0.25);
             let swings = (duration_s / period) as usize;
-            (0..=swings).map(|i| stage(i as f64 * period, stress, axis + if i % 2 == 0 { 0.0 } else { turn }, 0.0)).collect()
+            (0..=swings)
+                .map(|i| {
+                    stage(
+                        i as f64 * period,
+                        stress,
+                        axis + if i % 2 == 0 { 0.0 } else { turn },
+                        0.0,
+                    )
+                })
+                .collect()
         }
     };
-    LoadPlan { fixture: FixtureKind::Stress, stages, noise_mpa: dice.between(0.1, 2.0), ..LoadPlan::default() }
+    LoadPlan {
+        fixture: FixtureKind::Stress,
+        stages,
+        noise_mpa: dice.between(0.1, 2.0),
+        ..LoadPlan::default()
+    }
 }
 
 fn growth(dice: &mut Dice) -> GrowthPlan {
@@ -95,7 +173,12 @@ fn growth(dice: &mut Dice) -> GrowthPlan {
         filaments: 2 + dice.below(5),
         start_s: [2.0, dice.between(20.0, 150.0)],
         width_px: [thin, (thin + dice.between(0.5, 3.0)).min(6.0)],
-        law: dice.pick(&[SpeedLaw::Steady, SpeedLaw::Slowing, SpeedLaw::Accelerating, SpeedLaw::StopAndGo]),
+        law: dice.pick(&[
+            SpeedLaw::Steady,
+            SpeedLaw::Slowing,
+            SpeedLaw::Accelerating,
+            SpeedLaw::StopAndGo,
+        ]),
         speed_noise: dice.between(0.1, 0.5),
         speed_memory_s: dice.log_within([10.0, 100.0]),
         steering_per_px: dice.log_within([0.015, 0.08]),
@@ -103,11 +186,12 @@ fn growth(dice: &mut Dice) -> GrowthPlan {
         wander_per_px: dice.log_within([0.006, 0.03]),
         wander_memory_px: dice.log_within([12.0, 60.0]),
         root_spread_deg: dice.between(5.0, 25.0),
-        branches_per_100_px: dice.pick(&[0.0, 0.3, 0.6, 1.0]),
+        branch_limit: 1 + dice.below(5),
+        branches_per_100_px: dice.pick(&[0.0, 0.15, 0.3, 0.6]),
         width_noise: dice.between(0.0, 0.1),
         widen_s: dice.pick(&[0.0, 0.0, 30.0, 80.0]),
         tip: dice.pick(&[TipShape::Round, TipShape::Round, TipShape::Tapered]),
-        meeting: dice.pick(&[Meeting::Stop, Meeting::Stop, Meeting::Cross]),
+        meeting: dice.pick(&[Meeting::Stop, Meeting::Stop, Meeting::Stop, Meeting::Cross]),
         ..GrowthPlan::default()
     }
 }
@@ -129,22 +213,20 @@ fn imaging(dice: &mut Dice, grade: Grade) -> Imaging {
         psf: dice.pick(&[Psf::Gaussian, Psf::Gaussian, Psf::Halo, Psf::Disc]),
         psf_px: dice.between(0.5, 1.0),
         level: dice.between(0.4, 0.65),
-        texture: dice.pick(&[Texture::Grains, Texture::Grains, Texture::Tones, Texture::Cloud, Texture::Brushed, Texture::Plain]),
+        texture: dice.pick(&[
+            Texture::Grains,
+            Texture::Grains,
+            Texture::Tones,
+            Texture::Cloud,
+            Texture::Brushed,
+            Texture::Plain,
+        ]),
         grain_px: dice.log_within([12.0, 60.0]),
         light: dice.pick(&[Light::Tilt, Light::Vignette, Light::Spot]),
         plating_level: dice.pick(&[0.35, 0.5, 1.35]),
         far_level: dice.pick(&[0.4, 0.6, 1.3]),
         bits: if dice.chance(0.2) { 16 } else { 8 },
         ..drawn
-    }
-}
-
-impl Scenario {
-    /// The same run with filaments brighter than the ceramic.
-    #[must_use]
-    pub fn brighter(mut self) -> Self {
-        self.filament = Polarity::Brighter;
-        self
     }
 }
 
@@ -168,6 +250,9 @@ mod tests {
     #[test]
     fn grades_keep_their_contrast_and_noise() {
         let scenario = draw(Grade::Typical, 3);
-        assert!((scenario.imaging.contrast - 0.18).abs() < 1e-12 && (scenario.imaging.noise - 2.6).abs() < 1e-12);
+        assert!(
+            (scenario.imaging.contrast - 0.18).abs() < 1e-12
+                && (scenario.imaging.noise - 2.6).abs() < 1e-12
+        );
     }
 }

@@ -7,7 +7,10 @@ use std::path::{Path, PathBuf};
 pub enum SynthError {
     /// Reading or writing failed.
     #[error("{path}: {source}")]
-    #[diagnostic(code(synth::io), help("check that the path exists and may be read or written"))]
+    #[diagnostic(
+        code(synth::io),
+        help("check that the path exists and may be read or written")
+    )]
     Io {
         /// The file or folder.
         path: PathBuf,
@@ -16,7 +19,12 @@ pub enum SynthError {
     },
     /// A scenario file does not parse or asks for the impossible.
     #[error("{path}: {message}")]
-    #[diagnostic(code(synth::scenario), help("`synthetic-frames/*/scenario.toml` show working scenarios; every key is described in the docs of `synth::scenario`"))]
+    #[diagnostic(
+        code(synth::scenario),
+        help(
+            "`synthetic-frames/*/scenario.toml` show working scenarios; every key is described in the docs of `synth::scenario`"
+        )
+    )]
     Scenario {
         /// The scenario file.
         path: PathBuf,
@@ -25,7 +33,10 @@ pub enum SynthError {
     },
     /// The folder to write holds something.
     #[error("{path} is not empty")]
-    #[diagnostic(code(synth::occupied), help("nothing is ever overwritten: name a new folder, or remove this one first"))]
+    #[diagnostic(
+        code(synth::occupied),
+        help("nothing is ever overwritten: name a new folder, or remove this one first")
+    )]
     Occupied {
         /// The folder.
         path: PathBuf,
@@ -45,7 +56,12 @@ pub enum SynthError {
     },
     /// A run or its truth is not as expected.
     #[error("{path}: {message}")]
-    #[diagnostic(code(synth::unscorable), help("`score` needs RUN/truth (written by `veerlog synth`) and RUN/veerlog (written by `veerlog report RUN`)"))]
+    #[diagnostic(
+        code(synth::unscorable),
+        help(
+            "`score` needs RUN/truth (written by `veerlog synth`) and RUN/veerlog (written by `veerlog report RUN`)"
+        )
+    )]
     Unscorable {
         /// The file or folder.
         path: PathBuf,
@@ -58,6 +74,9 @@ impl SynthError {
     /// An I/O failure at `path`.
     #[must_use]
     pub fn io(path: &Path, source: std::io::Error) -> Self {
-        Self::Io { path: path.to_owned(), source }
+        Self::Io {
+            path: path.to_owned(),
+            source,
+        }
     }
 }

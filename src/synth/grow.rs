@@ -7,151 +7,20 @@
 
 use super::dice::{Dice, Stream};
 use super::history::{current_ma, loading};
-use super::polyline::{Polyline, distance, dot, minus, plus, scaled};
-use super::scenario::{GrowthPlan, Meeting, RootPlan, Scenario, SpeedLaw};
+use super::plan::{GrowthPlan, Meeting, RootPlan};
+use super::polyline::{Polyline, distance, dot, plus, scaled};
+use super::scenario::Scenario;
+use super::tip::Tip;
+use super::track::{GrownPoint, Growth, Track, TrackEnd};
 
 /// Longest step of a tip, px.
 const STEP_PX: f64 = 0.4;
 /// A tip this near the picture's border leaves the view and stops, px.
 const BORDER_PX: f64 = 6.0;
+/// Least way between a root or branching and the next branching, px.
+const BRANCH_SPACING_PX: f64 = 15.0;
 /// Regrowth along an emptied track is this much faster than new growth (common practice: the crack is there already).
 const REFILL: f64 = 3.0;
-
-/// One point of a true centre-line.
-#[derive(Debug, Clone, Copy, PartialEq)]
-pub struct GrownPoint {
-    /// Picture x, px.
-    pub x: f64,
-    /// Picture y, px.
-    pub y: f64,
-    /// First arrival, s.
-    pub time_s: f64,
-    /// Full width once grown, px.
-    pub width: f64,
-}
-
-impl GrownPoint {
-    /// Its place.
-    #[must_use]
-    pub fn place(&self) -> [f64; 2] {
-        [self.x, self.y]
-    }
-}
-
-/// Why a track's end is where it is.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum TrackEnd {
-    /// A free end.
-    Free,
-    /// It ran into another track.
-    Met,
-    /// It touched the far edge.
-    Contact,
-}
-
-/// All that one tip left behind, from its root or branching to its end.
-#[derive(Debug, Clone, PartialEq)]
-pub struct Track {
-    /// Filament, from 1.
-    pub filament: u32,
-    /// Track it branched from, as an index.
-    pub parent: Option<usize>,
-    /// Root to tip; at most 0.6 px apart.
-    pub points: Vec<GrownPoint>,
-    /// Arc length at each point, px.
-    pub arc: Vec<f64>,
-    /// What the end is.
-    pub end: TrackEnd,
-    /// Arc length filled with metal at each frame, px (below the grown length after stripping).
-    pub front: Vec<f64>,
-    /// Time at which it stopped for good, s (end of run when it never did).
-    pub stopped_s: f64,
-}
-
-/// All growth of a run.
-#[derive(Debug, Clone, PartialEq)]
-pub struct Growth {
-    /// In order of appearance; a parent stands before its children.
-    pub tracks: Vec<Track>,
-    /// First contact with the far edge: (time in s, index of the track).
-    pub contact: Option<(f64, usize)>,
-}
-
-impl Track {
-    /// Arc length grown by `time_s`, px.
-    #[must_use]
-    pub fn grown(&self, time_s: f64) -> f64 {
-        let n = self.points.partition_point(|p| p.time_s <= time_s);
-        match n {
-            0 => 0.0,
-            n if n == self.points.len() => self.arc[n - 1],
-            n => {
-                let (a, b) = (self.points[n - 1].time_s, self.points[n].time_s);
-                self.arc[n - 1] + (self.arc[n] - self.arc[n - 1]) * (time_s - a) / (b - a)
-            }
-        }
-    }
-
-    /// The point at arc length `s`, between points by straight line.
-    #[must_use]
-    pub fn at(&self, s: f64) -> GrownPoint {
-        let n = self.arc.partition_point(|&a| a <= s).clamp(1, self.arc.len().max(2) - 1);
-        let (Some(a), Some(b)) = (self.points.get(n - 1), self.points.get(n)) else { return self.points[0] };
-        let span = self.arc[n] - self.arc[n - 1];
-        let share = if span > 0.0 { ((s - self.arc[n - 1]) / span).clamp(0.0, 1.0) } else { 0.0 };
-        let mix = |p: f64, q: f64| p + share * (q - p);
-        GrownPoint { x: mix(a.x, b.x), y: mix(a.y, b.y), time_s: mix(a.time_s, b.time_s), width: mix(a.width, b.width) }
-    }
-
-    /// The points up to arc length `s`, the last one between points; empty when s is 0 or nothing has grown.
-    #[must_use]
-    pub fn until(&self, s: f64) -> Vec<GrownPoint> {
-        if s <= 0.0 || self.points.len() < 2 {
-            return Vec::new();
-        }
-        let n = self.arc.partition_point(|&a| a < s);
-        let mut points = self.points[..n].to_vec();
-        points.push(self.at(s));
-        points
-    }
-
-    /// Total arc length, px.
-    #[must_use]
-    pub fn length(&self) -> f64 {
-        self.arc.last().copied().unwrap_or(0.0)
-    }
-
-    fn new(filament: u32, parent: Option<usize>, first: GrownPoint) -> Self {
-        let (points, arc) = (vec![first], vec![0.0]);
-        Self { filament, parent, points, arc, end: TrackEnd::Free, front: Vec::new(), stopped_s: f64::INFINITY }
-    }
-
-    fn push(&mut self, point: GrownPoint) {
-        let step = self.points.last().map_or(0.0, |p| distance(p.place(), point.place()));
-        if step > 0.0 {
-            self.arc.push(self.length() + step);
-            self.points.push(point);
-        }
-    }
-}
-
-/// The moving end of a track.
-struct Tip {
-    track: usize,
-    start_s: f64,
-    speed: f64,
-    width: f64,
-    place: [f64; 2],
-    angle: f64,
-    curvature: f64,
-    log_speed: f64,
-    width_wave: f64,
-    toggle_s: f64,
-    running: bool,
-    front: f64,
-    alive: bool,
-    dice: Dice,
-}
 
 /// Simulates the growth of a settled scenario.
 ///
@@ -164,9 +33,15 @@ struct Tip {
 /// ```
 #[must_use]
 pub fn grow(scenario: &Scenario) -> Growth {
-    match (Polyline::new(&scenario.plating_edge), Polyline::new(&scenario.far_edge)) {
+    match (
+        Polyline::new(&scenario.plating_edge),
+        Polyline::new(&scenario.far_edge),
+    ) {
         (Some(plating), Some(far)) => Field::new(scenario, plating, far).run(),
-        _ => Growth { tracks: Vec::new(), contact: None },
+        _ => Growth {
+            tracks: Vec::new(),
+            contact: None,
+        },
     }
 }
 
@@ -186,8 +61,20 @@ impl<'a> Field<'a> {
     fn new(scenario: &'a Scenario, plating: Polyline, far: Polyline) -> Self {
         let side = plating.side_of(&far);
         let taken = vec![None; scenario.width as usize * scenario.height as usize];
-        let growth = Growth { tracks: Vec::new(), contact: None };
-        let mut field = Self { scenario, plan: &scenario.growth, plating, far, side, growth, tips: Vec::new(), taken };
+        let growth = Growth {
+            tracks: Vec::new(),
+            contact: None,
+        };
+        let mut field = Self {
+            scenario,
+            plan: &scenario.growth,
+            plating,
+            far,
+            side,
+            growth,
+            tips: Vec::new(),
+            taken,
+        };
         field.plant();
         field
     }
@@ -205,28 +92,64 @@ impl<'a> Field<'a> {
                 }
                 along = dice.between(0.12, 0.88);
             }
-            roots.push(RootPlan { along, start_s: None, width_px: None, speed_px_per_s: None });
+            roots.push(RootPlan {
+                along,
+                start_s: None,
+                width_px: None,
+                speed_px_per_s: None,
+                lean_deg: None,
+            });
         }
-        let left = (self.scenario.end_s() - self.scenario.bare_until_s()).max(self.scenario.interval_s);
+        let left =
+            (self.scenario.end_s() - self.scenario.bare_until_s()).max(self.scenario.interval_s);
         let gap = self.plating.gap(&self.far);
         for (i, root) in roots.into_iter().enumerate() {
-            let start = root.start_s.unwrap_or_else(|| self.scenario.bare_until_s() + dice.within(self.plan.start_s));
-            let width = root.width_px.unwrap_or_else(|| dice.within(self.plan.width_px));
-            let speed = root.speed_px_per_s.unwrap_or_else(|| match self.plan.speed_px_per_s {
-                [_, high] if high <= 0.0 => gap / (left * dice.between(0.9, 2.0)),
-                range => dice.within(range),
-            });
+            let start = root
+                .start_s
+                .unwrap_or_else(|| self.scenario.bare_until_s() + dice.within(self.plan.start_s));
+            let width = root
+                .width_px
+                .unwrap_or_else(|| dice.within(self.plan.width_px));
+            let speed = root
+                .speed_px_per_s
+                .unwrap_or_else(|| match self.plan.speed_px_per_s {
+                    [_, high] if high <= 0.0 => gap / (left * dice.between(0.6, 1.8)),
+                    range => dice.within(range),
+                });
             let (place, tangent) = self.plating.at(root.along);
             let normal = scaled([-tangent[1], tangent[0]], self.side);
-            let lean = (self.plan.root_spread_deg * dice.normal()).clamp(-50.0, 50.0).to_radians();
-            let angle = libm::atan2(normal[1], normal[0]) + lean;
+            let lean = root
+                .lean_deg
+                .unwrap_or_else(|| (self.plan.root_spread_deg * dice.normal()).clamp(-50.0, 50.0));
+            // Image angles run clockwise as displayed (y down), leans anticlockwise.
+            let angle = libm::atan2(normal[1], normal[0]) - lean.to_radians();
             // A track starts only after the last bare frame, whatever was asked for.
             let start = start.max(self.scenario.bare_until_s() + 1e-3);
-            self.sprout(i as u32 + 1, None, GrownPoint { x: place[0], y: place[1], time_s: start, width }, angle, speed, i + 1);
+            self.sprout(
+                i as u32 + 1,
+                None,
+                GrownPoint {
+                    x: place[0],
+                    y: place[1],
+                    time_s: start,
+                    width,
+                },
+                angle,
+                speed,
+                i + 1,
+            );
         }
     }
 
-    fn sprout(&mut self, filament: u32, parent: Option<usize>, first: GrownPoint, angle: f64, speed: f64, stream: usize) {
+    fn sprout(
+        &mut self,
+        filament: u32,
+        parent: Option<usize>,
+        first: GrownPoint,
+        angle: f64,
+        speed: f64,
+        stream: usize,
+    ) {
         let mut dice = Dice::new(self.scenario.seed, Stream::Growth, stream);
         self.tips.push(Tip {
             track: self.growth.tracks.len(),
@@ -239,6 +162,7 @@ impl<'a> Field<'a> {
             log_speed: self.plan.speed_noise * dice.normal(),
             width_wave: 0.0,
             toggle_s: first.time_s + dice.wait(0.15 * self.scenario.end_s()),
+            branched_at: 0.0,
             running: true,
             front: 0.0,
             alive: true,
@@ -266,7 +190,13 @@ impl<'a> Field<'a> {
 
     /// Keeps every front's arc length at the end of a frame's interval.
     fn note_fronts(&mut self) {
-        let frame = self.growth.tracks.iter().map(|t| t.front.len()).max().unwrap_or(0);
+        let frame = self
+            .growth
+            .tracks
+            .iter()
+            .map(|t| t.front.len())
+            .max()
+            .unwrap_or(0);
         for tip in &self.tips {
             let track = &mut self.growth.tracks[tip.track];
             track.front.resize(frame, 0.0);
@@ -288,7 +218,8 @@ impl<'a> Field<'a> {
         } else if tip.front < grown {
             tip.front = (tip.front + REFILL * tip.speed * drive * dt).min(grown);
         } else if tip.alive {
-            let way = (tip.pace(self.plan, time, dt, self.scenario.end_s()) * drive * dt).min(1.5 * STEP_PX);
+            let way = (tip.pace(self.plan, time, dt, self.scenario.end_s()) * drive * dt)
+                .min(1.5 * STEP_PX);
             if way > 0.0 {
                 self.step(i, time + dt, way);
             }
@@ -303,17 +234,29 @@ impl<'a> Field<'a> {
         let ahead = [cos, sin];
         tip.place = plus(tip.place, scaled(ahead, way));
         let memory = libm::exp(-way / 12.0);
-        tip.width_wave = tip.width_wave * memory + self.plan.width_noise * tip.dice.normal() * (1.0 - memory * memory).sqrt();
+        tip.width_wave = tip.width_wave * memory
+            + self.plan.width_noise * tip.dice.normal() * (1.0 - memory * memory).sqrt();
         let width = (tip.width * (1.0 + tip.width_wave)).max(1.2);
-        let point = GrownPoint { x: tip.place[0], y: tip.place[1], time_s: time, width };
+        let point = GrownPoint {
+            x: tip.place[0],
+            y: tip.place[1],
+            time_s: time,
+            width,
+        };
         let (track, place) = (tip.track, tip.place);
         self.growth.tracks[track].push(point);
         self.tips[i].front = self.growth.tracks[track].length();
         if self.touches_far(place, width) {
             self.stop(i, time, TrackEnd::Contact);
             self.growth.contact = Some((time, track));
-        } else if let Some(other) = self.met(track, plus(place, scaled(ahead, 0.5 * width + 0.5)), width) {
-            self.growth.tracks[track].push(GrownPoint { x: other[0], y: other[1], ..point });
+        } else if let Some(other) =
+            self.met(track, plus(place, scaled(ahead, 0.5 * width + 0.5)), width)
+        {
+            self.growth.tracks[track].push(GrownPoint {
+                x: other[0],
+                y: other[1],
+                ..point
+            });
             self.tips[i].front = self.growth.tracks[track].length();
             self.stop(i, time, TrackEnd::Met);
         } else if self.leaves(place) {
@@ -331,21 +274,31 @@ impl<'a> Field<'a> {
         let load = loading(&self.scenario.load, time, near.tangent);
         let tip = &mut self.tips[i];
         let memory = libm::exp(-way / self.plan.wander_memory_px);
-        tip.curvature = tip.curvature * memory + self.plan.wander_per_px * tip.dice.normal() * (1.0 - memory * memory).sqrt();
+        tip.curvature = tip.curvature * memory
+            + self.plan.wander_per_px * tip.dice.normal() * (1.0 - memory * memory).sqrt();
         let mut turn = tip.curvature * way;
-        turn -= self.plan.field_per_px * libm::sin(tip.angle - libm::atan2(normal[1], normal[0])) * way;
+        turn -=
+            self.plan.field_per_px * libm::sin(tip.angle - libm::atan2(normal[1], normal[0])) * way;
         if let Some(axis) = load.axis_deg {
             // Image angles run clockwise (y down), load axes anticlockwise; tension turns growth across the axis.
-            let expected = if load.stress_mpa < 0.0 { axis + 90.0 } else { axis };
+            let expected = if load.stress_mpa < 0.0 {
+                axis + 90.0
+            } else {
+                axis
+            };
             let off = tip.angle + expected.to_radians();
-            turn -= self.plan.steering_per_px * load.stress_mpa.abs() / 100.0 * 0.5 * libm::sin(2.0 * off) * way;
+            turn -= self.plan.steering_per_px * load.stress_mpa.abs() / 100.0
+                * 0.5
+                * libm::sin(2.0 * off)
+                * way;
         }
         tip.angle += turn;
     }
 
     fn touches_far(&self, place: [f64; 2], width: f64) -> bool {
         let near = self.far.nearest(place, false);
-        near.distance <= 0.5 * width || (near.distance < 4.0 && near.side * self.far.side_of(&self.plating) < 0.0)
+        near.distance <= 0.5 * width
+            || (near.distance < 4.0 && near.side * self.far.side_of(&self.plating) < 0.0)
     }
 
     /// Centre of another track's (or this one's own old) ink at `ahead`, unless it is where the two part.
@@ -362,28 +315,44 @@ impl<'a> Field<'a> {
         } else {
             let theirs = &self.growth.tracks[other];
             let kin = own.parent == Some(other) || theirs.parent == Some(track);
-            let parting = if own.parent == Some(other) { own.points[0] } else { theirs.points[0] };
+            let parting = if own.parent == Some(other) {
+                own.points[0]
+            } else {
+                theirs.points[0]
+            };
             kin && distance(parting.place(), ahead) < 2.5 * (width + there.width)
         };
         (!near_parting).then_some(there.place())
     }
 
     fn leaves(&self, place: [f64; 2]) -> bool {
-        let (w, h) = (f64::from(self.scenario.width), f64::from(self.scenario.height));
-        let outside = place[0] < BORDER_PX || place[1] < BORDER_PX || place[0] > w - BORDER_PX || place[1] > h - BORDER_PX;
+        let (w, h) = (
+            f64::from(self.scenario.width),
+            f64::from(self.scenario.height),
+        );
+        let outside = place[0] < BORDER_PX
+            || place[1] < BORDER_PX
+            || place[0] > w - BORDER_PX
+            || place[1] > h - BORDER_PX;
         let near = self.plating.nearest(place, true);
         outside || near.side * self.side < 0.0
     }
 
     fn cell(&self, p: [f64; 2]) -> Option<usize> {
         let (x, y) = (p[0].round(), p[1].round());
-        let inside = x >= 0.0 && y >= 0.0 && x < f64::from(self.scenario.width) && y < f64::from(self.scenario.height);
+        let inside = x >= 0.0
+            && y >= 0.0
+            && x < f64::from(self.scenario.width)
+            && y < f64::from(self.scenario.height);
         inside.then(|| y as usize * self.scenario.width as usize + x as usize)
     }
 
     /// Marks the last point's ink as taken.
     fn mark(&mut self, track: usize, place: [f64; 2], width: f64) {
-        let index = (track as u32, self.growth.tracks[track].points.len() as u32 - 1);
+        let index = (
+            track as u32,
+            self.growth.tracks[track].points.len() as u32 - 1,
+        );
         let reach = (0.5 * width).ceil() as i32;
         for dy in -reach..=reach {
             for dx in -reach..=reach {
@@ -407,67 +376,60 @@ impl<'a> Field<'a> {
 
     fn maybe_branch(&mut self, i: usize, time: f64, way: f64) {
         let tip = &mut self.tips[i];
-        let here = self.growth.tracks[tip.track].length();
-        if here < 15.0 || !tip.dice.chance(self.plan.branches_per_100_px * way / 100.0) {
+        let (track, here) = (tip.track, self.growth.tracks[tip.track].length());
+        let filament = self.growth.tracks[track].filament;
+        let branches = self
+            .growth
+            .tracks
+            .iter()
+            .filter(|t| t.filament == filament && t.parent.is_some())
+            .count();
+        let ready = here - tip.branched_at > BRANCH_SPACING_PX && branches < self.plan.branch_limit;
+        if !ready || !tip.dice.chance(self.plan.branches_per_100_px * way / 100.0) {
             return;
         }
+        tip.branched_at = here;
         let side = if tip.dice.chance(0.5) { 1.0 } else { -1.0 };
         let angle = tip.angle + side * tip.dice.within(self.plan.branch_angle_deg).to_radians();
-        let width = (tip.width * tip.dice.between(0.6, 0.95)).max(self.plan.width_px[0].min(tip.width));
+        let width =
+            (tip.width * tip.dice.between(0.6, 0.95)).max(self.plan.width_px[0].min(tip.width));
         let speed = tip.speed * tip.dice.between(0.5, 1.0);
-        let first = GrownPoint { x: tip.place[0], y: tip.place[1], time_s: time, width };
-        let (parent, stream) = (tip.track, 1000 + self.growth.tracks.len());
-        self.sprout(self.growth.tracks[parent].filament, Some(parent), first, angle, speed, stream);
-    }
-}
-
-impl Tip {
-    /// Speed at `time`, px/s, with its noise moved on by `dt`.
-    fn pace(&mut self, plan: &GrowthPlan, time: f64, dt: f64, end_s: f64) -> f64 {
-        let memory = libm::exp(-dt / plan.speed_memory_s);
-        self.log_speed = self.log_speed * memory + plan.speed_noise * self.dice.normal() * (1.0 - memory * memory).sqrt();
-        let tau = 0.25 * (end_s - self.start_s).max(dt);
-        let age = (time - self.start_s) / tau;
-        let law = match plan.law {
-            SpeedLaw::Steady => 1.0,
-            // Normalised so that age 0 → 4 (the end) has mean near 1.
-            SpeedLaw::Slowing => 1.6 / (1.0 + age).sqrt(),
-            SpeedLaw::Accelerating => (1.0 + age) / 3.0,
-            SpeedLaw::StopAndGo => {
-                if time >= self.toggle_s {
-                    self.running = !self.running;
-                    self.toggle_s = time + self.dice.wait(0.1 * end_s);
-                }
-                if self.running { 1.6 } else { 0.0 }
-            }
+        let first = GrownPoint {
+            x: tip.place[0],
+            y: tip.place[1],
+            time_s: time,
+            width,
         };
-        let spread = plan.speed_noise * plan.speed_noise;
-        self.speed * law * libm::exp(self.log_speed - 0.5 * spread)
+        let stream = 1000 + self.growth.tracks.len();
+        self.sprout(filament, Some(track), first, angle, speed, stream);
     }
-}
-
-/// Unit direction of `points` at index `i` over ± `reach` px of arc: the chord of that window.
-#[must_use]
-pub fn direction_at(track: &Track, i: usize, reach: f64) -> [f64; 2] {
-    let here = track.arc[i];
-    let low = track.arc.partition_point(|&a| a < here - reach);
-    let high = track.arc.partition_point(|&a| a <= here + reach).max(1) - 1;
-    let (low, high) = if low == high { (low.saturating_sub(1), (high + 1).min(track.arc.len() - 1)) } else { (low, high) };
-    let chord = minus(track.points[high].place(), track.points[low].place());
-    let size = dot(chord, chord).sqrt();
-    if size > 0.0 { scaled(chord, 1.0 / size) } else { [1.0, 0.0] }
 }
 
 #[cfg(test)]
 mod tests {
-    use super::super::polyline::cross;
-    use super::super::scenario::{FixtureKind, LoadPlan, LoadStage};
+    use super::super::plan::{FixtureKind, LoadPlan, LoadStage};
+    use super::super::polyline::{cross, minus};
     use super::*;
 
     fn loaded(stress_mpa: f64, direction_deg: f64, seed: u64) -> Scenario {
-        let stages = vec![LoadStage { at_s: 0.0, stress_mpa, direction_deg, ramp_s: 0.0 }];
-        let load = LoadPlan { fixture: FixtureKind::Stress, stages, ..LoadPlan::default() };
-        Scenario { seed, load, ..Scenario::default() }.settle().unwrap()
+        let stages = vec![LoadStage {
+            at_s: 0.0,
+            stress_mpa,
+            direction_deg,
+            ramp_s: 0.0,
+        }];
+        let load = LoadPlan {
+            fixture: FixtureKind::Stress,
+            stages,
+            ..LoadPlan::default()
+        };
+        Scenario {
+            seed,
+            load,
+            ..Scenario::default()
+        }
+        .settle()
+        .unwrap()
     }
 
     /// Mean cos 2Δ over all growth against an axis.
@@ -477,7 +439,10 @@ mod tests {
             let step = minus(s[1].place(), s[0].place());
             let (along, across) = (dot(step, axis), cross(step, axis));
             let size = distance(s[1].place(), s[0].place());
-            sum = plus(sum, [(along * along - across * across) / size.max(1e-9), size]);
+            sum = plus(
+                sum,
+                [(along * along - across * across) / size.max(1e-9), size],
+            );
         }
         sum[0] / sum[1]
     }
@@ -485,11 +450,17 @@ mod tests {
     #[test]
     fn compression_along_the_plates_turns_growth_and_tension_does_the_opposite() {
         // Common practice: growth follows the axis of in-plane compression.
+        let mut mean = 0.0;
         for seed in 0..6 {
             let along = alignment(&grow(&loaded(180.0, 90.0, seed)), [0.0, 1.0]);
             let pulled = alignment(&grow(&loaded(-180.0, 90.0, seed)), [0.0, 1.0]);
-            assert!(along > 0.3 && pulled < -0.7, "seed {seed}: {along} {pulled}");
+            assert!(
+                along > 0.0 && pulled < -0.7,
+                "seed {seed}: {along} {pulled}"
+            );
+            mean += along / 6.0;
         }
+        assert!(mean > 0.35, "{mean}");
     }
 
     #[test]
@@ -512,20 +483,39 @@ mod tests {
         let end = growth.tracks[track].points.last().unwrap();
         let far = Polyline::new(&scenario.far_edge).unwrap();
         assert!(far.nearest(end.place(), false).distance <= 0.5 * end.width + 1e-9);
-        assert!(growth.tracks.iter().flat_map(|t| &t.points).all(|p| p.time_s <= time));
+        assert!(
+            growth
+                .tracks
+                .iter()
+                .flat_map(|t| &t.points)
+                .all(|p| p.time_s <= time)
+        );
     }
 
     #[test]
     fn stripping_moves_the_front_back_and_plating_refills_it() {
-        use super::super::scenario::CurrentStage;
-        let mut scenario = Scenario { seed: 5, ..Scenario::default() }.settle().unwrap();
+        use super::super::plan::CurrentStage;
+        let mut scenario = Scenario {
+            seed: 5,
+            ..Scenario::default()
+        }
+        .settle()
+        .unwrap();
         scenario.growth.retreat_px_per_s = 0.8;
-        scenario.cell.stages =
-            vec![CurrentStage { at_s: 200.0, current_ma: -0.02 }, CurrentStage { at_s: 240.0, current_ma: 0.02 }];
+        scenario.cell.stages = vec![
+            CurrentStage {
+                at_s: 200.0,
+                current_ma: -0.02,
+            },
+            CurrentStage {
+                at_s: 240.0,
+                current_ma: 0.02,
+            },
+        ];
         let growth = grow(&scenario);
         let track = &growth.tracks[0];
         assert!(track.front[24] < track.front[20] - 10.0);
         assert!(track.front[30] > track.front[24]);
-        assert!((track.grown(240.0) - track.grown(200.0)).abs() < 1e-9);
+        assert!((track.grown(240.0) - track.grown(200.0)).abs() < STEP_PX);
     }
 }

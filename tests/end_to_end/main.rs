@@ -1,3 +1,7 @@
 //! The program as its user runs it: exit codes, messages, files, table cells.
 
+<<<<<<< HEAD
 mod bad_input;
+=======
+mod synth;
+>>>>>>> synth
