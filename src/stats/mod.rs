@@ -2,7 +2,13 @@
 
 pub mod angles;
 pub mod axial;
+pub mod bootstrap;
 pub mod concentration;
 pub mod distributions;
+pub mod isotonic;
 pub mod order;
+pub mod regress;
+pub mod scoring;
+pub mod theil_sen;
+pub mod trend;
 pub mod uniformity;
