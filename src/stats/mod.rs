@@ -3,9 +3,12 @@
 pub mod angles;
 pub mod axial;
 pub mod bootstrap;
+pub mod clusters;
 pub mod concentration;
 pub mod distributions;
+pub mod filaments;
 pub mod isotonic;
+pub mod kink;
 pub mod order;
 pub mod regress;
 pub mod scoring;
