@@ -16,7 +16,7 @@ pub struct Moments {
     pub mean_deg: Option<f64>,
     /// Mean resultant length R̄, 0 to 1.
     pub resultant: f64,
-    /// Mean cosine of twice the angle to the mean direction, m₂.
+    /// Length of the second moment, |m₂|: resultant length of the doubled angles.
     pub second: f64,
 }
 
@@ -32,26 +32,29 @@ impl Moments {
 
     /// Moments of directions with weights ≥ 0. `None` when the weights add up to nothing.
     #[must_use]
-    pub fn weighted(items: impl Iterator<Item = (f64, f64)> + Clone) -> Option<Self> {
-        let (mut n, mut total, mut c, mut s) = (0, 0.0, 0.0, 0.0);
-        for (degrees, weight) in items.clone() {
+    pub fn weighted(items: impl Iterator<Item = (f64, f64)>) -> Option<Self> {
+        let (mut n, mut total, mut c, mut s, mut second) = (0, 0.0, 0.0, 0.0, [0.0; 2]);
+        for (degrees, weight) in items {
             let (sin, cos) = libm::sincos(degrees * RADIANS);
             n += 1;
             total += weight;
             c += weight * cos;
             s += weight * sin;
+            let twice = doubled(degrees);
+            second[0] += weight * twice[0];
+            second[1] += weight * twice[1];
         }
         if total <= 0.0 {
             return None;
         }
         let resultant = (libm::hypot(c, s) / total).min(1.0);
         let mean = libm::atan2(s, c);
-        let second = items.map(|(d, w)| w * libm::cos(2.0 * (d * RADIANS - mean))).sum::<f64>() / total;
+        let second = libm::hypot(second[0], second[1]) / total;
         let mean_deg = (resultant > NO_DIRECTION).then(|| fold_direction(mean / RADIANS));
         Some(Self { n, mean_deg, resultant, second })
     }
 
-    /// Circular dispersion δ = (1 − m₂)/(2R̄²).
+    /// Circular dispersion δ = (1 − |m₂|)/(2R̄²).
     #[must_use]
     pub fn dispersion(&self) -> f64 {
         (1.0 - self.second) / (2.0 * self.resultant * self.resultant)
@@ -126,7 +129,7 @@ pub fn axial_mean(degrees: &[f64]) -> Option<AxialMean> {
 
 /// Axial mean of (axis in degrees, weight ≥ 0). `None` when the weights add up to nothing.
 #[must_use]
-pub fn weighted_axial_mean(items: impl Iterator<Item = (f64, f64)> + Clone) -> Option<AxialMean> {
+pub fn weighted_axial_mean(items: impl Iterator<Item = (f64, f64)>) -> Option<AxialMean> {
     let doubled = Moments::weighted(items.map(|(d, w)| (2.0 * d, w)))?;
     Some(AxialMean {
         doubled,
