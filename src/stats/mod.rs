@@ -17,4 +17,5 @@ pub mod scoring;
 pub mod survival;
 pub mod theil_sen;
 pub mod trend;
+pub mod turns;
 pub mod uniformity;
