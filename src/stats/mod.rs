@@ -3,6 +3,7 @@
 pub mod angles;
 pub mod axial;
 pub mod bootstrap;
+pub mod calibration;
 pub mod clusters;
 pub mod concentration;
 pub mod distributions;

@@ -139,16 +139,16 @@ fn contrast(changes: &[Change]) -> Option<Contrast> {
     let excess: Vec<f64> = changes.iter().map(|c| c.excess).collect();
     let gain = mean(&excess)?;
     let n = changes.len() as f64;
-    let between = variance(&excess).map(|v| one_sided(gain / libm::sqrt(v / n), n - 1.0));
+    let between = variance(&excess).map_or(0.0, |v| v / n);
     let pooled: f64 = changes.iter().map(|c| c.scatter * (1.0 + 1.0 / (NEWS * c.elsewhere as f64))).sum();
-    let dof: f64 = changes.iter().map(|c| NEWS * c.elsewhere as f64 - 1.0).filter(|d| *d > 0.0).sum();
-    let within = (dof > 0.0 && pooled > 0.0).then(|| one_sided(gain / libm::sqrt(pooled / (n * n)), dof));
-    let p = match (between, within) {
-        (Some(a), Some(b)) => a.max(b),
-        (None, Some(b)) => b,
-        _ => return None,
-    };
-    Some(Contrast { gain, p: if p.is_nan() { 1.0 } else { p }, filaments: changes.len() })
+    let within_dof: f64 = changes.iter().map(|c| (NEWS * c.elsewhere as f64 - 1.0).max(0.0)).sum();
+    let dof = within_dof + n - 1.0;
+    let variance = between.max(pooled / (n * n));
+    if dof <= 0.0 || variance <= 0.0 {
+        return None;
+    }
+    let p = one_sided(gain / libm::sqrt(variance), dof);
+    Some(Contrast { gain, p, filaments: changes.len() })
 }
 
 #[cfg(test)]
