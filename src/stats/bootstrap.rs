@@ -20,11 +20,7 @@ pub fn stream(seed: u64, index: u64) -> ChaCha8Rng {
 
 /// `count` values of `statistic`, replicate i drawing from its own stream; replicates for which it is `None` are left out.
 /// Order is that of the replicates whatever the number of threads.
-pub fn replicates<T: Send>(
-    count: usize,
-    seed: u64,
-    statistic: impl Fn(&mut ChaCha8Rng) -> Option<T> + Sync,
-) -> Vec<T> {
+pub fn replicates<T: Send>(count: usize, seed: u64, statistic: impl Fn(&mut ChaCha8Rng) -> Option<T> + Sync) -> Vec<T> {
     let all: Vec<Option<T>> = (0..count as u64).into_par_iter().map(|i| statistic(&mut stream(seed, i))).collect();
     all.into_iter().flatten().collect()
 }
@@ -147,7 +143,10 @@ mod tests {
         let many = replicates(64, 9, draw);
         let pool = rayon::ThreadPoolBuilder::new().num_threads(1).build().unwrap();
         let one = pool.install(|| replicates(64, 9, draw));
-        assert_eq!(many.iter().map(|v| v.to_bits()).collect::<Vec<_>>(), one.iter().map(|v| v.to_bits()).collect::<Vec<_>>());
+        assert_eq!(
+            many.iter().map(|v| v.to_bits()).collect::<Vec<_>>(),
+            one.iter().map(|v| v.to_bits()).collect::<Vec<_>>()
+        );
     }
 
     #[test]

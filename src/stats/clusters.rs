@@ -104,8 +104,7 @@ fn spread(kept: &[Total], weight: f64, value: f64) -> (f64, f64) {
     let shares: Vec<f64> = kept.iter().map(|t| t.weight / weight).collect();
     let concentration: f64 = shares.iter().map(|h| h * h).sum();
     let scale: Vec<f64> = shares.iter().map(|h| h / libm::sqrt(1.0 - 2.0 * h + concentration)).collect();
-    let variance: f64 =
-        kept.iter().zip(&scale).map(|(t, c)| c * (t.sum / t.weight - value)).map(|e| e * e).sum();
+    let variance: f64 = kept.iter().zip(&scale).map(|(t, c)| c * (t.sum / t.weight - value)).map(|e| e * e).sum();
     let (mut trace, mut square) = (0.0, 0.0);
     for (f, (hf, cf)) in shares.iter().zip(&scale).enumerate() {
         for (g, (hg, cg)) in shares.iter().zip(&scale).enumerate() {

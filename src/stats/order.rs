@@ -12,9 +12,8 @@ pub fn mean(values: &[f64]) -> Option<f64> {
 #[must_use]
 pub fn variance(values: &[f64]) -> Option<f64> {
     let centre = mean(values)?;
-    (values.len() > 1).then(|| {
-        values.iter().map(|v| (v - centre) * (v - centre)).sum::<f64>() / (values.len() - 1) as f64
-    })
+    (values.len() > 1)
+        .then(|| values.iter().map(|v| (v - centre) * (v - centre)).sum::<f64>() / (values.len() - 1) as f64)
 }
 
 /// A sorted copy, by total order.

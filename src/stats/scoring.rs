@@ -18,8 +18,9 @@ pub fn pinball(truth: f64, forecast: f64, level: f64) -> f64 {
 /// ```
 #[must_use]
 pub fn mean_pinball(pairs: &[(f64, f64)], level: f64) -> Option<f64> {
-    (!pairs.is_empty())
-        .then(|| pairs.iter().map(|&(truth, forecast)| pinball(truth, forecast, level)).sum::<f64>() / pairs.len() as f64)
+    (!pairs.is_empty()).then(|| {
+        pairs.iter().map(|&(truth, forecast)| pinball(truth, forecast, level)).sum::<f64>() / pairs.len() as f64
+    })
 }
 
 /// Continuous ranked probability score of a normal forecast, in the unit of the truth; |truth − mean| when `sd` ≤ 0.

@@ -70,7 +70,12 @@ pub fn median_slope(points: &[(f64, f64)]) -> Option<f64> {
 /// assert!(low < 2.0 && 2.0 < high && high - low < 0.5);
 /// ```
 #[must_use]
-pub fn slope_interval_by_blocks(points: &[(f64, f64)], confidence: f64, resamples: usize, seed: u64) -> Option<[f64; 2]> {
+pub fn slope_interval_by_blocks(
+    points: &[(f64, f64)],
+    confidence: f64,
+    resamples: usize,
+    seed: u64,
+) -> Option<[f64; 2]> {
     let used = thin(points, MAX_POINTS_RESAMPLED);
     if used.len() <= MIN_INCREMENTS {
         return None;

@@ -3,6 +3,7 @@
 
 use approx::{assert_abs_diff_eq, assert_relative_eq};
 use veerlog::stats::axial::{Moments, alignment, axial_mean};
+use veerlog::stats::calibration::{alignment_coverage, isotropic_p_values, turn_rates};
 use veerlog::stats::concentration::kappa;
 use veerlog::stats::uniformity::{kuiper, rayleigh_p, rayleigh_p_wilkie, rayleigh_p_zar, v_test};
 
@@ -106,5 +107,51 @@ fn concentration_from_resultant() {
     ];
     for (resultant, expected) in known {
         assert_relative_eq!(kappa(resultant), expected, max_relative = 3e-7);
+    }
+}
+
+/// Number of simulated runs: `full` with `VEERLOG_FULL=1` in the environment, else `reduced`.
+fn runs(full: usize, reduced: usize) -> usize {
+    if std::env::var_os("VEERLOG_FULL").is_some_and(|v| v == "1") { full } else { reduced }
+}
+
+/// Isotropic filament axes, strong correlation within filaments: p-values must be uniform.
+#[test]
+fn full_p_values_are_uniform_without_a_preferred_axis() {
+    for p in isotropic_p_values(runs(500, 100), 31) {
+        assert!(p.unwrap() > 0.01, "{p:?}");
+    }
+}
+
+/// 95 % intervals of alignment must hold the law's alignment in 90–98 % of runs with 8 to 20 filaments. The reduced set
+/// allows three standard errors more on either side.
+#[test]
+fn full_alignment_intervals_cover() {
+    let (n, slack) = (runs(200, 80), if runs(1, 0) == 1 { 0.0 } else { 0.073 });
+    for spread in [5.0, 20.0, 45.0] {
+        let share = alignment_coverage(n, 33, spread) as f64 / n as f64;
+        assert!((0.90 - slack..=0.98 + slack).contains(&share), "spread {spread}: {share}");
+    }
+}
+
+/// Runs that cross the gap with no effect of the load: the test rejects in at most 8 %, a turn is reported in at most 5 %.
+#[test]
+fn full_no_effect_is_reported_as_none() {
+    let rates = turn_rates(runs(500, 100) as u64, 35, 0.0);
+    println!("{rates:?}");
+    assert!(rates.rejected * 100 <= 8 * rates.runs, "{rates:?}");
+    assert!(rates.reported * 100 <= 5 * rates.runs, "{rates:?}");
+    assert!(rates.untested * 20 <= rates.runs, "{rates:?}");
+}
+
+/// Steps of 60–90° at 100–200 MPa, growth that follows at once or by 30 % of the way a frame, up to 4 frames late.
+#[test]
+fn full_turns_are_timed_within_two_frames() {
+    for response in [1.0, 0.6, 0.3] {
+        let rates = turn_rates(runs(200, 40) as u64, 37, response);
+        println!("{response}: {rates:?}");
+        assert!(rates.reported * 100 >= 80 * rates.runs, "{rates:?}");
+        assert!(rates.timed * 100 >= 97 * rates.found, "{rates:?}");
+        assert!(rates.covered * 100 >= 88 * rates.found, "{rates:?}");
     }
 }

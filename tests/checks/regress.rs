@@ -59,7 +59,8 @@ fn isotonic_as_scikit_learn() {
     let plain = [1.0, 3.0, 2.0, 4.0, 3.0, 5.0, 7.0, 6.0, 8.0, 9.0].map(|v| (v, 1.0));
     assert_eq!(isotonic(&plain), [1.0, 2.5, 2.5, 3.5, 3.5, 5.0, 6.5, 6.5, 8.0, 9.0]);
     let weighted = [(5.0, 1.0), (4.0, 2.0), (6.0, 1.0), (2.0, 3.0), (8.0, 1.0), (7.0, 1.0)];
-    for (fitted, expected) in isotonic(&weighted).iter().zip([25.0 / 7.0, 25.0 / 7.0, 25.0 / 7.0, 25.0 / 7.0, 7.5, 7.5]) {
+    for (fitted, expected) in isotonic(&weighted).iter().zip([25.0 / 7.0, 25.0 / 7.0, 25.0 / 7.0, 25.0 / 7.0, 7.5, 7.5])
+    {
         assert_abs_diff_eq!(*fitted, expected, epsilon = 1e-12);
     }
 }

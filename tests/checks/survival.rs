@@ -141,7 +141,8 @@ fn beetle_lethal_dose() {
 
 #[test]
 fn complete_separation_has_no_finite_standard_error() {
-    let trials: Vec<Trials> = beetles().iter().map(|t| Trials { yes: if t.dose > 1.77 { t.tried } else { 0.0 }, ..*t }).collect();
+    let trials: Vec<Trials> =
+        beetles().iter().map(|t| Trials { yes: if t.dose > 1.77 { t.tried } else { 0.0 }, ..*t }).collect();
     for link in [Link::Logit, Link::Probit, Link::ComplementaryLogLog] {
         assert_eq!(fit(&trials, link), Err(NoFit::Separated));
     }

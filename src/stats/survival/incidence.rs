@@ -67,7 +67,8 @@ mod tests {
             assert_abs_diff_eq!(row.going + row.ended.iter().sum::<f64>(), 1.0, epsilon = 1e-12);
         }
         let single: Vec<Ended> = units.iter().map(|u| Ended { cause: u.cause.map(|_| 0), ..*u }).collect();
-        let curve = Curve::of(&units.iter().map(|u| Follow { time: u.time, event: u.cause.is_some() }).collect::<Vec<_>>());
+        let curve =
+            Curve::of(&units.iter().map(|u| Follow { time: u.time, event: u.cause.is_some() }).collect::<Vec<_>>());
         for (row, step) in incidence(&single, 1).iter().zip(&curve.steps) {
             assert_abs_diff_eq!(row.going, step.survival, epsilon = 1e-12);
         }

@@ -62,7 +62,8 @@ pub fn logrank(members: &[Member], groups: usize, weight: Weight) -> Option<LogR
     if groups < 2 {
         return None;
     }
-    let mut sums = Sums { observed: vec![0.0; groups], expected: vec![0.0; groups], covariance: vec![vec![0.0; groups]; groups] };
+    let mut sums =
+        Sums { observed: vec![0.0; groups], expected: vec![0.0; groups], covariance: vec![vec![0.0; groups]; groups] };
     let strata: BTreeSet<u32> = members.iter().map(|m| m.stratum).collect();
     for stratum in strata {
         let own: Vec<Member> = members.iter().copied().filter(|m| m.stratum == stratum).collect();
@@ -135,7 +136,8 @@ mod tests {
 
     #[test]
     fn order_of_groups_does_not_matter_with_three() {
-        let units: Vec<Member> = (0..24_u32).map(|i| member(f64::from((i * 7) % 24), (i % 3) as usize, i % 2)).collect();
+        let units: Vec<Member> =
+            (0..24_u32).map(|i| member(f64::from((i * 7) % 24), (i % 3) as usize, i % 2)).collect();
         let turned: Vec<Member> = units.iter().map(|m| Member { group: (m.group + 1) % 3, ..*m }).collect();
         let (a, b) = (logrank(&units, 3, Weight::Equal).unwrap(), logrank(&turned, 3, Weight::Equal).unwrap());
         assert_abs_diff_eq!(a.chi_squared, b.chi_squared, epsilon = 1e-9);

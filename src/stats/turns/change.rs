@@ -1,9 +1,10 @@
 //! When did growth turn: the change point of direction near a step, over all filaments and for each.
 //!
-//! One change between two constant directions by least squares on the doubled-angle vectors; for a gradual turn this is the
-//! time by which about half of it was made. Interval: all times whose sum of squares is within the likelihood-ratio bound of
-//! a single change point, −2 ln(1 − √0.95) = 7.35 (Eo & Morley 2015, Quant. Econ. 6, 463–497, from memory), widened for
-//! correlated residuals by (1 + ρ)/(1 − ρ). Limit: a turn cannot precede its step; a second bend is not modelled.
+//! One change between two directions, at once or over some frames, by least squares on the doubled-angle vectors; its time
+//! is when half of the turn was made. A gradual change is taken only where it fits better than the bound below. Interval:
+//! all times whose sum of squares is within the likelihood-ratio bound of a single change point, −2 ln(1 − √0.95) = 7.35
+//! (Eo & Morley 2015, Quant. Econ. 6, 463–497, from memory), widened for correlated residuals by (1 + ρ)/(1 − ρ).
+//! Limit: a turn cannot precede its step; a second bend is not modelled.
 
 use std::collections::BTreeMap;
 
@@ -21,8 +22,10 @@ const FOLLOW_DEG: f64 = 20.0;
 /// Time of a turn.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct TurnTime {
-    /// Best time, s.
+    /// When half of the turn was made, s.
     pub time_s: f64,
+    /// When it began, s: the same for a turn made at once.
+    pub began_s: f64,
     /// 95 % interval, s.
     pub ci95: [f64; 2],
     /// How long growth went on after the step, s.
@@ -66,17 +69,53 @@ pub(super) fn near(
     near
 }
 
-/// Squares about the two means when a filament's growth is cut at `cut` (pieces at or after it are after), and degrees of
-/// freedom of each side are left to the caller.
-fn squares(own: &[GrowthPiece], cut: f64) -> f64 {
-    [own.partition_point(|p| p.time_s < cut)]
-        .into_iter()
-        .flat_map(|k| [&own[..k], &own[k..]])
-        .map(|side| {
-            let [weight, c, s] = sums(side);
-            if weight > 0.0 { weight - (c * c + s * s) / weight } else { 0.0 }
-        })
-        .sum()
+/// A change of direction: half made at `middle_s`, made over `over_s` (0: at once).
+#[derive(Debug, Clone, Copy)]
+struct Bend {
+    middle_s: f64,
+    over_s: f64,
+}
+
+impl Bend {
+    /// Share of the turn made at `time_s`.
+    fn share(self, time_s: f64) -> f64 {
+        if self.over_s > 0.0 {
+            (0.5 + (time_s - self.middle_s) / self.over_s).clamp(0.0, 1.0)
+        } else if time_s >= self.middle_s {
+            1.0
+        } else {
+            0.0
+        }
+    }
+
+    fn began_s(self) -> f64 {
+        self.middle_s - 0.5 * self.over_s
+    }
+}
+
+/// Weighted squares left of one filament when its doubled-angle vector goes from one value to another along `bend`.
+/// A piece new at a frame grew since the frame before: half a frame back is its middle.
+fn squares(own: &[GrowthPiece], bend: Bend, spacing_s: f64) -> f64 {
+    let (mut total, mut aa, mut ab, mut bb) = (0.0, 0.0, 0.0, 0.0);
+    let (mut a, mut b) = ([0.0; 2], [0.0; 2]);
+    for piece in own {
+        let u = bend.share(piece.time_s - 0.5 * spacing_s);
+        let (w, v) = (piece.weight, doubled(piece.angle_deg));
+        total += w;
+        aa += w * (1.0 - u) * (1.0 - u);
+        ab += w * u * (1.0 - u);
+        bb += w * u * u;
+        for k in 0..2 {
+            a[k] += w * (1.0 - u) * v[k];
+            b[k] += w * u * v[k];
+        }
+    }
+    let det = aa * bb - ab * ab;
+    // One side without growth: a single mean.
+    if det <= 1e-9 * total * total {
+        return total - (0..2).map(|k| (a[k] + b[k]) * (a[k] + b[k])).sum::<f64>() / total;
+    }
+    total - (0..2).map(|k| (bb * a[k] * a[k] - 2.0 * ab * a[k] * b[k] + aa * b[k] * b[k]) / det).sum::<f64>()
 }
 
 /// Total weight and weighted doubled-angle vector.
@@ -87,7 +126,7 @@ fn sums(side: &[GrowthPiece]) -> [f64; 3] {
     })
 }
 
-/// Times of growth at which a change after the step may begin: from the first after the step on.
+/// Times of growth after the step: a change at once lies just before one of them.
 fn cuts<'a>(near: impl Iterator<Item = &'a GrowthPiece>, step: LoadStep) -> Vec<f64> {
     let mut times: Vec<f64> = near.map(|p| p.time_s).filter(|t| *t > step.time_s).collect();
     times.sort_by(f64::total_cmp);
@@ -95,25 +134,45 @@ fn cuts<'a>(near: impl Iterator<Item = &'a GrowthPiece>, step: LoadStep) -> Vec<
     times
 }
 
+/// Frames over which a gradual turn may be made.
+const GRADUAL_FRAMES: [f64; 8] = [1.0, 2.0, 3.0, 4.0, 6.0, 8.0, 12.0, 16.0];
+
 /// The change point over all filaments together. `None` without growth on both sides.
 pub(super) fn pooled(near: &BTreeMap<u32, Vec<GrowthPiece>>, step: LoadStep, spacing_s: f64) -> Option<TurnTime> {
-    let cuts = cuts(near.values().flatten(), step);
-    let curve: Vec<f64> = cuts.iter().map(|c| near.values().map(|own| squares(own, *c)).sum()).collect();
-    let (best, least) = least(&curve)?;
+    let left = |bend: Bend| near.values().map(|own| squares(own, bend, spacing_s)).sum::<f64>();
+    let middles: Vec<f64> = cuts(near.values().flatten(), step).iter().map(|c| c - 0.5 * spacing_s).collect();
+    let at_once: Vec<f64> = middles.iter().map(|&m| left(Bend { middle_s: m, over_s: 0.0 })).collect();
+    // A gradual turn begins at the step at the earliest.
+    let gradual: Vec<(f64, f64)> = middles
+        .iter()
+        .map(|&m| {
+            GRADUAL_FRAMES
+                .iter()
+                .map(|f| Bend { middle_s: m, over_s: f * spacing_s })
+                .filter(|b| b.began_s() >= step.time_s - 0.5 * spacing_s)
+                .map(|b| (left(b), b.over_s))
+                .fold((f64::INFINITY, 0.0), |best, next| if next.0 < best.0 { next } else { best })
+        })
+        .collect();
+    let slow: Vec<f64> = gradual.iter().map(|g| g.0).collect();
+    let (best_once, once) = least(&at_once)?;
+    let (best_slow, slowest) = least(&slow)?;
     let pieces = near.values().map(Vec::len).sum::<usize>() as f64;
-    let weight: f64 = near.values().flatten().map(|p| p.weight).sum();
-    // Two means of two components a filament are fitted.
+    // Two vectors a filament are fitted to as many vectors as there are pieces.
     let freedom = (2.0 * pieces - 4.0 * near.len() as f64).max(1.0);
-    let variance = least * pieces / weight / freedom;
-    let inflation = inflation(near, cuts[best]);
-    let bound = least + BOUND * variance * inflation * weight / pieces;
+    let margin = BOUND * once.min(slowest) / freedom * inflation(near, middles[best_once]);
+    let (curve, best, over_s) =
+        if slowest + margin < once { (&slow, best_slow, gradual[best_slow].1) } else { (&at_once, best_once, 0.0) };
+    let bound = curve[best] + margin;
     let inside: Vec<usize> = (0..curve.len()).filter(|i| curve[*i] <= bound).collect();
     let (low, high) = (*inside.first()?, *inside.last()?);
-    // What is new at a frame grew since the frame before: half a frame back is its middle.
-    let middle = |i: usize| (cuts[i] - 0.5 * spacing_s).max(step.time_s);
-    let time_s = middle(best);
-    let ci95 = [(cuts[low] - spacing_s).max(step.time_s), cuts[high]];
-    Some(TurnTime { time_s, ci95, lag_s: time_s - step.time_s })
+    let time_s = middles[best].max(step.time_s);
+    Some(TurnTime {
+        time_s,
+        began_s: Bend { middle_s: middles[best], over_s }.began_s().max(step.time_s),
+        ci95: [(middles[low] - 0.5 * spacing_s).max(step.time_s), middles[high] + 0.5 * spacing_s],
+        lag_s: time_s - step.time_s,
+    })
 }
 
 /// Index and value of the first least value.
@@ -131,11 +190,8 @@ fn inflation(near: &BTreeMap<u32, Vec<GrowthPiece>>, cut: f64) -> f64 {
         let k = own.partition_point(|p| p.time_s < cut);
         for side in [&own[..k], &own[k..]] {
             let [weight, c, s] = sums(side);
-            let residuals: Vec<[f64; 2]> = side
-                .iter()
-                .map(|p| doubled(p.angle_deg))
-                .map(|v| [v[0] - c / weight, v[1] - s / weight])
-                .collect();
+            let residuals: Vec<[f64; 2]> =
+                side.iter().map(|p| doubled(p.angle_deg)).map(|v| [v[0] - c / weight, v[1] - s / weight]).collect();
             square += residuals.iter().map(|r| r[0] * r[0] + r[1] * r[1]).sum::<f64>();
             product += residuals.windows(2).map(|w| w[0][0] * w[1][0] + w[0][1] * w[1][1]).sum::<f64>();
         }
@@ -144,20 +200,16 @@ fn inflation(near: &BTreeMap<u32, Vec<GrowthPiece>>, cut: f64) -> f64 {
     (1.0 + rho) / (1.0 - rho)
 }
 
-/// What each filament did; its own change point, or the pooled one where it has no better.
-pub(super) fn by_filament(
-    near: &BTreeMap<u32, Vec<GrowthPiece>>,
-    step: LoadStep,
-    pooled_s: Option<f64>,
-) -> Vec<FilamentTurn> {
-    near.iter().filter_map(|(filament, own)| filament_turn(*filament, own, step, pooled_s)).collect()
+/// What each filament did, at its own change point.
+pub(super) fn by_filament(near: &BTreeMap<u32, Vec<GrowthPiece>>, step: LoadStep, spacing_s: f64) -> Vec<FilamentTurn> {
+    near.iter().filter_map(|(filament, own)| filament_turn(*filament, own, step, spacing_s)).collect()
 }
 
-fn filament_turn(filament: u32, own: &[GrowthPiece], step: LoadStep, pooled_s: Option<f64>) -> Option<FilamentTurn> {
+fn filament_turn(filament: u32, own: &[GrowthPiece], step: LoadStep, spacing_s: f64) -> Option<FilamentTurn> {
     let cuts = cuts(own.iter(), step);
-    let curve: Vec<f64> = cuts.iter().map(|c| squares(own, *c)).collect();
-    let (best, _) = least(&curve)?;
-    let cut = if curve.len() > 1 { cuts[best] } else { pooled_s.map_or(cuts[best], |p| cuts[best].min(p)) };
+    let left = |cut: &f64| squares(own, Bend { middle_s: cut - 0.5 * spacing_s, over_s: 0.0 }, spacing_s);
+    let (best, _) = least(&cuts.iter().map(left).collect::<Vec<_>>())?;
+    let cut = cuts[best];
     let k = own.partition_point(|p| p.time_s < cut);
     let axis = |side: &[GrowthPiece]| {
         let [_, c, s] = sums(side);
@@ -166,7 +218,8 @@ fn filament_turn(filament: u32, own: &[GrowthPiece], step: LoadStep, pooled_s: O
     let (before_deg, after_deg) = (axis(&own[..k])?, axis(&own[k..])?);
     let expected = step.expected_after();
     let turned_deg = expected.map(|e| turned_toward(before_deg, after_deg, e));
-    let followed = expected.zip(turned_deg).is_some_and(|(e, turned)| turned >= FOLLOW_DEG.max(0.5 * acute(before_deg, e)));
+    let followed =
+        expected.zip(turned_deg).is_some_and(|(e, turned)| turned >= FOLLOW_DEG.max(0.5 * acute(before_deg, e)));
     let at_step = own[..own.partition_point(|p| p.time_s <= step.time_s)].last().map(|p| p.position);
     let at_turn = own.get(k).map(|p| p.position - 0.5 * p.weight);
     let grew_on = at_step.zip(at_turn).map(|(a, b)| (b - a).max(0.0));
@@ -206,7 +259,7 @@ mod tests {
         let turn = pooled(&near, step(), 10.0).unwrap();
         assert_abs_diff_eq!(turn.time_s, 235.0);
         assert!(turn.ci95[0] <= 235.0 && 235.0 <= turn.ci95[1] && turn.ci95[1] - turn.ci95[0] <= 30.0, "{turn:?}");
-        for f in by_filament(&near, step(), Some(turn.time_s)) {
+        for f in by_filament(&near, step(), 10.0) {
             assert!(f.followed);
             assert_abs_diff_eq!(f.turned_deg.unwrap(), 80.0, epsilon = 3.0);
             // Step at piece 20; pieces 21 to 23 grew on: 9 units, and half a piece.
@@ -218,7 +271,7 @@ mod tests {
     fn straight_growth_follows_nothing() {
         let pieces = filament(1, f64::INFINITY);
         let near = near(&pieces, &[step()], 0, 10.0);
-        assert!(by_filament(&near, step(), None).iter().all(|f| !f.followed));
+        assert!(by_filament(&near, step(), 10.0).iter().all(|f| !f.followed));
     }
 
     #[test]

