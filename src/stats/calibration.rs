@@ -70,6 +70,8 @@ pub struct TurnCase {
     pub kind: usize,
 }
 
+/// Sets the draws of growth apart from those of the case.
+const GROWTH_SEED: u64 = 0x5eed;
 /// Seconds between simulated frames.
 const FRAME_S: f64 = 10.0;
 
@@ -116,7 +118,7 @@ impl TurnCase {
     /// The run's growth pieces and load.
     #[must_use]
     pub fn simulate(&self, seed: u64, run: u64) -> (Vec<GrowthPiece>, Vec<LoadSample>) {
-        let mut rng = stream(seed ^ 0x5eed, run);
+        let mut rng = stream(seed ^ GROWTH_SEED, run);
         let home = rng.random_range(0.0..180.0);
         let first_axis = if self.response > 0.0 { home } else { rng.random_range(0.0..180.0) };
         let load = self.load(first_axis);
@@ -251,6 +253,22 @@ pub fn alignment_coverage(runs: usize, seed: u64, spread_deg: f64) -> usize {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    /// The worst case for a test within a run: filaments still bend home when the load turns, just there.
+    #[test]
+    fn homing_growth_is_not_taken_for_an_effect() {
+        let (runs, mut rejected) = (150, 0);
+        for run in 0..runs {
+            let case = TurnCase { kind: 0, steps: 1, ..TurnCase::draw(9, run, 0.0) };
+            let (pieces, _) = case.simulate(9, run);
+            let home = stream(9 ^ GROWTH_SEED, run).random_range(0.0..180.0);
+            let at = |time_s, axis| LoadSample { time_s, axis_deg: Some(axis), stress_mpa: Some(150.0) };
+            let step_s = 0.2 * f64::from(case.frames) * FRAME_S;
+            let seen = turns(&pieces, &[at(-1e4, home + 75.0), at(step_s, home)], TurnSettings::default());
+            rejected += u64::from(seen.overall.is_some_and(|o| o.p <= 0.05));
+        }
+        assert!(rejected * 100 <= 8 * runs, "{rejected} of {runs}");
+    }
 
     #[test]
     fn the_same_seed_draws_the_same_run() {

@@ -1,11 +1,12 @@
 //! Did the filaments turn more at a step than they turn by themselves?
 //!
 //! A filament's change at a time is the gain of mean cos 2(direction − axis expected after the step) from a window before to
-//! a window as wide after. The same is taken, about the same axis, at times without a step. The contrast is the mean over
-//! filaments of (change at the step − its mean change elsewhere), tested one-sided by t on the larger of two standard errors: between
-//! filaments, and from the scatter of each filament's own changes. Filaments that cross the gap, curve or wander do so at
-//! the other times too. Size measured by [`crate::stats::calibration`]. Limit: growth that happens to bend just then, all filaments
-//! together, cannot be told from the load in one run.
+//! a window up to twice as wide after, since growth turns late. The same is taken, about the same axis, at times without a
+//! step. The contrast is the mean over filaments of (change at the step − its mean change elsewhere), tested one-sided by t
+//! on the larger of two standard errors: between filaments, and from the scatter of each filament's own changes. Filaments
+//! that cross the gap, curve or wander do so at the other times too. Size measured by [`crate::stats::calibration`].
+//! What a filament did before the step counts at least: growth that straightens out does so less and less. A filament
+//! without a past before any step is left out. Limit: growth that happens to bend just then, all filaments together, cannot be told from the load in one run.
 
 use std::collections::BTreeMap;
 
@@ -19,6 +20,9 @@ use crate::stats::order::{mean, variance};
 const WINDOW_SHARE: f64 = 1.0 / 3.0;
 /// ... but within these, in frames.
 const WINDOW_FRAMES: [f64; 2] = [4.0, 8.0];
+
+/// The window after a time is this many times as wide as the one before, as far as the stretch goes: growth turns late.
+const AFTER: f64 = 2.0;
 
 /// Change at steps against change elsewhere.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -36,6 +40,7 @@ pub(super) struct Judge {
     by_filament: Vec<Vec<GrowthPiece>>,
     steps: Vec<LoadStep>,
     window_s: f64,
+    edges: Vec<f64>,
     quiet: Vec<f64>,
 }
 
@@ -64,7 +69,7 @@ impl Judge {
         let frames = (WINDOW_SHARE * shortest / spacing_s).clamp(WINDOW_FRAMES[0], WINDOW_FRAMES[1]);
         let window_s = frames.floor() * spacing_s;
         let quiet = quiet_times(&edges, window_s);
-        Self { by_filament: by_filament.into_values().collect(), steps: steps.to_vec(), window_s, quiet }
+        Self { by_filament: by_filament.into_values().collect(), steps: steps.to_vec(), window_s, edges, quiet }
     }
 
     /// Contrast of one step; `None` when it cannot be judged.
@@ -94,8 +99,13 @@ impl Judge {
     fn change(&self, own: &[GrowthPiece], step: LoadStep) -> Option<Change> {
         let axis = step.expected_after()?;
         let here = self.gain(own, step.time_s, axis)?;
-        let elsewhere: Vec<f64> = self.quiet.iter().filter_map(|t| self.gain(own, *t, axis)).collect();
-        let centre = mean(&elsewhere)?;
+        let at = |times: &[f64]| times.iter().filter_map(|t| self.gain(own, *t, axis)).collect::<Vec<f64>>();
+        let before = at(&self.quiet[..self.quiet.partition_point(|t| *t < step.time_s)]);
+        let elsewhere = at(&self.quiet);
+        let all = mean(&elsewhere)?;
+        // Growth that straightens out does so less and less: what it did before the step bounds what it would have done.
+        // A filament without a past cannot say.
+        let centre = mean(&before)?.max(all);
         Some(Change { excess: here - centre, scatter: variance(&elsewhere).unwrap_or(0.0), elsewhere: elsewhere.len() })
     }
 
@@ -108,7 +118,8 @@ impl Judge {
                 .fold((0.0, 0.0), |s, p| (s.0 + p.weight * doubled(p.angle_deg - axis)[0], s.1 + p.weight));
             (weight > 0.0).then(|| sum / weight)
         };
-        Some(alignment(time, time + self.window_s)? - alignment(time - self.window_s, time)?)
+        let end = self.edges.iter().copied().find(|e| *e > time).unwrap_or(f64::INFINITY);
+        Some(alignment(time, end.min(time + AFTER * self.window_s))? - alignment(time - self.window_s, time)?)
     }
 }
 
