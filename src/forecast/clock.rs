@@ -1,19 +1,21 @@
 //! The clock all filaments share: how far growth should have come by a time, up to its pace.
-//! Method: s(t) = ((τ(t) − τ₀)/(τ(now) − τ₀))^b, so that s(now) = 1. The drive τ is time, or charge passed, or time weighted by
-//! exp(−β·dose); the shape b (below 1 slowing, above 1 speeding up) and the onset τ₀ have broad priors on a fixed grid.
-//! Source: a power of time covers diffusion-limited (b = 1/2), steady and accelerating growth; an early τ₀ with a large b is
-//! close to exponential growth. Limits: one shape a run; a change of shape is left to the wandering rate in `growth`.
+//! Method: the pace goes as ((τ(t) − τ₀)/(τ(now) − τ₀))^(b−1), and progress is its integral, 0 at first sight and 1 at the end of
+//! the record. The drive τ is time, or charge passed, or time weighted by exp(−β·dose). The bend of the course and the onset τ₀
+//! have broad priors on a fixed grid; b follows from them and may fall below 0 (growth that runs into a limit).
+//! Source: powers of time cover diffusion-limited (b = 1/2), steady and accelerating growth; a far τ₀ makes them exponential
+//! (Box & Cox 1964 for the family). Limits: one bend a run; a change of course is left to the wandering rate in `growth`.
 
 use super::Record;
 
-/// Shapes b, about evenly spaced in log b, with a prior that falls off to both sides of steady growth (log-normal, SD 0.6).
-const SHAPES: [f64; 9] = [0.35, 0.5, 0.65, 0.82, 1.0, 1.25, 1.6, 2.1, 2.8];
-/// SD of ln b in the prior: two thirds of runs between b = 0.55 and 1.8 (common practice: nothing steeper is expected blindly).
-const SHAPE_SD: f64 = 0.6;
-/// Onset before the first sight, in parts of the time seen so far, on top of half a frame.
-const ONSETS: [f64; 5] = [0.0, 0.08, 0.2, 0.5, 1.2];
-/// Prior weights of [`ONSETS`]: a filament is mostly seen soon after it starts.
-const ONSET_WEIGHTS: [f64; 5] = [0.35, 0.25, 0.2, 0.12, 0.08];
+/// Bends: log of the pace now against the pace half-way through the time seen. Below 0 slowing, above 0 speeding up;
+/// growth with the square root of time from first sight has −0.35, with the square of time 0.69.
+const BENDS: [f64; 10] = [-0.9, -0.6, -0.4, -0.22, -0.07, 0.07, 0.22, 0.42, 0.7, 1.1];
+/// SD of the bend in the prior, which is normal about 0: steady growth is as good a guess as any other.
+const BEND_SD: f64 = 0.45;
+/// Onset before the first sight, in parts of the time seen so far, on top of half a frame. All are equally likely.
+const ONSETS: [f64; 4] = [0.0, 0.15, 0.6, 2.5];
+/// Least power of time: below it growth has practically a limit, and "when, given that contact comes" no answer.
+const LEAST_POWER: f64 = 0.3;
 /// Strengths β of the dose, 1/MPa: at 100 MPa the pace falls to 78, 61 and 37 %.
 const DOSE_STRENGTHS: [f64; 3] = [0.0025, 0.005, 0.01];
 /// Least range of the dose, MPa, from which its effect can be told.
@@ -124,47 +126,62 @@ pub(crate) struct Clock {
     name: &'static str,
     onset: f64,
     span: f64,
-    pub(crate) shape: f64,
+    bend: f64,
+    power: f64,
+    /// Integral of the pace from first sight to the end of the record.
+    whole: f64,
     /// Log of its prior weight, up to a constant.
     pub(crate) log_prior: f64,
 }
 
 impl Clock {
-    /// Progress at a reading of the drive: 0 at the onset, 1 at the end of the record.
+    /// `seen`: reading half a frame before first sight; `now`: at the end of the record; `before`: from onset to `seen`.
+    fn new(drive: usize, source: &Drive, seen: f64, now: f64, before: f64, bend: f64) -> Self {
+        let span = now - seen + before;
+        let power = 1.0 + bend / libm::log(span / (0.5 * (now - seen) + before));
+        let off = bend / BEND_SD;
+        let log_prior = libm::log(source.prior) - 0.5 * off * off;
+        Self { drive, name: source.name, onset: seen - before, span, bend, power, whole: -integral(before / span, power), log_prior }
+    }
+
+    /// Progress at a reading of the drive: 0 at first sight (or earlier), 1 at the end of the record.
     pub(crate) fn progress(&self, tick: f64) -> f64 {
-        let part = ((tick - self.onset) / self.span).max(0.0);
-        libm::pow(part, self.shape)
+        let part = (tick - self.onset) / self.span;
+        if part <= 0.0 { 0.0 } else { (1.0 + integral(part, self.power) / self.whole).max(0.0) }
     }
 
     /// The law in words, for a table.
     pub(crate) fn words(&self) -> String {
-        let course = match self.shape {
-            b if b < 0.7 => "slowing",
-            b if b > 1.5 => "speeding up",
+        let course = match self.bend {
+            bend if bend < -0.15 => "slowing",
+            bend if bend > 0.15 => "speeding up",
             _ => "near steady",
         };
-        format!("growth {course} with {} (power {})", self.name, self.shape)
+        format!("growth {course} with {}", self.name)
     }
+}
+
+/// ∫ u^(power − 1) du from 1 to `part`.
+fn integral(part: f64, power: f64) -> f64 {
+    if power.abs() < 1e-6 { libm::log(part) } else { (libm::pow(part, power) - 1.0) / power }
 }
 
 /// All hypotheses over the given drives. `first`: index of the first depth of any filament.
 pub(crate) fn clocks(drives: &[Drive], first: usize) -> Vec<Clock> {
-    let mut all = Vec::with_capacity(drives.len() * SHAPES.len() * ONSETS.len());
+    let mut all = Vec::with_capacity(drives.len() * BENDS.len() * ONSETS.len());
     for (index, drive) in drives.iter().enumerate() {
         let now = drive.ticks[drive.ticks.len() - 1];
-        let seen = drive.ticks[first];
-        let frame = if first > 0 { seen - drive.ticks[first - 1] } else { drive.ticks.get(1).map_or(0.0, |next| next - seen) };
-        let elapsed = now - seen;
+        let sight = drive.ticks[first];
+        let elapsed = now - sight;
         if elapsed <= 0.0 {
             continue;
         }
-        for (part, weight) in ONSETS.iter().zip(ONSET_WEIGHTS) {
-            let onset = seen - 0.5 * frame - part * elapsed;
-            for shape in SHAPES {
-                let off = libm::log(shape) / SHAPE_SD;
-                let log_prior = libm::log(drive.prior * weight) - 0.5 * off * off;
-                all.push(Clock { drive: index, name: drive.name, onset, span: now - onset, shape, log_prior });
-            }
+        let frame = if first > 0 { sight - drive.ticks[first - 1] } else { drive.ticks[first + 1] - sight };
+        let half = 0.5 * frame.max(1e-3 * elapsed);
+        for part in ONSETS {
+            let seen = sight - half;
+            let laws = BENDS.iter().map(|&bend| Clock::new(index, drive, seen, now, 0.2 * half + part * elapsed, bend));
+            all.extend(laws.filter(|clock| clock.power >= LEAST_POWER));
         }
     }
     all

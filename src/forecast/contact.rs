@@ -15,11 +15,11 @@ const NEAREST: f64 = 2e-3;
 /// See [`NEAREST`].
 const FARTHEST: f64 = 2e3;
 /// Chance that the rest of the way is run at a lastingly different rate (turn, new branch, fault).
-const CHANGE_SHARE: f64 = 0.15;
+const CHANGE_SHARE: f64 = 0.12;
 /// SD of the log of that rate against the old one: a factor of 1.8 either way.
 const CHANGE_SD: f64 = 0.6;
 /// Relative SD of the rate that no record can exclude.
-const LEAST_SPREAD: f64 = 0.05;
+const LEAST_SPREAD: f64 = 0.03;
 
 /// The law of the contact time of one record.
 pub(crate) struct Contact {

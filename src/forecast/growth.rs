@@ -16,7 +16,9 @@ const TIPS: usize = 3;
 /// Growth noise: relative SD of the whole depth so far.
 const GRAINS: [f64; 4] = [0.03, 0.08, 0.2, 0.45];
 /// Wander of the rate: its relative SD over a growth by e in progress.
-const WANDERS: [f64; 3] = [0.08, 0.35, 0.9];
+const WANDERS: [f64; 3] = [0.05, 0.25, 0.8];
+/// Prior weights of [`WANDERS`].
+const WANDER_WEIGHTS: [f64; 3] = [0.45, 0.4, 0.15];
 /// Share of progress below which the wander no longer speeds up (the log would run away at the onset).
 const WANDER_FLOOR: f64 = 0.1;
 /// Hypotheses lighter than this, against the heaviest, are dropped.
@@ -105,7 +107,7 @@ fn weigh(record: &Record, tips: &[usize], knots: &[usize], drive: &Drive, clock:
     let mut candidates = [(f64::NEG_INFINITY, [State::default(); TIPS]); GRAINS.len() * WANDERS.len()];
     for (slot, candidate) in candidates.iter_mut().enumerate() {
         let (grain, wander) = (GRAINS[slot / WANDERS.len()], WANDERS[slot % WANDERS.len()]);
-        candidate.0 = 0.0;
+        candidate.0 = libm::log(WANDER_WEIGHTS[slot % WANDERS.len()]);
         for (state, &tip) in candidate.1.iter_mut().zip(tips) {
             *state = filter(&record.tips[tip], knots, &progress, &logs, grain, wander);
             candidate.0 += state.log_likelihood;

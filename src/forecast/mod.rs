@@ -5,10 +5,12 @@
 //! Limits: what the record has not shown (a lasting change of rate, a turn, a new leader) is only in the width. A forecast is
 //! no interlock: follow the lab's own rules, local codes and qualified people.
 
+pub mod calibration;
 mod clock;
 mod contact;
 mod first_passage;
 mod growth;
+pub mod histories;
 mod pauses;
 
 pub use first_passage::FirstPassage;
