@@ -65,16 +65,23 @@ pub struct Calls {
     pub wrongly: f64,
 }
 
-/// Draws `runs` histories of a law and scores them. Depths are decided two frames late in every second run.
-pub fn score(law: Law, fleet: &Fleet, runs: u64) -> (Vec<Scored>, Vec<Call>) {
-    let (mut scored, mut calls) = (Vec::new(), Vec::new());
-    for index in 0..runs {
+/// Draws `runs` histories of a law and scores the forecasts issued at [`ISSUED_AT`].
+pub fn score(law: Law, fleet: &Fleet, runs: u64) -> Vec<Scored> {
+    let points = |index| {
         let run = draw(law, fleet, index);
-        let lag = if index % 2 == 0 { 0 } else { 2 };
-        scored.extend(ISSUED_AT.iter().filter_map(|&fraction| score_at(&run, fraction, lag)));
-        calls.push(call(&run, lag));
-    }
-    (scored, calls)
+        ISSUED_AT.map(|fraction| score_at(&run, fraction, lag(index)))
+    };
+    (0..runs).flat_map(points).flatten().collect()
+}
+
+/// Draws the same histories and follows the chance by the horizon over every frame of them.
+pub fn call(law: Law, fleet: &Fleet, runs: u64) -> Vec<Call> {
+    (0..runs).map(|index| call_of(&draw(law, fleet, index), lag(index))).collect()
+}
+
+/// Depths are decided at once in every second run, two frames late in the others.
+fn lag(index: u64) -> usize {
+    if index % 2 == 0 { 0 } else { 2 }
 }
 
 fn score_at(run: &History, fraction: f64, lag: usize) -> Option<Scored> {
@@ -113,7 +120,7 @@ pub struct Call {
     pub wrongly: usize,
 }
 
-fn call(run: &History, lag: usize) -> Call {
+fn call_of(run: &History, lag: usize) -> Call {
     let mut result = Call { in_time: None, frames: 0, wrongly: 0 };
     let off_at = |frame: usize| {
         let told = run.record_at(frame, lag).map(|record| forecast(&record, &Settings::default()))?;
@@ -223,9 +230,9 @@ pub struct Table {
 pub fn run(fleet: &Fleet, runs: u64) -> Table {
     let mut table = Table { fleet: *fleet, scored: Vec::new(), calls: Vec::new() };
     for (k, &law) in LAWS.iter().enumerate() {
-        let (scored, calls) = score(law, &Fleet { seed: fleet.seed.wrapping_add(k as u64), ..*fleet }, runs);
-        table.scored.extend(scored);
-        table.calls.extend(calls);
+        let fleet = Fleet { seed: fleet.seed.wrapping_add(k as u64), ..*fleet };
+        table.scored.extend(score(law, &fleet, runs));
+        table.calls.extend(call(law, &fleet, runs));
     }
     table
 }

@@ -15,7 +15,7 @@ const BEND_SD: f64 = 0.45;
 /// Onset before the first sight, in parts of the time seen so far, on top of half a frame. All are equally likely.
 const ONSETS: [f64; 4] = [0.0, 0.15, 0.6, 2.5];
 /// Least power of time: below it growth has practically a limit, and "when, given that contact comes" no answer.
-const LEAST_POWER: f64 = 0.3;
+const LEAST_POWER: f64 = 0.2;
 /// Strengths β of the dose, 1/MPa: at 100 MPa the pace falls to 78, 61 and 37 %.
 const DOSE_STRENGTHS: [f64; 3] = [0.0025, 0.005, 0.01];
 /// Least range of the dose, MPa, from which its effect can be told.

@@ -15,11 +15,14 @@ const NEAREST: f64 = 2e-3;
 /// See [`NEAREST`].
 const FARTHEST: f64 = 2e3;
 /// Chance that the rest of the way is run at a lastingly different rate (turn, new branch, fault).
-const CHANGE_SHARE: f64 = 0.12;
+const CHANGE_SHARE: f64 = 0.10;
 /// SD of the log of that rate against the old one: a factor of 1.8 either way.
 const CHANGE_SD: f64 = 0.6;
 /// Relative SD of the rate that no record can exclude.
 const LEAST_SPREAD: f64 = 0.03;
+
+/// Least rate a standing filament is given, in parts of the one that would just arrive; only keeps the logarithm finite.
+const LEAST_RATE: f64 = 0.05;
 
 /// The law of the contact time of one record.
 pub(crate) struct Contact {
@@ -125,22 +128,23 @@ fn by_any(outlooks: &[Outlook], order: &[usize], growing: &[f64], ahead: f64) ->
 }
 
 impl Outlook {
+    /// Variance of the depth after `ahead` units of progress, µm².
+    pub(crate) fn variance(&self, ahead: f64) -> f64 {
+        let end = 1.0 + ahead;
+        // ∫ (end − u)²/u du from 1 to end: how a wandering rate adds up to depth
+        let lever = (end * end * libm::log(end) - 2.0 * end * ahead + 0.5 * (end * end - 1.0)).max(0.0);
+        let known = self.depth_variance + 2.0 * ahead * self.covariance + ahead * ahead * self.rate_variance;
+        (known + self.grain * ahead + self.wander * lever).max(0.0)
+    }
+
     /// Chance of arrival within `ahead` units of progress.
     fn arrived(&self, ahead: f64) -> f64 {
         if ahead <= 0.0 {
             return 0.0;
         }
-        let rate = self.rate.max(0.05 * self.remaining / (ahead + 1.0)).max(f64::MIN_POSITIVE);
+        let rate = self.rate.max(LEAST_RATE * self.remaining / (ahead + 1.0)).max(f64::MIN_POSITIVE);
         let travelled = rate * ahead;
-        let end = 1.0 + ahead;
-        // ∫ (end − u)²/u du from 1 to end: how a wandering rate adds up to depth
-        let lever = (end * end * libm::log(end) - 2.0 * end * ahead + 0.5 * (end * end - 1.0)).max(0.0);
-        let variance = self.depth_variance
-            + 2.0 * ahead * self.covariance
-            + ahead * ahead * self.rate_variance
-            + self.grain * ahead
-            + self.wander * lever;
-        let spread = libm::log(1.0 + variance.max(0.0) / (travelled * travelled) + LEAST_SPREAD * LEAST_SPREAD);
+        let spread = libm::log(1.0 + self.variance(ahead) / (travelled * travelled) + LEAST_SPREAD * LEAST_SPREAD);
         let lead = libm::log(travelled / self.remaining) - 0.5 * spread;
         let wide = spread + CHANGE_SD * CHANGE_SD;
         (1.0 - CHANGE_SHARE) * normal_cdf(lead / spread.sqrt()) + CHANGE_SHARE * normal_cdf(lead / wide.sqrt())

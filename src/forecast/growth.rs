@@ -16,9 +16,9 @@ const TIPS: usize = 3;
 /// Growth noise: relative SD of the whole depth so far.
 const GRAINS: [f64; 4] = [0.03, 0.08, 0.2, 0.45];
 /// Wander of the rate: its relative SD over a growth by e in progress.
-const WANDERS: [f64; 3] = [0.05, 0.25, 0.8];
+const WANDERS: [f64; 3] = [0.05, 0.2, 0.6];
 /// Prior weights of [`WANDERS`].
-const WANDER_WEIGHTS: [f64; 3] = [0.45, 0.4, 0.15];
+const WANDER_WEIGHTS: [f64; 3] = [0.5, 0.35, 0.15];
 /// Share of progress below which the wander no longer speeds up (the log would run away at the onset).
 const WANDER_FLOOR: f64 = 0.1;
 /// Hypotheses lighter than this, against the heaviest, are dropped.

@@ -19,7 +19,7 @@ pub enum Law {
     Power,
     /// Square root of time (diffusion), with random pauses.
     Diffusion,
-    /// Exponential growth of the pace.
+    /// Exponential growth or decay of the pace; a decaying one runs into a limit just beyond the gap.
     Exponential,
     /// An S-shaped course (logistic), slow at both ends.
     Logistic,
@@ -189,7 +189,8 @@ impl Course {
             }
             Law::Diffusion => (0..steps).map(|k| 0.5 / at(k).sqrt()).collect(),
             Law::Exponential => {
-                let k0 = rng.random_range(0.4..2.0);
+                let strength: f64 = rng.random_range(0.3..1.0);
+                let k0 = if rng.random::<f64>() < 0.4 { -1.6 * strength } else { 2.0 * strength };
                 (0..steps).map(|k| k0 * libm::exp(k0 * at(k).min(4.0)) / (libm::exp(k0) - 1.0)).collect()
             }
             Law::Logistic => logistic(steps, &at, rng),

@@ -5,6 +5,7 @@
 //! Limits: what the record has not shown (a lasting change of rate, a turn, a new leader) is only in the width. A forecast is
 //! no interlock: follow the lab's own rules, local codes and qualified people.
 
+mod ahead;
 pub mod calibration;
 mod clock;
 mod contact;
@@ -12,7 +13,9 @@ mod first_passage;
 mod growth;
 pub mod histories;
 mod pauses;
+pub mod record;
 
+pub use ahead::depth_ahead;
 pub use first_passage::FirstPassage;
 
 /// The levels of [`Forecast::quantiles_s`].
