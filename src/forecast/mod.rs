@@ -14,6 +14,7 @@ mod growth;
 pub mod histories;
 mod pauses;
 pub mod record;
+pub mod short;
 
 pub use ahead::depth_ahead;
 pub use first_passage::FirstPassage;
