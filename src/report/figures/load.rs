@@ -1,0 +1,94 @@
+//! The load against time: stress where it is known, else force, and the load axis as small strokes.
+
+use crate::report::axes::{NORMAL, Panel, Range};
+use crate::report::drawing::{Anchor, Drawing};
+use crate::report::palette::Ink;
+use crate::results::Results;
+
+/// A sampled quantity: times and values.
+pub(super) type Samples = Vec<(f64, Option<f64>)>;
+
+/// What is known of the load: its heading and samples; `None` where no load was logged.
+pub(super) fn samples(results: &Results) -> Option<(&'static str, Samples)> {
+    let log = &results.load;
+    let pair = |values: &[Option<f64>]| {
+        log.time_s
+            .iter()
+            .copied()
+            .zip(values.iter().copied())
+            .collect()
+    };
+    let frames = |value: fn(&crate::measure::FrameRow) -> Option<f64>| -> Samples {
+        results
+            .frames
+            .iter()
+            .map(|row| (row.time_s, value(row)))
+            .collect()
+    };
+    [
+        ("stress (MPa)", pair(&log.stress_mpa)),
+        ("stress (MPa)", frames(|row| row.stress_mpa)),
+        ("force (N)", pair(&log.force_n)),
+        ("force (N)", frames(|row| row.load_n)),
+    ]
+    .into_iter()
+    .find(|(_, samples): &(_, Samples)| samples.iter().any(|(_, value)| value.is_some()))
+}
+
+/// The scale of the load, zero included.
+pub(super) fn range(samples: &[(f64, Option<f64>)]) -> Range {
+    let values = samples.iter().filter_map(|(_, value)| *value).chain([0.0]);
+    Range::around(values).unwrap_or(Range {
+        low: 0.0,
+        high: 1.0,
+    })
+}
+
+/// The load in `panel`, or a line that says that there is none.
+pub(super) fn draw(drawing: &mut Drawing, panel: &Panel, known: Option<&(&'static str, Samples)>) {
+    match known {
+        Some((heading, samples)) => {
+            panel.draw_y(drawing, heading, Ink::Load);
+            let before_end = samples.iter().copied().filter(|(t, _)| *t <= panel.x.high);
+            panel.steps(drawing, before_end, Ink::Load, 2.0);
+        }
+        None => {
+            let middle = [
+                panel.left + panel.width / 2.0,
+                panel.top + panel.height / 2.0,
+            ];
+            drawing.text(
+                middle,
+                "no load was logged",
+                NORMAL,
+                Ink::Quiet,
+                Anchor::Middle,
+            );
+        }
+    }
+}
+
+/// The load axis as it lay in the picture, at even times, in a row above `panel`.
+pub(super) fn strokes(drawing: &mut Drawing, panel: &Panel, results: &Results) {
+    /// Half the length of a stroke, and the space from one to the next.
+    const HALF: f64 = 7.0;
+    const PITCH: f64 = 44.0;
+    let count = ((panel.width - 150.0) / PITCH).floor().max(1.0) as usize;
+    for i in 0..count {
+        let x = panel.right() - HALF - 2.0 - PITCH * (count - 1 - i) as f64;
+        let time = panel.x.low + (x - panel.left) / panel.width * (panel.x.high - panel.x.low);
+        let row = results
+            .frames
+            .iter()
+            .take_while(|row| row.time_s <= time)
+            .last();
+        if let Some(angle) = row.and_then(|row| row.load_direction_deg) {
+            let (dx, dy) = (
+                HALF * angle.to_radians().cos(),
+                -HALF * angle.to_radians().sin(),
+            );
+            let y = panel.top - 15.0;
+            drawing.line(vec![[x - dx, y - dy], [x + dx, y + dy]], Ink::Load, 2.4);
+        }
+    }
+}
