@@ -153,7 +153,7 @@ impl Panel {
 
     /// The heading, grid lines and values of the upright scale.
     pub fn draw_y(&self, drawing: &mut Drawing, heading: &str, ink: Ink) {
-        drawing.bold([0.0, self.top - 10.0], heading, NORMAL, ink, Anchor::Start);
+        drawing.bold([0.0, self.top - 16.0], heading, NORMAL, ink, Anchor::Start);
         let ticks = self
             .y
             .ticks((self.height / 34.0).floor().clamp(2.0, 6.0) as usize);

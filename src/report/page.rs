@@ -12,7 +12,7 @@ use super::palette::THEMED;
 use super::schema::{FILAMENTS, FORECASTS};
 use super::svg;
 use super::verdict::{SAFETY, Verdict};
-use super::words::{counted, duration, figures as digits, sentence};
+use super::words::{bind, counted, duration, figures as digits, sentence, trimmed};
 use crate::results::{Results, Summary};
 
 mod grid;
@@ -80,9 +80,9 @@ fn page(results: &Results) -> Result<Page<'_>, Error> {
         facts: facts(results),
         strip: strip::of(results),
         verdict: [
-            ["Growth".into(), verdict.growth],
-            ["Direction".into(), verdict.direction],
-            ["Forecast".into(), verdict.forecast],
+            ["Growth".into(), bind(&verdict.growth)],
+            ["Direction".into(), bind(&verdict.direction)],
+            ["Forecast".into(), bind(&verdict.forecast)],
         ],
         warnings: &summary.warnings,
         cautions: std::iter::once(SAFETY)
@@ -137,7 +137,7 @@ fn colours() -> String {
 fn shown(figure: &Figure, results: &Results) -> Result<Shown, Error> {
     let draw = |format| {
         (figure.draw)(results, format)
-            .map(|drawing| svg::write(&drawing))
+            .map(|drawing| svg::write(&drawing, 0.0))
             .transpose()
     };
     Ok(Shown {
@@ -165,11 +165,11 @@ fn facts(results: &Results) -> Vec<[String; 2]> {
         ["Run time".to_owned(), duration(last)],
         [
             "Picture".to_owned(),
-            format!("{w} × {h} px, {} µm/px", digits(facts.um_per_px, 4)),
+            format!("{w} × {h} px, {} µm/px", trimmed(facts.um_per_px, 4)),
         ],
     ];
     if let Some(gap) = facts.gap_um {
-        list.push(["Gap".to_owned(), format!("{} µm", digits(gap, 4))]);
+        list.push(["Gap".to_owned(), format!("{} µm", trimmed(gap, 4))]);
     }
     let load = match (&facts.fixture, summary.load.stress_mpa) {
         (fixture, Some(s)) if (s.max - s.min).abs() > 0.05 => {

@@ -163,11 +163,12 @@ impl Ink {
 }
 
 /// Arrival ramp: lightness rises evenly from first (0) to last (1), so the order reads without colour;
-/// hue turns from blue through rose to straw, chroma stays high where the lightness is that of the ceramic.
+/// hue turns from deep sea through crimson to apricot, chroma is highest where the lightness is that of
+/// the ceramic.
 pub fn arrival(t: f64) -> Rgb {
     let t = t.clamp(0.0, 1.0);
-    let chroma = 0.13 + 0.30 * t * (1.0 - t);
-    oklch(0.40 + 0.53 * t, chroma, 255.0 + 205.0 * t)
+    let chroma = 0.10 + 0.42 * t * (1.0 - t);
+    oklch(0.37 + 0.56 * t, chroma, 225.0 + 205.0 * t)
 }
 
 #[cfg(test)]

@@ -4,7 +4,7 @@
 use std::io::Cursor;
 use std::sync::OnceLock;
 
-use image::imageops::{FilterType, resize};
+use image::imageops::{FilterType, replace, resize, thumbnail};
 use image::{ImageFormat, RgbImage};
 use plotters::prelude::{BitMapBackend, DrawingBackend, FontStyle, RGBColor, TextStyle};
 use plotters::style::text_anchor::{HPos, Pos, VPos};
@@ -23,44 +23,50 @@ const OVERSAMPLING: f64 = 2.0;
 /// Pixels of a PNG for one unit of the drawing: 3.125 gives 300 dots per inch.
 pub const PRINT_SCALE: f64 = 3.125;
 
-/// The drawing in pixels, `scale` pixels for each of its units.
+/// The drawing in pixels, `scale` pixels for each of its units, with `margin` units of paper around it.
 ///
 /// # Errors
 /// [`Error::Made`] when the typeface cannot be read or a shape cannot be painted.
-pub fn paint(drawing: &Drawing, scale: f64) -> Result<RgbImage, Error> {
+pub fn paint(drawing: &Drawing, margin: f64, scale: f64) -> Result<RgbImage, Error> {
     let fine = scale * OVERSAMPLING;
     let side = |length: f64, by: f64| (length * by).round().max(1.0) as u32;
-    let (w, h) = (side(drawing.width, fine), side(drawing.height, fine));
+    let [w, h] = [drawing.width, drawing.height].map(|length| length + 2.0 * margin);
     let paper = Ink::Paper.light();
-    let mut picture = RgbImage::from_pixel(w, h, image::Rgb([paper.0, paper.1, paper.2]));
+    let mut picture = RgbImage::from_pixel(
+        side(w, fine),
+        side(h, fine),
+        image::Rgb([paper.0, paper.1, paper.2]),
+    );
     register()?;
+    let place = |p: &Point| p.map(|v| ((v + margin) * fine).round() as i32);
     for shape in &drawing.shapes {
         if let Shape::Picture { at, size, image } = shape {
-            let (w, h) = (side(size[0], fine), side(size[1], fine));
-            let enlarged = resize(image, w, h, FilterType::Triangle);
+            let enlarged = resize(
+                image,
+                side(size[0], fine),
+                side(size[1], fine),
+                FilterType::Triangle,
+            );
             let rgb = image::DynamicImage::ImageLuma8(enlarged).to_rgb8();
-            let corner = at.map(|v| (v * fine).round() as i64);
-            image::imageops::replace(&mut picture, &rgb, corner[0], corner[1]);
+            let [x, y] = place(at);
+            replace(&mut picture, &rgb, x.into(), y.into());
         } else {
-            let mut backend = BitMapBackend::with_buffer(&mut picture, (w, h));
-            element(&mut backend, shape, fine).map_err(|why| Error::made("a figure", why))?;
+            let size = picture.dimensions();
+            let mut backend = BitMapBackend::with_buffer(&mut picture, size);
+            element(&mut backend, shape, fine, |p| place(p).into())
+                .map_err(|why| Error::made("a figure", why))?;
         }
     }
-    Ok(resize(
-        &picture,
-        side(drawing.width, scale),
-        side(drawing.height, scale),
-        FilterType::Triangle,
-    ))
+    Ok(thumbnail(&picture, side(w, scale), side(h, scale)))
 }
 
 /// The drawing as a PNG file for print.
 ///
 /// # Errors
 /// As [`paint`].
-pub fn png(drawing: &Drawing) -> Result<Vec<u8>, Error> {
+pub fn png(drawing: &Drawing, margin: f64) -> Result<Vec<u8>, Error> {
     let mut file = Cursor::new(Vec::new());
-    paint(drawing, PRINT_SCALE)?
+    paint(drawing, margin, PRINT_SCALE)?
         .write_to(&mut file, ImageFormat::Png)
         .map_err(|why| Error::made("a figure", why))?;
     Ok(file.into_inner())
@@ -82,8 +88,12 @@ fn register() -> Result<(), Error> {
     }
 }
 
-fn element<B: DrawingBackend>(backend: &mut B, shape: &Shape, scale: f64) -> Result<(), String> {
-    let place = |p: &Point| ((p[0] * scale).round() as i32, (p[1] * scale).round() as i32);
+fn element<B: DrawingBackend>(
+    backend: &mut B,
+    shape: &Shape,
+    scale: f64,
+    place: impl Fn(&Point) -> (i32, i32),
+) -> Result<(), String> {
     let colour = |ink: Ink, opacity: f64| {
         let rgb = ink.light();
         RGBColor(rgb.0, rgb.1, rgb.2).mix(opacity)
@@ -100,13 +110,13 @@ fn element<B: DrawingBackend>(backend: &mut B, shape: &Shape, scale: f64) -> Res
                 colour(*ink, *opacity).stroke_width((width * scale).round().max(1.0) as u32);
             dashes(points, *dash)
                 .iter()
-                .try_for_each(|piece| backend.draw_path(piece.iter().map(place), &style))
+                .try_for_each(|piece| backend.draw_path(piece.iter().map(&place), &style))
         }
         Shape::Area {
             points,
             ink,
             opacity,
-        } => backend.fill_polygon(points.iter().map(place), &colour(*ink, *opacity)),
+        } => backend.fill_polygon(points.iter().map(&place), &colour(*ink, *opacity)),
         Shape::Disc {
             at,
             radius,
@@ -196,7 +206,7 @@ mod tests {
     fn a_disc_is_painted_where_it_stands() {
         let mut drawing = Drawing::new(20.0, 10.0, "");
         drawing.disc([15.0, 5.0], 3.0, Ink::Black, 1.0);
-        let picture = paint(&drawing, 2.0).unwrap();
+        let picture = paint(&drawing, 0.0, 2.0).unwrap();
         assert_eq!(picture.dimensions(), (40, 20));
         assert!(picture.get_pixel(30, 10).0[0] < 60);
         assert!(picture.get_pixel(10, 10).0[0] > 240);

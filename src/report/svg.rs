@@ -11,15 +11,17 @@ use super::palette::Ink;
 /// Typefaces in order of preference; the first is the one the PNG uses.
 const FONTS: &str = "Noto Sans, system-ui, Segoe UI, Helvetica, Arial, sans-serif";
 
-/// The drawing as an SVG document.
+/// The drawing as an SVG document with `margin` of paper around it.
 ///
 /// # Errors
 /// [`Error::Made`] when an embedded picture cannot be encoded.
-pub fn write(drawing: &Drawing) -> Result<String, Error> {
-    let (w, h) = (drawing.width, drawing.height);
+pub fn write(drawing: &Drawing, margin: f64) -> Result<String, Error> {
+    let (w, h) = (drawing.width + 2.0 * margin, drawing.height + 2.0 * margin);
+    let corner = 0.0 - margin;
     let mut out = format!(
-        "<svg xmlns=\"http://www.w3.org/2000/svg\" viewBox=\"0 0 {w} {h}\" width=\"{w}\" height=\"{h}\" \
-         role=\"img\" font-family=\"{FONTS}\">\n<title>{}</title>\n<rect width=\"{w}\" height=\"{h}\"{}/>\n",
+        "<svg xmlns=\"http://www.w3.org/2000/svg\" viewBox=\"{corner} {corner} {w} {h}\" width=\"{w}\" height=\"{h}\" \
+         role=\"img\" font-family=\"{FONTS}\">\n<title>{}</title>\n\
+         <rect x=\"{corner}\" y=\"{corner}\" width=\"{w}\" height=\"{h}\"{}/>\n",
         escape(&drawing.title),
         paint("fill", Ink::Paper, 1.0),
     );
@@ -165,7 +167,7 @@ mod tests {
             Ink::Text,
             Anchor::Start,
         );
-        let svg = write(&drawing).unwrap();
+        let svg = write(&drawing, 0.0).unwrap();
         assert!(!svg.contains("<script"));
         assert!(!svg.contains("\" onload"));
         assert!(!svg.contains('\u{0}'));

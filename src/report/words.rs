@@ -52,9 +52,9 @@ pub fn duration(seconds: f64) -> String {
     let sign = if seconds < 0.0 { "−" } else { "" };
     let s = seconds.abs();
     let text = if s < 120.0 {
-        format!("{} s", trimmed(s))
+        format!("{} s", trimmed(s, 3))
     } else if s < 3_600.0 {
-        format!("{} min", trimmed(s / 60.0))
+        format!("{} min", trimmed(s / 60.0, 3))
     } else if s < 48.0 * 3_600.0 {
         pair(s / 60.0, 60.0, "h", "min")
     } else {
@@ -63,9 +63,9 @@ pub fn duration(seconds: f64) -> String {
     format!("{sign}{text}")
 }
 
-/// Three figures, without zeros that end a decimal fraction.
-fn trimmed(value: f64) -> String {
-    let text = figures(value, 3);
+/// As [`figures`], without zeros that end a decimal fraction.
+pub fn trimmed(value: f64, digits: i32) -> String {
+    let text = figures(value, digits);
     if text.contains('.') {
         text.trim_end_matches('0').trim_end_matches('.').to_owned()
     } else {
@@ -82,6 +82,25 @@ fn pair(small: f64, per: f64, large: &str, little: &str) -> String {
     } else {
         format!("{many} {large} {rest} {little}")
     }
+}
+
+/// Keeps a number and its unit on one line: the space between them becomes one that does not break.
+pub fn bind(text: &str) -> String {
+    const UNITS: [&str; 8] = ["µm", "µm/s", "µm/min", "min", "s", "h", "MPa", "%"];
+    let mut out = String::with_capacity(text.len() + 16);
+    for (i, word) in text.split(' ').enumerate() {
+        let unit = word.trim_end_matches(|c: char| matches!(c, ',' | ';' | '.' | ')'));
+        let after_number = out.chars().last().is_some_and(|c| c.is_ascii_digit());
+        if i > 0 {
+            out.push(if after_number && UNITS.contains(&unit) {
+                '\u{a0}'
+            } else {
+                ' '
+            });
+        }
+        out.push_str(word);
+    }
+    out
 }
 
 /// "no filament", "one filament", "12 filaments".
@@ -134,6 +153,14 @@ mod tests {
         assert_eq!(with_uncertainty(612.44, Some(1.34)), "612.4 ± 1.3");
         assert_eq!(with_uncertainty(612.44, Some(7.1)), "612 ± 7");
         assert_eq!(with_uncertainty(612.44, None), "612");
+    }
+
+    #[test]
+    fn units_stay_with_their_numbers() {
+        assert_eq!(
+            bind("over 20 min, 82 % of 5 cells"),
+            "over 20\u{a0}min, 82\u{a0}% of 5 cells"
+        );
     }
 
     #[test]

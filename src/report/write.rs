@@ -11,6 +11,7 @@ use std::path::{Path, PathBuf};
 
 use image::GrayImage;
 use ndarray::Array2;
+use rayon::prelude::*;
 
 use super::figures::{FIGURES, Format};
 use super::schema::{FILAMENTS, FORECASTS, FRAMES, GROWTH, PATHS, Table};
@@ -22,6 +23,9 @@ pub const MARK: &str = ".veerlog-output";
 
 /// What the mark says to someone who opens it.
 const MARK_TEXT: &str = "Written by veerlog, which replaces this whole folder when it runs again: keep nothing of your own here.\n";
+
+/// Paper around a figure that stands alone, in its units.
+const MARGIN: f64 = 14.0;
 
 /// What is written beyond the standing files.
 #[derive(Debug, Clone, Copy, Default, PartialEq, Eq)]
@@ -185,19 +189,19 @@ fn table<R>(folder: &Path, schema: &Table<R>, rows: &[R]) -> Result<(), Error> {
 
 fn figures(results: &Results, folder: &Path) -> Result<(), Error> {
     make(folder)?;
-    for figure in &FIGURES {
-        if let Some(drawing) = (figure.draw)(results, Format::Wide) {
-            put(
-                &folder.join(format!("{}.svg", figure.name)),
-                svg::write(&drawing)?.as_bytes(),
-            )?;
-            put(
-                &folder.join(format!("{}.png", figure.name)),
-                &raster::png(&drawing)?,
-            )?;
-        }
-    }
-    Ok(())
+    FIGURES.par_iter().try_for_each(|figure| {
+        let Some(drawing) = (figure.draw)(results, Format::Wide) else {
+            return Ok(());
+        };
+        put(
+            &folder.join(format!("{}.svg", figure.name)),
+            svg::write(&drawing, MARGIN)?.as_bytes(),
+        )?;
+        put(
+            &folder.join(format!("{}.png", figure.name)),
+            &raster::png(&drawing, MARGIN)?,
+        )
+    })
 }
 
 fn masks(results: &Results, folder: &Path) -> Result<(), Error> {

@@ -26,18 +26,11 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
     } else {
         [220.0, 110.0]
     };
-    let ([above, below], total) = stack(
-        format,
-        heights,
-        time,
-        [
-            Range {
-                low: -1.1,
-                high: 1.1,
-            },
-            loads,
-        ],
-    );
+    let scale = Range {
+        low: -1.1,
+        high: 1.1,
+    };
+    let ([above, below], total) = stack(format, time, [(heights[0], scale), (heights[1], loads)]);
     let mut drawing = Drawing::new(
         format.width(),
         total,

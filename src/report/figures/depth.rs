@@ -6,7 +6,7 @@ use crate::measure::{ForecastRow, FrameRow};
 use crate::report::axes::{NORMAL, Panel, Range, SMALL, TimeUnit};
 use crate::report::drawing::{Anchor, Drawing, clip_right, thin};
 use crate::report::palette::Ink;
-use crate::report::words::duration;
+use crate::report::words::{duration, trimmed};
 use crate::results::{Results, ShortEvidence};
 
 /// How far beyond the record the plot may reach, in lengths of the record; the tables are never cut.
@@ -26,7 +26,7 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
         low: 0.0,
         high: target.max(deepest).max(1.0) * 1.1,
     };
-    let ([panel], total) = stack(format, [height], time, [depths]);
+    let ([panel], total) = stack(format, time, [(height, depths)]);
     let mut drawing = Drawing::new(
         format.width(),
         total,
@@ -74,9 +74,10 @@ fn far_edge(drawing: &mut Drawing, panel: &Panel, target: f64, known: bool) {
     if known {
         let y = panel.up(target);
         drawing.line(vec![[panel.left, y], [panel.right(), y]], Ink::Text, 1.6);
+        let words = format!("far edge, {} µm", trimmed(target, 4));
         drawing.text(
             [panel.left + 6.0, y - 6.0],
-            "far edge",
+            words,
             SMALL,
             Ink::Text,
             Anchor::Start,

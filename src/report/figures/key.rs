@@ -29,9 +29,9 @@ pub(super) fn row(drawing: &mut Drawing, panel: &Panel, entries: &[(Mark, Ink, &
         .sum();
     let mut x = panel.right() - total + 14.0;
     for (mark, ink, words) in entries {
-        draw(drawing, *mark, *ink, x, panel.top - 14.0);
+        draw(drawing, *mark, *ink, x, panel.top - 20.0);
         drawing.text(
-            [x + 24.0, panel.top - 10.0],
+            [x + 24.0, panel.top - 16.0],
             *words,
             SMALL,
             Ink::Quiet,

@@ -59,7 +59,7 @@ pub(super) fn draw(drawing: &mut Drawing, panel: &Panel, known: Option<&(&'stati
             ];
             drawing.text(
                 middle,
-                "no load was logged",
+                "neither force nor stress was logged",
                 NORMAL,
                 Ink::Quiet,
                 Anchor::Middle,
@@ -87,7 +87,7 @@ pub(super) fn strokes(drawing: &mut Drawing, panel: &Panel, results: &Results) {
                 HALF * angle.to_radians().cos(),
                 -HALF * angle.to_radians().sin(),
             );
-            let y = panel.top - 15.0;
+            let y = panel.top - 20.0;
             drawing.line(vec![[x - dx, y - dy], [x + dx, y + dy]], Ink::Load, 2.4);
         }
     }

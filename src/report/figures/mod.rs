@@ -98,29 +98,29 @@ const LEFT: f64 = 52.0;
 /// Space right of panels.
 const RIGHT: f64 = 12.0;
 /// Space above a panel, for its heading.
-const ABOVE: f64 = 34.0;
+const ABOVE: f64 = 42.0;
 /// Space below the lowest panel, for the time axis.
 const BELOW: f64 = 44.0;
 
-/// Panels of one width on one time axis, one below the other.
+/// Panels of one width on one time axis, one below the other, and the height of the whole drawing.
 fn stack<const N: usize>(
     format: Format,
-    heights: [f64; N],
     time: Range,
-    y: [Range; N],
+    sides: [(f64, Range); N],
 ) -> ([Panel; N], f64) {
     let mut top = 0.0;
-    let panels = std::array::from_fn(|i| {
+    let panels = sides.map(|(height, y)| {
         top += ABOVE;
+        let width = format.width() - LEFT - RIGHT;
         let panel = Panel {
             left: LEFT,
             top,
-            width: format.width() - LEFT - RIGHT,
-            height: heights[i],
+            width,
+            height,
             x: time,
-            y: y[i],
+            y,
         };
-        top += heights[i];
+        top += height;
         panel
     });
     (panels, top + BELOW)

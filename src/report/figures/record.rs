@@ -27,7 +27,7 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
         .fold(time.high, f64::max);
     let contact = Range::new(0.0, (latest * 1.04).min(time.high * REACH) / unit.seconds);
     let height = if format.is_narrow() { 230.0 } else { 280.0 };
-    let ([panel], total) = stack(format, [height], time, [contact]);
+    let ([panel], total) = stack(format, time, [(height, contact)]);
     let mut drawing = Drawing::new(
         format.width(),
         total,

@@ -34,7 +34,7 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
     };
     drawing.bold([0.0, 14.0], heading, NORMAL, Ink::Metal, Anchor::Start);
     let largest = shares.iter().copied().fold(0.0, f64::max);
-    let reach = |share: f64| radius * (share / largest).sqrt();
+    let reach = |share: f64| radius * (share / largest).min(1.0).sqrt();
     rings(&mut drawing, centre, radius, largest, reach);
     for (i, share) in shares.iter().enumerate().filter(|(_, share)| **share > 0.0) {
         for turn in [0.0, 180.0] {
@@ -45,6 +45,7 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
             );
         }
     }
+    ring_names(&mut drawing, centre, &shares, about_load, reach);
     spokes(&mut drawing, centre, radius, about_load);
     if about_load {
         axis(&mut drawing, centre, radius, results);
@@ -105,7 +106,15 @@ fn circle(centre: Point, radius: f64) -> Vec<Point> {
         .collect()
 }
 
-/// Rings of equal share, each with its value, and the ring of growth even in all directions.
+/// The shares whose rings are drawn: round ones, apart from rim and centre.
+fn round_shares(largest: f64) -> impl Iterator<Item = f64> {
+    RINGS
+        .into_iter()
+        .map(|percent| percent / 100.0)
+        .filter(move |s| (0.15..0.85).contains(&(s / largest)))
+}
+
+/// Rings of equal share, and the ring of growth even in all directions.
 fn rings(
     drawing: &mut Drawing,
     centre: Point,
@@ -114,23 +123,36 @@ fn rings(
     reach: impl Fn(f64) -> f64,
 ) {
     drawing.line(circle(centre, radius), Ink::Grid, 1.0);
-    let even = reach(1.0 / PETALS as f64);
-    for percent in RINGS
-        .into_iter()
-        .filter(|p| p / 100.0 < largest * 0.85 && p / 100.0 > largest * 0.15)
-    {
-        let r = reach(percent / 100.0);
-        drawing.line(circle(centre, r), Ink::Grid, 1.0);
-        let at = towards(centre, r, -52.5, true);
+    for share in round_shares(largest) {
+        drawing.line(circle(centre, reach(share)), Ink::Grid, 1.0);
+    }
+    drawing.dashed(circle(centre, reach(1.0 / PETALS as f64)), Ink::Quiet, 1.2);
+}
+
+/// The shares of the rings, written where the rose is emptiest.
+fn ring_names(
+    drawing: &mut Drawing,
+    centre: Point,
+    shares: &[f64; PETALS],
+    about_load: bool,
+    reach: impl Fn(f64) -> f64,
+) {
+    let emptiest = (1..PETALS)
+        .filter(|i| *i != PETALS / 2)
+        .min_by(|a, b| shares[*a].total_cmp(&shares[*b]));
+    let degrees = emptiest.unwrap_or(1) as f64 * 180.0 / PETALS as f64;
+    let largest = shares.iter().copied().fold(0.0, f64::max);
+    for share in round_shares(largest).filter(|share| *share > shares[emptiest.unwrap_or(1)]) {
+        let at = towards(centre, reach(share), degrees, about_load);
+        let words = format!("{:.0} %", share * 100.0);
         drawing.text(
-            [at[0] + 3.0, at[1] - 3.0],
-            format!("{percent} %"),
+            [at[0], at[1] + 4.0],
+            words,
             SMALL - 1.0,
             Ink::Quiet,
-            Anchor::Start,
+            Anchor::Middle,
         );
     }
-    drawing.dashed(circle(centre, even), Ink::Quiet, 1.2);
 }
 
 fn spokes(drawing: &mut Drawing, centre: Point, radius: f64, about_load: bool) {

@@ -5,7 +5,7 @@ use serde::Serialize;
 
 use crate::report::figures::overlay::arrival_step;
 use crate::report::palette::Ink;
-use crate::report::words::{figures, fixed, with_uncertainty};
+use crate::report::words::{fixed, trimmed, with_uncertainty};
 use crate::results::Results;
 
 /// The strip in ready strings.
@@ -37,7 +37,7 @@ pub(super) fn of(results: &Results) -> Option<Strip> {
         ),
         percent,
         depth: depth_words,
-        gap: format!("{} µm", figures(gap, 4)),
+        gap: format!("{} µm", trimmed(gap, 4)),
     })
 }
 
