@@ -176,7 +176,7 @@ impl Panel {
             low: self.x.low / unit.seconds,
             high: self.x.high / unit.seconds,
         };
-        let ticks = scaled.ticks((self.width / 80.0).floor().max(2.0) as usize);
+        let ticks = scaled.ticks((self.width / 62.0).floor().clamp(2.0, 9.0) as usize);
         let y = self.bottom();
         drawing.line(vec![[self.left, y], [self.right(), y]], Ink::Quiet, 1.0);
         for (value, label) in ticks.iter().zip(labels(&ticks)) {

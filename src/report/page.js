@@ -1,4 +1,4 @@
-// The picture: scrub through the frames, hide what had not arrived, choose a filament in picture and table.
+// The picture: scrub through the frames; hide what had not arrived by then.
 (() => {
   "use strict";
   const film = document.getElementById("film");

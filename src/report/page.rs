@@ -37,6 +37,7 @@ struct Page<'a> {
     cautions: Vec<&'a str>,
     player: Option<player::Player>,
     figures: Vec<Shown>,
+    not_drawn: String,
     tables: Vec<grid::Grid>,
     set_aside: Vec<[String; 2]>,
     settings: Vec<[String; 2]>,
@@ -44,14 +45,14 @@ struct Page<'a> {
     made_by: String,
 }
 
-/// A figure in both layouts, or the reason why there is none.
+/// A figure in both layouts.
 #[derive(Serialize)]
 struct Shown {
     name: &'static str,
     title: &'static str,
     caption: &'static str,
-    wide: Option<String>,
-    narrow: Option<String>,
+    wide: String,
+    narrow: String,
 }
 
 /// The page as HTML.
@@ -70,6 +71,7 @@ pub fn render(results: &Results) -> Result<String, Error> {
 fn page(results: &Results) -> Result<Page<'_>, Error> {
     let verdict = Verdict::of(results);
     let summary = &results.summary;
+    let (figures, not_drawn) = evidence(results)?;
     Ok(Page {
         colours: colours(),
         css: include_str!("page.css"),
@@ -89,11 +91,8 @@ fn page(results: &Results) -> Result<Page<'_>, Error> {
             .chain(results.cautions.iter().map(String::as_str))
             .collect(),
         player: player::of(results)?,
-        figures: FIGURES
-            .iter()
-            .filter(|f| f.name != "overlay")
-            .map(|f| shown(f, results))
-            .collect::<Result<_, _>>()?,
+        figures,
+        not_drawn,
         tables: vec![
             grid::of("Filaments", &FILAMENTS, &results.filaments),
             grid::of("Forecasts as issued", &FORECASTS, &results.forecasts),
@@ -134,19 +133,35 @@ fn colours() -> String {
     )
 }
 
-fn shown(figure: &Figure, results: &Results) -> Result<Shown, Error> {
+/// The figure in both layouts; `None` where there is nothing to show.
+fn shown(figure: &Figure, results: &Results) -> Result<Option<Shown>, Error> {
     let draw = |format| {
         (figure.draw)(results, format)
             .map(|drawing| svg::write(&drawing, 0.0))
             .transpose()
     };
-    Ok(Shown {
+    let (Some(wide), Some(narrow)) = (draw(Format::Wide)?, draw(Format::Narrow)?) else {
+        return Ok(None);
+    };
+    Ok(Some(Shown {
         name: figure.name,
         title: figure.title,
         caption: figure.caption,
-        wide: draw(Format::Wide)?,
-        narrow: draw(Format::Narrow)?,
-    })
+        wide,
+        narrow,
+    }))
+}
+
+/// The figures of the evidence: those drawn, and the titles of those with nothing to show.
+fn evidence(results: &Results) -> Result<(Vec<Shown>, String), Error> {
+    let (mut drawn, mut missing) = (Vec::new(), Vec::new());
+    for figure in FIGURES.iter().filter(|figure| figure.name != "overlay") {
+        match shown(figure, results)? {
+            Some(shown) => drawn.push(shown),
+            None => missing.push(figure.title.to_lowercase()),
+        }
+    }
+    Ok((drawn, missing.join(", ")))
 }
 
 fn facts(results: &Results) -> Vec<[String; 2]> {

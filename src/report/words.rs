@@ -89,7 +89,7 @@ pub fn bind(text: &str) -> String {
     const UNITS: [&str; 8] = ["µm", "µm/s", "µm/min", "min", "s", "h", "MPa", "%"];
     let mut out = String::with_capacity(text.len() + 16);
     for (i, word) in text.split(' ').enumerate() {
-        let unit = word.trim_end_matches(|c: char| matches!(c, ',' | ';' | '.' | ')'));
+        let unit = word.trim_end_matches([',', ';', '.', ')']);
         let after_number = out.chars().last().is_some_and(|c| c.is_ascii_digit());
         if i > 0 {
             out.push(if after_number && UNITS.contains(&unit) {

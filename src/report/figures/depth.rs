@@ -182,15 +182,17 @@ fn short(drawing: &mut Drawing, panel: &Panel, results: &Results) {
     };
     let x = panel.across(time);
     let words = match short.evidence {
-        Some(ShortEvidence::Electrical) => "short, by the cell's log",
-        Some(ShortEvidence::Bridging) => "metal at the far edge",
+        Some(ShortEvidence::Electrical) => "short (cell log)",
+        Some(ShortEvidence::Bridging) => "far edge touched",
         None => "short",
     };
     drawing.dashed(vec![[x, panel.top], [x, panel.bottom()]], Ink::Text, 1.6);
-    let (anchor, shift) = if x > panel.left + panel.width / 2.0 {
-        (Anchor::End, -7.0)
-    } else {
+    let room = words.chars().count() as f64 * NORMAL * key::BOLD + 14.0;
+    let to_the_right = panel.right() - x > room;
+    let (anchor, shift) = if to_the_right {
         (Anchor::Start, 7.0)
+    } else {
+        (Anchor::End, -7.0)
     };
     drawing.bold(
         [x + shift, panel.bottom() - 12.0],

@@ -7,6 +7,9 @@ use crate::report::palette::Ink;
 /// Width of a letter over the height of the type, on the safe side for sentences (from the typeface).
 pub(super) const LETTER: f64 = 0.54;
 
+/// The same for heavy type.
+pub(super) const BOLD: f64 = 0.6;
+
 /// How a thing is drawn.
 #[derive(Debug, Clone, Copy)]
 pub(super) enum Mark {

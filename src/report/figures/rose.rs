@@ -166,7 +166,7 @@ fn spokes(drawing: &mut Drawing, centre: Point, radius: f64, about_load: bool) {
             let ends =
                 [radius, radius + 6.0].map(|r| towards(centre, r, degrees + turn, about_load));
             drawing.line(ends.to_vec(), Ink::Quiet, 1.0);
-            if !(about_load && degrees == 0.0_f64.abs()) {
+            if !about_load || degrees > 0.0 {
                 let at = towards(centre, radius + 18.0, degrees + turn, about_load);
                 drawing.text(
                     [at[0], at[1] + 4.0],

@@ -13,6 +13,14 @@ use crate::report::words::{duration, fixed};
 use crate::results::Results;
 use crate::trace::TracePath;
 
+/// Says what is seen where something grew.
+const TRACED: &str = "Last usable frame, drift and uneven light removed, with every traced centre-line. What is traced is the visible \
+     track (crack, metal or both), as projected on the picture.";
+
+/// Says what is seen where nothing grew.
+const BARE: &str =
+    "Last usable frame, drift and uneven light removed. No filament was traced in it.";
+
 /// The player in ready strings.
 #[derive(Serialize)]
 pub(super) struct Player {
@@ -30,6 +38,7 @@ pub(super) struct Player {
     film: Vec<Shot>,
     has_axis: bool,
     alt: String,
+    caption: &'static str,
 }
 
 /// One frame to scrub to; the last is the last usable frame.
@@ -78,6 +87,11 @@ pub(super) fn of(results: &Results) -> Result<Option<Player>, Error> {
         unit: unit.name,
         has_axis: film.iter().any(|shot| shot.axis.is_some()),
         film,
+        caption: if results.trace.filaments.is_empty() {
+            BARE
+        } else {
+            TRACED
+        },
         alt: format!(
             "Last usable frame with {} traced filaments, coloured by arrival",
             results.trace.filaments.len()
