@@ -356,7 +356,7 @@ fn filaments(trace: &Trace, frames: &[FrameRow]) -> Vec<FilamentRow> {
         final_length_um: path.points.len() as f64 * UM_PER_PX,
         tips: 1,
         bridged: false,
-        turned: (path.filament % 3 != 0).then_some(path.filament % 2 == 0),
+        turned: (!path.filament.is_multiple_of(3)).then_some(path.filament.is_multiple_of(2)),
     };
     trace.paths.iter().map(one).collect()
 }

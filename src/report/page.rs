@@ -12,10 +12,11 @@ use super::palette::THEMED;
 use super::schema::{FILAMENTS, FORECASTS};
 use super::svg;
 use super::verdict::{SAFETY, Verdict};
-use super::words::{bind, counted, duration, figures as digits, sentence, trimmed};
-use crate::results::{Results, Summary};
+use super::words::bind;
+use crate::results::Results;
 
 mod grid;
+mod lists;
 mod player;
 mod strip;
 
@@ -51,6 +52,7 @@ struct Shown {
     name: &'static str,
     title: &'static str,
     caption: &'static str,
+    numbers: Vec<[String; 2]>,
     wide: String,
     narrow: String,
 }
@@ -79,7 +81,7 @@ fn page(results: &Results) -> Result<Page<'_>, Error> {
         name: &results.facts.run,
         specimen: results.facts.specimen.as_deref(),
         note: results.facts.note.as_deref(),
-        facts: facts(results),
+        facts: lists::facts(results),
         strip: strip::of(results),
         verdict: [
             ["Growth".into(), bind(&verdict.growth)],
@@ -97,8 +99,8 @@ fn page(results: &Results) -> Result<Page<'_>, Error> {
             grid::of("Filaments", &FILAMENTS, &results.filaments),
             grid::of("Forecasts as issued", &FORECASTS, &results.forecasts),
         ],
-        set_aside: set_aside(summary),
-        settings: flat(&summary.settings),
+        set_aside: lists::set_aside(summary),
+        settings: lists::flat(&summary.settings),
         inputs: summary
             .inputs
             .iter()
@@ -143,10 +145,12 @@ fn shown(figure: &Figure, results: &Results) -> Result<Option<Shown>, Error> {
     let (Some(wide), Some(narrow)) = (draw(Format::Wide)?, draw(Format::Narrow)?) else {
         return Ok(None);
     };
+    let numbers = lists::numbers(figure.name, results);
     Ok(Some(Shown {
         name: figure.name,
         title: figure.title,
         caption: figure.caption,
+        numbers,
         wide,
         narrow,
     }))
@@ -162,99 +166,6 @@ fn evidence(results: &Results) -> Result<(Vec<Shown>, String), Error> {
         }
     }
     Ok((drawn, missing.join(", ")))
-}
-
-fn facts(results: &Results) -> Vec<[String; 2]> {
-    let (facts, summary) = (&results.facts, &results.summary);
-    let last = results
-        .frames
-        .iter()
-        .map(|row| row.time_s)
-        .fold(0.0, f64::max);
-    let [w, h] = facts.frame_size;
-    let mut list = vec![
-        [
-            "Frames".to_owned(),
-            format!("{} of {} used", summary.frames.usable, summary.frames.total),
-        ],
-        ["Run time".to_owned(), duration(last)],
-        [
-            "Picture".to_owned(),
-            format!("{w} × {h} px, {} µm/px", trimmed(facts.um_per_px, 4)),
-        ],
-    ];
-    if let Some(gap) = facts.gap_um {
-        list.push(["Gap".to_owned(), format!("{} µm", trimmed(gap, 4))]);
-    }
-    let load = match (&facts.fixture, summary.load.stress_mpa) {
-        (fixture, Some(s)) if (s.max - s.min).abs() > 0.05 => {
-            let range = format!("{} to {} MPa", digits(s.min, 3), digits(s.max, 3));
-            fixture
-                .as_ref()
-                .map_or(range.clone(), |name| format!("{name}, {range}"))
-        }
-        (fixture, Some(s)) => {
-            let stress = format!("{} MPa", digits(s.median, 3));
-            fixture
-                .as_ref()
-                .map_or(stress.clone(), |name| format!("{name}, {stress}"))
-        }
-        (Some(fixture), None) => fixture.clone(),
-        (None, None) => "none logged".to_owned(),
-    };
-    list.push(["Load".to_owned(), load]);
-    list
-}
-
-/// Frames set aside, gathered by reason: "blank" → "3 frames: 4, 9, 17".
-fn set_aside(summary: &Summary) -> Vec<[String; 2]> {
-    /// Numbers that are spelled out; the table of frames has them all.
-    const SPELLED: usize = 40;
-    let mut by_reason: Vec<(&str, Vec<usize>)> = Vec::new();
-    for frame in &summary.frames.set_aside {
-        match by_reason
-            .iter_mut()
-            .find(|(reason, _)| *reason == frame.reason)
-        {
-            Some((_, frames)) => frames.push(frame.frame),
-            None => by_reason.push((&frame.reason, vec![frame.frame])),
-        }
-    }
-    let spell = |(reason, frames): (&str, Vec<usize>)| {
-        let mut numbers: Vec<String> = frames.iter().take(SPELLED).map(usize::to_string).collect();
-        if frames.len() > SPELLED {
-            numbers.push("…".into());
-        }
-        [
-            reason.to_owned(),
-            format!(
-                "{}: {}",
-                sentence(&counted(frames.len(), "frame", "frames")),
-                numbers.join(", ")
-            ),
-        ]
-    };
-    by_reason.into_iter().map(spell).collect()
-}
-
-/// Nested settings as `a.b` and value, in order.
-fn flat(settings: &serde_json::Value) -> Vec<[String; 2]> {
-    fn walk(prefix: &str, value: &serde_json::Value, out: &mut Vec<[String; 2]>) {
-        match value {
-            serde_json::Value::Object(map) => {
-                for (key, value) in map {
-                    let dot = if prefix.is_empty() { "" } else { "." };
-                    walk(&format!("{prefix}{dot}{key}"), value, out);
-                }
-            }
-            serde_json::Value::Null if prefix.is_empty() => {}
-            serde_json::Value::String(text) => out.push([prefix.to_owned(), text.clone()]),
-            other => out.push([prefix.to_owned(), other.to_string()]),
-        }
-    }
-    let mut out = Vec::new();
-    walk("", settings, &mut out);
-    out
 }
 
 #[cfg(test)]

@@ -76,6 +76,10 @@ fn growth(results: &Results) -> String {
         .iter()
         .filter(|f| f.final_depth_um.is_some())
         .count();
+    let elsewhere = match results.filaments.len() - rooted {
+        0 => String::new(),
+        n => format!(" and {n} elsewhere"),
+    };
     let Some(depth) = summary.depth.final_um else {
         let all = counted(results.filaments.len(), "filament", "filaments");
         return format!(
@@ -98,11 +102,25 @@ fn growth(results: &Results) -> String {
         _ => String::new(),
     };
     format!(
-        "{} grew from the plating edge {over}; the deepest reached {deepest}{share}{}{}.",
+        "{} grew from the plating edge {over}{elsewhere}; the deepest reached {deepest}{share}{}{}{}.",
         sentence(&counted(rooted, "filament", "filaments")),
+        drawn_back(results),
         rate(results),
         short_clause(results),
     )
+}
+
+/// Where what is visible at the end lies behind what had grown.
+fn drawn_back(results: &Results) -> String {
+    /// Share of the depth by which it must lie behind to be told.
+    const TOLD: f64 = 0.02;
+    let last = results.frames.iter().rev().find(|row| row.usable);
+    match last.and_then(|row| Some((row.depth_um?, row.front_depth_um?))) {
+        Some((depth, front)) if front < depth * (1.0 - TOLD) => {
+            format!(", of which {} µm can still be seen", figures(front, 3))
+        }
+        _ => String::new(),
+    }
 }
 
 /// Rate per hour, minute or second, whichever reads well.
@@ -199,6 +217,7 @@ fn direction(results: &Results) -> String {
 fn forecast(results: &Results) -> String {
     let short = &results.summary.short;
     let said = match &results.summary.forecast {
+        None if short.observed => "No forecast was issued before the short.".to_owned(),
         None if grew(results) => "The record allows no forecast yet.".to_owned(),
         None => "Without growth there is no forecast; absence of growth in these frames does not show that the cell is safe.".to_owned(),
         Some(row) if short.observed => {

@@ -34,44 +34,56 @@ pub struct Save {
     pub masks: bool,
 }
 
-/// Writes the whole output folder `target`; its parents are made where missing.
+/// Writes the whole output folder of a run to `target`; its parents are made where missing.
+///
+/// # Errors
+/// As [`replace_folder`].
+pub fn write(results: &Results, target: &Path, save: Save) -> Result<(), Error> {
+    replace_folder(target, &OURS, |folder| fill(results, folder, save))
+}
+
+/// Puts a folder made by `fill` in the place of `target`, whole. `ours` names all that may stand at the
+/// top of such a folder; the mark is added here. `fill` gets an empty folder.
 ///
 /// # Errors
 /// [`Error::Foreign`] when `target` holds files and no mark of ours, [`Error::NotAFolder`] when it is a
-/// file, [`Error::Io`] when the disc refuses, [`Error::Made`] when an output cannot be made. In every case
-/// `target` is left as it was.
-pub fn write(results: &Results, target: &Path, save: Save) -> Result<(), Error> {
-    refuse_foreign(target)?;
+/// file, [`Error::Io`] when the disc refuses, and what `fill` fails with. In every case `target` is left as
+/// it was.
+pub fn replace_folder(
+    target: &Path,
+    ours: &[&str],
+    fill: impl FnOnce(&Path) -> Result<(), Error>,
+) -> Result<(), Error> {
+    refuse_foreign(target, ours)?;
     let target = &std::path::absolute(target).map_err(|source| Error::io(target, source))?;
     let parent = target.parent().unwrap_or(target).to_owned();
     fs::create_dir_all(&parent).map_err(|source| Error::io(&parent, source))?;
-    let name = target
-        .file_name()
-        .map_or_else(|| "output".into(), |n| n.to_string_lossy().into_owned());
+    let name = target.file_name().unwrap_or_default().to_string_lossy();
     let built = tempfile::Builder::new()
         .prefix(&format!(".{name}.veerlog-new-"))
         .tempdir_in(&parent)
         .map_err(|source| Error::io(&parent, source))?;
-    fill(results, built.path(), save)?;
+    put(&built.path().join(MARK), MARK_TEXT.as_bytes())?;
+    fill(built.path())?;
     open_to_readers(built.path())?;
     swap(built.keep(), target)
 }
 
-/// A temporary folder is closed to others; the output is as open as any new folder.
+/// A temporary folder is closed to others; the output is made as open as a folder made here.
+#[cfg(unix)]
 fn open_to_readers(folder: &Path) -> Result<(), Error> {
-    #[cfg(unix)]
-    {
-        use std::os::unix::fs::PermissionsExt;
-        let probe = folder.join("tables");
-        let mode = fs::metadata(&probe)
-            .map_err(|source| Error::io(&probe, source))?
-            .permissions()
-            .mode();
-        fs::set_permissions(folder, fs::Permissions::from_mode(mode))
-            .map_err(|source| Error::io(folder, source))?;
-    }
-    #[cfg(not(unix))]
-    let _same = folder;
+    let probe = folder.join("probe");
+    make(&probe)?;
+    let open = fs::metadata(&probe)
+        .map_err(|source| Error::io(&probe, source))?
+        .permissions();
+    fs::remove_dir(&probe).map_err(|source| Error::io(&probe, source))?;
+    fs::set_permissions(folder, open).map_err(|source| Error::io(folder, source))
+}
+
+/// Elsewhere a temporary folder is as open as any other.
+#[cfg(not(unix))]
+fn open_to_readers(_folder: &Path) -> Result<(), Error> {
     Ok(())
 }
 
@@ -79,7 +91,7 @@ fn open_to_readers(folder: &Path) -> Result<(), Error> {
 ///
 /// # Errors
 /// [`Error::Foreign`], [`Error::NotAFolder`], [`Error::Io`].
-pub fn refuse_foreign(target: &Path) -> Result<(), Error> {
+pub fn refuse_foreign(target: &Path, ours: &[&str]) -> Result<(), Error> {
     match fs::symlink_metadata(target) {
         Err(why) if why.kind() == std::io::ErrorKind::NotFound => return Ok(()),
         Err(source) => return Err(Error::io(target, source)),
@@ -96,7 +108,7 @@ pub fn refuse_foreign(target: &Path) -> Result<(), Error> {
         names.push(entry.file_name().to_string_lossy().into_owned());
     }
     names.sort();
-    let ours = |name: &String| OURS.contains(&name.as_str());
+    let ours = |name: &String| name == MARK || ours.contains(&name.as_str());
     let marked = names.iter().any(|name| name == MARK);
     match names.into_iter().find(|name| !marked || !ours(name)) {
         Some(found) => Err(Error::Foreign {
@@ -107,9 +119,8 @@ pub fn refuse_foreign(target: &Path) -> Result<(), Error> {
     }
 }
 
-/// All that stands at the top of an output folder.
-const OURS: [&str; 7] = [
-    MARK,
+/// All that stands at the top of a run's output folder, beside the mark.
+pub const OURS: [&str; 6] = [
     "report.html",
     "summary.json",
     "tables",

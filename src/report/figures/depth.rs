@@ -18,13 +18,19 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
         .iter()
         .filter_map(|row| row.depth_um)
         .reduce(f64::max)?;
+    let upper = |row: &FrameRow| Some(row.depth_um? + 2.0 * row.u_depth_um.unwrap_or(0.0));
+    let highest = results
+        .frames
+        .iter()
+        .filter_map(upper)
+        .fold(deepest, f64::max);
     let target = target(results).unwrap_or(deepest);
     let (record, _) = run_time(results);
     let time = Range::new(0.0, right_end(results, record.high));
     let height = if format.is_narrow() { 250.0 } else { 330.0 };
     let depths = Range {
         low: 0.0,
-        high: target.max(deepest).max(1.0) * 1.1,
+        high: target.max(highest).max(1.0) * 1.1,
     };
     let ([panel], total) = stack(format, time, [(height, depths)]);
     let mut drawing = Drawing::new(

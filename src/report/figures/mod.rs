@@ -138,3 +138,113 @@ fn run_time(results: &Results) -> (Range, TimeUnit) {
         TimeUnit::of(last),
     )
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::report::drawing::{Point, Shape};
+    use crate::report::example;
+
+    /// Runs as they come: without a load, pulled, with a single frame, with no end in sight, at rest.
+    fn odd_runs() -> Vec<(&'static str, Results)> {
+        let change = |change: fn(&mut Results)| {
+            let mut results = example::growing();
+            change(&mut results);
+            results
+        };
+        vec![
+            ("growing", example::growing()),
+            ("shorted", example::shorted()),
+            ("still", example::still()),
+            ("empty", Results::default()),
+            (
+                "no load",
+                change(|r| {
+                    r.load = Default::default();
+                    r.frames.iter_mut().for_each(|row| {
+                        (row.load_n, row.stress_mpa, row.load_direction_deg) = (None, None, None);
+                    });
+                    r.growth
+                        .iter_mut()
+                        .for_each(|row| row.load_direction_deg = None);
+                }),
+            ),
+            (
+                "pulled",
+                change(|r| {
+                    r.load
+                        .stress_mpa
+                        .iter_mut()
+                        .flatten()
+                        .for_each(|s| *s = -*s);
+                }),
+            ),
+            (
+                "one frame",
+                change(|r| {
+                    r.frames.truncate(7);
+                    r.frames.drain(..6);
+                    r.forecasts.truncate(1);
+                }),
+            ),
+            (
+                "no end in sight",
+                change(|r| {
+                    r.forecasts.iter_mut().for_each(|row| {
+                        (row.p50_s, row.p75_s, row.p90_s) = (Some(1e9), Some(1e12), None)
+                    });
+                    r.summary.forecast = r.forecasts.last().cloned();
+                }),
+            ),
+            (
+                "at rest",
+                change(|r| {
+                    r.frames
+                        .iter_mut()
+                        .for_each(|row| row.depth_um = row.depth_um.map(|_| 0.0));
+                    r.facts.gap_um = None;
+                    r.cell.current_ma.iter_mut().for_each(|i| *i = Some(0.0));
+                }),
+            ),
+        ]
+    }
+
+    fn points(shape: &Shape) -> Vec<Point> {
+        match shape {
+            Shape::Line { points, .. } | Shape::Area { points, .. } => points.clone(),
+            Shape::Disc { at, .. } | Shape::Text { at, .. } | Shape::Picture { at, .. } => {
+                vec![*at]
+            }
+        }
+    }
+
+    #[test]
+    fn every_mark_lies_on_the_paper() {
+        for (name, results) in odd_runs() {
+            for figure in &FIGURES {
+                for format in [Format::Wide, Format::Narrow] {
+                    let Some(drawing) = (figure.draw)(&results, format) else {
+                        continue;
+                    };
+                    for shape in &drawing.shapes {
+                        for [x, y] in points(shape) {
+                            let inside = (-1.0..=drawing.width + 1.0).contains(&x)
+                                && (-1.0..=drawing.height + 1.0).contains(&y);
+                            assert!(inside, "{name}, {}, {format:?}: {shape:?}", figure.name);
+                        }
+                    }
+                }
+            }
+        }
+    }
+
+    #[test]
+    fn a_run_with_everything_shows_every_figure() {
+        let results = example::growing();
+        assert!(
+            FIGURES
+                .iter()
+                .all(|figure| (figure.draw)(&results, Format::Wide).is_some())
+        );
+    }
+}

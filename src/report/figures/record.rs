@@ -113,7 +113,7 @@ fn references(drawing: &mut Drawing, panel: &Panel, unit: TimeUnit, results: &Re
         let y = panel.up(time / unit.seconds);
         drawing.dashed(vec![[panel.left, y], [panel.right(), y]], Ink::Text, 1.6);
         drawing.bold(
-            [panel.left + 6.0, y - 6.0],
+            [panel.left + 6.0, y + 15.0],
             "short observed",
             SMALL,
             Ink::Text,
