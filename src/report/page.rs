@@ -8,7 +8,7 @@ use serde::Serialize;
 
 use super::Error;
 use super::figures::{FIGURES, Figure, Format};
-use super::palette::THEMED;
+use super::palette::{Ink, THEMED};
 use super::schema::{FILAMENTS, FORECASTS};
 use super::svg;
 use super::verdict::{SAFETY, Verdict};
@@ -130,7 +130,8 @@ fn colours() -> String {
         .map(|i| super::palette::arrival(f64::from(i) / 12.0).hex())
         .collect();
     format!(
-        ":root{{{light}--ramp:linear-gradient(to right,{})}}@media screen and (prefers-color-scheme:dark){{:root{{{dark}}}}}{classes}",
+        ":root{{{light}--casing:{};--ramp:linear-gradient(to right,{})}}@media screen and (prefers-color-scheme:dark){{:root{{{dark}}}}}{classes}",
+        Ink::Black.light().hex(),
         ramp.join(",")
     )
 }

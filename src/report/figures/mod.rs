@@ -2,6 +2,7 @@
 //! show is `None`, so that the page can say so in words instead of drawing empty axes.
 
 mod alignment;
+pub(in crate::report) mod arrival;
 mod depth;
 mod electrical;
 mod key;

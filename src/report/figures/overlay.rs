@@ -1,8 +1,9 @@
 //! The last usable frame with every centre-line, coloured by arrival; edges, scale bar, load axis.
 
+use super::Format;
+use super::arrival::{ArrivalScale, COLOURS, colour};
 use super::key::LETTER;
-use super::{Format, run_time};
-use crate::report::axes::{Range, SMALL, TimeUnit};
+use crate::report::axes::{Range, SMALL};
 use crate::report::drawing::{Anchor, Drawing, Point, Shape};
 use crate::report::palette::Ink;
 use crate::report::words::fixed;
@@ -28,10 +29,11 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
     });
     let place = move |p: &Point| [(p[0] + 0.5) * scale, (p[1] + 0.5) * scale];
     edges(&mut drawing, results, place);
+    let arrivals = ArrivalScale::of(results);
     for path in &results.trace.paths {
-        centre_line(&mut drawing, results, path, place);
+        centre_line(&mut drawing, &arrivals, path, place);
     }
-    foot(&mut drawing, results, scale, height);
+    foot(&mut drawing, results, &arrivals, scale, height);
     Some(drawing)
 }
 
@@ -49,51 +51,28 @@ fn edges(drawing: &mut Drawing, results: &Results, place: impl Fn(&Point) -> Poi
 /// A dark casing, then a stretch in each colour; stretches overlap by one point, so no gap shows.
 fn centre_line(
     drawing: &mut Drawing,
-    results: &Results,
+    scale: &ArrivalScale,
     path: &TracePath,
     place: impl Fn(&Point) -> Point,
 ) {
     let points: Vec<Point> = path.points.iter().map(|p| place(&[p.x, p.y])).collect();
-    let step = |i: usize| arrival_step(results, path.points[i].arrival);
+    let ink = |i: usize| scale.ink(path.points[i].arrival);
     drawing.stroke(points.clone(), Ink::Black, 3.8, 0.0, 0.55);
     let mut from = 0;
     for i in 1..points.len() {
-        if i + 1 == points.len() || step(i) != step(i + 1) {
-            drawing.line(points[from..=i].to_vec(), Ink::Arrival(step(i)), 2.2);
+        if i + 1 == points.len() || ink(i) != ink(i + 1) {
+            drawing.line(points[from..=i].to_vec(), ink(i), 2.2);
             from = i;
         }
     }
 }
 
-/// Where on the arrival ramp a frame stands: 32 steps, more than an eye can tell apart.
-pub(in crate::report) fn arrival_step(results: &Results, frame: usize) -> u8 {
-    let (time, _) = run_time(results);
-    let at = results.frames.get(frame).map_or(0.0, |row| row.time_s);
-    let first = first_arrival(results);
-    let share = (at - first) / (time.high - first).max(f64::MIN_POSITIVE);
-    ((share.clamp(0.0, 1.0) * 31.0).round() * 255.0 / 31.0) as u8
-}
-
-/// When the first metal arrived, s; 0 without any.
-pub(in crate::report) fn first_arrival(results: &Results) -> f64 {
-    let first = results
-        .trace
-        .paths
-        .iter()
-        .flat_map(|p| &p.points)
-        .map(|p| p.arrival)
-        .min();
-    first
-        .and_then(|frame| results.frames.get(frame))
-        .map_or(0.0, |row| row.time_s)
-}
-
 /// Below the picture: colour bar, scale bar, names of the edges, load axis.
-fn foot(drawing: &mut Drawing, results: &Results, scale: f64, top: f64) {
+fn foot(drawing: &mut Drawing, results: &Results, arrivals: &ArrivalScale, scale: f64, top: f64) {
     let width = drawing.width;
     colour_bar(
         drawing,
-        results,
+        arrivals,
         [0.0, top + 22.0],
         (width * 0.46).min(300.0),
     );
@@ -131,29 +110,21 @@ fn name(drawing: &mut Drawing, at: Point, words: &str) -> f64 {
     at[0] + words.chars().count() as f64 * SMALL * LETTER + 18.0
 }
 
-fn colour_bar(drawing: &mut Drawing, results: &Results, at: Point, width: f64) {
-    for step in 0..32_u8 {
-        let (x0, x1) = (
-            at[0] + width * f64::from(step) / 32.0,
-            at[0] + width * f64::from(step + 1) / 32.0,
-        );
+fn colour_bar(drawing: &mut Drawing, arrivals: &ArrivalScale, at: Point, width: f64) {
+    for step in 0..COLOURS {
+        let [x0, x1] = [step, step + 1].map(|s| at[0] + width * f64::from(s) / f64::from(COLOURS));
         let corners = vec![
             [x0, at[1]],
             [x1, at[1]],
             [x1, at[1] + 10.0],
             [x0, at[1] + 10.0],
         ];
-        drawing.area(
-            corners,
-            Ink::Arrival((f64::from(step) * 255.0 / 31.0) as u8),
-            1.0,
-        );
+        drawing.area(corners, colour(step), 1.0);
     }
-    let (time, _) = run_time(results);
-    let unit = TimeUnit::of(time.high);
+    let unit = arrivals.unit;
     let range = Range::new(
-        first_arrival(results) / unit.seconds,
-        time.high / unit.seconds,
+        arrivals.time.low / unit.seconds,
+        arrivals.time.high / unit.seconds,
     );
     for tick in range.ticks((width / 60.0) as usize) {
         let x = at[0] + width * (tick - range.low) / (range.high - range.low);

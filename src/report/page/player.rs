@@ -5,11 +5,10 @@ use std::fmt::Write;
 use serde::Serialize;
 
 use crate::report::Error;
-use crate::report::axes::TimeUnit;
 use crate::report::data_uri;
-use crate::report::figures::overlay::{arrival_step, first_arrival, scale_bar};
-use crate::report::palette::Ink;
-use crate::report::words::{duration, fixed};
+use crate::report::figures::arrival::ArrivalScale;
+use crate::report::figures::overlay::scale_bar;
+use crate::report::words::{duration, fixed, trimmed};
 use crate::results::Results;
 use crate::trace::TracePath;
 
@@ -64,26 +63,22 @@ pub(super) fn of(results: &Results) -> Result<Option<Player>, Error> {
         return Ok(None);
     }
     let film = film(results)?;
-    let time = results
-        .frames
-        .iter()
-        .map(|row| row.time_s)
-        .fold(0.0, f64::max);
-    let unit = TimeUnit::of(time);
+    let arrivals = ArrivalScale::of(results);
+    let unit = arrivals.unit;
     let (um, px) = scale_bar(results.facts.um_per_px, f64::from(width) * 0.25);
     Ok(Some(Player {
         width,
         height,
         last: data_uri::jpeg(last, data_uri::LARGE)?,
-        traces: traces(results, &film),
+        traces: traces(results, &arrivals, &film),
         plating: corners(&results.facts.plating_edge),
         far: corners(&results.facts.far_edge),
         bar: [
             format!("{} µm", fixed(um, usize::from(um < 1.0) * 2)),
             fixed(100.0 * px / f64::from(width), 2),
         ],
-        ramp_from: fixed(first_arrival(results) / unit.seconds, 1),
-        ramp_to: fixed(time / unit.seconds, 1),
+        ramp_from: trimmed(arrivals.time.low / unit.seconds, 3),
+        ramp_to: trimmed(arrivals.time.high / unit.seconds, 3),
         unit: unit.name,
         has_axis: film.iter().any(|shot| shot.axis.is_some()),
         film,
@@ -142,52 +137,83 @@ fn shot(results: &Results, frame: usize, src: String) -> Shot {
     }
 }
 
+/// Corners as SVG wants them, pixel centres at half.
 fn corners(edge: &[[f64; 2]]) -> String {
-    edge.iter()
-        .map(|[x, y]| format!("{:.1},{:.1} ", x + 0.5, y + 0.5))
-        .collect()
+    let list: Vec<String> = edge
+        .iter()
+        .map(|[x, y]| format!("{:.1},{:.1}", x + 0.5, y + 0.5))
+        .collect();
+    list.join(" ")
 }
 
-/// A group a filament: a dark casing and a stretch for each shot in which it grew and each colour.
-fn traces(results: &Results, film: &[Shot]) -> String {
+/// A group a filament: first all dark casings, then the colours, so that no casing covers a colour.
+fn traces(results: &Results, arrivals: &ArrivalScale, film: &[Shot]) -> String {
     let mut out = String::new();
     for filament in &results.trace.filaments {
         let number = filament.filament;
+        let paths = results
+            .trace
+            .paths
+            .iter()
+            .filter(|path| path.filament == number);
+        let stretches: Vec<Stretch> = paths
+            .flat_map(|path| stretches(arrivals, film, path))
+            .collect();
         let _infallible = write!(
             out,
             "<g class=\"filament\" data-filament=\"{number}\"><title>filament {number}</title>"
         );
-        for path in results
-            .trace
-            .paths
-            .iter()
-            .filter(|path| path.filament == number)
+        for Stretch { shot, points, .. } in &stretches {
+            let _infallible = write!(
+                out,
+                "<polyline class=\"casing\" data-shot=\"{shot}\" points=\"{points}\"/>"
+            );
+        }
+        for Stretch {
+            shot,
+            points,
+            colour,
+        } in &stretches
         {
-            stretches(&mut out, results, film, path);
+            let _infallible = write!(
+                out,
+                "<polyline data-shot=\"{shot}\" stroke=\"{colour}\" points=\"{points}\"/>"
+            );
         }
         out.push_str("</g>\n");
     }
     out
 }
 
-fn stretches(out: &mut String, results: &Results, film: &[Shot], path: &TracePath) {
-    let shown_from = |i: usize| film.partition_point(|shot| shot.frame < path.points[i].arrival);
-    let look = |i: usize| (shown_from(i), arrival_step(results, path.points[i].arrival));
+/// Neighbouring points of a path that appear in one shot and share a colour.
+struct Stretch {
+    shot: usize,
+    points: String,
+    colour: String,
+}
+
+/// Stretches overlap by one point, so that no gap shows.
+fn stretches(arrivals: &ArrivalScale, film: &[Shot], path: &TracePath) -> Vec<Stretch> {
+    let look = |i: usize| {
+        let arrival = path.points[i].arrival;
+        (
+            film.partition_point(|shot| shot.frame < arrival),
+            arrivals.ink(arrival),
+        )
+    };
+    let mut all = Vec::new();
     let mut from = 0;
     for i in 1..path.points.len() {
         if i + 1 == path.points.len() || look(i) != look(i + 1) {
-            let (shot, step) = look(i);
-            let d: Vec<String> = path.points[from..=i]
-                .iter()
-                .map(|p| format!("{:.1},{:.1}", p.x + 0.5, p.y + 0.5))
-                .collect();
-            let d = d.join(" ");
-            let colour = Ink::Arrival(step).light().hex();
-            let _infallible = write!(
-                out,
-                "<g data-shot=\"{shot}\"><polyline class=\"casing\" points=\"{d}\"/><polyline points=\"{d}\" stroke=\"{colour}\"/></g>",
-            );
+            let (shot, ink) = look(i);
+            let points: Vec<[f64; 2]> = path.points[from..=i].iter().map(|p| [p.x, p.y]).collect();
+            all.push(Stretch {
+                shot,
+                points: corners(&points),
+                colour: ink.light().hex(),
+            });
             from = i;
         }
     }
+    all
 }

@@ -3,8 +3,7 @@
 
 use serde::Serialize;
 
-use crate::report::figures::overlay::arrival_step;
-use crate::report::palette::Ink;
+use crate::report::figures::arrival::ArrivalScale;
 use crate::report::words::{fixed, trimmed, with_uncertainty};
 use crate::results::Results;
 
@@ -45,9 +44,10 @@ pub(super) fn of(results: &Results) -> Option<Strip> {
 fn gradient(results: &Results, depth: f64) -> String {
     let mut stops = Vec::new();
     let mut reached = 0.0;
+    let arrivals = ArrivalScale::of(results);
     for row in &results.frames {
         if let Some(now) = row.depth_um.filter(|now| *now > reached) {
-            let colour = Ink::Arrival(arrival_step(results, row.frame)).light().hex();
+            let colour = arrivals.ink(row.frame).light().hex();
             stops.push(format!(
                 "{colour} {:.2}% {:.2}%",
                 100.0 * reached / depth,
