@@ -76,7 +76,9 @@ pub struct Pictures {
     pub first: GrayImage,
     /// The last usable frame.
     pub last: GrayImage,
-    /// A choice of frames for the player, in time order, all of one size; the last one may repeat `last`.
+    /// A choice of frames for the player, in time order, in the view of `last` (they may be smaller).
+    /// The page embeds each at up to 800 px, some 50 to 100 kB: 60 of them keep it well under 15 MB.
+    /// May be empty; frames from the last usable one on are left out, for `last` shows it.
     pub film: Vec<FilmFrame>,
     /// Frame at which each pixel \[row, col\] became filament; [`NEVER`] where it did not.
     pub arrivals: Option<Array2<u32>>,

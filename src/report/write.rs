@@ -2,7 +2,8 @@
 //! the new one, never half of either.
 //!
 //! Order: write `.NAME.veerlog-new-XXXX`, move the old folder aside, move the new one in, remove the old
-//! one. If the last move fails, the old folder is moved back. A folder without our mark is never touched
+//! one. A program that is killed meanwhile leaves that hidden folder beside the target, and the target
+//! whole. If the last move fails, the old folder is moved back. A folder without our mark is never touched
 //! unless it is empty.
 
 use std::fs::{self, File};

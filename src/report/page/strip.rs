@@ -4,6 +4,7 @@
 use serde::Serialize;
 
 use crate::report::figures::arrival::ArrivalScale;
+use crate::report::palette::Ink;
 use crate::report::words::{fixed, trimmed, with_uncertainty};
 use crate::results::Results;
 
@@ -40,22 +41,30 @@ pub(super) fn of(results: &Results) -> Option<Strip> {
     })
 }
 
-/// Hard stops, one a frame in which the depth grew.
+/// Hard stops, one a colour: where the depth stood when that colour's time began and ended.
 fn gradient(results: &Results, depth: f64) -> String {
-    let mut stops = Vec::new();
-    let mut reached = 0.0;
     let arrivals = ArrivalScale::of(results);
+    let mut bands: Vec<(Ink, f64, f64)> = Vec::new();
+    let mut reached = 0.0;
     for row in &results.frames {
         if let Some(now) = row.depth_um.filter(|now| *now > reached) {
-            let colour = arrivals.ink(row.frame).light().hex();
-            stops.push(format!(
-                "{colour} {:.2}% {:.2}%",
-                100.0 * reached / depth,
-                100.0 * now / depth
-            ));
+            let ink = arrivals.ink(row.frame);
+            match bands.last_mut() {
+                Some((last, _, to)) if *last == ink => *to = now,
+                _ => bands.push((ink, reached, now)),
+            }
             reached = now;
         }
     }
+    let stop = |(ink, from, to): (Ink, f64, f64)| {
+        let colour = ink.light().hex();
+        format!(
+            "{colour} {:.2}% {:.2}%",
+            100.0 * from / depth,
+            100.0 * to / depth
+        )
+    };
+    let stops: Vec<String> = bands.into_iter().map(stop).collect();
     if stops.is_empty() {
         "none".into()
     } else {
