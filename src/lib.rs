@@ -26,6 +26,7 @@ pub mod load;
 pub mod measure;
 pub mod pipeline;
 pub mod report;
+pub mod results;
 pub mod run;
 pub mod scene;
 pub mod stats;

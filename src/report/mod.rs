@@ -1,1 +1,32 @@
-//! Tables, figures, overlay and page. Computes nothing.
+//! Tables, figures, overlay and page. Formats a finished [`Results`](crate::results::Results) and computes nothing.
+//!
+//! ```text
+//! schema     every column of every table, once      palette    the colours, once
+//! tables     schema + rows → CSV, Parquet           drawing    shapes of a figure → svg, raster
+//! records    traces.ndjson, summary.json            axes       panels, scales, ticks
+//! words      numbers and times for the eye          figures/   one file a figure
+//! verdict    the run in three sentences             page       report.html
+//! write      the output folder, swapped in whole
+//! ```
+
+pub mod axes;
+pub mod drawing;
+pub mod figures;
+pub mod page;
+pub mod palette;
+pub mod raster;
+pub mod records;
+pub mod schema;
+pub mod svg;
+pub mod tables;
+pub mod verdict;
+pub mod words;
+pub mod write;
+
+mod data_uri;
+mod error;
+#[cfg(test)]
+mod example;
+
+pub use error::Error;
+pub use write::{Save, write};
