@@ -15,7 +15,8 @@ use super::recent::{Corrected, Recent};
 use super::ridge::line_evidence;
 use super::settle::{self, EDGE_SHADE};
 use super::tip::TipShape;
-use super::{graph, thin, threshold};
+use super::graph::{self, SkeletonGraph};
+use super::{thin, threshold};
 
 /// Corrected frames held at once: how far back a line that is found late can be dated.
 pub const WINDOW: usize = 8;
@@ -31,6 +32,8 @@ const RIM: usize = 3;
 const LOW_Z: f32 = 3.2;
 /// Least pixels of a component.
 const LEAST_PIXELS: usize = 3;
+/// A skeleton's end branch shorter than this many half widths at its junction is a spur.
+const SPUR_HALF_WIDTHS: f64 = 1.5;
 /// Evidence tests that are independent of each other, per pixel: orientations and scales over their correlation.
 const TESTS_PER_PIXEL: f64 = 0.5;
 
@@ -230,15 +233,34 @@ fn sure_z(area: usize, rate: f64) -> f32 {
     (-Normal::standard().inverse_cdf(tail)) as f32
 }
 
-/// Components of a mask with the ends of their skeletons.
+/// Components of a mask with the ends of their skeletons, short spurs left out.
 fn skeleton_components(mask: &Array2<bool>) -> Vec<Component> {
-    threshold::components(mask)
-        .into_iter()
-        .map(|pixels| {
-            let ends = graph::ends(&thin::thin_pixels(&pixels));
-            Component { pixels, ends }
-        })
-        .collect()
+    let mut out = Vec::new();
+    threshold::for_each_component(mask.view(), |pixels| {
+        out.push(Component { ends: skeleton_ends(pixels), pixels: pixels.to_vec() });
+    });
+    out
+}
+
+/// Ends of the skeleton of one component; one of its pixels where it is a closed loop or a dot.
+fn skeleton_ends(pixels: &[[usize; 2]]) -> Vec<[usize; 2]> {
+    let low = |axis: usize| pixels.iter().map(|p| p[axis]).min().unwrap_or(0);
+    let high = |axis: usize| pixels.iter().map(|p| p[axis]).max().unwrap_or(0);
+    let origin = [low(0), low(1)];
+    let mut cut = Array2::from_elem((high(0) - origin[0] + 3, high(1) - origin[1] + 3), false);
+    for p in pixels {
+        cut[[p[0] - origin[0] + 1, p[1] - origin[1] + 1]] = true;
+    }
+    let mut graph = SkeletonGraph::from_mask(thin::thin(cut.view()).view());
+    graph.prune_short(graph::distance::distance(cut.view()).view(), SPUR_HALF_WIDTHS);
+    let degrees = graph.degrees();
+    let back = |p: &[usize; 2]| [p[0] + origin[0] - 1, p[1] + origin[1] - 1];
+    let mut ends: Vec<[usize; 2]> =
+        graph.nodes.iter().zip(&degrees).filter(|(_, d)| **d <= 1).flat_map(|(n, _)| n.pixels.first()).map(back).collect();
+    if ends.is_empty() {
+        ends.extend(graph.chains.iter().filter_map(|c| c.pixels.first()).take(1).map(back));
+    }
+    ends
 }
 
 /// How deep a filament had come by each used frame, as decided when asked.

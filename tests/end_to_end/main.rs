@@ -1,7 +1,4 @@
 //! The program as its user runs it: exit codes, messages, files, table cells.
 
-<<<<<<< HEAD
 mod bad_input;
-=======
 mod synth;
->>>>>>> synth
