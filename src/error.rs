@@ -84,6 +84,21 @@ pub enum Error {
         /// The folder.
         folder: PathBuf,
     },
+    /// `--until` is no time of the run.
+    #[error("--until {until}: no time of the run")]
+    #[diagnostic(code(report::until), help("type seconds since the first frame, 0 or more"))]
+    Until {
+        /// What was typed.
+        until: f64,
+    },
+    /// The output cannot be written.
+    #[error(transparent)]
+    #[diagnostic(transparent)]
+    Report(#[from] crate::report::Error),
+    /// A synthetic run cannot be made or scored.
+    #[error(transparent)]
+    #[diagnostic(transparent)]
+    Synth(#[from] crate::synth::SynthError),
     /// The worker threads could not be started.
     #[error("cannot start worker threads: {what}")]
     #[diagnostic(code(threads), help("type a smaller --threads"))]
@@ -109,6 +124,9 @@ impl Error {
         use crate::run::{FramesError, LogError};
         match self {
             Self::Io { .. } | Self::Threads { .. } => EXIT_IO,
+            Self::Report(crate::report::Error::Foreign { .. } | crate::report::Error::NotAFolder { .. }) => EXIT_INPUT,
+            Self::Report(_) => EXIT_IO,
+            Self::Synth(crate::synth::SynthError::Io { .. }) => EXIT_IO,
             Self::Frames(FramesError::Io { .. }) | Self::Log(LogError::Io { .. }) => EXIT_IO,
             Self::NoRunFolder { .. }
             | Self::NoManifest { .. }
@@ -118,7 +136,9 @@ impl Error {
             | Self::Frames(_)
             | Self::Log(_)
             | Self::DraftExists { .. }
-            | Self::NothingToDraft { .. } => EXIT_INPUT,
+            | Self::NothingToDraft { .. }
+            | Self::Until { .. }
+            | Self::Synth(_) => EXIT_INPUT,
         }
     }
 }

@@ -3,7 +3,11 @@
 
 mod check;
 mod draft;
+mod progress;
+mod report;
+mod score;
 mod sketch;
+mod synth;
 
 use std::io::{IsTerminal, Write};
 use std::process::ExitCode;
@@ -47,6 +51,9 @@ pub struct Globals {
 enum Command {
     Check(check::CheckArgs),
     Draft(draft::DraftArgs),
+    Report(report::ReportArgs),
+    Synth(synth::SynthArgs),
+    Score(score::ScoreArgs),
 }
 
 /// What a command that did its work has to say.
@@ -98,6 +105,9 @@ fn run(cli: &Cli) -> Result<Outcome, Error> {
     match &cli.command {
         Command::Check(args) => check::run(args),
         Command::Draft(args) => draft::run(args),
+        Command::Report(args) => report::run(args, cli.globals),
+        Command::Synth(args) => Ok(Outcome { text: synth::run(args)?, warnings: Vec::new() }),
+        Command::Score(args) => Ok(Outcome { text: score::run(args)?, warnings: Vec::new() }),
     }
 }
 

@@ -52,6 +52,48 @@ pub struct Measured {
     pub growth: Vec<GrowthRow>,
     /// The filaments table.
     pub filaments: Vec<FilamentRow>,
+    /// All that was traced by the last used frame, cut into short stretches, each against the load then in force.
+    pub final_stretches: Vec<Stretch>,
+}
+
+/// A short stretch of centre-line with one direction.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Stretch {
+    /// Filament number.
+    pub filament: u32,
+    /// Direction, degrees in [0, 180).
+    pub angle_deg: f64,
+    /// Arc length, µm.
+    pub length_um: f64,
+    /// Load axis it is held against.
+    pub load_direction_deg: Option<f64>,
+    /// Stress along it, MPa, positive in compression.
+    pub stress_mpa: Option<f64>,
+}
+
+/// Points of a stretch: 4 px.
+const STRETCH_POINTS: usize = 8;
+
+fn stretches(courses: &[PathCourse], scale: &Scale) -> Vec<Stretch> {
+    let Some(last) = scale.used.last() else { return Vec::new() };
+    let mut out = Vec::new();
+    for course in courses {
+        let reached = course.reached(last.frame);
+        for from in (0..reached.saturating_sub(1)).step_by(STRETCH_POINTS) {
+            let to = (from + STRETCH_POINTS).min(reached - 1);
+            let part = course.direction[to].since(&course.direction[from]);
+            let p = course.path.points[from];
+            let load = (scale.load)(last.time_s, [p.x, p.y]);
+            out.extend(part.mean_deg().map(|angle_deg| Stretch {
+                filament: course.path.filament,
+                angle_deg,
+                length_um: part.length * scale.um_per_px,
+                load_direction_deg: load.direction_deg,
+                stress_mpa: load.stress_mpa,
+            }));
+        }
+    }
+    out
 }
 
 /// Measures a trace.
@@ -78,6 +120,7 @@ pub fn measure(trace: &Trace, scale: &Scale) -> Measured {
         .iter()
         .map(|f| filament_row(f.filament, trace, &courses, scale))
         .collect();
+    out.final_stretches = stretches(&courses, scale);
     out
 }
 
@@ -249,9 +292,9 @@ fn path_rows(courses: &[PathCourse], scale: &Scale, used: UsedFrame) -> Vec<Path
         .collect()
 }
 
-/// A stretch of one path: points `from..=to`.
+/// A part of one path: points `from..=to`.
 #[derive(Debug, Clone, Copy)]
-struct Stretch {
+struct Part {
     course: usize,
     from: usize,
     to: usize,
@@ -284,7 +327,7 @@ fn growth_rows(
                 break;
             }
             joined[at] = true;
-            chain.push(Stretch {
+            chain.push(Part {
                 course: at,
                 from,
                 to: to - 1,
@@ -329,7 +372,7 @@ fn growth_row(
     scale: &Scale,
     used: UsedFrame,
     before: Option<UsedFrame>,
-    chain: &[Stretch],
+    chain: &[Part],
 ) -> Option<GrowthRow> {
     let mut sum = AxialSum::default();
     for s in chain {
@@ -361,7 +404,7 @@ fn growth_row(
 }
 
 /// The point halfway along a chain of stretches.
-fn middle_of(courses: &[PathCourse], chain: &[Stretch], half: f64) -> Option<(u32, [f64; 2])> {
+fn middle_of(courses: &[PathCourse], chain: &[Part], half: f64) -> Option<(u32, [f64; 2])> {
     let mut left = half;
     for s in chain {
         let c = &courses[s.course];

@@ -9,6 +9,7 @@ mod charge;
 mod rows;
 mod uncertainty;
 
-pub use build::{Measured, Scale, UsedFrame, measure};
+pub use build::{Measured, Scale, Stretch, UsedFrame, measure};
+pub use uncertainty::tip_px as tip_uncertainty_px;
 pub use charge::{C_PER_MAH, FARADAY_C_PER_MOL, METALS, Metal};
 pub use rows::{FilamentRow, ForecastRow, FrameRow, GrowthRow, PathRow};

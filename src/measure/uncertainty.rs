@@ -19,7 +19,8 @@ fn across(points: &[TracePoint]) -> f64 {
 }
 
 /// Placing of the tip along the line, px.
-fn along(_points: &[TracePoint], noise: f64) -> f64 {
+#[must_use]
+pub fn tip_px(noise: f64) -> f64 {
     libm::hypot(TIP_PX, TIP_NOISE_PX * noise / 0.1)
 }
 
@@ -27,14 +28,14 @@ fn along(_points: &[TracePoint], noise: f64) -> f64 {
 #[must_use]
 pub fn depth_px(points: &[TracePoint], noise: f64) -> f64 {
     let u_across = points.last().map_or(0.1, |p| p.u_across);
-    libm::hypot(along(points, noise), u_across)
+    libm::hypot(tip_px(noise), u_across)
 }
 
 /// Of an arc length, px: both ends and the wobble across.
 #[must_use]
 pub fn length_px(length: f64, points: &[TracePoint], noise: f64) -> f64 {
     let wobble = across(points) * (length / CORRELATION_PX).max(1.0).sqrt();
-    libm::hypot(along(points, noise), wobble)
+    libm::hypot(tip_px(noise), wobble)
 }
 
 /// Of a mean width, px.

@@ -17,6 +17,7 @@ pub mod thin;
 pub mod threshold;
 mod tip;
 
+pub use forest::disc;
 pub use growth::{DepthCourse, TraceSettings, Tracer, WINDOW};
 
 use serde::{Deserialize, Serialize};

@@ -1,0 +1,155 @@
+//! The forecast of each frame, issued from what was decided by then and from nothing later.
+
+use super::Input;
+use crate::forecast::short::{self, Grade};
+use crate::forecast::{Record, Settings, Silence, TipSeries, forecast, record};
+use crate::load::dose_mpa;
+use crate::measure::{ForecastRow, tip_uncertainty_px};
+use crate::trace::Tracer;
+
+/// How much surer a decided depth is than one still provisional.
+const PROVISIONAL: f64 = 3.0;
+/// Samples of the cell log before an issue that are searched for a short.
+const SEARCHED: usize = 4000;
+/// Records kept to judge the forecasts by what came.
+const KEPT: usize = 60;
+
+/// Issues forecasts while the run is followed.
+pub(super) struct Forecasts<'a> {
+    input: &'a Input,
+    u_px: f64,
+    times_s: Vec<f64>,
+    /// The rows so far.
+    pub(super) rows: Vec<ForecastRow>,
+    records: Vec<Record>,
+    keep_every: usize,
+    ended: bool,
+}
+
+impl<'a> Forecasts<'a> {
+    pub(super) fn new(input: &'a Input, noise: f64) -> Self {
+        let keep_every = input.sequence.entries.len().div_ceil(KEPT).max(1);
+        Self {
+            input,
+            u_px: tip_uncertainty_px(noise),
+            times_s: Vec::new(),
+            rows: Vec::new(),
+            records: Vec::new(),
+            keep_every,
+            ended: false,
+        }
+    }
+
+    /// Issues the forecast of a used frame, unless the cell has shorted by then.
+    pub(super) fn issue(&mut self, frame: usize, time_s: f64, tracer: &Tracer) {
+        self.times_s.push(time_s);
+        if self.ended {
+            return;
+        }
+        let tips = self.tips(tracer);
+        if tips.is_empty() {
+            return;
+        }
+        self.ended = self.shorted_by(time_s);
+        let record = self.record(tips, time_s);
+        let told = forecast(&record, &Settings::default());
+        if told.silence == Some(Silence::Contact) || self.ended {
+            self.ended = true;
+            return;
+        }
+        let q = |i: usize| told.quantiles_s.map(|all| all[i]);
+        self.rows.push(ForecastRow {
+            frame,
+            issued_at_s: time_s,
+            p025_s: q(0),
+            p10_s: q(1),
+            p25_s: q(2),
+            p50_s: q(3),
+            p75_s: q(4),
+            p90_s: q(5),
+            p975_s: q(6),
+            horizon_s: told.horizon_s,
+            chance_by_horizon: told.chance_by_horizon,
+            model: told.model,
+        });
+        if self.rows.len() % self.keep_every == 0 {
+            self.records.push(record);
+        }
+    }
+
+    /// What the forecasts' own record says, where its calibration is off.
+    pub(super) fn calibration(&self) -> Option<String> {
+        let outcome = self.records.last()?;
+        record::verdict(&record::score(&self.records, outcome))
+    }
+
+    fn tips(&self, tracer: &Tracer) -> Vec<TipSeries> {
+        let um = self.input.um_per_px();
+        let sure = self.times_s.len().saturating_sub(self.input.manifest.trace.confirm_frames);
+        let courses = tracer.depth_courses();
+        let um_of = |px: &[f64]| px.iter().map(|d| d * um).collect::<Vec<f64>>();
+        courses
+            .into_iter()
+            .map(|course| {
+                let mut remaining_um = um_of(&course.remaining_px);
+                if let Some(last) = remaining_um.last_mut().filter(|_| course.bridged) {
+                    *last = 0.0;
+                }
+                let u = |k: usize| if course.first + k < sure { self.u_px } else { PROVISIONAL * self.u_px };
+                TipSeries {
+                    filament: course.filament as u32 + 1,
+                    first: course.first,
+                    u_depth_um: (0..course.depth_px.len()).map(|k| u(k) * um).collect(),
+                    depth_um: um_of(&course.depth_px),
+                    remaining_um,
+                }
+            })
+            .collect()
+    }
+
+    fn record(&self, tips: Vec<TipSeries>, issued_at_s: f64) -> Record {
+        Record {
+            times_s: self.times_s.clone(),
+            tips,
+            gap_um: self.input.gap_um(),
+            charge_mah: self.times_s.iter().map(|&t| self.input.charge_mah(t)).collect(),
+            dose_mpa: self.times_s.iter().map(|&t| self.dose(t)).collect(),
+            issued_at_s,
+            plan: Vec::new(),
+        }
+    }
+
+    /// Dose at the middle of the plating edge.
+    fn dose(&self, time_s: f64) -> Option<f64> {
+        dose_at(self.input, time_s)
+    }
+
+    /// Whether the cell log up to now shows a full short.
+    fn shorted_by(&self, time_s: f64) -> bool {
+        if self.input.manifest.cell.ended == crate::run::manifest::Ended::Broke {
+            return false;
+        }
+        electrical_shorts(self.input, time_s, SEARCHED).iter().any(|e| e.grade == Grade::Full)
+    }
+}
+
+/// Dose at the middle of the plating edge, MPa.
+pub(super) fn dose_at(input: &Input, time_s: f64) -> Option<f64> {
+    let root = input.edges.plating.middle();
+    let state = input.load.at(time_s, Some(root));
+    let direction = input.edges.plating.nearest(root).direction;
+    let edge = crate::measure::geometry::axial_deg(direction[0], direction[1]);
+    Some(dose_mpa(state.stress_mpa?, state.direction_deg?, edge))
+}
+
+/// Shorts in the last `most` samples of the cell log up to a time.
+pub(super) fn electrical_shorts(input: &Input, until_s: f64, most: usize) -> Vec<short::ShortEvent> {
+    let (Some(current), Some(voltage)) = (&input.cell.current_ma, &input.cell.voltage_v) else { return Vec::new() };
+    let times = if voltage.time_s.is_empty() { &current.time_s } else { &voltage.time_s };
+    let end = times.partition_point(|&t| t <= until_s);
+    let start = end.saturating_sub(most);
+    let samples: Vec<(f64, f64, f64)> =
+        times[start..end].iter().filter_map(|&t| Some((t, current.at(t)?, voltage.at(t)?))).collect();
+    let column = |pick: fn(&(f64, f64, f64)) -> f64| samples.iter().map(pick).collect::<Vec<f64>>();
+    short::find(&column(|s| s.0), &column(|s| s.1), &column(|s| s.2), &short::Settings::default())
+}

@@ -1,0 +1,95 @@
+//! The stages in order: read, correct, trace, measure, forecast, sum up. [`analyse`] reads as the table of contents.
+
+mod film;
+mod forecasts;
+mod input;
+mod notes;
+mod pictures;
+mod rows;
+mod summary;
+
+use std::path::Path;
+
+use crate::Error;
+use crate::measure::{Scale, measure};
+use crate::results::Results;
+use crate::trace::edges::Edges;
+
+pub use input::Input;
+
+/// What the analysis tells while it works.
+pub trait Progress: Sync {
+    /// A stage begins; `frames` counts what it will work through, where that is known.
+    fn stage(&self, name: &str, frames: Option<usize>);
+    /// One more frame is done.
+    fn frame(&self);
+}
+
+/// Tells nobody.
+#[derive(Debug, Clone, Copy, Default)]
+pub struct Quiet;
+
+impl Progress for Quiet {
+    fn stage(&self, _name: &str, _frames: Option<usize>) {}
+    fn frame(&self) {}
+}
+
+/// What a user may choose beside `run.toml`.
+#[derive(Debug, Clone, Copy, Default, PartialEq)]
+pub struct Choices {
+    /// Analyse as if the run ended at this time, s since the first frame.
+    pub until_s: Option<f64>,
+}
+
+/// Analyses a run folder. Memory: a bounded window of frames, whatever their number.
+///
+/// # Errors
+/// What stops the reading of the run ([`Error`]); a frame that cannot be used stops nothing.
+pub fn analyse(run: &Path, choices: Choices, progress: &dyn Progress) -> Result<Results, Error> {
+    let input = Input::open(run, choices)?;
+    let filmed = film::follow(&input, progress)?;
+    progress.stage("measuring", None);
+    let load = |time_s: f64, px: [f64; 2]| input.load.at(time_s, Some(px));
+    let used = filmed.used();
+    let scale = Scale {
+        um_per_px: input.um_per_px(),
+        edges: &input.edges,
+        used: &used,
+        load: &load,
+        noise: filmed.noise,
+    };
+    let measured = measure(&filmed.trace, &scale);
+    let frames = rows::frame_rows(&input, &filmed, &measured);
+    let pictures = pictures::finished(&filmed, &input);
+    let notes = notes::Notes::of(&input, &filmed, &frames);
+    let summary = summary::summary(&input, &filmed, &measured, &frames, &notes);
+    Ok(Results {
+        facts: input.facts(),
+        frames,
+        paths: measured.paths,
+        growth: measured.growth,
+        filaments: measured.filaments,
+        forecasts: filmed.forecasts,
+        trace: filmed.trace,
+        pictures,
+        load: input.load_samples(),
+        cell: input.cell_samples(),
+        summary,
+        cautions: notes.cautions,
+    })
+}
+
+/// The two edges of a manifest, in pixels.
+fn edges_of(manifest: &crate::run::Manifest) -> Result<Edges, Error> {
+    use crate::trace::edges::Polyline;
+    let line = |key: &str, points: &Vec<[f64; 2]>| {
+        Polyline::new(points.clone()).ok_or_else(|| {
+            let what = format!("{key} is a single point");
+            manifest.fault("cell", key, what, "type at least two different points, [[x, y], [x, y]], in pixels")
+        })
+    };
+    Ok(Edges::new(
+        line("plating_edge", &manifest.cell.plating_edge)?,
+        line("far_edge", &manifest.cell.far_edge)?,
+    ))
+}
