@@ -52,10 +52,9 @@ enum Pass {
 #[must_use]
 pub fn thin(mask: ArrayView2<'_, bool>) -> Array2<bool> {
     let mut peel = Peel::new(mask);
-    while PASSES
-        .into_iter()
-        .fold(false, |changed, pass| peel.pass(pass) || changed)
-    {}
+    while peel.waiting.iter().any(|waiting| !waiting.is_empty()) {
+        PASSES.into_iter().for_each(|pass| peel.pass(pass));
+    }
     let (rows, columns) = mask.dim();
     Array2::from_shape_fn((rows, columns), |(row, column)| {
         peel.pixels[(row + 1) * peel.stride + column + 1] & SET != 0
@@ -94,8 +93,8 @@ impl Peel {
         peel
     }
 
-    /// Runs one pass over the pixels that wait for it; tells whether any was deleted.
-    fn pass(&mut self, pass: Pass) -> bool {
+    /// Runs one pass over the pixels that wait for it.
+    fn pass(&mut self, pass: Pass) {
         let which = pass as usize;
         let mut tested = std::mem::take(&mut self.waiting[which]);
         for &at in &tested {
@@ -110,7 +109,6 @@ impl Peel {
                 self.wait(at.wrapping_add_signed(step));
             }
         }
-        !tested.is_empty()
     }
 
     /// Makes a foreground pixel wait for both passes.

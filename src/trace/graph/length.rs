@@ -10,8 +10,8 @@
 
 use super::{Chain, Pixel, touch};
 
-/// Passes of the kernel ¼ ½ ¼, without unit: its standard deviation is √(16/2) = 2.8 steps. Of 4 to 64 passes tried on digitised lines
-/// and circles, fewer left a line at 4° to 8° more than 1 % long, more cost circles below 12 px radius more than 1 %.
+/// Passes of the kernel ¼ ½ ¼, without unit: its standard deviation is √(16/2) = 2.8 steps. A compromise from a trial of 4 to 64: with 8,
+/// 16 and 64 passes the worst digitised line of 150 px is 1.1, 0.7 and 0.6 % too long, a circle of 8 px radius 1.4, 2.2 and 9.5 % short.
 const PASSES: usize = 16;
 
 impl Chain {
