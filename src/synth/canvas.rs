@@ -55,18 +55,18 @@ impl Plane {
     pub fn cubic(&self, x: f64, y: f64) -> f32 {
         let (x0, y0) = (x.floor(), y.floor());
         let (wx, wy) = (keys(x - x0), keys(y - y0));
+        let (col, row) = (x0 as isize - 1, y0 as isize - 1);
+        let inside = col >= 0 && col + 4 <= self.cols as isize;
         let mut sum = 0.0;
-        for (j, weight) in wy.iter().enumerate() {
-            let line = self.line(y0 as isize + j as isize - 1);
-            let across: f64 = wx
-                .iter()
-                .enumerate()
-                .map(|(i, w)| {
-                    let col =
-                        (x0 as isize + i as isize - 1).clamp(0, self.cols as isize - 1) as usize;
-                    w * f64::from(line[col])
-                })
-                .sum();
+        for (weight, j) in wy.iter().zip(row..) {
+            let line = self.line(j);
+            let across: f64 = if inside {
+                let four = &line[col as usize..col as usize + 4];
+                wx.iter().zip(four).map(|(w, v)| w * f64::from(*v)).sum()
+            } else {
+                let at = |i: isize| f64::from(line[i.clamp(0, self.cols as isize - 1) as usize]);
+                wx.iter().zip(col..).map(|(w, i)| w * at(i)).sum()
+            };
             sum += weight * across;
         }
         sum as f32

@@ -55,17 +55,22 @@ impl Ceramic {
         }
     }
 
-    /// Brightness and share of ceramic at a place of the picture (px of the first usable frame).
+    /// Brightness at a place of the picture (px of the first usable frame).
     #[must_use]
-    pub fn at(&self, p: [f64; 2]) -> (f32, f32) {
-        let (x, y) = (
-            (p[0] + self.margin) * OVER as f64,
-            (p[1] + self.margin) * OVER as f64,
-        );
-        (
-            self.brightness.cubic(x, y),
-            self.window.cubic(x, y).clamp(0.0, 1.0),
-        )
+    pub fn brightness(&self, p: [f64; 2]) -> f32 {
+        let [x, y] = self.in_samples(p);
+        self.brightness.cubic(x, y)
+    }
+
+    /// Share of ceramic at a place of the picture, 0 (electrode) to 1.
+    #[must_use]
+    pub fn window(&self, p: [f64; 2]) -> f32 {
+        let [x, y] = self.in_samples(p);
+        self.window.cubic(x, y).clamp(0.0, 1.0)
+    }
+
+    fn in_samples(&self, p: [f64; 2]) -> [f64; 2] {
+        p.map(|v| (v + self.margin) * OVER as f64)
     }
 }
 
@@ -297,7 +302,8 @@ mod tests {
         scenario.imaging.pores = 0;
         let scenario = scenario.settle().unwrap();
         let ceramic = Ceramic::draw(&scenario, 8.0);
-        let levels = [2.0, 80.0, 158.0].map(|x| ceramic.at([x, 60.0]));
+        let levels =
+            [2.0, 80.0, 158.0].map(|x| (ceramic.brightness([x, 60.0]), ceramic.window([x, 60.0])));
         assert!(
             (f64::from(levels[0].0) - scenario.imaging.plating_level).abs() < 0.05,
             "{levels:?}"
@@ -307,7 +313,7 @@ mod tests {
         // On the edge itself half is ceramic, but for the roughness.
         let edge = scenario.plating_edge[0][0];
         let mean = (0..100)
-            .map(|y| ceramic.at([edge, f64::from(y)]).1)
+            .map(|y| ceramic.window([edge, f64::from(y)]))
             .sum::<f32>()
             / 100.0;
         assert!((mean - 0.5).abs() < 0.15, "{mean}");
@@ -336,7 +342,7 @@ mod tests {
             let ceramic = Ceramic::draw(&scenario.settle().unwrap(), 4.0);
             let values: Vec<f32> = (0..80)
                 .flat_map(|i| (0..80).map(move |j| (i, j)))
-                .map(|(i, j)| ceramic.at([60.0 + f64::from(i), 60.0 + f64::from(j)]).0)
+                .map(|(i, j)| ceramic.brightness([60.0 + f64::from(i), 60.0 + f64::from(j)]))
                 .collect();
             let mean = values.iter().sum::<f32>() / values.len() as f32;
             let deviation = (values.iter().map(|v| (v - mean) * (v - mean)).sum::<f32>()

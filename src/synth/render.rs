@@ -37,8 +37,15 @@ pub fn frame(
     };
     let contrast = (sign * scenario.imaging.contrast) as f32;
     let scene = Plane::from_fn(view.cols, view.rows, |col, row| {
-        let (brightness, window) = ceramic.at(view.scene(view.sample(col, row)));
-        brightness * (1.0 + contrast * window * ink.data[row * view.cols + col])
+        let place = view.scene(view.sample(col, row));
+        let cover = ink.data[row * view.cols + col];
+        // Only ink needs to know how much ceramic there is.
+        let inked = if cover > 0.0 {
+            contrast * ceramic.window(place) * cover
+        } else {
+            0.0
+        };
+        ceramic.brightness(place) * (1.0 + inked)
     });
     let lit = binned(&through_lens(&scene, scenario, shot), scenario);
     exposed(&lit, scenario, shot, k)

@@ -284,7 +284,7 @@ fn a_missing_output_is_named() {
     let folder = tempdir().unwrap();
     write_run(&small(2), folder.path()).unwrap();
     let message = score_run(folder.path(), None).unwrap_err().to_string();
-    assert!(message.contains("veerlog"), "{message}");
+    assert!(message.contains("veerlog report"), "{message}");
 }
 
 /// Common practice (no published source): growth follows the axis of in-plane compression; 150–200 MPa along the plates keep filaments

@@ -96,6 +96,10 @@ impl Recorded {
     /// [`SynthError::Io`] or [`SynthError::Unscorable`] naming the file.
     pub fn read(run: &Path) -> Result<Self, SynthError> {
         let folder = run.join("truth");
+        must_exist(
+            &folder,
+            "there is no truth here: only runs of `veerlog synth` can be scored",
+        )?;
         let table = Table::read(&folder.join("frames.csv"))?;
         let about: serde_json::Value = json(&folder.join("truth.json"))?;
         let scale = about
@@ -172,6 +176,10 @@ impl Reported {
     /// # Errors
     /// [`SynthError::Io`] or [`SynthError::Unscorable`] naming the file.
     pub fn read(folder: &Path) -> Result<Self, SynthError> {
+        must_exist(
+            folder,
+            "there is no output here yet: run `veerlog report` on the run first",
+        )?;
         let tables = folder.join("tables");
         let paths: Vec<TracedPath> = ndjson(&folder.join("traces.ndjson"))?;
         Ok(Self {
@@ -357,6 +365,14 @@ impl Table {
         } else {
             Ok(vec![None; self.rows()])
         }
+    }
+}
+
+fn must_exist(folder: &Path, otherwise: &str) -> Result<(), SynthError> {
+    if folder.is_dir() {
+        Ok(())
+    } else {
+        Err(unscorable(folder, otherwise))
     }
 }
 
