@@ -235,14 +235,14 @@ impl Pictures {
         // Halfway through the run, growth is still nearer to where it began.
         let half =
             frame(&places[start + (places.len() - start) / 2]).filter(|(half, _)| same(half));
-        let grown = whole.is_some_and(|change| change.share() > 5e-4);
+        let grown = whole.is_some_and(|change| change.told());
         let centre = half
             .and_then(|(half, _)| propose::change(&first, &half).centre)
             .filter(|_| grown);
         Some(Self {
             edges: propose::edges(&first, centre),
             factor,
-            darker: whole.is_none_or(|change| change.darker >= change.brighter),
+            darker: !grown || whole.is_none_or(|change| change.darker >= change.brighter),
             grown,
             bare: if places.len() == 1 {
                 0
@@ -312,7 +312,7 @@ fn write_frames(
     let why = if grown {
         "what changed from the first frame to the last became so"
     } else {
-        "no change was seen that would tell"
+        "no change was seen that would tell, so this is a mere default"
     };
     page.ask(
         &format!("filament = \"{word}\""),

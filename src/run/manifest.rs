@@ -974,4 +974,21 @@ width_mm = 4.0
         }
         assert!(manifest.inside("load", "log", "logs/load.csv").is_ok());
     }
+
+    proptest::proptest! {
+        #[test]
+        fn a_damaged_manifest_never_panics(at in 0_usize..300, length in 0_usize..30, put in "[\\PC\n]{0,12}") {
+            let letters: Vec<char> = PLAIN.chars().collect();
+            let (from, to) = (at.min(letters.len()), (at + length).min(letters.len()));
+            let text: String = letters[..from].iter().copied().chain(put.chars()).chain(letters[to..].iter().copied()).collect();
+            match Manifest::parse(&text, Path::new("ridge")) {
+                Ok(manifest) => proptest::prop_assert!(manifest.frames.um_per_px > 0.0),
+                Err(error) => {
+                    proptest::prop_assert!(error.line >= 1 && error.line <= text.lines().count() + 1);
+                    let shown = format!("{:?}", miette::Report::new(error));
+                    proptest::prop_assert!(shown.contains("run.toml"));
+                }
+            }
+        }
+    }
 }

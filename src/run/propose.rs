@@ -15,7 +15,7 @@ const SIDE: f64 = 0.35;
 const CLEAR: f64 = 6.0;
 
 /// Changes of a pixel above this many deviations count (common practice).
-const CHANGED: f64 = 6.0;
+const CHANGED: f64 = 4.5;
 
 /// Makes the median absolute deviation estimate the SD of normal data. Rousseeuw & Croux (1993), J. Am. Stat. Assoc. 88, 1273.
 const MAD_TO_SD: f64 = 1.482_602_218_505_602;
@@ -50,6 +50,14 @@ pub(super) struct Change {
 }
 
 impl Change {
+    /// Whether the change has one sign: growth. Drift and flicker change pixels both ways.
+    pub(super) fn told(&self) -> bool {
+        /// Least share of pixels, and least ratio of the commoner to the rarer way (both found on synthetic runs).
+        const SHARE: f64 = 4e-3;
+        const ONE_SIDED: f64 = 3.0;
+        self.share() >= SHARE && self.share() >= ONE_SIDED * self.darker.min(self.brighter)
+    }
+
     /// Share of pixels that changed the commoner way.
     pub(super) fn share(&self) -> f64 {
         self.darker.max(self.brighter)
@@ -189,8 +197,8 @@ fn steps(profile: &[f64]) -> [Option<Step>; 2] {
 
 /// How many leading frames show no growth yet against the first. `shares`: what changed in each frame.
 pub(super) fn bare(shares: &[f64]) -> usize {
-    /// Share of pixels whose change counts as growth: a line 2 px wide across a fiftieth of a picture (common practice).
-    const GROWN: f64 = 5e-4;
+    /// Share of pixels whose change counts as growth: one in a thousand (common practice).
+    const GROWN: f64 = 1e-3;
     /// More bare frames bring little.
     const MOST: usize = 10;
     let settled = shares.get(1).copied().unwrap_or(0.0);
@@ -198,12 +206,14 @@ pub(super) fn bare(shares: &[f64]) -> usize {
     grown.unwrap_or(shares.len()).clamp(1, MOST)
 }
 
-/// The frame shrunk by whole pixels so that proposals stay quick, and the factor.
+/// The frame shrunk by whole pixels, and the factor: proposals stay quick, and noise is averaged out.
 pub(super) fn shrunk(frame: &Array2<f32>) -> (Array2<f32>, usize) {
     /// Longest side that is looked at, px.
     const SIDE: usize = 1024;
+    /// Least factor: thin lines survive it, pixel noise is halved.
+    const LEAST: usize = 2;
     let (height, width) = frame.dim();
-    let factor = height.max(width).div_ceil(SIDE).max(1);
+    let factor = height.max(width).div_ceil(SIDE).max(LEAST);
     let shape = ((height / factor).max(1), (width / factor).max(1));
     let cell = |(row, column): (usize, usize)| {
         let (top, left) = (row * factor, column * factor);
