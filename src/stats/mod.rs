@@ -1,4 +1,11 @@
-//! Statistics: pure functions on slices, no images.
+//! Statistics: pure functions on slices, no images, runs or tables.
+//!
+//! - Axes: [`angles`], [`axial`] means and intervals, [`concentration`], tests of [`uniformity`]; with the filament as the
+//!   sampling unit: [`filaments`] on [`clusters`].
+//! - The load within a run: [`turns`]; what mechanics predicts: [`kink`].
+//! - Lines and trends: [`regress`], [`theil_sen`], [`trend`], [`isotonic`]; forecasts judged: [`scoring`].
+//! - Between runs: [`survival`], [`dose`].
+//! - Shared: [`bootstrap`], [`distributions`], [`linear`], [`order`]. Whether all this keeps its word: [`calibration`].
 
 pub mod angles;
 pub mod axial;

@@ -65,9 +65,13 @@ pub fn median_slope(points: &[(f64, f64)]) -> Option<f64> {
 ///
 /// ```
 /// use veerlog::stats::theil_sen::slope_interval_by_blocks;
-/// let points: Vec<(f64, f64)> = (0..60).map(|i| (f64::from(i), 2.0 * f64::from(i) + f64::from(i * 7 % 5))).collect();
+/// // A depth that gains 1, 2 or 3 a frame.
+/// let mut depth = 0.0;
+/// let gain = |i: u32| f64::from(1 + i * i % 7 % 3);
+/// let points: Vec<(f64, f64)> = (0..70).map(|i| { depth += gain(i); (f64::from(i), depth) }).collect();
 /// let [low, high] = slope_interval_by_blocks(&points, 0.95, 499, 1).unwrap();
-/// assert!(low < 2.0 && 2.0 < high && high - low < 0.5);
+/// let mean = (0..70).map(gain).sum::<f64>() / 70.0;
+/// assert!(low < mean && mean < high && high - low < 0.5);
 /// ```
 #[must_use]
 pub fn slope_interval_by_blocks(

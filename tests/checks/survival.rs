@@ -13,13 +13,13 @@ fn freireich() -> Vec<Member> {
     include_str!("../../fixtures/stats/freireich.csv")
         .lines()
         .filter(|line| line.starts_with(|c: char| c.is_ascii_digit()))
-        .map(|line| {
+        .filter_map(|line| {
             let cells: Vec<&str> = line.split(',').collect();
-            Member {
-                follow: Follow { time: cells[0].parse().unwrap(), event: cells[1] == "1" },
+            Some(Member {
+                follow: Follow { time: cells[0].parse().ok()?, event: cells[1] == "1" },
                 group: usize::from(cells[2] == "control"),
                 stratum: 0,
-            }
+            })
         })
         .collect()
 }
@@ -94,9 +94,9 @@ fn beetles() -> Vec<Trials> {
     include_str!("../../fixtures/stats/beetle.csv")
         .lines()
         .filter(|line| line.starts_with(|c: char| c.is_ascii_digit()))
-        .map(|line| {
-            let cells: Vec<f64> = line.split(',').map(|c| c.parse().unwrap()).collect();
-            Trials { dose: cells[0], tried: cells[1], yes: cells[2] }
+        .filter_map(|line| {
+            let cells: Vec<f64> = line.split(',').map(|c| c.parse().ok()).collect::<Option<_>>()?;
+            Some(Trials { dose: cells[0], tried: cells[1], yes: cells[2] })
         })
         .collect()
 }
@@ -104,6 +104,7 @@ fn beetles() -> Vec<Trials> {
 #[test]
 fn beetle_mortality() {
     let trials = beetles();
+    assert_eq!(trials.len(), 8);
     let line: DoseFit = fit(&trials, Link::Logit).unwrap();
     // Dobson (from memory): −60.72 (5.18), 34.27 (2.91), deviance 11.23; digits R glm = statsmodels.
     assert_abs_diff_eq!(line.intercept, -60.717_454_56, epsilon = 1e-5);

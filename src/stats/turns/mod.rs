@@ -1,6 +1,6 @@
 //! The load's effect within a run: did growth turn when the load did?
 //!
-//! [`steps`] finds the steps of the load, [`change`] when and how each filament turned after one, [`reference`] whether it
+//! [`steps`] finds the steps of the load, [`change`] when and how each filament turned after one, [`mod@reference`] whether it
 //! turned more than the same filaments do at times without a step. [`turns`] puts them together.
 //! Limits: one film shows one specimen; a ramp longer than some frames is no step; a turn of less than about 20° in growth
 //! that wanders as much by itself stays unseen, and "too few to say" is an answer.
