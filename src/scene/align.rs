@@ -4,7 +4,7 @@
 use ndarray::Array2;
 
 use super::drift::{Spectrum, Whitening};
-use super::fit::{Fitted, Template};
+use super::fit::{Fitted, Template, View};
 use super::plane::{bin, blur, combine, robust_spread, rows_mut, sample};
 use super::resample::Interpolator;
 use rayon::prelude::*;
@@ -75,9 +75,10 @@ impl Aligner {
         let small_detail = detail(&small);
         let moved = Spectrum::new(&windowed(&small_detail));
         let peak = self.spectrum.shift_to(&moved, Whitening::Half, PEAK_PRECISION).px.map(|s| s * factor as f64);
+        let view = View { interpolator: &self.interpolator, frame: &small, metal: small_metal.as_ref(), guess };
         let from = |shift: [f64; 2]| {
             let start = Fitted::start(shift);
-            self.coarse.fit(&self.interpolator, &small, small_metal.as_ref(), start, guess, false, COARSE_STEPS)
+            self.coarse.fit(&view, start, false, COARSE_STEPS)
         };
         let mut best = from(guess);
         let away = (peak[0] - guess[0]).hypot(peak[1] - guess[1]);
@@ -88,7 +89,7 @@ impl Aligner {
             }
         }
         let (likeness, pixels) = self.likeness(&small_detail, &best, small_metal.as_ref());
-        let fitted = self.full.fit(&self.interpolator, frame, metal, best, guess, true, FULL_STEPS);
+        let fitted = self.full.fit(&View { frame, metal, ..view }, best, true, FULL_STEPS);
         Aligned { fitted, likeness, pixels }
     }
 
