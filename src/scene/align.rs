@@ -4,7 +4,7 @@
 use ndarray::Array2;
 
 use super::drift::{Spectrum, Whitening};
-use super::fit::{Fitted, Template};
+use super::fit::{Fitted, Template, View};
 use super::plane::{bin, blur, combine, robust_spread, rows_mut, sample};
 use super::resample::Interpolator;
 use rayon::prelude::*;
@@ -50,10 +50,7 @@ impl Aligner {
     /// `sd`: noise of one frame, grey levels; `noise_share`: the reference's own noise variance over one frame's.
     pub(crate) fn new(reference: &Array2<f32>, sd: &Array2<f32>, noise_share: f64) -> Self {
         let longest = reference.nrows().max(reference.ncols());
-        let factor = longest
-            .div_ceil(COARSE_SIDE)
-            .next_power_of_two()
-            .max(if longest > 200 { 2 } else { 1 });
+        let factor = longest.div_ceil(COARSE_SIDE).next_power_of_two().max(if longest > 200 { 2 } else { 1 });
         let small = bin(reference, factor);
         let small_sd = bin(sd, factor) / factor as f32;
         let detail = detail(&small);
@@ -71,33 +68,17 @@ impl Aligner {
     }
 
     /// Lays a frame on the reference. `guess`: its likely shift, px.
-    pub(crate) fn align(
-        &self,
-        frame: &Array2<f32>,
-        metal: Option<&Array2<bool>>,
-        guess: [f64; 2],
-    ) -> Aligned {
+    pub(crate) fn align(&self, frame: &Array2<f32>, metal: Option<&Array2<bool>>, guess: [f64; 2]) -> Aligned {
         let factor = self.coarse.bin;
         let small = bin(frame, factor);
         let small_metal = metal.map(|m| bin_mask(m, factor));
         let small_detail = detail(&small);
         let moved = Spectrum::new(&windowed(&small_detail));
-        let peak = self
-            .spectrum
-            .shift_to(&moved, Whitening::Half, PEAK_PRECISION)
-            .px
-            .map(|s| s * factor as f64);
+        let peak = self.spectrum.shift_to(&moved, Whitening::Half, PEAK_PRECISION).px.map(|s| s * factor as f64);
+        let view = View { interpolator: &self.interpolator, frame: &small, metal: small_metal.as_ref(), guess };
         let from = |shift: [f64; 2]| {
             let start = Fitted::start(shift);
-            self.coarse.fit(
-                &self.interpolator,
-                &small,
-                small_metal.as_ref(),
-                start,
-                guess,
-                false,
-                COARSE_STEPS,
-            )
+            self.coarse.fit(&view, start, false, COARSE_STEPS)
         };
         let mut best = from(guess);
         let away = (peak[0] - guess[0]).hypot(peak[1] - guess[1]);
@@ -108,28 +89,11 @@ impl Aligner {
             }
         }
         let (likeness, pixels) = self.likeness(&small_detail, &best, small_metal.as_ref());
-        let fitted = self.full.fit(
-            &self.interpolator,
-            frame,
-            metal,
-            best,
-            guess,
-            true,
-            FULL_STEPS,
-        );
-        Aligned {
-            fitted,
-            likeness,
-            pixels,
-        }
+        let fitted = self.full.fit(&View { frame, metal, ..view }, best, true, FULL_STEPS);
+        Aligned { fitted, likeness, pixels }
     }
 
-    fn likeness(
-        &self,
-        detail: &Array2<f32>,
-        fitted: &Fitted,
-        metal: Option<&Array2<bool>>,
-    ) -> (f64, usize) {
+    fn likeness(&self, detail: &Array2<f32>, fitted: &Fitted, metal: Option<&Array2<bool>>) -> (f64, usize) {
         let mut motion = fitted.motion;
         motion.shift = motion.shift.map(|s| s / self.coarse.bin as f64);
         let laid = self.interpolator.resample(detail, &motion);
@@ -164,11 +128,7 @@ fn windowed(plane: &Array2<f32>) -> Array2<f32> {
     let across: Vec<f32> = (0..width).map(|x| hann(x, width)).collect();
     let down: Vec<f32> = (0..height).map(|y| hann(y, height)).collect();
     let mut out = plane.clone();
-    rows_mut(&mut out).for_each(|(y, row)| {
-        row.iter_mut()
-            .zip(&across)
-            .for_each(|(v, a)| *v *= a * down[y])
-    });
+    rows_mut(&mut out).for_each(|(y, row)| row.iter_mut().zip(&across).for_each(|(v, a)| *v *= a * down[y]));
     out
 }
 
@@ -176,7 +136,6 @@ fn windowed(plane: &Array2<f32>) -> Array2<f32> {
 fn bin_mask(mask: &Array2<bool>, factor: usize) -> Array2<bool> {
     let (height, width) = (mask.nrows() / factor, mask.ncols() / factor);
     Array2::from_shape_fn((height, width), |(y, x)| {
-        (y * factor..(y + 1) * factor)
-            .any(|yy| (x * factor..(x + 1) * factor).any(|xx| mask[[yy, xx]]))
+        (y * factor..(y + 1) * factor).any(|yy| (x * factor..(x + 1) * factor).any(|xx| mask[[yy, xx]]))
     })
 }

@@ -9,7 +9,7 @@ use ndarray::Array2;
 use rayon::prelude::*;
 
 use super::align::{Aligner, FULL_PIXELS, FULL_STEPS};
-use super::fit::{Fitted, Template};
+use super::fit::{Fitted, Template, View};
 use super::noise::{NoiseModel, looks};
 use super::plane::{blur, combine, median, own_noise, rows_mut, separable};
 use super::quality::unlike;
@@ -126,18 +126,16 @@ fn on_each_other<'a>(interpolator: &Interpolator, bare: Vec<Bare<'a>>, sd: &Arra
         let share = noise_share(interpolator, bare.iter().enumerate().filter(|&(i, _)| i != k).map(|(_, b)| b));
         let template = Template::new(&robust_mean(&others, noise), 1, sd, share, FULL_PIXELS);
         let before = one.fitted.motion.shift;
-        let mut fitted =
-            template.fit(interpolator, one.frame, None, one.fitted, before, one.fitted.motion.turns(), FULL_STEPS);
-        for axis in 0..2 {
-            fitted.motion.shift[axis] = before[axis] + step * (fitted.motion.shift[axis] - before[axis]);
-        }
+        let view = View { interpolator, frame: one.frame, metal: None, guess: before };
+        let mut fitted = template.fit(&view, one.fitted, one.fitted.motion.turns(), FULL_STEPS);
+        let found = fitted.motion.shift;
+        fitted.motion.shift = [0, 1].map(|axis| before[axis] + step * (found[axis] - before[axis]));
         moved.push(Bare { fitted, ..*one });
     }
     let origin = moved[0].fitted.motion.shift;
     for one in &mut moved {
-        for axis in 0..2 {
-            one.fitted.motion.shift[axis] -= origin[axis];
-        }
+        let shift = one.fitted.motion.shift;
+        one.fitted.motion.shift = [shift[0] - origin[0], shift[1] - origin[1]];
     }
     moved
 }

@@ -179,22 +179,10 @@ impl Template {
         }
     }
 
-    /// Fits a frame (binned like the template). `metal`: pixels left out, of the template's shape; `guess`: shift
-    /// kept in directions the picture does not tell (px of the full picture); `turning`: whether a turn may be
-    /// looked for.
-    pub(crate) fn fit(
-        &self,
-        interpolator: &Interpolator,
-        frame: &Array2<f32>,
-        metal: Option<&Array2<bool>>,
-        start: Fitted,
-        guess: [f64; 2],
-        turning: bool,
-        steps: usize,
-    ) -> Fitted {
+    /// Fits a frame (binned like the template) from `start`; `turning`: whether a turn may be looked for.
+    pub(crate) fn fit(&self, view: &View<'_>, start: Fitted, turning: bool, steps: usize) -> Fitted {
         let mut state = self.scaled(start, 1.0 / self.bin as f64);
-        let guess = guess.map(|g| g / self.bin as f64);
-        let view = View { interpolator, frame, metal, guess };
+        let view = View { guess: view.guess.map(|g| g / self.bin as f64), ..*view };
         let last = self.settle(&view, &mut state, turning, &[], steps);
         let held = last.map_or(Vec::new(), |sums| self.unconfirmed(&view, &state, &sums));
         if !held.is_empty() {
@@ -274,10 +262,8 @@ impl Template {
                     };
                     let scale = f64::from(p.inverse_sd * p.inverse_sd);
                     let slope = [e - w, s - n].map(|d| f64::from(d / 2.0) * scale);
-                    for i in 0..2 {
-                        for k in 0..2 {
-                            sums[i][k] += f64::from(p.smooth[i]) * slope[k];
-                        }
+                    for (row, z) in sums.iter_mut().zip(p.smooth) {
+                        row.iter_mut().zip(slope).for_each(|(sum, g)| *sum += f64::from(z) * g);
                     }
                 }
                 sums
@@ -423,13 +409,15 @@ impl Template {
     }
 }
 
-/// A frame as the fit sees it.
-struct View<'a> {
-    interpolator: &'a Interpolator,
-    frame: &'a Array2<f32>,
-    metal: Option<&'a Array2<bool>>,
-    /// Shift kept in directions the picture does not tell, px of the level.
-    guess: [f64; 2],
+/// A frame as the fit sees it, binned like the template.
+#[derive(Clone, Copy)]
+pub(crate) struct View<'a> {
+    pub(crate) interpolator: &'a Interpolator,
+    pub(crate) frame: &'a Array2<f32>,
+    /// Pixels left out.
+    pub(crate) metal: Option<&'a Array2<bool>>,
+    /// Shift kept in directions the picture does not tell, px of the full picture (of the level while fitting).
+    pub(crate) guess: [f64; 2],
 }
 
 impl View<'_> {
@@ -556,16 +544,11 @@ fn solve_in_place(matrix: &mut [Vec<f64>], right: &mut [[f64; 3]]) -> Option<()>
         }
         matrix.swap(col, pivot);
         right.swap(col, pivot);
-        for row in 0..n {
-            if row != col {
-                let factor = matrix[row][col] / matrix[col][col];
-                for k in col..n {
-                    matrix[row][k] -= factor * matrix[col][k];
-                }
-                for k in 0..3 {
-                    right[row][k] -= factor * right[col][k];
-                }
-            }
+        let (pivot_row, pivot_right) = (matrix[col].clone(), right[col]);
+        for row in (0..n).filter(|&row| row != col) {
+            let factor = matrix[row][col] / pivot_row[col];
+            matrix[row].iter_mut().zip(&pivot_row).skip(col).for_each(|(m, p)| *m -= factor * p);
+            right[row].iter_mut().zip(pivot_right).for_each(|(r, p)| *r -= factor * p);
         }
     }
     for i in 0..n {

@@ -8,20 +8,19 @@ use veerlog::scene::drift::{Spectrum, Whitening};
 
 const TOLERANCE_PX: f64 = 0.02;
 
-fn plane(name: &str, value: impl Fn(f32) -> f32) -> Array2<f32> {
+fn plane(name: &str, value: impl Fn(f32) -> f32) -> image::ImageResult<Array2<f32>> {
     let path = Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures/phase").join(name);
-    let picture = image::open(path).unwrap().into_luma16();
+    let picture = image::open(path)?.into_luma16();
     let (width, height) = picture.dimensions();
-    Array2::from_shape_fn((height as usize, width as usize), |(y, x)| {
-        value(f32::from(picture.get_pixel(x as u32, y as u32)[0]))
-    })
+    let grey = |(y, x): (usize, usize)| value(f32::from(picture.get_pixel(x as u32, y as u32)[0]));
+    Ok(Array2::from_shape_fn((height as usize, width as usize), grey))
 }
 
 #[test]
 fn a_fourier_shift_is_found_with_and_without_whitening() {
     // An 8-bit picture is widened to 16 bits by 257.
-    let still = Spectrum::new(&plane("microaneurysms.png", |v| v / 257.0));
-    let moved = Spectrum::new(&plane("microaneurysms_shifted_u16.png", |v| v / 128.0 - 64.0));
+    let still = Spectrum::new(&plane("microaneurysms.png", |v| v / 257.0).unwrap());
+    let moved = Spectrum::new(&plane("microaneurysms_shifted_u16.png", |v| v / 128.0 - 64.0).unwrap());
     for whitening in [Whitening::None, Whitening::Half, Whitening::Full] {
         let shift = still.shift_to(&moved, whitening, 100);
         // Rows are y. The scene moved by the shift applied: the negative of what brings it back.
