@@ -90,7 +90,7 @@ pub fn call(law: Law, fleet: &Fleet, runs: u64) -> Vec<Call> {
 
 /// Depths are decided at once in every second run, two frames late in the others.
 fn lag(index: u64) -> usize {
-    if index % 2 == 0 { 0 } else { 2 }
+    if index.is_multiple_of(2) { 0 } else { 2 }
 }
 
 fn score_at(run: &History, fraction: f64, lag: usize) -> Option<Scored> {

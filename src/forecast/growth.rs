@@ -113,7 +113,7 @@ fn grown(tip: &TipSeries) -> bool {
 
 /// At most [`KNOTS`] + 1 indices from `from` to `to`, about evenly spaced, both ends among them.
 fn knots(from: usize, to: usize) -> Vec<usize> {
-    let steps = (to - from).min(KNOTS).max(1);
+    let steps = (to - from).clamp(1, KNOTS);
     let mut all: Vec<usize> = (0..=steps)
         .map(|k| from + (to - from) * k / steps)
         .collect();

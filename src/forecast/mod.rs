@@ -9,6 +9,7 @@ mod ahead;
 pub mod calibration;
 mod clock;
 mod contact;
+mod courses;
 mod first_passage;
 mod growth;
 pub mod histories;
@@ -79,7 +80,7 @@ pub struct Settings {
 pub enum Silence {
     /// No filament has been seen.
     NoGrowth,
-    /// Fewer than [`growth::LEAST_POINTS`] depths of any filament.
+    /// Fewer than three depths of any filament.
     TooShort,
     /// A filament already touches the far edge.
     Contact,
