@@ -14,6 +14,8 @@ pub(crate) const LEAST_POINTS: usize = 3;
 const KNOTS: usize = 9;
 /// Filaments followed: those nearest to contact at their pace.
 const TIPS: usize = 3;
+/// First depth, in frames of mean gain, from which a filament counts as seen late.
+const LATE_FRAMES: f64 = 5.0;
 /// Growth noise: relative SD of the whole depth so far.
 const GRAINS: [f64; 4] = [0.03, 0.08, 0.2, 0.45];
 /// Wander of the rate: its relative SD over a growth by e in progress.
@@ -181,7 +183,8 @@ struct State {
     log_likelihood: f64,
 }
 
-/// Kalman filter of one filament over the knots. It starts at depth 0 at the last knot before its first sight.
+/// Kalman filter of one filament over the knots. It starts at depth 0 at the last knot before its first sight, or at its first
+/// sight where that came late.
 fn filter(
     tip: &TipSeries,
     knots: &[usize],
@@ -190,7 +193,11 @@ fn filter(
     grain: f64,
     wander: f64,
 ) -> State {
-    let start = knots.partition_point(|&k| k < tip.first).saturating_sub(1);
+    let unseen = usize::from(!seen_late(tip));
+    let start = knots
+        .partition_point(|&k| k < tip.first)
+        .saturating_sub(unseen)
+        .min(knots.len() - 2);
     let last = tip.depth_um.len() - 1;
     let seen_from_the_start = knots[start] >= tip.first;
     let base = if seen_from_the_start {
@@ -235,6 +242,14 @@ fn filter(
         state.dd -= gain * state.dd;
     }
     state
+}
+
+/// Whether the filament was already far deeper at first sight than it gained in a frame since: hidden before (in the blur of the
+/// electrode, say), so that its first depth tells nothing about its rate.
+fn seen_late(tip: &TipSeries) -> bool {
+    let last = tip.depth_um.len() - 1;
+    let gain = (tip.depth_um[last] - tip.depth_um[0]) / last.max(1) as f64;
+    tip.depth_um[0] > LATE_FRAMES * gain + 3.0 * tip.u_depth_um[0]
 }
 
 /// One outlook with the mean and spread of the weighted states.

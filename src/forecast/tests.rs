@@ -138,6 +138,16 @@ fn a_second_filament_in_the_lead_brings_contact_forward() {
 }
 
 #[test]
+fn a_filament_first_seen_when_already_deep_is_not_taken_for_a_sprinter() {
+    let left = told(&record(20, |k| 50.0 + 10.0 * k)).map(|time| (time - 1200.0) / 60.0);
+    // true: 15 frames
+    assert!(
+        left[1] < 15.0 && 15.0 < left[5] && (left[3] - 15.0).abs() < 3.0,
+        "{left:?}"
+    );
+}
+
+#[test]
 fn waiting_without_contact_moves_the_forecast_on() {
     let early = record(30, |k| 12.0 * k);
     let mut late = early.clone();
