@@ -88,7 +88,7 @@ impl Contact {
         ((self.by(time) - past) / (1.0 - past).max(1e-9)).clamp(0.0, 1.0)
     }
 
-    /// Chance a second, just after issue, read over a hundredth of the median wait.
+    /// Chance a second, just after issue, read over a twentieth of the median wait.
     pub(crate) fn hazard_now(&self) -> f64 {
         let window = self
             .quantiles()
