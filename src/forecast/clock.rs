@@ -13,9 +13,9 @@ const BENDS: [f64; 10] = [-0.9, -0.6, -0.4, -0.22, -0.07, 0.07, 0.22, 0.42, 0.7,
 /// SD of the bend in the prior, which is normal about 0: steady growth is as good a guess as any other.
 const BEND_SD: f64 = 0.45;
 /// Onset before the first sight, in parts of the time seen so far, on top of half a frame. All are equally likely.
-const ONSETS: [f64; 4] = [0.0, 0.15, 0.6, 2.5];
+const ONSETS: [f64; 4] = [0.0, 0.05, 0.25, 1.5];
 /// Least power of time: below it growth has practically a limit, and "when, given that contact comes" no answer.
-const LEAST_POWER: f64 = 0.2;
+const LEAST_POWER: f64 = 0.3;
 /// Strengths β of the dose, 1/MPa: at 100 MPa the pace falls to 78, 61 and 37 %.
 const DOSE_STRENGTHS: [f64; 3] = [0.0025, 0.005, 0.01];
 /// Least range of the dose, MPa, from which its effect can be told.
@@ -38,12 +38,21 @@ pub(crate) struct Drive {
 impl Drive {
     /// Reading at a time at or after the end of the record.
     pub(crate) fn at(&self, time: f64) -> f64 {
-        let next = self.ahead.partition_point(|stretch| stretch.0 <= time).max(1);
+        let next = self
+            .ahead
+            .partition_point(|stretch| stretch.0 <= time)
+            .max(1);
         let (from, reading, pace) = self.ahead[next - 1];
         reading + pace * (time - from)
     }
 
-    fn new(name: &'static str, record: &Record, prior: f64, pace: &dyn Fn(usize) -> f64, planned: &dyn Fn(&super::PlanStep) -> Option<f64>) -> Self {
+    fn new(
+        name: &'static str,
+        record: &Record,
+        prior: f64,
+        pace: &dyn Fn(usize) -> f64,
+        planned: &dyn Fn(&super::PlanStep) -> Option<f64>,
+    ) -> Self {
         let times = &record.times_s;
         let mut ticks = vec![0.0];
         for k in 1..times.len() {
@@ -51,33 +60,71 @@ impl Drive {
         }
         let last = times.len() - 1;
         let back = last.saturating_sub(RECENT);
-        let recent = if last > back { (ticks[last] - ticks[back]) / (times[last] - times[back]) } else { 1.0 };
+        let recent = if last > back {
+            (ticks[last] - ticks[back]) / (times[last] - times[back])
+        } else {
+            1.0
+        };
         let mut ahead = vec![(times[last], ticks[last], recent)];
         for step in &record.plan {
             let (from, reading, pace) = ahead[ahead.len() - 1];
             let time = step.time_s.max(from);
-            ahead.push((time, reading + pace * (time - from), planned(step).unwrap_or(pace)));
+            ahead.push((
+                time,
+                reading + pace * (time - from),
+                planned(step).unwrap_or(pace),
+            ));
         }
-        Self { name, ticks, ahead, prior }
+        Self {
+            name,
+            ticks,
+            ahead,
+            prior,
+        }
     }
 }
 
 /// Every drive the record has evidence about; time always comes first.
 pub(crate) fn drives(record: &Record) -> Vec<Drive> {
     let mut drives = vec![Drive::new("time", record, 1.0, &|_| 1.0, &|_| None)];
-    if let Some(charge) = record.charge_mah.as_ref().filter(|charge| bends(&record.times_s, charge)) {
+    if let Some(charge) = record
+        .charge_mah
+        .as_ref()
+        .filter(|charge| bends(&record.times_s, charge))
+    {
         let span = record.times_s[record.times_s.len() - 1] - record.times_s[0];
         // readings in seconds of mean current, so that drives are comparable; stripping does not turn the clock back
-        let mean = charge.windows(2).map(|pair| (pair[1] - pair[0]).max(0.0)).sum::<f64>() / span;
-        let pace = |k: usize| ((charge[k] - charge[k - 1]).max(0.0) / (record.times_s[k] - record.times_s[k - 1])) / mean;
-        let planned = |step: &super::PlanStep| step.current_ma.map(|current| current.max(0.0) / 3600.0 / mean);
+        let mean = charge
+            .windows(2)
+            .map(|pair| (pair[1] - pair[0]).max(0.0))
+            .sum::<f64>()
+            / span;
+        let pace = |k: usize| {
+            ((charge[k] - charge[k - 1]).max(0.0) / (record.times_s[k] - record.times_s[k - 1]))
+                / mean
+        };
+        let planned = |step: &super::PlanStep| {
+            step.current_ma
+                .map(|current| current.max(0.0) / 3600.0 / mean)
+        };
         drives.push(Drive::new("charge passed", record, 1.0, &pace, &planned));
     }
-    if let Some(dose) = record.dose_mpa.as_ref().filter(|dose| range(dose) >= LEAST_DOSE_RANGE) {
+    if let Some(dose) = record
+        .dose_mpa
+        .as_ref()
+        .filter(|dose| range(dose) >= LEAST_DOSE_RANGE)
+    {
         for strength in DOSE_STRENGTHS {
             let pace = |k: usize| libm::exp(-strength * dose[k]);
-            let planned = |step: &super::PlanStep| step.dose_mpa.map(|dose| libm::exp(-strength * dose));
-            drives.push(Drive::new("time under the logged load", record, 0.5 / DOSE_STRENGTHS.len() as f64, &pace, &planned));
+            let planned =
+                |step: &super::PlanStep| step.dose_mpa.map(|dose| libm::exp(-strength * dose));
+            drives.push(Drive::new(
+                "time under the logged load",
+                record,
+                0.5 / DOSE_STRENGTHS.len() as f64,
+                &pace,
+                &planned,
+            ));
         }
     }
     drives
@@ -85,14 +132,26 @@ pub(crate) fn drives(record: &Record) -> Vec<Drive> {
 
 /// Whether charge and time are far enough from proportional to be told apart.
 fn bends(times: &[f64], charge: &[f64]) -> bool {
-    let (Some(&t0), Some(&t1), Some(&q0), Some(&q1)) = (times.first(), times.last(), charge.first(), charge.last()) else { return false };
+    let (Some(&t0), Some(&t1), Some(&q0), Some(&q1)) =
+        (times.first(), times.last(), charge.first(), charge.last())
+    else {
+        return false;
+    };
     let straight = |t: f64| q0 + (q1 - q0) * (t - t0) / (t1 - t0);
-    let off = times.iter().zip(charge).map(|(&t, &q)| (q - straight(t)).abs()).fold(0.0, f64::max);
+    let off = times
+        .iter()
+        .zip(charge)
+        .map(|(&t, &q)| (q - straight(t)).abs())
+        .fold(0.0, f64::max);
     q1 > q0 && off > LEAST_CHARGE_BEND * (q1 - q0)
 }
 
 fn range(values: &[f64]) -> f64 {
-    let (low, high) = values.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), &v| (low.min(v), high.max(v)));
+    let (low, high) = values
+        .iter()
+        .fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), &v| {
+            (low.min(v), high.max(v))
+        });
     high - low
 }
 
@@ -103,10 +162,20 @@ pub(crate) fn extrapolates(record: &Record) -> bool {
         value < low - margin || value > high + margin
     };
     let currents = record.charge_mah.as_ref().map(|charge| {
-        let paces = charge.windows(2).zip(record.times_s.windows(2)).map(|(q, t)| 3600.0 * (q[1] - q[0]) / (t[1] - t[0]));
-        paces.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), i| (low.min(i), high.max(i)))
+        let paces = charge
+            .windows(2)
+            .zip(record.times_s.windows(2))
+            .map(|(q, t)| 3600.0 * (q[1] - q[0]) / (t[1] - t[0]));
+        paces.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), i| {
+            (low.min(i), high.max(i))
+        })
     });
-    let doses = record.dose_mpa.as_ref().map(|dose| dose.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), &d| (low.min(d), high.max(d))));
+    let doses = record.dose_mpa.as_ref().map(|dose| {
+        dose.iter()
+            .fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), &d| {
+                (low.min(d), high.max(d))
+            })
+    });
     let unknown = (f64::INFINITY, f64::NEG_INFINITY);
     record.plan.iter().any(|step| {
         let off = |value: Option<f64>, seen: Option<(f64, f64)>| {
@@ -141,13 +210,26 @@ impl Clock {
         let power = 1.0 + bend / libm::log(span / (0.5 * (now - seen) + before));
         let off = bend / BEND_SD;
         let log_prior = libm::log(source.prior) - 0.5 * off * off;
-        Self { drive, name: source.name, onset: seen - before, span, bend, power, whole: -integral(before / span, power), log_prior }
+        Self {
+            drive,
+            name: source.name,
+            onset: seen - before,
+            span,
+            bend,
+            power,
+            whole: -integral(before / span, power),
+            log_prior,
+        }
     }
 
     /// Progress at a reading of the drive: 0 at first sight (or earlier), 1 at the end of the record.
     pub(crate) fn progress(&self, tick: f64) -> f64 {
         let part = (tick - self.onset) / self.span;
-        if part <= 0.0 { 0.0 } else { (1.0 + integral(part, self.power) / self.whole).max(0.0) }
+        if part <= 0.0 {
+            0.0
+        } else {
+            (1.0 + integral(part, self.power) / self.whole).max(0.0)
+        }
     }
 
     /// The law in words, for a table.
@@ -163,7 +245,11 @@ impl Clock {
 
 /// ∫ u^(power − 1) du from 1 to `part`.
 fn integral(part: f64, power: f64) -> f64 {
-    if power.abs() < 1e-6 { libm::log(part) } else { (libm::pow(part, power) - 1.0) / power }
+    if power.abs() < 1e-6 {
+        libm::log(part)
+    } else {
+        (libm::pow(part, power) - 1.0) / power
+    }
 }
 
 /// All hypotheses over the given drives. `first`: index of the first depth of any filament.
@@ -176,11 +262,17 @@ pub(crate) fn clocks(drives: &[Drive], first: usize) -> Vec<Clock> {
         if elapsed <= 0.0 {
             continue;
         }
-        let frame = if first > 0 { sight - drive.ticks[first - 1] } else { drive.ticks[first + 1] - sight };
+        let frame = if first > 0 {
+            sight - drive.ticks[first - 1]
+        } else {
+            drive.ticks[first + 1] - sight
+        };
         let half = 0.5 * frame.max(1e-3 * elapsed);
         for part in ONSETS {
             let seen = sight - half;
-            let laws = BENDS.iter().map(|&bend| Clock::new(index, drive, seen, now, 0.2 * half + part * elapsed, bend));
+            let laws = BENDS.iter().map(|&bend| {
+                Clock::new(index, drive, seen, now, 0.2 * half + part * elapsed, bend)
+            });
             all.extend(laws.filter(|clock| clock.power >= LEAST_POWER));
         }
     }

@@ -9,14 +9,17 @@ use super::{Record, TipSeries};
 
 /// Fewest depths of a filament from which a rate is read.
 pub(crate) const LEAST_POINTS: usize = 3;
-/// Knots the record is thinned to; more add cost, and little, because growth noise dominates.
-const KNOTS: usize = 22;
+/// Intervals the record is thinned to. Few are better than many: neighbouring frames share their noise (a pause, a wandering rate),
+/// and many would take it for independent evidence.
+const KNOTS: usize = 9;
 /// Filaments followed: those nearest to contact at their pace.
 const TIPS: usize = 3;
+/// First depth, in frames of mean gain, from which a filament counts as seen late.
+const LATE_FRAMES: f64 = 5.0;
 /// Growth noise: relative SD of the whole depth so far.
 const GRAINS: [f64; 4] = [0.03, 0.08, 0.2, 0.45];
 /// Wander of the rate: its relative SD over a growth by e in progress.
-const WANDERS: [f64; 3] = [0.05, 0.2, 0.6];
+const WANDERS: [f64; 3] = [0.05, 0.2, 0.5];
 /// Prior weights of [`WANDERS`].
 const WANDER_WEIGHTS: [f64; 3] = [0.5, 0.35, 0.15];
 /// Share of progress below which the wander no longer speeds up (the log would run away at the onset).
@@ -58,12 +61,19 @@ pub(crate) struct Fits {
 /// Fits and weighs every hypothesis. Empty when no filament has [`LEAST_POINTS`] depths.
 pub(crate) fn fit(record: &Record) -> Fits {
     let tips = followed(record);
-    let Some(first) = tips.iter().map(|&tip| record.tips[tip].first).min() else { return Fits::default() };
+    let Some(first) = tips.iter().map(|&tip| record.tips[tip].first).min() else {
+        return Fits::default();
+    };
     let knots = knots(first.saturating_sub(1), record.times_s.len() - 1);
     let drives = drives(record);
-    let mut hypotheses: Vec<Hypothesis> =
-        clocks(&drives, first).into_iter().map(|clock| weigh(record, &tips, &knots, &drives[clock.drive], clock)).collect();
-    let heaviest = hypotheses.iter().map(|h| h.weight).fold(f64::NEG_INFINITY, f64::max);
+    let mut hypotheses: Vec<Hypothesis> = clocks(&drives, first)
+        .into_iter()
+        .map(|clock| weigh(record, &tips, &knots, &drives[clock.drive], clock))
+        .collect();
+    let heaviest = hypotheses
+        .iter()
+        .map(|h| h.weight)
+        .fold(f64::NEG_INFINITY, f64::max);
     for hypothesis in &mut hypotheses {
         hypothesis.weight = libm::exp(hypothesis.weight - heaviest);
     }
@@ -73,17 +83,28 @@ pub(crate) fn fit(record: &Record) -> Fits {
         hypothesis.weight /= total;
     }
     hypotheses.sort_by(|a, b| b.weight.total_cmp(&a.weight));
-    Fits { tips, hypotheses, drives }
+    Fits {
+        tips,
+        hypotheses,
+        drives,
+    }
 }
 
 /// The filaments nearest to contact by remaining distance over mean pace.
 fn followed(record: &Record) -> Vec<usize> {
     let wait = |tip: &TipSeries| {
         let last = tip.depth_um.len() - 1;
-        tip.remaining_um[last] / (tip.depth_um[last] / tip.depth_um.len() as f64).max(f64::MIN_POSITIVE)
+        tip.remaining_um[last]
+            / (tip.depth_um[last] / tip.depth_um.len() as f64).max(f64::MIN_POSITIVE)
     };
-    let mut order: Vec<usize> = (0..record.tips.len()).filter(|&k| record.tips[k].depth_um.len() >= LEAST_POINTS && grown(&record.tips[k])).collect();
-    order.sort_by(|&a, &b| wait(&record.tips[a]).total_cmp(&wait(&record.tips[b])).then(a.cmp(&b)));
+    let mut order: Vec<usize> = (0..record.tips.len())
+        .filter(|&k| record.tips[k].depth_um.len() >= LEAST_POINTS && grown(&record.tips[k]))
+        .collect();
+    order.sort_by(|&a, &b| {
+        wait(&record.tips[a])
+            .total_cmp(&wait(&record.tips[b]))
+            .then(a.cmp(&b))
+    });
     order.truncate(TIPS);
     order
 }
@@ -94,17 +115,32 @@ fn grown(tip: &TipSeries) -> bool {
 
 /// At most [`KNOTS`] + 1 indices from `from` to `to`, about evenly spaced, both ends among them.
 fn knots(from: usize, to: usize) -> Vec<usize> {
-    let steps = (to - from).min(KNOTS).max(1);
-    let mut all: Vec<usize> = (0..=steps).map(|k| from + (to - from) * k / steps).collect();
+    let steps = (to - from).clamp(1, KNOTS);
+    let mut all: Vec<usize> = (0..=steps)
+        .map(|k| from + (to - from) * k / steps)
+        .collect();
     all.dedup();
     all
 }
 
 /// Sums over the noise grid; the weight of the result is still a log.
-fn weigh(record: &Record, tips: &[usize], knots: &[usize], drive: &Drive, clock: Clock) -> Hypothesis {
-    let progress: Vec<f64> = knots.iter().map(|&k| clock.progress(drive.ticks[k])).collect();
-    let logs: Vec<f64> = progress.iter().map(|&s| libm::log(s + WANDER_FLOOR)).collect();
-    let mut candidates = [(f64::NEG_INFINITY, [State::default(); TIPS]); GRAINS.len() * WANDERS.len()];
+fn weigh(
+    record: &Record,
+    tips: &[usize],
+    knots: &[usize],
+    drive: &Drive,
+    clock: Clock,
+) -> Hypothesis {
+    let progress: Vec<f64> = knots
+        .iter()
+        .map(|&k| clock.progress(drive.ticks[k]))
+        .collect();
+    let logs: Vec<f64> = progress
+        .iter()
+        .map(|&s| libm::log(s + WANDER_FLOOR))
+        .collect();
+    let mut candidates =
+        [(f64::NEG_INFINITY, [State::default(); TIPS]); GRAINS.len() * WANDERS.len()];
     for (slot, candidate) in candidates.iter_mut().enumerate() {
         let (grain, wander) = (GRAINS[slot / WANDERS.len()], WANDERS[slot % WANDERS.len()]);
         candidate.0 = libm::log(WANDER_WEIGHTS[slot % WANDERS.len()]);
@@ -113,11 +149,26 @@ fn weigh(record: &Record, tips: &[usize], knots: &[usize], drive: &Drive, clock:
             candidate.0 += state.log_likelihood;
         }
     }
-    let best = candidates.iter().map(|c| c.0).fold(f64::NEG_INFINITY, f64::max);
+    let best = candidates
+        .iter()
+        .map(|c| c.0)
+        .fold(f64::NEG_INFINITY, f64::max);
     let weights = candidates.map(|c| libm::exp(c.0 - best));
     let total: f64 = weights.iter().sum();
-    let outlooks = (0..tips.len()).map(|t| merge(&record.tips[tips[t]], &weights.map(|w| w / total), &candidates.map(|c| c.1[t]))).collect();
-    Hypothesis { clock, weight: clock.log_prior + best + libm::log(total), outlooks }
+    let outlooks = (0..tips.len())
+        .map(|t| {
+            merge(
+                &record.tips[tips[t]],
+                &weights.map(|w| w / total),
+                &candidates.map(|c| c.1[t]),
+            )
+        })
+        .collect();
+    Hypothesis {
+        clock,
+        weight: clock.log_prior + best + libm::log(total),
+        outlooks,
+    }
 }
 
 #[derive(Debug, Clone, Copy, Default)]
@@ -132,24 +183,50 @@ struct State {
     log_likelihood: f64,
 }
 
-/// Kalman filter of one filament over the knots. It starts at depth 0 at the last knot before its first sight.
-fn filter(tip: &TipSeries, knots: &[usize], progress: &[f64], logs: &[f64], grain: f64, wander: f64) -> State {
-    let start = knots.partition_point(|&k| k < tip.first).saturating_sub(1);
+/// Kalman filter of one filament over the knots. It starts at depth 0 at the last knot before its first sight, or at its first
+/// sight where that came late.
+fn filter(
+    tip: &TipSeries,
+    knots: &[usize],
+    progress: &[f64],
+    logs: &[f64],
+    grain: f64,
+    wander: f64,
+) -> State {
+    let unseen = usize::from(!seen_late(tip));
+    let start = knots
+        .partition_point(|&k| k < tip.first)
+        .saturating_sub(unseen)
+        .min(knots.len() - 2);
     let last = tip.depth_um.len() - 1;
     let seen_from_the_start = knots[start] >= tip.first;
-    let base = if seen_from_the_start { tip.depth_um[knots[start] - tip.first] } else { 0.0 };
+    let base = if seen_from_the_start {
+        tip.depth_um[knots[start] - tip.first]
+    } else {
+        0.0
+    };
     let top = tip.depth_um[last];
-    let pace = ((top - base).max(0.1 * top) / (1.0 - progress[start]).max(1e-6)).max(f64::MIN_POSITIVE);
+    let pace =
+        ((top - base).max(0.1 * top) / (1.0 - progress[start]).max(1e-6)).max(f64::MIN_POSITIVE);
     // undetected ink at the frame before: a few uncertainties, and a hundredth of the depth
     let blur = 3.0 * tip.u_depth_um[0] + 0.01 * top;
-    let mut state = State { depth: base, rate: pace, dd: blur * blur, rr: 4.0 * pace * pace, ..State::default() };
+    let mut state = State {
+        depth: base,
+        rate: pace,
+        dd: blur * blur,
+        rr: 4.0 * pace * pace,
+        ..State::default()
+    };
     state.grain = grain * grain * top * pace;
     state.wander = wander * wander * pace * pace;
     for k in start + 1..knots.len() {
         let step = progress[k] - progress[k - 1];
         let drift = state.wander * (logs[k] - logs[k - 1]);
         state.depth += step * state.rate;
-        state.dd += 2.0 * step * state.dr + step * step * state.rr + state.grain * step + drift * step * step / 3.0;
+        state.dd += 2.0 * step * state.dr
+            + step * step * state.rr
+            + state.grain * step
+            + drift * step * step / 3.0;
         state.dr += step * state.rr + 0.5 * drift * step;
         state.rr += drift;
         let at = knots[k] - tip.first;
@@ -167,11 +244,25 @@ fn filter(tip: &TipSeries, knots: &[usize], progress: &[f64], logs: &[f64], grai
     state
 }
 
+/// Whether the filament was already far deeper at first sight than it gained in a frame since: hidden before (in the blur of the
+/// electrode, say), so that its first depth tells nothing about its rate.
+fn seen_late(tip: &TipSeries) -> bool {
+    let last = tip.depth_um.len() - 1;
+    let gain = (tip.depth_um[last] - tip.depth_um[0]) / last.max(1) as f64;
+    tip.depth_um[0] > LATE_FRAMES * gain + 3.0 * tip.u_depth_um[0]
+}
+
 /// One outlook with the mean and spread of the weighted states.
 fn merge(tip: &TipSeries, weights: &[f64], states: &[State]) -> Outlook {
     let last = tip.depth_um.len() - 1;
     let far = tip.depth_um[last] + tip.remaining_um[last];
-    let mean = |value: &dyn Fn(&State) -> f64| weights.iter().zip(states).map(|(w, s)| w * value(s)).sum::<f64>();
+    let mean = |value: &dyn Fn(&State) -> f64| {
+        weights
+            .iter()
+            .zip(states)
+            .map(|(w, s)| w * value(s))
+            .sum::<f64>()
+    };
     let (depth, rate) = (mean(&|s| s.depth), mean(&|s| s.rate));
     Outlook {
         remaining: (far - depth).max(0.02 * tip.remaining_um[last]),

@@ -9,6 +9,7 @@ mod ahead;
 pub mod calibration;
 mod clock;
 mod contact;
+mod courses;
 mod first_passage;
 mod growth;
 pub mod histories;
@@ -79,7 +80,7 @@ pub struct Settings {
 pub enum Silence {
     /// No filament has been seen.
     NoGrowth,
-    /// Fewer than [`growth::LEAST_POINTS`] depths of any filament.
+    /// Fewer than three depths of any filament.
     TooShort,
     /// A filament already touches the far edge.
     Contact,
@@ -144,8 +145,14 @@ pub fn forecast(record: &Record, settings: &Settings) -> Forecast {
         return silent(silence);
     }
     let fits = growth::fit(record);
-    let Some(leader) = fits.hypotheses.first() else { return silent(Silence::TooShort) };
-    let growing: Vec<f64> = fits.tips.iter().map(|&tip| pauses::growing(record, &record.tips[tip])).collect();
+    let Some(leader) = fits.hypotheses.first() else {
+        return silent(Silence::TooShort);
+    };
+    let growing: Vec<f64> = fits
+        .tips
+        .iter()
+        .map(|&tip| pauses::growing(record, &record.tips[tip]))
+        .collect();
     let contact = contact::Contact::new(record, &fits, &growing);
     let horizon_s = horizon(record, settings);
     Forecast {
@@ -163,15 +170,23 @@ pub fn forecast(record: &Record, settings: &Settings) -> Forecast {
 /// As long again as the record at issue.
 fn horizon(record: &Record, settings: &Settings) -> f64 {
     let start = record.times_s.first().copied().unwrap_or(0.0).min(0.0);
-    settings.horizon_s.unwrap_or(record.issued_at_s + (record.issued_at_s - start))
+    settings
+        .horizon_s
+        .unwrap_or(record.issued_at_s + (record.issued_at_s - start))
 }
 
 /// Whether the record can be forecast from at all.
 fn readable(record: &Record) -> Result<(), Silence> {
     let n = record.times_s.len();
     let rising = record.times_s.windows(2).all(|pair| pair[1] > pair[0]);
-    let finite = record.times_s.iter().all(|t| t.is_finite()) && record.issued_at_s.is_finite() && record.gap_um > 0.0;
-    let beside = |values: &Option<Vec<f64>>| values.as_ref().is_none_or(|v| v.len() == n && v.iter().all(|x| x.is_finite()));
+    let finite = record.times_s.iter().all(|t| t.is_finite())
+        && record.issued_at_s.is_finite()
+        && record.gap_um > 0.0;
+    let beside = |values: &Option<Vec<f64>>| {
+        values
+            .as_ref()
+            .is_none_or(|v| v.len() == n && v.iter().all(|x| x.is_finite()))
+    };
     let whole = record.tips.iter().all(|tip| tip.is_whole(n));
     if !(rising && finite && whole && beside(&record.charge_mah) && beside(&record.dose_mpa)) {
         return Err(Silence::Unusable);
@@ -179,8 +194,15 @@ fn readable(record: &Record) -> Result<(), Silence> {
     if record.tips.is_empty() {
         return Err(Silence::NoGrowth);
     }
-    let touching = record.tips.iter().any(|tip| tip.remaining_um.last().is_some_and(|&left| left <= 0.0));
-    if touching { Err(Silence::Contact) } else { Ok(()) }
+    let touching = record
+        .tips
+        .iter()
+        .any(|tip| tip.remaining_um.last().is_some_and(|&left| left <= 0.0));
+    if touching {
+        Err(Silence::Contact)
+    } else {
+        Ok(())
+    }
 }
 
 impl TipSeries {
@@ -188,6 +210,13 @@ impl TipSeries {
     fn is_whole(&self, frames: usize) -> bool {
         let n = self.depth_um.len();
         let series = [&self.depth_um, &self.u_depth_um, &self.remaining_um];
-        n > 0 && self.first + n == frames && series.iter().all(|s| s.len() == n && s.iter().all(|x| x.is_finite() && *x >= 0.0))
+        n > 0
+            && self.first + n == frames
+            && series
+                .iter()
+                .all(|s| s.len() == n && s.iter().all(|x| x.is_finite() && *x >= 0.0))
     }
 }
+
+#[cfg(test)]
+mod tests;

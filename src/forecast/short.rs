@@ -60,7 +60,13 @@ pub struct Settings {
 impl Default for Settings {
     /// All common practice.
     fn default() -> Self {
-        Self { settle_s: None, rest: 0.05, soft: 0.7, full: 0.1, noises: 6.0 }
+        Self {
+            settle_s: None,
+            rest: 0.05,
+            soft: 0.7,
+            full: 0.1,
+            noises: 6.0,
+        }
     }
 }
 
@@ -108,7 +114,12 @@ struct Sample {
 /// assert_eq!((shorts[0].time_s, shorts[0].sign, shorts[0].grade), (400.0, Sign::VoltageCollapse, Grade::Full));
 /// assert_eq!(shorts[0].recovered_s, None);
 /// ```
-pub fn find(time_s: &[f64], current: &[f64], voltage: &[f64], settings: &Settings) -> Vec<ShortEvent> {
+pub fn find(
+    time_s: &[f64],
+    current: &[f64],
+    voltage: &[f64],
+    settings: &Settings,
+) -> Vec<ShortEvent> {
     let samples = working(time_s, current, voltage, settings);
     if samples.len() < LEAST_BEFORE + LASTING {
         return Vec::new();
@@ -140,7 +151,14 @@ pub fn find(time_s: &[f64], current: &[f64], voltage: &[f64], settings: &Setting
             Some(grade) => {
                 let back = recovery(&samples, k, level, settings);
                 let before: Vec<Sample> = recent.iter().map(|&i| samples[i]).collect();
-                events.push(describe(&samples[k..back.unwrap_or(samples.len())], &before, level, grade, settings, back.map(|b| samples[b].time)));
+                events.push(describe(
+                    &samples[k..back.unwrap_or(samples.len())],
+                    &before,
+                    level,
+                    grade,
+                    settings,
+                    back.map(|b| samples[b].time),
+                ));
                 let Some(back) = back else { break };
                 k = back;
             }
@@ -155,13 +173,34 @@ fn working(time_s: &[f64], current: &[f64], voltage: &[f64], settings: &Settings
         return Vec::new();
     }
     let finite = |x: &f64| x.is_finite();
-    let greatest = current.iter().filter(|x| finite(x)).fold(0.0_f64, |most, x| most.max(x.abs()));
-    let usual = quantile(current.iter().map(|x| x.abs()).filter(|x| finite(x) && *x > 0.01 * greatest).collect(), 0.25);
-    let typical = quantile(voltage.iter().filter(|x| finite(x)).map(|x| x.abs()).collect(), 0.5);
-    let spacing = quantile(time_s.windows(2).map(|pair| pair[1] - pair[0]).collect(), 0.5);
+    let greatest = current
+        .iter()
+        .filter(|x| finite(x))
+        .fold(0.0_f64, |most, x| most.max(x.abs()));
+    let usual = quantile(
+        current
+            .iter()
+            .map(|x| x.abs())
+            .filter(|x| finite(x) && *x > 0.01 * greatest)
+            .collect(),
+        0.25,
+    );
+    let typical = quantile(
+        voltage
+            .iter()
+            .filter(|x| finite(x))
+            .map(|x| x.abs())
+            .collect(),
+        0.5,
+    );
+    let spacing = quantile(
+        time_s.windows(2).map(|pair| pair[1] - pair[0]).collect(),
+        0.5,
+    );
     let settle = settings.settle_s.unwrap_or(SETTLE_SAMPLES * spacing);
     let mut all: Vec<Sample> = Vec::new();
-    let (mut last, mut rested, mut from, mut set_point): (Option<(f64, f64)>, bool, f64, usize) = (None, false, time_s[0], 0);
+    let (mut last, mut rested, mut from, mut set_point): (Option<(f64, f64)>, bool, f64, usize) =
+        (None, false, time_s[0], 0);
     for ((&time, &i), &v) in time_s.iter().zip(current).zip(voltage) {
         let works = i.is_finite() && v.is_finite() && i.abs() > settings.rest * usual;
         if !works {
@@ -176,8 +215,15 @@ fn working(time_s: &[f64], current: &[f64], voltage: &[f64], settings: &Settings
         (last, rested) = (Some((i, v)), false);
         if time >= from {
             // a thousandth of the typical voltage stands for a voltage of 0
-            let log_resistance = libm::log(v.abs().max(1e-3 * typical).max(f64::MIN_POSITIVE) / i.abs());
-            all.push(Sample { time, current: i, voltage: v, log_resistance, set_point });
+            let log_resistance =
+                libm::log(v.abs().max(1e-3 * typical).max(f64::MIN_POSITIVE) / i.abs());
+            all.push(Sample {
+                time,
+                current: i,
+                voltage: v,
+                log_resistance,
+                set_point,
+            });
         }
     }
     all
@@ -193,11 +239,16 @@ enum Between {
 
 /// A new set point: the current steps and the voltage with it, so that the resistance changes less than the current does.
 fn between(before: (f64, f64), now: (f64, f64)) -> Between {
-    let step = |old: f64, new: f64| libm::log(new.abs().max(f64::MIN_POSITIVE) / old.abs().max(f64::MIN_POSITIVE));
+    let step = |old: f64, new: f64| {
+        libm::log(new.abs().max(f64::MIN_POSITIVE) / old.abs().max(f64::MIN_POSITIVE))
+    };
     let (current, voltage) = (step(before.0, now.0), step(before.1, now.1));
     if before.0 * now.0 < 0.0 {
         Between::Reversal
-    } else if current.abs() > NEW_SET_POINT && voltage.abs() > HELD && (voltage - current).abs() < current.abs() {
+    } else if current.abs() > NEW_SET_POINT
+        && voltage.abs() > HELD
+        && (voltage - current).abs() < current.abs()
+    {
         Between::SetPoint
     } else {
         Between::Nothing
@@ -206,18 +257,30 @@ fn between(before: (f64, f64), now: (f64, f64)) -> Between {
 
 /// SD of the log resistance from sample to sample.
 fn noise(samples: &[Sample]) -> f64 {
-    let steps = samples.windows(2).map(|pair| (pair[1].log_resistance - pair[0].log_resistance).abs());
+    let steps = samples
+        .windows(2)
+        .map(|pair| (pair[1].log_resistance - pair[0].log_resistance).abs());
     (MAD_TO_SD * median(steps) / std::f64::consts::SQRT_2).max(LEAST_NOISE)
 }
 
 /// Whether a lasting fall begins at `k`, against the level just before and the course of the whole record.
-fn fall(samples: &[Sample], k: usize, level: f64, course: f64, noise: f64, settings: &Settings) -> Option<Grade> {
+fn fall(
+    samples: &[Sample],
+    k: usize,
+    level: f64,
+    course: f64,
+    noise: f64,
+    settings: &Settings,
+) -> Option<Grade> {
     let after = &samples[k..(k + LASTING).min(samples.len())];
     // a log that ends in the fall must be judged by what there is, but never by one sample
     if after.len() < 2 {
         return None;
     }
-    let highest = after.iter().map(|s| s.log_resistance).fold(f64::NEG_INFINITY, f64::max);
+    let highest = after
+        .iter()
+        .map(|s| s.log_resistance)
+        .fold(f64::NEG_INFINITY, f64::max);
     let (full, soft) = (libm::log(settings.full), libm::log(settings.soft));
     if highest <= course + full && highest <= level - settings.noises * noise.min(0.2) {
         Some(Grade::Full)
@@ -231,25 +294,67 @@ fn fall(samples: &[Sample], k: usize, level: f64, course: f64, noise: f64, setti
 /// First sample from which the resistance is back near its level and stays there.
 fn recovery(samples: &[Sample], from: usize, level: f64, settings: &Settings) -> Option<usize> {
     let back = level + 0.5 * libm::log(settings.soft);
-    (from..samples.len().saturating_sub(LASTING - 1)).find(|&k| samples[k..k + LASTING].iter().all(|s| s.log_resistance >= back))
+    (from..samples.len().saturating_sub(LASTING - 1)).find(|&k| {
+        samples[k..k + LASTING]
+            .iter()
+            .all(|s| s.log_resistance >= back)
+    })
 }
 
-fn describe(during: &[Sample], before: &[Sample], level: f64, grade: Grade, settings: &Settings, recovered_s: Option<f64>) -> ShortEvent {
+fn describe(
+    during: &[Sample],
+    before: &[Sample],
+    level: f64,
+    grade: Grade,
+    settings: &Settings,
+    recovered_s: Option<f64>,
+) -> ShortEvent {
     let first = &during[..during.len().min(LASTING)];
     let of = |samples: &[Sample], value: &dyn Fn(&Sample) -> f64| median(samples.iter().map(value));
-    let (i0, i1) = (of(before, &|s| s.current.abs()), of(first, &|s| s.current.abs()));
-    let (v0, v1) = (of(before, &|s| s.voltage.abs()), of(first, &|s| s.voltage.abs()));
+    let (i0, i1) = (
+        of(before, &|s| s.current.abs()),
+        of(first, &|s| s.current.abs()),
+    );
+    let (v0, v1) = (
+        of(before, &|s| s.voltage.abs()),
+        of(first, &|s| s.voltage.abs()),
+    );
     let held = |old: f64, new: f64| (new - old).abs() <= HELD * old;
     let ratio = libm::exp(of(first, &|s| s.log_resistance) - level);
     // a soft short that runs on into a full one is told as full
-    let worst = libm::exp(during.iter().map(|s| s.log_resistance).fold(f64::INFINITY, f64::min) - level);
-    let grade = if worst <= settings.full && during.len() >= LASTING { Grade::Full } else { grade };
-    let (sign, what) = if held(i0, i1) {
-        (Sign::VoltageCollapse, format!("voltage fell to {:.1} % of its level under constant current", 100.0 * v1 / v0.max(f64::MIN_POSITIVE)))
-    } else if held(v0, v1) {
-        (Sign::CurrentRise, format!("current rose to {:.3} times its level under constant voltage", i1 / i0.max(f64::MIN_POSITIVE)))
+    let worst = libm::exp(
+        during
+            .iter()
+            .map(|s| s.log_resistance)
+            .fold(f64::INFINITY, f64::min)
+            - level,
+    );
+    let grade = if worst <= settings.full && during.len() >= LASTING {
+        Grade::Full
     } else {
-        (Sign::ResistanceCollapse, format!("|V/I| fell to {:.1} % of its level", 100.0 * ratio))
+        grade
+    };
+    let (sign, what) = if held(i0, i1) {
+        (
+            Sign::VoltageCollapse,
+            format!(
+                "voltage fell to {:.1} % of its level under constant current",
+                100.0 * v1 / v0.max(f64::MIN_POSITIVE)
+            ),
+        )
+    } else if held(v0, v1) {
+        (
+            Sign::CurrentRise,
+            format!(
+                "current rose to {:.3} times its level under constant voltage",
+                i1 / i0.max(f64::MIN_POSITIVE)
+            ),
+        )
+    } else {
+        (
+            Sign::ResistanceCollapse,
+            format!("|V/I| fell to {:.1} % of its level", 100.0 * ratio),
+        )
     };
     let end = match (recovered_s, grade) {
         (Some(time), _) => format!(", back at {time:.6} s"),
@@ -257,7 +362,14 @@ fn describe(during: &[Sample], before: &[Sample], level: f64, grade: Grade, sett
         (None, Grade::Soft) => ", soft short".to_owned(),
     };
     let time_s = during[0].time;
-    ShortEvent { time_s, sign, grade, ratio, recovered_s, evidence: format!("at {time_s:.6} s {what}{end}") }
+    ShortEvent {
+        time_s,
+        sign,
+        grade,
+        ratio,
+        recovered_s,
+        evidence: format!("at {time_s:.6} s {what}{end}"),
+    }
 }
 
 /// What the run's short is told by.
@@ -290,12 +402,30 @@ pub struct Verdict {
 /// assert_eq!(verdict(&[], None, false).time_s, None);
 /// ```
 pub fn verdict(events: &[ShortEvent], bridged_s: Option<f64>, broke: bool) -> Verdict {
-    let full = events.iter().find(|event| event.grade == Grade::Full).filter(|_| !broke).map(|event| event.time_s);
-    let lag_s = full.zip(bridged_s).map(|(electrical, picture)| electrical - picture);
+    let full = events
+        .iter()
+        .find(|event| event.grade == Grade::Full)
+        .filter(|_| !broke)
+        .map(|event| event.time_s);
+    let lag_s = full
+        .zip(bridged_s)
+        .map(|(electrical, picture)| electrical - picture);
     match (full, bridged_s) {
-        (Some(time), _) => Verdict { time_s: Some(time), evidence: Some(Evidence::Electrical), lag_s },
-        (None, Some(time)) => Verdict { time_s: Some(time), evidence: Some(Evidence::Bridging), lag_s },
-        (None, None) => Verdict { time_s: None, evidence: None, lag_s },
+        (Some(time), _) => Verdict {
+            time_s: Some(time),
+            evidence: Some(Evidence::Electrical),
+            lag_s,
+        },
+        (None, Some(time)) => Verdict {
+            time_s: Some(time),
+            evidence: Some(Evidence::Bridging),
+            lag_s,
+        },
+        (None, None) => Verdict {
+            time_s: None,
+            evidence: None,
+            lag_s,
+        },
     }
 }
 
@@ -306,111 +436,12 @@ fn median(values: impl Iterator<Item = f64>) -> f64 {
 /// Quantile by the nearest lower rank; 0 for nothing.
 fn quantile(mut values: Vec<f64>, level: f64) -> f64 {
     values.sort_by(f64::total_cmp);
-    if values.is_empty() { 0.0 } else { values[((values.len() - 1) as f64 * level) as usize] }
+    if values.is_empty() {
+        0.0
+    } else {
+        values[((values.len() - 1) as f64 * level) as usize]
+    }
 }
 
 #[cfg(test)]
-mod tests {
-    use super::*;
-    use rand::SeedableRng;
-    use rand_chacha::ChaCha8Rng;
-    use rand_distr::{Distribution, StandardNormal};
-
-    /// A log of `n` samples 10 s apart: (current, voltage) by sample, with relative noise on both.
-    fn log(n: usize, noise: f64, seed: u64, at: impl Fn(usize) -> (f64, f64)) -> (Vec<f64>, Vec<f64>, Vec<f64>) {
-        let mut rng = ChaCha8Rng::seed_from_u64(seed);
-        let mut shaken = |x: f64| -> f64 {
-            let z: f64 = StandardNormal.sample(&mut rng);
-            x * (1.0 + noise * z)
-        };
-        let (mut i, mut v) = (Vec::new(), Vec::new());
-        for k in 0..n {
-            let (current, voltage) = at(k);
-            i.push(shaken(current));
-            v.push(shaken(voltage));
-        }
-        ((0..n).map(|k| 10.0 * k as f64).collect(), i, v)
-    }
-
-    fn found(n: usize, noise: f64, at: impl Fn(usize) -> (f64, f64)) -> Vec<ShortEvent> {
-        let (t, i, v) = log(n, noise, 3, at);
-        find(&t, &i, &v, &Settings::default())
-    }
-
-    #[test]
-    fn current_rise_under_constant_voltage() {
-        let events = found(100, 0.01, |k| (if k < 70 { 0.2 } else { 4.0 }, 0.1));
-        assert_eq!(events.len(), 1);
-        assert_eq!((events[0].sign, events[0].grade), (Sign::CurrentRise, Grade::Full));
-        assert!((events[0].time_s - 700.0).abs() < 1e-9);
-    }
-
-    #[test]
-    fn soft_short_recovers_and_full_one_does_not() {
-        let events = found(200, 0.01, |k| (0.5, match k { 60..90 => 0.04, 150.. => 0.001, _ => 0.08 }));
-        assert_eq!(events.len(), 2);
-        assert_eq!((events[0].grade, events[0].recovered_s), (Grade::Soft, Some(900.0)));
-        assert_eq!((events[1].grade, events[1].recovered_s), (Grade::Full, None));
-    }
-
-    #[test]
-    fn rest_reversals_set_points_and_stray_samples_are_no_shorts() {
-        let cycling = found(400, 0.02, |k| {
-            let (half, sign) = (k % 40, if (k / 40) % 2 == 0 { 1.0 } else { -1.0 });
-            // voltage builds up after each reversal; then a rest
-            if half >= 34 { (0.0, 0.0) } else { (sign * 0.5, sign * (0.08 - 0.05 * (-(half as f64) / 1.5).exp())) }
-        });
-        assert!(cycling.is_empty(), "{cycling:?}");
-        let stray = found(200, 0.02, |k| (0.5, if k == 77 || k == 130 { 0.002 } else { 0.08 }));
-        assert!(stray.is_empty(), "{stray:?}");
-        let stepped = found(200, 0.02, |k| if k < 100 { (0.2, 0.05) } else { (0.8, 0.12) });
-        assert!(stepped.is_empty(), "{stepped:?}");
-    }
-
-    #[test]
-    fn slow_decline_and_pure_noise_are_no_shorts() {
-        let decline = found(500, 0.03, |k| (0.5, 0.08 * (-(k as f64) / 400.0).exp()));
-        assert!(decline.is_empty(), "{decline:?}");
-        for seed in 0..50 {
-            let (t, i, v) = log(400, 0.15, seed, |_| (0.5, 0.08));
-            assert!(find(&t, &i, &v, &Settings::default()).is_empty(), "seed {seed}");
-        }
-    }
-
-    #[test]
-    fn short_during_noisy_cycling_is_found() {
-        for seed in 0..20 {
-            let (t, i, v) = log(400, 0.05, seed, |k| {
-                let sign = if (k / 40) % 2 == 0 { 1.0 } else { -1.0 };
-                (sign * 0.5, sign * if k < 305 { 0.08 } else { 0.003 })
-            });
-            let events = find(&t, &i, &v, &Settings::default());
-            assert_eq!(events.len(), 1, "seed {seed}: {events:?}");
-            assert!((events[0].time_s - 3050.0).abs() <= 20.0, "seed {seed}: {}", events[0].time_s);
-        }
-    }
-
-    #[test]
-    fn broken_specimen_is_no_short() {
-        let event = found(100, 0.0, |k| (0.5, if k < 60 { 0.08 } else { 0.001 }));
-        assert_eq!(verdict(&event, None, true).time_s, None);
-        let both = verdict(&event, Some(550.0), false);
-        assert_eq!((both.evidence, both.lag_s), (Some(Evidence::Electrical), Some(50.0)));
-    }
-
-    #[test]
-    fn long_logs_stay_cheap() {
-        let events = found(200_000, 0.03, |k| (0.5, if k < 150_000 { 0.08 } else { 0.004 }));
-        assert_eq!(events.len(), 1);
-        assert!((events[0].time_s - 1_500_000.0).abs() < 1.0);
-    }
-
-    #[test]
-    fn poor_logs_give_nothing() {
-        assert!(find(&[], &[], &[], &Settings::default()).is_empty());
-        assert!(find(&[0.0, 1.0], &[1.0], &[1.0, 1.0], &Settings::default()).is_empty());
-        let zeros = vec![0.0; 50];
-        let time: Vec<f64> = (0..50).map(f64::from).collect();
-        assert!(find(&time, &zeros, &zeros, &Settings::default()).is_empty());
-    }
-}
+mod tests;
