@@ -3,7 +3,7 @@
 use ndarray::Array2;
 
 use super::Root;
-use super::centreline::{distance, normal, onto_ridge, resample, smooth, tangents, unit};
+use super::centreline::{sample, distance, normal, onto_ridge, resample, smooth, tangents, unit};
 use super::edges::Edges;
 use super::forest::{Filament, Forest, Joint, Owners, SPACING, Strand, Vertex, disc, vertices_in};
 use super::link::{Line, Start};
@@ -25,8 +25,12 @@ const HEADING: f64 = 10.0;
 const CROSSING_SLACK: f64 = 6.0;
 /// Cosine of the largest turn at a crossing: 35°.
 const CROSSING_COSINE: f64 = 0.82;
-/// Bare ceramic between a strand's ink and the claim of the metal it runs into, px.
-const MEETING_REACH: f64 = 1.5;
+/// How far ahead of its ink a strand is tied to other metal, px.
+const MEETING_REACH: f64 = 12.0;
+/// Share of the strand's contrast that the way to it must show at every step.
+const MEETING_INK: f64 = 0.4;
+/// How far beyond a strand's half width a line may start and still go on from its end, px.
+const SEAM: f64 = 5.0;
 /// How far a branch's end must lie from its parent's ink, px.
 const BRANCH_CLEAR: f64 = 4.5;
 /// Cosine of the largest angle between a strand's heading and what it runs into: 50°.
@@ -73,20 +77,13 @@ impl Attachment<'_> {
     /// Goes on from a strand's tip; where another line of this frame has done so already, branches there.
     fn go_on(&self, index: usize, line: &Line, forest: &mut Forest) -> Option<usize> {
         let strand = &forest.strands[index];
-        if strand.vertices.len() > strand.decided || strand.vertices.is_empty() {
-            let vertex = strand.decided.checked_sub(1)?;
-            return self.branch(
-                Joint {
-                    strand: index,
-                    vertex,
-                },
-                line,
-                forest,
-            );
+        let end = strand.vertices.last()?.p;
+        if strand.vertices.len() > strand.decided && distance(end, point(*line.pixels.first()?)) > 0.5 * strand.width + SEAM {
+            return self.branch(nearest_joint(index, *line.pixels.first()?, forest)?, line, forest);
         }
         let from = strand.vertices.len().saturating_sub(vertices_in(OVERLAP));
         let guide: Vec<[f64; 2]> = strand.vertices[from..].iter().map(|v| v.p).collect();
-        let new = self.drawn(&guide, &line.pixels);
+        let new = self.drawn(&guide, &line.pixels, strand.width);
         forest.strands[index].vertices.extend(new);
         Some(index)
     }
@@ -114,18 +111,14 @@ impl Attachment<'_> {
         Some(found)
     }
 
-    /// Ties the end of a strand to other metal that it runs into: within `owners`' claim of another strand ahead.
+    /// Ties the end of a strand to other metal ahead of it, where the plane shows ink all the way.
     pub fn meet(&self, index: usize, forest: &mut Forest, owners: &Owners) {
         let strand = &forest.strands[index];
-        let (Some(end), Some(heading)) =
-            (strand.vertices.last(), strand.heading(vertices_in(HEADING)))
-        else {
-            return;
-        };
+        let (Some(end), Some(heading)) = (strand.vertices.last(), strand.heading(vertices_in(HEADING))) else { return };
         if strand.meets.is_some() || strand.reached_far.is_some() {
             return;
         }
-        let (p, n) = (end.p, end.n);
+        let (p, n, width) = (end.p, end.n, strand.width);
         let near_own_joint = |j: Joint| {
             strand.parent.is_some_and(|own| {
                 own.strand == j.strand && own.vertex.abs_diff(j.vertex) < vertices_in(12.0)
@@ -153,13 +146,22 @@ impl Attachment<'_> {
             let t = k as f64 / steps as f64;
             Vertex::new(
                 [p[0] + t * (target[0] - p[0]), p[1] + t * (target[1] - p[1])],
-                n,
-                self.edges,
-            )
+                n, width, self.edges)
         });
         let strand = &mut forest.strands[index];
         strand.vertices.extend(bridge);
         strand.meets = Some(joint);
+    }
+
+    /// Whether every step between two points shows at least `level`.
+    fn inked(&self, from: [f64; 2], to: [f64; 2], level: f64) -> bool {
+        let steps = distance(from, to).ceil().max(1.0) as usize;
+        level > 0.0
+            && (0..=steps).all(|k| {
+                let t = k as f64 / steps as f64;
+                let at = [from[0] + t * (to[0] - from[0]), from[1] + t * (to[1] - from[1])];
+                sample(self.plane, at[0], at[1]).is_some_and(|v| f64::from(v) >= level)
+            })
     }
 
     fn branch(&self, joint: Joint, line: &Line, forest: &mut Forest) -> Option<usize> {
@@ -171,8 +173,8 @@ impl Attachment<'_> {
             return None;
         }
         let (filament, width, contrast) = (parent.filament, parent.width, parent.contrast);
-        let mut vertices = self.drawn(&[at], &line.pixels);
-        vertices.insert(0, Vertex::new(at, vertices.first()?.n, self.edges));
+        let mut vertices = self.drawn(&[at], &line.pixels, width);
+        vertices.insert(0, Vertex::new(at, vertices.first()?.n, width, self.edges));
         forest
             .strands
             .push(strand(filament, Some(joint), vertices, width, contrast));
@@ -188,10 +190,10 @@ impl Attachment<'_> {
             Root::Far => self.foot(&self.edges.far, &pixels),
         };
         let vertices = match root {
-            Root::Inside => self.drawn(&[], &line.pixels),
+            Root::Inside => self.drawn(&[], &line.pixels, FIRST_WIDTH),
             _ => {
-                let mut vertices = self.drawn(&[foot], &line.pixels);
-                vertices.insert(0, Vertex::new(foot, vertices.first()?.n, self.edges));
+                let mut vertices = self.drawn(&[foot], &line.pixels, FIRST_WIDTH);
+                vertices.insert(0, Vertex::new(foot, vertices.first()?.n, FIRST_WIDTH, self.edges));
                 vertices
             }
         };
@@ -235,7 +237,7 @@ impl Attachment<'_> {
     }
 
     /// New vertices along `pixels`, led in by the points of `guide`.
-    fn drawn(&self, guide: &[[f64; 2]], pixels: &[[usize; 2]]) -> Vec<Vertex> {
+    fn drawn(&self, guide: &[[f64; 2]], pixels: &[[usize; 2]], width: f64) -> Vec<Vertex> {
         let mut points: Vec<[f64; 2]> = guide.to_vec();
         points.extend(pixels.iter().map(|&p| point(p)));
         let seam = guide.last().copied();
@@ -258,7 +260,7 @@ impl Attachment<'_> {
             .iter()
             .zip(directions)
             .skip(skip)
-            .map(|(&p, t)| Vertex::new(p, normal(t), self.edges))
+            .map(|(&p, t)| Vertex::new(p, normal(t), width, self.edges))
             .collect()
     }
 }

@@ -12,6 +12,14 @@ use ndarray::Array2;
 use super::centreline::sample;
 use super::recent::Corrected;
 
+/// Half width of the core of the ink that is read, in widths: narrow, so that the end of a round or tapered tip is
+/// where its middle line ends.
+const CORE: f64 = 0.25;
+/// Its least half width, px.
+const LEAST_CORE: f64 = 0.6;
+/// Its greatest, px.
+const MOST_CORE: f64 = 1.25;
+
 /// Contrast at one vertex in one frame and its standard deviation.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Contrast {
@@ -21,7 +29,7 @@ pub struct Contrast {
     pub sd: f64,
 }
 
-/// Contrast of a line of full width `width` at `p` with unit normal `n`: the mean across the ink less
+/// Contrast of a line of full width `width` at `p` with unit normal `n`: the mean across the core of the ink less
 /// the mean of strips on both sides. `None` where the frame does not cover both.
 #[must_use]
 pub fn contrast(
@@ -31,7 +39,7 @@ pub fn contrast(
     n: [f64; 2],
     width: f64,
 ) -> Option<Contrast> {
-    let half = (0.5 * width - 0.25).max(0.5);
+    let half = (CORE * width).clamp(LEAST_CORE, MOST_CORE);
     let inside = strip(&frame.residual, p, n, -half, half)?;
     let (near, far) = (0.5 * width + 2.0, 0.5 * width + 5.5);
     let sides = [

@@ -1,7 +1,7 @@
 //! The final trace: geometry refined from all frames, strands cut into paths at their branchings, numbered.
 
 use super::centreline::{Profile, distance, pooled, smooth};
-use super::forest::{SPACING, Strand, Vertex, vertices_in};
+use super::forest::{Owners, SPACING, Strand, Vertex, vertices_in};
 use super::growth::Tracer;
 use super::{EndsIn, Root, Trace, TracePath, TracePoint, TracedFilament};
 
@@ -13,6 +13,8 @@ const SEARCH: f64 = 2.0;
 const SPUR_WIDTHS: f64 = 1.0;
 /// Least length of a branch, px.
 const LEAST_BRANCH: f64 = 5.0;
+/// Margin about traced ink within which a branch has not left it, px.
+const INK_MARGIN: f64 = 1.0;
 /// Least length of a filament on an edge, px.
 const LEAST_ROOTED: f64 = 3.0;
 /// Least length of one that starts inside, px.
@@ -27,7 +29,7 @@ struct Refined {
 /// Builds the trace from what is decided.
 #[must_use]
 pub(super) fn finish(tracer: &Tracer) -> Trace {
-    let kept = kept_strands(&tracer.forest.strands);
+    let kept = kept_strands(tracer);
     let refined: Vec<Refined> = tracer
         .forest
         .strands
@@ -98,16 +100,19 @@ fn root_strand(tracer: &Tracer, kept: &[bool], filament: usize) -> Option<usize>
     })
 }
 
-/// Strands that stay: decided, not withdrawn, and long enough or carrying others.
-fn kept_strands(strands: &[Strand]) -> Vec<bool> {
+/// Strands that stay: decided, not withdrawn, and, where they branch off, long enough outside the ink of others or
+/// carrying others that are.
+fn kept_strands(tracer: &Tracer) -> Vec<bool> {
+    let strands = &tracer.forest.strands;
+    let outside = lengths_outside(tracer);
     let mut kept = vec![false; strands.len()];
     for (index, strand) in strands.iter().enumerate().rev() {
         if strand.withdrawn || strand.decided < 2 {
             continue;
         }
-        let carries = (index + 1..strands.len())
-            .any(|c| kept[c] && strands[c].parent.is_some_and(|j| j.strand == index));
-        kept[index] = carries || strand.parent.is_none() || !is_spur(strand, strands);
+        let carries = (index + 1..strands.len()).any(|c| kept[c] && strands[c].parent.is_some_and(|j| j.strand == index));
+        let long = outside[index] >= LEAST_BRANCH.max(SPUR_WIDTHS * strand.width);
+        kept[index] = carries || strand.parent.is_none() || long;
     }
     for index in 0..strands.len() {
         if let Some(joint) = strands[index].parent {
@@ -117,10 +122,22 @@ fn kept_strands(strands: &[Strand]) -> Vec<bool> {
     kept
 }
 
-fn is_spur(strand: &Strand, strands: &[Strand]) -> bool {
-    let parent_width = strand.parent.map_or(0.0, |j| strands[j.strand].width);
-    let beyond = strand.decided as f64 * SPACING - 0.5 * parent_width;
-    beyond < LEAST_BRANCH.max(SPUR_WIDTHS * strand.width)
+/// For each strand the length that lies outside the ink of those before it, px.
+fn lengths_outside(tracer: &Tracer) -> Vec<f64> {
+    let mut ink = Owners::new(tracer.noise.dim());
+    let mut out = Vec::new();
+    for (index, strand) in tracer.forest.strands.iter().enumerate() {
+        let decided = &strand.vertices[..strand.decided];
+        let free = decided.iter().filter(|v| {
+            let pixel = [v.p[1].round().max(0.0) as usize, v.p[0].round().max(0.0) as usize];
+            ink.strand.get(pixel).is_none_or(|&s| s == 0)
+        });
+        out.push(free.count() as f64 * SPACING);
+        if !strand.withdrawn {
+            ink.claim(index, strand, 0, INK_MARGIN);
+        }
+    }
+    out
 }
 
 /// Moves the decided vertices of a strand onto the ridge of their profiles.

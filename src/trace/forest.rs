@@ -34,6 +34,8 @@ pub struct Vertex {
     pub profile: Profile,
     /// Smoothed contrast of the latest frames, for retreat and withdrawal.
     pub recent: f32,
+    /// Full width of the ink here, px.
+    pub width: f64,
     /// Depth from the plating edge, px.
     pub depth: f64,
     /// Distance to the far edge, px.
@@ -43,7 +45,7 @@ pub struct Vertex {
 impl Vertex {
     /// A vertex that has not arrived yet.
     #[must_use]
-    pub fn new(p: [f64; 2], n: [f64; 2], edges: &Edges) -> Self {
+    pub fn new(p: [f64; 2], n: [f64; 2], width: f64, edges: &Edges) -> Self {
         Self {
             p,
             n,
@@ -51,6 +53,7 @@ impl Vertex {
             retreat: None,
             profile: Profile::default(),
             recent: f32::NAN,
+            width,
             depth: edges.depth(p),
             remaining: edges.remaining(p),
         }
@@ -140,9 +143,8 @@ impl Owners {
 
     /// Gives a strand the pixels within `margin` px of its ink, from vertex `from` on.
     pub fn claim(&mut self, index: usize, strand: &Strand, from: usize, margin: f64) {
-        let radius = 0.5 * strand.width + margin;
         for (v, vertex) in strand.vertices.iter().enumerate().skip(from) {
-            for pixel in disc(vertex.p, radius, self.strand.dim()) {
+            for pixel in disc(vertex.p, 0.5 * vertex.width + margin, self.strand.dim()) {
                 let mine = index as u32 + 1;
                 let nearer = match self.at(pixel) {
                     None => true,

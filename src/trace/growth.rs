@@ -9,7 +9,7 @@ use ndarray::{Array2, Zip};
 
 use super::attach::Attachment;
 use super::edges::Edges;
-use super::forest::{Forest, Owners, disc};
+use super::forest::{Forest, Owners, Vertex, disc};
 use super::link::{self, Component, Ground, Start};
 use super::recent::{Corrected, Recent};
 use super::ridge::line_evidence;
@@ -34,6 +34,8 @@ const LOW_Z: f32 = 3.2;
 const LEAST_PIXELS: usize = 3;
 /// A skeleton's end branch shorter than this many half widths at its junction is a spur.
 const SPUR_HALF_WIDTHS: f64 = 1.5;
+/// Share of a new branch that must lie outside traced ink.
+const NEW_GROUND: f64 = 0.4;
 /// Evidence tests that are independent of each other, per pixel: orientations and scales over their correlation.
 const TESTS_PER_PIXEL: f64 = 0.5;
 
@@ -160,12 +162,34 @@ impl Tracer {
                 }
                 let attachment = Attachment { plane, edges: &self.edges };
                 for index in attachment.attach(&lines, &mut self.forest) {
-                    attachment.meet(index, &mut self.forest, &self.owners);
+                    if !self.breaks_new_ground(index) {
+                        self.forest.strands[index].truncate();
+                        continue;
+                    }
                     self.owners.claim(index, &self.forest.strands[index], 0, CLAIM_MARGIN);
                 }
             }
             waiting = left;
         }
+        let attachment = Attachment { plane, edges: &self.edges };
+        for index in 0..self.forest.strands.len() {
+            if self.forest.strands[index].live() {
+                attachment.meet(index, &mut self.forest, &self.owners);
+            }
+        }
+    }
+
+    /// Whether a proposal leaves the ink that is traced already: its end does, and enough of its way. Lines found on the
+    /// shoulder of a strong one slide onto its ridge and do not.
+    fn breaks_new_ground(&self, index: usize) -> bool {
+        let strand = &self.forest.strands[index];
+        let bare = |v: &Vertex| {
+            let pixel = [v.p[1].round().max(0.0) as usize, v.p[0].round().max(0.0) as usize];
+            self.owners.strand.get(pixel).is_some_and(|&s| s == 0)
+        };
+        let new = &strand.vertices[strand.decided..];
+        let outside = new.iter().filter(|v| bare(v)).count();
+        new.last().is_some_and(bare) && (strand.decided > 0 || outside as f64 >= NEW_GROUND * new.len() as f64)
     }
 
     fn evidence(&self, median: &Array2<f32>, sd: f32) -> Array2<f32> {

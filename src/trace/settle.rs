@@ -1,6 +1,6 @@
 //! Decides what has arrived, keeps watch over what is decided, and withdraws what later frames deny.
 
-use super::centreline::pooled;
+use super::centreline::{Profile, pooled};
 use super::dating::{Contrast, contrast, positions, strength};
 use super::forest::{SPACING, Strand, vertices_in};
 use super::Root;
@@ -33,6 +33,10 @@ const LEAST_FIRST: f64 = 4.0;
 const SHARED_NOISE: f64 = 1.6;
 /// Length at the tip over which width and contrast are read, px.
 const TIP_READ: f64 = 24.0;
+/// Greatest width that a profile can show, px.
+const WIDEST: f64 = 14.0;
+/// Length over which one width is read, px.
+const WIDTH_BLOCK: f64 = 6.0;
 /// Frames that a profile remembers.
 const PROFILE_MEMORY: f32 = 24.0;
 /// Share of the contrast below which a vertex is no longer seen.
@@ -241,12 +245,12 @@ pub(super) fn observe(tracer: &mut Tracer) {
     };
     let noise = &tracer.noise;
     for strand in &mut tracer.forest.strands {
-        let (decided, width) = (strand.decided, strand.width);
+        let decided = strand.decided;
         for vertex in &mut strand.vertices[..decided] {
             vertex
                 .profile
                 .add(&frame.residual, vertex.p, vertex.n, PROFILE_MEMORY);
-            if let Some(c) = contrast(frame, noise, vertex.p, vertex.n, width) {
+            if let Some(c) = contrast(frame, noise, vertex.p, vertex.n, vertex.width) {
                 let value = c.value as f32;
                 vertex.recent = if vertex.recent.is_nan() {
                     value
@@ -256,6 +260,18 @@ pub(super) fn observe(tracer: &mut Tracer) {
             }
         }
         read_tip(strand);
+        read_widths(strand);
+    }
+}
+
+/// Width of each stretch of decided vertices from its pooled profile; one too short to say takes the strand's.
+fn read_widths(strand: &mut Strand) {
+    let (decided, usual) = (strand.decided, strand.width);
+    for block in strand.vertices[..decided].chunks_mut(vertices_in(WIDTH_BLOCK)) {
+        let mut sum = Profile::default();
+        block.iter().for_each(|v| sum.merge(&v.profile));
+        let width = sum.section(1.5).map_or(usual, |s| s.width.clamp(1.5, WIDEST));
+        block.iter_mut().for_each(|v| v.width = width);
     }
 }
 
@@ -291,7 +307,7 @@ fn read_tip(strand: &mut Strand) {
         .map(|v| v.profile.clone())
         .collect();
     if let Some(section) = pooled(&profiles, profiles.len() / 2, profiles.len()).section(1.5) {
-        strand.width = section.width.clamp(1.5, 14.0);
+        strand.width = section.width.clamp(1.5, WIDEST);
     }
     let mut values: Vec<f32> = strand.vertices[from..strand.decided]
         .iter()
@@ -334,6 +350,7 @@ pub(super) fn withdraw(tracer: &mut Tracer) {
         if now - born.min(now) <= YOUNG {
             strand.vertices.truncate(keep);
             strand.decided = strand.decided.min(keep);
+            strand.provisional.clear();
             strand.meets = None;
             tracer.withdrawn += 1;
             if keep <= 1 {

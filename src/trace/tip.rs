@@ -1,7 +1,7 @@
 //! The shape of a run's tips: how far behind the end of the ink the centre-line ends.
 //!
 //! The centre-line ends at the centre of the last disc of full local width (contract of the depth). With h(x) the
-//! half width of the ink at distance x behind its end, that centre lies at the first x with h(x) ≤ x: half a width for
+//! half width of the ink at distance x behind its end, that centre lies at the x beyond which h(x) ≤ x: half a width for
 //! a round end, less for one that tapers. h is read off the mean of all tips seen so far, laid on each other by the
 //! end of their ink and scaled by the half width of their strand: growing tips of one run are alike.
 
@@ -58,15 +58,16 @@ impl TipShape {
     /// Distance of the centre-line's end behind that of the ink, in half widths of the strand.
     #[must_use]
     pub fn setback(&self) -> f64 {
-        for row in 0..STEPS {
+        let mut setback = (STEPS - 1) as f64 * STEP;
+        for row in (0..STEPS).rev() {
             let x = row as f64 * STEP;
             match self.half_width(row) {
-                Some(h) if h <= x => return x.min(ROUND),
-                Some(_) => {}
                 None => return ROUND,
+                Some(h) if h > x => break,
+                Some(_) => setback = x,
             }
         }
-        ROUND
+        setback.min(ROUND)
     }
 
     /// Half width of the ink in half widths of the strand, `None` where too little was seen.
