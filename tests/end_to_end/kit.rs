@@ -41,7 +41,9 @@ pub(crate) fn run() -> TempDir {
     fs::create_dir(folder.path().join("frames")).unwrap();
     for frame in 0..FRAMES {
         let picture = image::GrayImage::from_fn(64, 40, |x, y| {
-            let texture = u8::try_from((x * 37 + y * 91 + x * y + frame) % 5).unwrap();
+            let grain = (x / 2 * 193 + y / 2 * 71 + (x / 2) * (y / 2) * 37) % 23;
+            let noise = (x * 37 + y * 91 + x * y + frame) % 5;
+            let texture = u8::try_from(grain + noise).unwrap();
             let line = (18..21).contains(&y) && (8..8 + 5 * frame.saturating_sub(1)).contains(&x);
             let level = if !(8..=55).contains(&x) {
                 60
