@@ -12,7 +12,10 @@ fn set_aside(bytes: &[u8], reason: &str) {
     fs::write(folder.path().join("frames/f4.png"), bytes).unwrap();
     report(folder.path(), &["--quiet"]).with(0, &["the first is frame 4", reason]);
     let frames = Sheet::read(&folder.path().join("veerlog"), "frames");
-    assert_eq!(frames.text("usable").iter().filter(|word| word.as_deref() == Some("true")).count(), FRAMES as usize - 1);
+    assert_eq!(
+        frames.text("usable").iter().filter(|word| word.as_deref() == Some("true")).count(),
+        FRAMES as usize - 1
+    );
 }
 
 /// The bytes of a picture in a format.
@@ -33,7 +36,8 @@ fn frames_that_are_cut_mislabelled_or_not_numbers() {
     let middle = flipped.len() / 2;
     flipped[middle] ^= 0x55;
     set_aside(&flipped, "cannot be decoded");
-    let floats = image::Rgb32FImage::from_fn(64, 40, |x, y| image::Rgb([if x == y { f32::NAN } else { (x * y) as f32 }; 3]));
+    let floats =
+        image::Rgb32FImage::from_fn(64, 40, |x, y| image::Rgb([if x == y { f32::NAN } else { (x * y) as f32 }; 3]));
     set_aside(&encoded(&floats.into(), image::ImageFormat::Tiff), "not finite");
     set_aside(b"P5\n4294967295 4294967295\n255\n", "set aside");
     set_aside(b"P2 64 40 255 -1 nan", "set aside");
@@ -48,6 +52,33 @@ fn a_picture_under_another_name_is_read_for_what_it_is() {
         fs::write(&path, encoded(&picture, format)).unwrap();
         report(folder.path(), &["--quiet", "--strict"]).with(0, &[]);
     }
+}
+
+/// The small run with other frames, drawn by `level` from frame, x and y.
+fn with_frames(width: u32, height: u32, level: fn(u32, u32, u32) -> u8) -> tempfile::TempDir {
+    let folder = run();
+    for frame in 0..FRAMES {
+        let picture = image::GrayImage::from_fn(width, height, |x, y| image::Luma([level(frame, x, y)]));
+        picture.save(folder.path().join(format!("frames/f{frame}.png"))).unwrap();
+    }
+    folder
+}
+
+#[test]
+fn frames_too_small_to_hold_a_line() {
+    let speckle: fn(u32, u32, u32) -> u8 = |frame, x, y| (100 + (x * 7 + y * 13 + frame) % 40) as u8;
+    for (width, height) in [(2, 2), (400, 1), (2, 400), (15, 400)] {
+        let folder = with_frames(width, height, speckle);
+        write(folder.path(), "run.toml", MANIFEST.replace("[[8, 0], [8, 39]]", "[[0, 0], [0, 39]]"));
+        refused(folder.path(), &["line 3", "too small to trace a line in"]);
+    }
+}
+
+#[test]
+fn frames_of_which_none_shows_anything() {
+    let folder = with_frames(64, 40, |frame, x, _| if x > 8 + frame { 255 } else { 0 });
+    refused(folder.path(), &["line 3", "none of the 8 frames can be used", "saturated"]);
+    assert!(!folder.path().join("veerlog").exists());
 }
 
 /// Stress at frame 0 of a run with this log: 1.5 N must come out as 108 MPa (6FL/(bh²)).
@@ -71,7 +102,15 @@ fn logs_in_other_dialects() {
 
 #[test]
 fn logs_with_rubbish_are_refused_or_pointed_at() {
-    for text in ["", "\0\0\0\0", "time_s,force_n\n0,\0\n", "time_s,force_n\n0,1e999\n", "time_s,force_n\nnan,1\n", "\u{feff}", ",,,\n,,,\n"] {
+    for text in [
+        "",
+        "\0\0\0\0",
+        "time_s,force_n\n0,\0\n",
+        "time_s,force_n\n0,1e999\n",
+        "time_s,force_n\nnan,1\n",
+        "\u{feff}",
+        ",,,\n,,,\n",
+    ] {
         let folder = with_log(text);
         let said = report(folder.path(), &["--quiet", "--strict"]);
         assert!(said.code == 1 || said.code == 2, "{text:?}: {} {}", said.code, said.err);
@@ -131,7 +170,14 @@ fn links_that_lead_out_or_round() {
 
 #[test]
 fn edges_that_make_no_sense() {
-    for edge in ["[[8, 0]]", "[[8, 0], [8, 0]]", "[]", "[[8, 0], [nan, 39]]", "[[8, 0], [inf, 39]]", "[[1e308, 0], [-1e308, 0]]"] {
+    for edge in [
+        "[[8, 0]]",
+        "[[8, 0], [8, 0]]",
+        "[]",
+        "[[8, 0], [nan, 39]]",
+        "[[8, 0], [inf, 39]]",
+        "[[1e308, 0], [-1e308, 0]]",
+    ] {
         let folder = with_manifest("plating_edge = [[8, 0], [8, 39]]", &format!("plating_edge = {edge}"));
         let said = report(folder.path(), &["--quiet"]);
         assert!(said.code == 2 && said.err.contains("plating_edge"), "{edge}: {} {}", said.code, said.err);

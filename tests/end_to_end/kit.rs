@@ -54,13 +54,9 @@ pub(crate) fn run() -> TempDir {
             };
             image::Luma([level + texture])
         });
-        picture
-            .save(folder.path().join(format!("frames/f{frame}.png")))
-            .unwrap();
+        picture.save(folder.path().join(format!("frames/f{frame}.png"))).unwrap();
     }
-    let rows: String = (0..FRAMES)
-        .map(|row| format!("{},1.5\n", 10 * row))
-        .collect();
+    let rows: String = (0..FRAMES).map(|row| format!("{},1.5\n", 10 * row)).collect();
     write(folder.path(), "load.csv", format!("time_s,force_n\n{rows}"));
     write(folder.path(), "run.toml", MANIFEST);
     folder

@@ -72,7 +72,9 @@ fn masks_grow_and_hold_the_line() {
     let last = &masks[FRAMES as usize - 1];
     assert!((14..34).all(|x| last.contains(&(x, 19))), "the line is 3 px wide about y = 19, x to 37: {last:?}");
     // Next to the electrode its shade leaves the root uncertain.
-    let on_line = |&(x, y): &(u32, u32)| (4..=41).contains(&x) && if x > 13 { (16..=22).contains(&y) } else { (10..=28).contains(&y) };
+    let on_line = |&(x, y): &(u32, u32)| {
+        (4..=41).contains(&x) && if x > 13 { (16..=22).contains(&y) } else { (10..=28).contains(&y) }
+    };
     assert!(last.iter().all(on_line), "{last:?}");
 }
 
@@ -82,7 +84,10 @@ fn promised_columns_stand_first_and_in_order() {
         for (table, promised) in TABLES {
             let promised: Vec<&str> = promised.split_whitespace().collect();
             let headings = Sheet::read(&output, table).headings();
-            assert!(headings.len() >= promised.len() && headings[..promised.len()] == promised, "{table}: {headings:?}");
+            assert!(
+                headings.len() >= promised.len() && headings[..promised.len()] == promised,
+                "{table}: {headings:?}"
+            );
         }
     }
 }
@@ -99,7 +104,11 @@ fn a_table_is_the_same_in_both_formats() {
             assert_eq!(names, csv.headings(), "{table}");
             let absent = |name: &String| parquet.column(name).unwrap().null_count();
             for name in &names {
-                assert_eq!(absent(name), csv.text(name).iter().filter(|field| field.is_none()).count(), "{table}: {name}");
+                assert_eq!(
+                    absent(name),
+                    csv.text(name).iter().filter(|field| field.is_none()).count(),
+                    "{table}: {name}"
+                );
             }
         }
     }
@@ -164,11 +173,17 @@ fn paths_add_up(output: &Path, frames: &Sheet) {
             sum.1 += if end.as_deref() == Some("tip") { 1.0 } else { 0.0 };
         }
     }
-    for ((frame, length), tips) in frames.text("frame").iter().zip(frames.numbers("length_um")).zip(frames.numbers("tips")) {
+    for ((frame, length), tips) in
+        frames.text("frame").iter().zip(frames.numbers("length_um")).zip(frames.numbers("tips"))
+    {
         let Some(length) = length else { continue };
         let (sum, ends) = sums.get(frame.as_ref().unwrap()).copied().unwrap_or_default();
         assert!((sum - length).abs() < 0.05 + 0.01 * length, "frame {frame:?}: paths {sum} µm, frame {length} µm");
-        assert!((ends - tips.unwrap()).abs() < 0.5, "frame {frame:?} of {}: {ends} free ends, tips {tips:?}", output.display());
+        assert!(
+            (ends - tips.unwrap()).abs() < 0.5,
+            "frame {frame:?} of {}: {ends} free ends, tips {tips:?}",
+            output.display()
+        );
     }
     for table in ["paths", "growth"] {
         let sheet = Sheet::read(output, table);
@@ -206,7 +221,11 @@ fn traces_are_lines_of_json_from_root_to_tip() {
                 assert!(point[3].as_f64().unwrap() > 0.0, "a width of nothing: {line}");
             }
             let times: Vec<f64> = points.iter().map(|point| point[2].as_f64().unwrap()).collect();
-            assert!(times.windows(2).all(|two| two[0] <= two[1]), "{}: arrivals fall from root to tip: {times:?}", output.display());
+            assert!(
+                times.windows(2).all(|two| two[0] <= two[1]),
+                "{}: arrivals fall from root to tip: {times:?}",
+                output.display()
+            );
         }
     }
 }
@@ -249,7 +268,17 @@ fn the_page_loads_nothing_and_carries_the_caution() {
     for output in outputs() {
         let page = fs::read_to_string(output.join("report.html")).unwrap();
         let lower = page.to_lowercase();
-        for loading in ["src=\"http", "src='http", "src=\"//", "href=\"http", "href='http", "href=\"//", "@import", "url(http", "url(\"http"] {
+        for loading in [
+            "src=\"http",
+            "src='http",
+            "src=\"//",
+            "href=\"http",
+            "href='http",
+            "href=\"//",
+            "@import",
+            "url(http",
+            "url(\"http",
+        ] {
             assert!(!lower.contains(loading), "{loading} in {}", output.display());
         }
         for loading in ["fetch(", "xmlhttprequest", "<iframe", "<link", "websocket", "import("] {
@@ -264,7 +293,8 @@ fn names_cannot_become_markup() {
     let folder = run();
     let manifest = fs::read_to_string(folder.path().join("run.toml")).unwrap();
     let name = "<script>alert(1)</script><img src=x onerror=alert(2)>\\\"'&</title>";
-    let hostile = manifest.replace("run = \"invented\"", &format!("run = \"{name}\"\nspecimen = \"{name}\"\nnote = \"{name}\""));
+    let hostile =
+        manifest.replace("run = \"invented\"", &format!("run = \"{name}\"\nspecimen = \"{name}\"\nnote = \"{name}\""));
     write(folder.path(), "run.toml", hostile);
     report(folder.path(), &[]).with(0, &[]);
     let page = fs::read_to_string(folder.path().join("veerlog/report.html")).unwrap();
@@ -303,7 +333,9 @@ fn the_demo_campaign_itself_is_not_written_to() {
     let _ = outputs();
     for name in DEMO {
         assert!(files(&campaign().join(name)).iter().all(|(path, bytes)| {
-            path.starts_with("veerlog") || path.starts_with(".veerlog-cache") || fs::read(demo(name).join(path)).unwrap() == *bytes
+            path.starts_with("veerlog")
+                || path.starts_with(".veerlog-cache")
+                || fs::read(demo(name).join(path)).unwrap() == *bytes
         }));
     }
 }

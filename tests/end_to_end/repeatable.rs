@@ -9,7 +9,9 @@ use super::kit::{DEMO, campaign, demo, files, hard, report};
 /// All an output holds that a script reads: tables, traces, summary.
 fn read_by_scripts(output: &Path) -> BTreeMap<PathBuf, Vec<u8>> {
     let mut all = files(output);
-    all.retain(|name, _| name.starts_with("tables") || name.starts_with("traces.ndjson") || name.starts_with("summary.json"));
+    all.retain(|name, _| {
+        name.starts_with("tables") || name.starts_with("traces.ndjson") || name.starts_with("summary.json")
+    });
     assert_eq!(all.len(), 12, "{:?}", all.keys());
     all
 }
@@ -84,7 +86,8 @@ fn a_run_that_does_not_short_forecast_no_later_than_it_knew() {
 #[test]
 fn a_hard_run_forecast_no_later_than_it_knew() {
     let output = hard().join("veerlog");
-    let issued: Vec<f64> = super::kit::Sheet::read(&output, "forecasts").numbers("issued_at_s").into_iter().flatten().collect();
+    let issued: Vec<f64> =
+        super::kit::Sheet::read(&output, "forecasts").numbers("issued_at_s").into_iter().flatten().collect();
     assert!(issued.len() >= 4, "the hard run has issued only {issued:?}");
     forecasts_do_not_look_ahead(hard(), issued[issued.len() / 3]);
     forecasts_do_not_look_ahead(hard(), issued[2 * issued.len() / 3] + 0.5);

@@ -194,7 +194,8 @@ fn a_folder_that_holds_files_of_others() {
     report(folder.path(), &["--out", marked.to_str().unwrap()]).with(2, &["mine.txt"]);
     // The run folder itself and the frames are no place for an output.
     for place in ["", "frames"] {
-        report(folder.path(), &["--out", folder.path().join(place).to_str().unwrap()]).with(2, &["nothing was changed"]);
+        report(folder.path(), &["--out", folder.path().join(place).to_str().unwrap()])
+            .with(2, &["nothing was changed"]);
     }
     assert!(folder.path().join("frames/f7.png").exists() && folder.path().join("veerlog/thesis.txt").exists());
 }
