@@ -94,6 +94,7 @@ pub(super) fn follow(input: &Input, progress: &dyn Progress) -> Result<Filmed, E
             progress.frame();
         }
     }
+    follower.refuse_blindness()?;
     Ok(follower.finish())
 }
 
@@ -217,6 +218,17 @@ impl<'a> Follower<'a> {
         self.tracer.push(Corrected { frame: i, residual: seen.residual, noise_factor: seen.noise_factor });
         self.forecasts.issue(i, self.input.sequence.entries[i].time_s, &self.tracer);
         fate
+    }
+
+    /// Fails where every frame was set aside: there is nothing to report of such a run.
+    fn refuse_blindness(&self) -> Result<(), Error> {
+        let (Some(first), true) = (self.fates.first(), self.fates.iter().all(|fate| !fate.reason.is_empty())) else {
+            return Ok(());
+        };
+        let (count, file, reason) = (self.fates.len(), &self.input.sequence.entries[0].file, &first.reason);
+        let what = format!("none of the {count} frames can be used; the first, {file}, is set aside: {reason}");
+        let help = "open one of them in an image viewer: correct `files`, or record the run again with other light or focus";
+        Err(self.input.manifest.fault("frames", "files", what, help).into())
     }
 
     /// Keeps what the eye wants to see of a corrected frame.

@@ -35,6 +35,7 @@ impl Input {
     pub fn open(run: &Path, choices: Choices) -> Result<Self, Error> {
         let manifest = Manifest::load(run)?;
         let mut sequence = FrameSequence::open(run, &manifest)?;
+        large_enough(&manifest, &sequence)?;
         let mut load_log = LoadLog::open(&manifest, &sequence.clock)?;
         let mut cell = CellLog::open(&manifest, &sequence.clock)?;
         if let Some(until) = choices.until_s {
@@ -46,7 +47,7 @@ impl Input {
                 cut(series, until);
             }
         }
-        let edges = super::edges_of(&manifest)?;
+        let edges = super::edges::edges_of(&manifest)?;
         let load = Load::new(&manifest, load_log)?;
         Ok(Self { manifest, sequence, load, cell, edges, until_s: choices.until_s })
     }
@@ -133,6 +134,22 @@ impl Input {
         times.dedup_by(|a, b| (*a - *b).abs() < 1e-9);
         times
     }
+}
+
+/// Least side of a frame, px: in a smaller one nothing is left beside a line of a few px to tell it from (common practice).
+const LEAST_SIDE_PX: u32 = 16;
+
+/// Refuses frames in which no line can be told from its surroundings.
+fn large_enough(manifest: &Manifest, sequence: &FrameSequence) -> Result<(), Error> {
+    let (width, height) = (sequence.width, sequence.height);
+    if width.min(height) >= LEAST_SIDE_PX {
+        return Ok(());
+    }
+    let what = format!(
+        "the frames are {width} × {height} px, too small to trace a line in (at least {LEAST_SIDE_PX} px a side)"
+    );
+    let help = "name the frames as the camera wrote them, not thumbnails or crops";
+    Err(manifest.fault("frames", "files", what, help).into())
 }
 
 /// Takes away the samples after `until`.

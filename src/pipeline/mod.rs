@@ -1,5 +1,6 @@
 //! The stages in order: read, correct, trace, measure, forecast, sum up. [`analyse`] reads as the table of contents.
 
+mod edges;
 mod film;
 mod forecasts;
 mod input;
@@ -13,7 +14,6 @@ use std::path::Path;
 use crate::Error;
 use crate::measure::{Scale, measure};
 use crate::results::Results;
-use crate::trace::edges::Edges;
 
 pub use input::Input;
 
@@ -77,19 +77,4 @@ pub fn analyse(run: &Path, choices: Choices, progress: &dyn Progress) -> Result<
         summary,
         cautions: notes.cautions,
     })
-}
-
-/// The two edges of a manifest, in pixels.
-fn edges_of(manifest: &crate::run::Manifest) -> Result<Edges, Error> {
-    use crate::trace::edges::Polyline;
-    let line = |key: &str, points: &Vec<[f64; 2]>| {
-        Polyline::new(points.clone()).ok_or_else(|| {
-            let what = format!("{key} is a single point");
-            manifest.fault("cell", key, what, "type at least two different points, [[x, y], [x, y]], in pixels")
-        })
-    };
-    Ok(Edges::new(
-        line("plating_edge", &manifest.cell.plating_edge)?,
-        line("far_edge", &manifest.cell.far_edge)?,
-    ))
 }

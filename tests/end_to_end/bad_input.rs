@@ -1,72 +1,10 @@
 //! Input that is wrong: each fault ends in the right exit code and in a message that says what happened, where, and
-//! what to type. The run is invented: two dark bands, a line that grows between them.
-
-#![expect(clippy::unwrap_used, reason = "a test that cannot go on must fail")]
+//! what to type. The run is the small one of `kit`.
 
 use std::fs;
 use std::path::Path;
 
-use assert_cmd::Command;
-use tempfile::TempDir;
-
-const MANIFEST: &str = r#"run = "invented"
-[frames]
-files = "frames/*.png"
-interval_s = 10.0
-um_per_px = 1.25
-filament = "darker"
-bare = 2
-[cell]
-plating_edge = [[8, 0], [8, 39]]
-far_edge = [[55, 0], [55, 39]]
-[load]
-log = "load.csv"
-direction_deg = 90.0
-fixture = "cantilever"
-width_mm = 4.0
-thickness_mm = 0.5
-arm_mm = 12.0
-side = "compressed"
-"#;
-
-const FRAMES: u32 = 8;
-
-/// A good run of eight frames, 10 s apart.
-fn run() -> TempDir {
-    let folder = tempfile::tempdir().unwrap();
-    fs::create_dir(folder.path().join("frames")).unwrap();
-    for frame in 0..FRAMES {
-        let picture = image::GrayImage::from_fn(64, 40, |x, y| {
-            let texture = u8::try_from((x * 37 + y * 91 + x * y + frame) % 5).unwrap();
-            let line = (18..21).contains(&y) && (8..8 + 5 * frame.saturating_sub(1)).contains(&x);
-            let level = if !(8..=55).contains(&x) {
-                60
-            } else if line {
-                80
-            } else {
-                150
-            };
-            image::Luma([level + texture])
-        });
-        picture
-            .save(folder.path().join(format!("frames/f{frame}.png")))
-            .unwrap();
-    }
-    let rows: String = (0..FRAMES)
-        .map(|row| format!("{},1.5\n", 10 * row))
-        .collect();
-    write(folder.path(), "load.csv", format!("time_s,force_n\n{rows}"));
-    write(folder.path(), "run.toml", MANIFEST);
-    folder
-}
-
-fn write(folder: &Path, name: &str, text: impl AsRef<[u8]>) {
-    fs::write(folder.join(name), text).unwrap();
-}
-
-fn veerlog() -> Command {
-    Command::new(env!("CARGO_BIN_EXE_veerlog"))
-}
+use super::kit::{FRAMES, MANIFEST, run, veerlog, with_log, with_manifest, write};
 
 /// Exit code, standard output and standard error of `check`.
 fn check(folder: &Path, more: &[&str]) -> (i32, String, String) {
@@ -107,19 +45,6 @@ fn looked_at(folder: &Path, said: &[&str]) {
         );
     }
     assert_eq!(check(folder, &["--strict"]).0, 1);
-}
-
-fn with_manifest(from: &str, to: &str) -> TempDir {
-    let folder = run();
-    assert!(MANIFEST.contains(from));
-    write(folder.path(), "run.toml", MANIFEST.replace(from, to));
-    folder
-}
-
-fn with_log(text: &str) -> TempDir {
-    let folder = run();
-    write(folder.path(), "load.csv", text);
-    folder
 }
 
 #[test]

@@ -1,4 +1,12 @@
 //! The program as its user runs it: exit codes, messages, files, table cells.
 
+#![expect(clippy::unwrap_used, reason = "a test that cannot go on must fail")]
+
 mod bad_input;
+mod campaign;
+mod hostile;
+mod kit;
+mod output;
+mod repeatable;
+mod report_input;
 mod synth;

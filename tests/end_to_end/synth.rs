@@ -1,8 +1,6 @@
 //! Synthetic runs: the same bytes every time, nothing overwritten, a truth that scores itself perfectly, and a demo campaign that
 //! shows the facts of the trade.
 
-#![expect(clippy::unwrap_used, reason = "a test fails by panicking")]
-
 use std::collections::BTreeMap;
 use std::fs;
 use std::path::{Path, PathBuf};
