@@ -5,8 +5,8 @@
 
 use std::fs;
 use std::path::Path;
+use std::process::Command;
 
-use assert_cmd::Command;
 use tempfile::TempDir;
 
 const MANIFEST: &str = r#"run = "invented"
