@@ -25,18 +25,11 @@ pub struct ScoreArgs {
 /// # Errors
 /// A run without truth or output, or with files that are not as the contract has them.
 pub fn run(args: &ScoreArgs) -> Result<String, SynthError> {
-    let scores = args
-        .runs
-        .iter()
-        .map(|run| score_run(run, Some(&run.join(&args.output))))
-        .collect::<Result<_, _>>()?;
+    let scores = args.runs.iter().map(|run| score_run(run, Some(&run.join(&args.output)))).collect::<Result<_, _>>()?;
     let summary = Summary::of(scores);
     if args.json {
         let text = serde_json::to_string_pretty(&summary);
-        return text.map_err(|e| SynthError::Format {
-            what: "the figures",
-            message: e.to_string(),
-        });
+        return text.map_err(|e| SynthError::Format { what: "the figures", message: e.to_string() });
     }
     Ok(summary.to_string())
 }

@@ -62,36 +62,19 @@ pub fn run(args: &SynthArgs) -> Result<String, SynthError> {
         write_run(&Scenario::load(path)?, &args.dir)?;
     } else if let Some(count) = args.fleet {
         for i in 0..count {
-            drawn(
-                args,
-                args.seed + i,
-                &args.dir.join(format!("run-{:03}", i + 1)),
-            )?;
+            drawn(args, args.seed + i, &args.dir.join(format!("run-{:03}", i + 1)))?;
         }
-        return Ok(format!(
-            "{count} runs in {}; the truth of each is in its truth/",
-            args.dir.display()
-        ));
+        return Ok(format!("{count} runs in {}; the truth of each is in its truth/", args.dir.display()));
     } else {
         drawn(args, args.seed, &args.dir)?;
     }
-    Ok(format!(
-        "{}: a run with its truth in truth/",
-        args.dir.display()
-    ))
+    Ok(format!("{}: a run with its truth in truth/", args.dir.display()))
 }
 
 /// Draws and writes one run.
 fn drawn(args: &SynthArgs, seed: u64, folder: &Path) -> Result<(), SynthError> {
     let grade = args.grade.unwrap_or(GradeArg::Clear).into();
-    let scenario = if args.no_growth {
-        draw_bare(grade, seed)
-    } else {
-        draw(grade, seed)
-    };
-    let settled = scenario.settle().map_err(|message| SynthError::Scenario {
-        path: folder.to_owned(),
-        message,
-    })?;
+    let scenario = if args.no_growth { draw_bare(grade, seed) } else { draw(grade, seed) };
+    let settled = scenario.settle().map_err(|message| SynthError::Scenario { path: folder.to_owned(), message })?;
     write_run(&settled, folder)
 }
