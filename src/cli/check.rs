@@ -13,8 +13,16 @@ use crate::load::{AxisRule, Fixture, Load};
 use crate::run::manifest::{Ended, Filament};
 use crate::run::{CellLog, Decoded, FrameFault, FrameSequence, LoadLog, LogFacts, Manifest, Series, repeats};
 
+/// Shown below the help.
+const EXAMPLES: &str = "\
+Examples:
+  veerlog check RUN
+  veerlog check RUN --picture edges.png   # see the two edges on the first usable frame
+  veerlog check RUN --strict              # exit code 1 when something needs a look";
+
 /// Say what is understood of a run and what is missing, without analysing it
 #[derive(Debug, Args)]
+#[command(after_help = EXAMPLES)]
 pub(super) struct CheckArgs {
     /// Run folder
     run: PathBuf,

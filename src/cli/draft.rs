@@ -10,8 +10,14 @@ use super::Outcome;
 use crate::Error;
 use crate::run::{draft, manifest};
 
+/// Shown below the help.
+const EXAMPLES: &str = "\
+Examples:
+  veerlog draft FOLDER   # then open FOLDER/run.toml and settle what is marked";
+
 /// Write a commented run.toml from what a folder holds
 #[derive(Debug, Args)]
+#[command(after_help = EXAMPLES)]
 pub(super) struct DraftArgs {
     /// Folder with the frames and logs of one run
     folder: PathBuf,

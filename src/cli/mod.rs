@@ -35,6 +35,7 @@ pub struct Cli {
 
 /// Flags of every command.
 #[derive(Debug, Clone, Copy, Args)]
+#[command(next_help_heading = "With every command")]
 pub struct Globals {
     /// Say only what needs a look
     #[arg(long, global = true)]
@@ -49,8 +50,8 @@ pub struct Globals {
 
 #[derive(Debug, Subcommand)]
 enum Command {
-    Check(check::CheckArgs),
     Draft(draft::DraftArgs),
+    Check(check::CheckArgs),
     Report(report::ReportArgs),
     Synth(synth::SynthArgs),
     Score(score::ScoreArgs),
