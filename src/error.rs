@@ -10,9 +10,7 @@ pub enum Error {
     #[error("{path}: {source}")]
     #[diagnostic(
         code(io),
-        help(
-            "see that the place exists, that you may read and write there, and that the disk is not full"
-        )
+        help("see that the place exists, that you may read and write there, and that the disk is not full")
     )]
     Io {
         /// The file or folder.
@@ -35,14 +33,8 @@ pub enum Error {
         folder: PathBuf,
     },
     /// The manifest is too large to be one.
-    #[error(
-        "{path}: {bytes} bytes are too many for a run.toml (at most {})",
-        crate::run::manifest::MAX_BYTES
-    )]
-    #[diagnostic(
-        code(run::huge_manifest),
-        help("see that run.toml is not another file by mistake")
-    )]
+    #[error("{path}: {bytes} bytes are too many for a run.toml (at most {})", crate::run::manifest::MAX_BYTES)]
+    #[diagnostic(code(run::huge_manifest), help("see that run.toml is not another file by mistake"))]
     HugeManifest {
         /// The file.
         path: PathBuf,

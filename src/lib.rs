@@ -11,9 +11,22 @@
 //!           └ measure   traces + load → one row type per table
 //!              └ stats     axial statistics, intervals, regression (pure functions on slices)
 //!                 └ forecast  first passage of the gap, its own record, short detection
-//!                    └ compare   runs → groups → effect of the load
-//!                       └ report    tables, figures, overlay, page
+//!                    └ results   the one struct that every output receives
+//!                       └ report    tables, figures, page
+//! pipeline     calls the stages in order
 //! synth        frames with known truth, and a run scored against it
+//! cli          the commands
+//! ```
+//!
+//! ```
+//! use std::path::Path;
+//! use veerlog::pipeline::{Choices, Quiet, analyse};
+//!
+//! let first_minutes = Choices { until_s: Some(300.0) };
+//! let results = analyse(Path::new("synthetic-frames/still-1"), first_minutes, &Quiet)?;
+//! assert!(results.filaments.iter().all(|filament| filament.first_time_s <= 300.0));
+//! assert!(results.frames.iter().all(|frame| frame.time_s <= 300.0));
+//! # Ok::<(), veerlog::Error>(())
 //! ```
 //!
 //! Safety: a forecast is no interlock. A cell on test can vent, burn or shatter, and lithium reacts

@@ -10,8 +10,14 @@ use super::Outcome;
 use crate::Error;
 use crate::run::{draft, manifest};
 
+/// Shown below the help.
+const EXAMPLES: &str = "\
+Examples:
+  veerlog draft FOLDER   # then open FOLDER/run.toml and settle what is marked";
+
 /// Write a commented run.toml from what a folder holds
 #[derive(Debug, Args)]
+#[command(after_help = EXAMPLES)]
 pub(super) struct DraftArgs {
     /// Folder with the frames and logs of one run
     folder: PathBuf,
@@ -25,27 +31,13 @@ pub(super) struct DraftArgs {
 pub(super) fn run(args: &DraftArgs) -> Result<Outcome, Error> {
     let path = args.folder.join(manifest::FILE_NAME);
     if path.exists() {
-        return Err(Error::DraftExists {
-            path,
-            folder: args.folder.clone(),
-        });
+        return Err(Error::DraftExists { path, folder: args.folder.clone() });
     }
     let draft = draft::propose(&args.folder)?;
-    let io = |source| Error::Io {
-        path: path.clone(),
-        source,
-    };
-    let mut file = OpenOptions::new()
-        .write(true)
-        .create_new(true)
-        .open(&path)
-        .map_err(io)?;
+    let io = |source| Error::Io { path: path.clone(), source };
+    let mut file = OpenOptions::new().write(true).create_new(true).open(&path).map_err(io)?;
     file.write_all(draft.text.as_bytes()).map_err(io)?;
-    let found = draft
-        .found
-        .iter()
-        .map(|line| format!("  {line}\n"))
-        .collect::<String>();
+    let found = draft.found.iter().map(|line| format!("  {line}\n")).collect::<String>();
     let text = format!(
         "{} written from:\n{found}\nNext: open it, settle each of the {} lines marked `{}`, then type `veerlog check {}`",
         path.display(),
@@ -53,8 +45,5 @@ pub(super) fn run(args: &DraftArgs) -> Result<Outcome, Error> {
         draft::MARK,
         args.folder.display()
     );
-    Ok(Outcome {
-        text,
-        warnings: Vec::new(),
-    })
+    Ok(Outcome { text, warnings: Vec::new() })
 }

@@ -35,6 +35,7 @@ pub struct Cli {
 
 /// Flags of every command.
 #[derive(Debug, Clone, Copy, Args)]
+#[command(next_help_heading = "With every command")]
 pub struct Globals {
     /// Say only what needs a look
     #[arg(long, global = true)]
@@ -49,8 +50,8 @@ pub struct Globals {
 
 #[derive(Debug, Subcommand)]
 enum Command {
-    Check(check::CheckArgs),
     Draft(draft::DraftArgs),
+    Check(check::CheckArgs),
     Report(report::ReportArgs),
     Synth(synth::SynthArgs),
     Score(score::ScoreArgs),
@@ -71,11 +72,7 @@ pub fn main() -> ExitCode {
     let cli = match Cli::try_parse() {
         Ok(cli) => cli,
         Err(error) => {
-            let code = if error.use_stderr() {
-                EXIT_INPUT
-            } else {
-                EXIT_DONE
-            };
+            let code = if error.use_stderr() { EXIT_INPUT } else { EXIT_DONE };
             // Nothing is left to do where even this cannot be printed.
             let _ = error.print();
             return ExitCode::from(code);
@@ -86,10 +83,7 @@ pub fn main() -> ExitCode {
         Ok(outcome) => tell(&outcome, cli.globals),
         Err(error) => {
             let code = error.exit_code();
-            say(
-                &mut std::io::stderr(),
-                &format!("{:?}", miette::Report::new(error)),
-            );
+            say(&mut std::io::stderr(), &format!("{:?}", miette::Report::new(error)));
             code
         }
     })
@@ -98,9 +92,7 @@ pub fn main() -> ExitCode {
 fn run(cli: &Cli) -> Result<Outcome, Error> {
     if let Some(threads) = cli.globals.threads {
         let pool = rayon::ThreadPoolBuilder::new().num_threads(threads.into());
-        pool.build_global().map_err(|error| Error::Threads {
-            what: error.to_string(),
-        })?;
+        pool.build_global().map_err(|error| Error::Threads { what: error.to_string() })?;
     }
     match &cli.command {
         Command::Check(args) => check::run(args),
@@ -118,11 +110,7 @@ fn tell(outcome: &Outcome, globals: Globals) -> u8 {
     for warning in &outcome.warnings {
         say(&mut std::io::stderr(), &format!("look at: {warning}"));
     }
-    if globals.strict && !outcome.warnings.is_empty() {
-        EXIT_LOOK
-    } else {
-        EXIT_DONE
-    }
+    if globals.strict && !outcome.warnings.is_empty() { EXIT_LOOK } else { EXIT_DONE }
 }
 
 /// Prints a line; a reader that has gone away is no failure of the command.
@@ -137,13 +125,7 @@ fn plain_messages_off_terminal() {
     }
     // It fails only where a handler is set already: then that one stays.
     let _ = miette::set_hook(Box::new(|_| {
-        Box::new(
-            miette::MietteHandlerOpts::new()
-                .color(false)
-                .unicode(true)
-                .wrap_lines(false)
-                .build(),
-        )
+        Box::new(miette::MietteHandlerOpts::new().color(false).unicode(true).wrap_lines(false).build())
     }));
 }
 

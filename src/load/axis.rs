@@ -29,13 +29,8 @@ impl AxisRule {
     pub fn new(manifest: &Manifest) -> Self {
         match manifest.load.fixture {
             FixtureName::Normal | FixtureName::RingOnRing | FixtureName::Film => Self::None,
-            FixtureName::Stack => Self::Through {
-                plating_edge: manifest.cell.plating_edge.clone(),
-            },
-            _ => Self::Logged {
-                zero_deg: manifest.load.zero_deg,
-                sense: manifest.load.sense,
-            },
+            FixtureName::Stack => Self::Through { plating_edge: manifest.cell.plating_edge.clone() },
+            _ => Self::Logged { zero_deg: manifest.load.zero_deg, sense: manifest.load.sense },
         }
     }
 
@@ -45,13 +40,9 @@ impl AxisRule {
     pub fn axis_deg(&self, rig_deg: Option<f64>, px: Option<[f64; 2]>) -> Option<f64> {
         match self {
             Self::None => None,
-            Self::Logged { zero_deg, sense } => {
-                rig_deg.map(|rig| image_direction_deg(rig, *zero_deg, *sense))
-            }
+            Self::Logged { zero_deg, sense } => rig_deg.map(|rig| image_direction_deg(rig, *zero_deg, *sense)),
             Self::Through { plating_edge } => match px {
-                Some(px) => {
-                    nearest_segment(plating_edge, px).map(|ends| normal_deg(ends[0], ends[1]))
-                }
+                Some(px) => nearest_segment(plating_edge, px).map(|ends| normal_deg(ends[0], ends[1])),
                 None => mean_normal_deg(plating_edge),
             },
         }
@@ -152,18 +143,11 @@ fn nearest_segment(edge: &[[f64; 2]], px: [f64; 2]) -> Option<&[[f64; 2]]> {
         let (dx, dy) = (ends[1][0] - ends[0][0], ends[1][1] - ends[0][1]);
         let (qx, qy) = (px[0] - ends[0][0], px[1] - ends[0][1]);
         let length2 = dx * dx + dy * dy;
-        let share = if length2 > 0.0 {
-            ((qx * dx + qy * dy) / length2).clamp(0.0, 1.0)
-        } else {
-            0.0
-        };
+        let share = if length2 > 0.0 { ((qx * dx + qy * dy) / length2).clamp(0.0, 1.0) } else { 0.0 };
         libm::hypot(qx - share * dx, qy - share * dy)
     };
-    let long =
-        |ends: &&[[f64; 2]]| libm::hypot(ends[1][0] - ends[0][0], ends[1][1] - ends[0][1]) > 0.0;
-    edge.windows(2)
-        .filter(long)
-        .min_by(|a, b| distance(a).total_cmp(&distance(b)))
+    let long = |ends: &&[[f64; 2]]| libm::hypot(ends[1][0] - ends[0][0], ends[1][1] - ends[0][1]) > 0.0;
+    edge.windows(2).filter(long).min_by(|a, b| distance(a).total_cmp(&distance(b)))
 }
 
 #[cfg(test)]
@@ -173,9 +157,7 @@ mod tests {
     #[test]
     fn through_the_plates_is_the_local_normal() {
         // Upright edge, then one that falls to the right at 45°.
-        let rule = AxisRule::Through {
-            plating_edge: vec![[40.0, 0.0], [40.0, 100.0], [140.0, 200.0]],
-        };
+        let rule = AxisRule::Through { plating_edge: vec![[40.0, 0.0], [40.0, 100.0], [140.0, 200.0]] };
         let near = |a: Option<f64>, b: f64| acute_deg(a.unwrap(), b) < 1e-9;
         assert!(near(rule.axis_deg(None, Some([60.0, 20.0])), 0.0));
         assert!(near(rule.axis_deg(None, Some([150.0, 140.0])), 45.0));
@@ -185,18 +167,8 @@ mod tests {
 
     #[test]
     fn the_edge_runs_at_right_angles_to_its_normal() {
-        assert!(
-            acute_deg(
-                edge_direction_deg(&[[40.0, 0.0], [40.0, 9.0]], [0.0, 0.0]).unwrap(),
-                90.0
-            ) < 1e-9
-        );
-        assert!(
-            acute_deg(
-                edge_direction_deg(&[[0.0, 0.0], [9.0, 9.0]], [0.0, 0.0]).unwrap(),
-                135.0
-            ) < 1e-9
-        );
+        assert!(acute_deg(edge_direction_deg(&[[40.0, 0.0], [40.0, 9.0]], [0.0, 0.0]).unwrap(), 90.0) < 1e-9);
+        assert!(acute_deg(edge_direction_deg(&[[0.0, 0.0], [9.0, 9.0]], [0.0, 0.0]).unwrap(), 135.0) < 1e-9);
     }
 
     proptest::proptest! {

@@ -79,9 +79,7 @@ impl Fixture {
             Self::Stress => logged_mpa,
             Self::Fixed { stress_mpa } => Some(stress_mpa),
             Self::Uniaxial { area_mm2 } => Some(force_n? / area_mm2),
-            Self::Beam(beam) => {
-                Some(force_n? * beam.mpa_per_n * beam.moment_share * beam.face_share)
-            }
+            Self::Beam(beam) => Some(force_n? * beam.mpa_per_n * beam.moment_share * beam.face_share),
             Self::RingOnRing { mpa_per_n, share } => Some(force_n? * mpa_per_n * share),
         }
     }
@@ -90,9 +88,7 @@ impl Fixture {
     #[must_use]
     pub fn variation(&self, view_mm: f64) -> f64 {
         match *self {
-            Self::Beam(beam) if beam.moment_share > 0.0 => {
-                beam.moment_share_per_mm.abs() * view_mm / beam.moment_share
-            }
+            Self::Beam(beam) if beam.moment_share > 0.0 => beam.moment_share_per_mm.abs() * view_mm / beam.moment_share,
             _ => 0.0,
         }
     }
@@ -139,13 +135,7 @@ pub struct Rings {
 /// Equibiaxial face stress inside the load ring, MPa per N (ASTM C1499).
 #[must_use]
 pub fn ring_on_ring_mpa_per_n(rings: Rings) -> f64 {
-    let Rings {
-        support_mm,
-        load_mm,
-        disc_mm,
-        thickness_mm,
-        poisson,
-    } = rings;
+    let Rings { support_mm, load_mm, disc_mm, thickness_mm, poisson } = rings;
     let spread = (1.0 - poisson) * (support_mm.powi(2) - load_mm.powi(2)) / (2.0 * disc_mm.powi(2));
     let ring = (1.0 + poisson) * libm::log(support_mm / load_mm);
     3.0 / (2.0 * std::f64::consts::PI * thickness_mm.powi(2)) * (spread + ring)
@@ -158,13 +148,7 @@ pub fn ring_on_ring_mpa_per_n(rings: Rings) -> f64 {
 /// assert!((mpa - 752.31481).abs() < 1e-5);
 /// ```
 #[must_use]
-pub fn stoney_mpa(
-    modulus_gpa: f64,
-    poisson: f64,
-    plate_mm: f64,
-    film_um: f64,
-    radius_m: f64,
-) -> f64 {
+pub fn stoney_mpa(modulus_gpa: f64, poisson: f64, plate_mm: f64, film_um: f64, radius_m: f64) -> f64 {
     let plate_m = plate_mm * 1e-3;
     1e3 * modulus_gpa * plate_m * plate_m / (6.0 * (1.0 - poisson) * film_um * 1e-6 * radius_m)
 }
@@ -201,9 +185,7 @@ impl Bimetal {
     pub fn plate_stress_mpa(&self, from_bond_mm: f64) -> f64 {
         let curvature = self.curvature_per_mm();
         let rigidity = |gpa: f64, mm: f64| gpa * mm.powi(3) / 12.0;
-        let moments = (rigidity(self.plate_gpa, self.plate_mm)
-            + rigidity(self.strip_gpa, self.strip_mm))
-            * curvature;
+        let moments = (rigidity(self.plate_gpa, self.plate_mm) + rigidity(self.strip_gpa, self.strip_mm)) * curvature;
         let height = self.plate_mm + self.strip_mm;
         let mean_tension_gpa = 2.0 * moments / (height * self.plate_mm);
         let bending_tension_gpa = self.plate_gpa * curvature * (0.5 * self.plate_mm - from_bond_mm);
@@ -257,10 +239,7 @@ impl Needs<'_> {
                     None => "the fixture needs side, the filmed face".to_owned(),
                     Some(side) => format!("side = {} does not fit this fixture", name(side)),
                 };
-                Err(self.fault(
-                    what,
-                    format!("type side = {} or side = {}", name(first), name(second)),
-                ))
+                Err(self.fault(what, format!("type side = {} or side = {}", name(first), name(second))))
             }
         }
     }
@@ -269,9 +248,7 @@ impl Needs<'_> {
     fn below(&self, thickness_mm: f64) -> Result<f64, ManifestError> {
         let below = self.manifest.load.below_face_mm.unwrap_or(0.0);
         if below > thickness_mm {
-            let what = format!(
-                "below_face_mm = {below} lies below the plate, which is {thickness_mm} mm thick"
-            );
+            let what = format!("below_face_mm = {below} lies below the plate, which is {thickness_mm} mm thick");
             return Err(self.manifest.fault(
                 "load",
                 "below_face_mm",
@@ -284,9 +261,7 @@ impl Needs<'_> {
 
     fn uniaxial(&self) -> Result<Fixture, ManifestError> {
         self.force()?;
-        Ok(Fixture::Uniaxial {
-            area_mm2: self.size("area_mm2", self.manifest.load.area_mm2)?,
-        })
+        Ok(Fixture::Uniaxial { area_mm2: self.size("area_mm2", self.manifest.load.area_mm2)? })
     }
 
     /// Width, thickness and the share of the face stress.
@@ -315,9 +290,7 @@ impl Needs<'_> {
         let span = self.size("span_mm", self.manifest.load.span_mm)?;
         let off = self.manifest.load.from_midspan_mm.unwrap_or(0.0);
         if off >= 0.5 * span {
-            let what = format!(
-                "from_midspan_mm = {off} lies outside the supports, which are {span} mm apart"
-            );
+            let what = format!("from_midspan_mm = {off} lies outside the supports, which are {span} mm apart");
             return Err(self.manifest.fault(
                 "load",
                 "from_midspan_mm",
@@ -363,14 +336,13 @@ impl Needs<'_> {
             poisson: self.poisson()?,
         };
         if rings.load_mm >= rings.support_mm || rings.support_mm > rings.disc_mm {
-            return Err(self.fault("the load ring must be smaller than the support ring, and that not larger than the disc".to_owned(), "correct load_diameter_mm, support_diameter_mm or disc_diameter_mm"));
+            return Err(self.fault(
+                "the load ring must be smaller than the support ring, and that not larger than the disc".to_owned(),
+                "correct load_diameter_mm, support_diameter_mm or disc_diameter_mm",
+            ));
         }
-        let share =
-            self.side(Side::Compressed, Side::Stretched)? * self.below(rings.thickness_mm)?;
-        Ok(Fixture::RingOnRing {
-            mpa_per_n: ring_on_ring_mpa_per_n(rings),
-            share,
-        })
+        let share = self.side(Side::Compressed, Side::Stretched)? * self.below(rings.thickness_mm)?;
+        Ok(Fixture::RingOnRing { mpa_per_n: ring_on_ring_mpa_per_n(rings), share })
     }
 
     fn poisson(&self) -> Result<f64, ManifestError> {
@@ -399,18 +371,20 @@ impl Needs<'_> {
                 let modulus = self.size("modulus_gpa", load.modulus_gpa)?;
                 stoney_mpa(modulus, self.poisson()?, plate, film_um, radius) * film_um * 1e-3 / plate
             }
-            (Some(_), Some(_)) => return Err(self.fault("both film_stress_mpa and radius_m are given".to_owned(), "keep the one that was measured")),
-            _ => return Err(self.fault("the fixture \"film\" needs film_stress_mpa or radius_m".to_owned(), "add film_stress_mpa and film_thickness_um, or radius_m with modulus_gpa and poisson")),
+            (Some(_), Some(_)) => {
+                return Err(self
+                    .fault("both film_stress_mpa and radius_m are given".to_owned(), "keep the one that was measured"));
+            }
+            _ => {
+                return Err(self.fault(
+                    "the fixture \"film\" needs film_stress_mpa or radius_m".to_owned(),
+                    "add film_stress_mpa and film_thickness_um, or radius_m with modulus_gpa and poisson",
+                ));
+            }
         };
         let below = 0.5 * (1.0 - self.below(plate)?);
-        let from_coated = if self.side(Side::Coated, Side::Bare)? > 0.0 {
-            below
-        } else {
-            1.0 - below
-        };
-        Ok(Fixture::Fixed {
-            stress_mpa: force_per_width_over_plate * (4.0 - 6.0 * from_coated),
-        })
+        let from_coated = if self.side(Side::Coated, Side::Bare)? > 0.0 { below } else { 1.0 - below };
+        Ok(Fixture::Fixed { stress_mpa: force_per_width_over_plate * (4.0 - 6.0 * from_coated) })
     }
 
     fn bimetal(&self) -> Result<Fixture, ManifestError> {
@@ -420,21 +394,13 @@ impl Needs<'_> {
             plate_gpa: self.size("modulus_gpa", load.modulus_gpa)?,
             strip_mm: self.size("strip_thickness_mm", load.strip_thickness_mm)?,
             strip_gpa: self.size("strip_modulus_gpa", load.strip_modulus_gpa)?,
-            mismatch: self.size(
-                "expansion_difference_per_k",
-                load.expansion_difference_per_k,
-            )? * self.size("temperature_change_k", load.temperature_change_k)?,
+            mismatch: self.size("expansion_difference_per_k", load.expansion_difference_per_k)?
+                * self.size("temperature_change_k", load.temperature_change_k)?,
         };
         let below_mm = 0.5 * (1.0 - self.below(layers.plate_mm)?) * layers.plate_mm;
         let bonded = self.side(Side::Bonded, Side::Free)? > 0.0;
-        let from_bond_mm = if bonded {
-            below_mm
-        } else {
-            layers.plate_mm - below_mm
-        };
-        Ok(Fixture::Fixed {
-            stress_mpa: layers.plate_stress_mpa(from_bond_mm),
-        })
+        let from_bond_mm = if bonded { below_mm } else { layers.plate_mm - below_mm };
+        Ok(Fixture::Fixed { stress_mpa: layers.plate_stress_mpa(from_bond_mm) })
     }
 }
 
@@ -451,26 +417,17 @@ mod tests {
     }
 
     fn stress(load: &str, force: f64) -> f64 {
-        Fixture::new(&manifest(load))
-            .unwrap()
-            .stress_mpa(Some(force), None)
-            .unwrap()
+        Fixture::new(&manifest(load)).unwrap().stress_mpa(Some(force), None).unwrap()
     }
 
-    const BEAM: &str =
-        "force_n = 1\nfixture = \"three-point\"\nwidth_mm = 4\nthickness_mm = 3\nspan_mm = 40\n";
+    const BEAM: &str = "force_n = 1\nfixture = \"three-point\"\nwidth_mm = 4\nthickness_mm = 3\nspan_mm = 40\n";
 
     #[test]
     fn faces_have_their_signs_and_the_stress_falls_through_the_plate() {
         let face = stress(&format!("{BEAM}side = \"compressed\""), 500.0);
         assert!((face - 833.333_333_333).abs() < 1e-6);
         assert!((stress(&format!("{BEAM}side = \"stretched\""), 500.0) + face).abs() < 1e-9);
-        let below = |mm: f64| {
-            stress(
-                &format!("{BEAM}side = \"compressed\"\nbelow_face_mm = {mm}"),
-                500.0,
-            )
-        };
+        let below = |mm: f64| stress(&format!("{BEAM}side = \"compressed\"\nbelow_face_mm = {mm}"), 500.0);
         assert!((below(1.5)).abs() < 1e-9);
         assert!((below(3.0) + face).abs() < 1e-9);
         assert!((below(0.75) - 0.5 * face).abs() < 1e-9);
@@ -480,20 +437,13 @@ mod tests {
     fn the_moment_falls_off_mid_span() {
         let at = |name: &str, mm: f64| {
             let text = BEAM.replace("three-point", name);
-            stress(
-                &format!("{text}side = \"compressed\"\nfrom_midspan_mm = {mm}"),
-                1.0,
-            ) / stress(&format!("{text}side = \"compressed\""), 1.0)
+            stress(&format!("{text}side = \"compressed\"\nfrom_midspan_mm = {mm}"), 1.0)
+                / stress(&format!("{text}side = \"compressed\""), 1.0)
         };
         assert!((at("three-point", 10.0) - 0.5).abs() < 1e-12);
         assert!((at("four-point-quarter", 9.0) - 1.0).abs() < 1e-12);
         assert!((at("four-point-quarter", 15.0) - 0.5).abs() < 1e-12);
-        assert!(
-            Fixture::new(&manifest(&format!(
-                "{BEAM}side = \"compressed\"\nfrom_midspan_mm = 20"
-            )))
-            .is_err()
-        );
+        assert!(Fixture::new(&manifest(&format!("{BEAM}side = \"compressed\"\nfrom_midspan_mm = 20"))).is_err());
     }
 
     #[test]
@@ -505,13 +455,7 @@ mod tests {
         let bent = "fixture = \"film\"\nthickness_mm = 0.5\nmodulus_gpa = 130\npoisson = 0.28\nradius_m = 10\nside = \"coated\"";
         assert!((stress(bent, 0.0) - 4.0 * 752.314_814_8 * 1e-3 / 0.5).abs() < 1e-6);
         // Equal layers: the bonded face carries 2/3 Etκ, the free one −1/3 Etκ (tension positive).
-        let equal = Bimetal {
-            plate_mm: 1.0,
-            plate_gpa: 100.0,
-            strip_mm: 1.0,
-            strip_gpa: 100.0,
-            mismatch: 5e-4,
-        };
+        let equal = Bimetal { plate_mm: 1.0, plate_gpa: 100.0, strip_mm: 1.0, strip_gpa: 100.0, mismatch: 5e-4 };
         let etk = 1e3 * 100.0 * equal.curvature_per_mm();
         assert!((equal.plate_stress_mpa(0.0) + 2.0 / 3.0 * etk).abs() < 1e-9);
         assert!((equal.plate_stress_mpa(1.0) - 1.0 / 3.0 * etk).abs() < 1e-9);
@@ -526,19 +470,10 @@ mod tests {
             ),
             (BEAM, "needs side"),
             (&format!("{BEAM}side = \"coated\"") as &str, "does not fit"),
-            (
-                &format!("{BEAM}side = \"stretched\"\nbelow_face_mm = 4"),
-                "lies below the plate",
-            ),
-            (
-                "stress_mpa = 1\nfixture = \"uniaxial\"\narea_mm2 = 1",
-                "turns force into stress",
-            ),
+            (&format!("{BEAM}side = \"stretched\"\nbelow_face_mm = 4"), "lies below the plate"),
+            ("stress_mpa = 1\nfixture = \"uniaxial\"\narea_mm2 = 1", "turns force into stress"),
             ("force_n = 1\nfixture = \"stack\"", "needs area_mm2"),
-            (
-                "fixture = \"film\"\nthickness_mm = 1",
-                "needs film_stress_mpa or radius_m",
-            ),
+            ("fixture = \"film\"\nthickness_mm = 1", "needs film_stress_mpa or radius_m"),
         ] {
             let error = Fixture::new(&manifest(load)).unwrap_err();
             assert!(error.what.contains(what), "{}", error.what);

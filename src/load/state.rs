@@ -45,24 +45,13 @@ impl Load {
         let fixture = Fixture::new(manifest)?;
         needs_column(manifest, &fixture, &log)?;
         let mut moved = Vec::new();
-        for given in manifest
-            .load
-            .dimensions()
-            .into_iter()
-            .filter(|given| given.u > 0.0)
-        {
+        for given in manifest.load.dimensions().into_iter().filter(|given| given.u > 0.0) {
             let at = |by: f64| {
                 let load = manifest.load.nudged(given.name, by);
-                Fixture::new(&Manifest {
-                    load,
-                    ..manifest.clone()
-                })
+                Fixture::new(&Manifest { load, ..manifest.clone() })
             };
             // Next to a bound (a plate's face, 0) one of the two may not exist: the fixture itself stands in.
-            moved.push([
-                at(given.u).unwrap_or(fixture),
-                at(-given.u).unwrap_or(fixture),
-            ]);
+            moved.push([at(given.u).unwrap_or(fixture), at(-given.u).unwrap_or(fixture)]);
         }
         let mut load = Self {
             fixture,
@@ -93,17 +82,9 @@ impl Load {
     /// Stress of every sample of the log that gives it, (time, MPa): for plots and steps. Empty without a log.
     #[must_use]
     pub fn stress_samples(&self) -> Vec<(f64, f64)> {
-        let series = if self.fixture == Fixture::Stress {
-            &self.log.stress_mpa
-        } else {
-            &self.log.force_n
-        };
+        let series = if self.fixture == Fixture::Stress { &self.log.stress_mpa } else { &self.log.force_n };
         let times = series.as_ref().map_or(&[][..], |series| &series.time_s);
-        let sample = |&time_s: &f64| {
-            self.at(time_s, None)
-                .stress_mpa
-                .map(|stress| (time_s, stress))
-        };
+        let sample = |&time_s: &f64| self.at(time_s, None).stress_mpa.map(|stress| (time_s, stress));
         times.iter().filter_map(sample).collect()
     }
 
@@ -123,12 +104,7 @@ impl Load {
         let mut parts: Vec<Option<f64>> = self
             .moved
             .iter()
-            .map(|[up, down]| {
-                half(
-                    up.stress_mpa(force_n, logged_mpa),
-                    down.stress_mpa(force_n, logged_mpa),
-                )
-            })
+            .map(|[up, down]| half(up.stress_mpa(force_n, logged_mpa), down.stress_mpa(force_n, logged_mpa)))
             .collect();
         if let (Some(u), Some(force)) = (self.u_force_n, force_n) {
             let at = |by: f64| self.fixture.stress_mpa(Some(force + by), logged_mpa);
@@ -137,11 +113,7 @@ impl Load {
         if self.fixture == Fixture::Stress {
             parts.push(self.u_stress_mpa);
         }
-        let squares: Vec<f64> = parts
-            .into_iter()
-            .flatten()
-            .map(|part| part * part)
-            .collect();
+        let squares: Vec<f64> = parts.into_iter().flatten().map(|part| part * part).collect();
         (!squares.is_empty()).then(|| squares.iter().sum::<f64>().sqrt())
     }
 
@@ -157,10 +129,13 @@ impl Load {
         let mut doubts = Vec::new();
         if let Some(thickness) = load.thickness_mm {
             if thickness > THICK_MM {
-                doubts.push(format!("thickness_mm = {thickness}: is the plate that thick? A thin plate of 400 µm is thickness_mm = 0.4"));
+                doubts.push(format!(
+                    "thickness_mm = {thickness}: is the plate that thick? A thin plate of 400 µm is thickness_mm = 0.4"
+                ));
             }
             if let Some(width) = load.width_mm.filter(|width| *width < thickness) {
-                doubts.push(format!("width_mm = {width} is less than thickness_mm = {thickness}: are the two swapped?"));
+                doubts
+                    .push(format!("width_mm = {width} is less than thickness_mm = {thickness}: are the two swapped?"));
             }
             for (name, length) in [("arm_mm", load.arm_mm), ("span_mm", load.span_mm)] {
                 if let Some(length) = length.filter(|length| *length < SLENDER * thickness) {
@@ -180,29 +155,15 @@ impl Load {
 
     fn largest_stress(&self) -> f64 {
         let range = |series: &Option<Series>| series.as_ref().and_then(Series::range);
-        let ends = |range: Option<(f64, f64)>| {
-            range.map_or([None, None], |(low, high)| [Some(low), Some(high)])
-        };
-        let forces = ends(range(&self.log.force_n))
-            .into_iter()
-            .map(|force| self.fixture.stress_mpa(force, None));
-        let logged = ends(range(&self.log.stress_mpa))
-            .into_iter()
-            .map(|stress| self.fixture.stress_mpa(None, stress));
-        forces
-            .chain(logged)
-            .flatten()
-            .map(f64::abs)
-            .fold(0.0, f64::max)
+        let ends = |range: Option<(f64, f64)>| range.map_or([None, None], |(low, high)| [Some(low), Some(high)]);
+        let forces = ends(range(&self.log.force_n)).into_iter().map(|force| self.fixture.stress_mpa(force, None));
+        let logged = ends(range(&self.log.stress_mpa)).into_iter().map(|stress| self.fixture.stress_mpa(None, stress));
+        forces.chain(logged).flatten().map(f64::abs).fold(0.0, f64::max)
     }
 }
 
 /// The log must hold what the fixture turns into stress, and a direction where the fixture needs one.
-fn needs_column(
-    manifest: &Manifest,
-    fixture: &Fixture,
-    log: &LoadLog,
-) -> Result<(), ManifestError> {
+fn needs_column(manifest: &Manifest, fixture: &Fixture, log: &LoadLog) -> Result<(), ManifestError> {
     let missing = match fixture {
         Fixture::None | Fixture::Fixed { .. } => None,
         Fixture::Stress => log.stress_mpa.is_none().then_some("stress_mpa"),
@@ -219,11 +180,7 @@ fn needs_column(
     }
     let directed = !matches!(
         manifest.load.fixture,
-        FixtureName::None
-            | FixtureName::Stack
-            | FixtureName::Normal
-            | FixtureName::RingOnRing
-            | FixtureName::Film
+        FixtureName::None | FixtureName::Stack | FixtureName::Normal | FixtureName::RingOnRing | FixtureName::Film
     );
     if directed && log.direction_deg.is_none() {
         return Err(manifest.fault("load", "fixture", "nothing says along which direction the load acts", "add direction_deg = 90.0 to [load] (degrees anticlockwise from x to the right), or a column direction_deg to the log"));
@@ -242,11 +199,7 @@ mod tests {
              [cell]\nplating_edge = [[0, 0], [0, 9]]\nfar_edge = [[9, 0], [9, 9]]\n[load]\n{section}"
         );
         let manifest = Manifest::parse(&text, std::path::Path::new("ridge")).unwrap();
-        let clock = Clock {
-            zero_s: 0.0,
-            start_unix_s: None,
-            utc_offset_s: None,
-        };
+        let clock = Clock { zero_s: 0.0, start_unix_s: None, utc_offset_s: None };
         Load::new(&manifest, LoadLog::open(&manifest, &clock).unwrap())
     }
 
@@ -254,10 +207,7 @@ mod tests {
 
     #[test]
     fn a_beam_with_uncertain_dimensions() {
-        let beam = load(&format!(
-            "{BEAM}u_thickness_mm = 0.01\nu_force_n = 0.03\nu_width_mm = 0.02"
-        ))
-        .unwrap();
+        let beam = load(&format!("{BEAM}u_thickness_mm = 0.01\nu_force_n = 0.03\nu_width_mm = 0.02")).unwrap();
         let state = beam.at(5.0, None);
         assert!((state.stress_mpa.unwrap() - 108.0).abs() < 1e-9);
         assert_eq!(state.direction_deg, Some(90.0));
@@ -269,59 +219,32 @@ mod tests {
 
     #[test]
     fn no_load_keeps_a_direction_and_no_stress() {
-        let state = load("direction_deg = 30\nzero_deg = 90")
-            .unwrap()
-            .at(0.0, None);
-        assert_eq!(
-            (state.direction_deg, state.stress_mpa, state.force_n),
-            (Some(120.0), None, None)
-        );
+        let state = load("direction_deg = 30\nzero_deg = 90").unwrap().at(0.0, None);
+        assert_eq!((state.direction_deg, state.stress_mpa, state.force_n), (Some(120.0), None, None));
         assert_eq!(load("").unwrap().at(0.0, None), LoadState::default());
     }
 
     #[test]
     fn fixtures_without_an_axis_have_none() {
-        let state = load("stress_mpa = 40\nfixture = \"normal\"\ndirection_deg = 30")
-            .unwrap()
-            .at(0.0, Some([1.0, 1.0]));
+        let state =
+            load("stress_mpa = 40\nfixture = \"normal\"\ndirection_deg = 30").unwrap().at(0.0, Some([1.0, 1.0]));
         assert_eq!((state.direction_deg, state.stress_mpa), (None, Some(40.0)));
-        let state = load("force_n = 8\nfixture = \"stack\"\narea_mm2 = 4")
-            .unwrap()
-            .at(0.0, Some([1.0, 1.0]));
-        assert_eq!(
-            (state.direction_deg, state.stress_mpa),
-            (Some(0.0), Some(2.0))
-        );
+        let state = load("force_n = 8\nfixture = \"stack\"\narea_mm2 = 4").unwrap().at(0.0, Some([1.0, 1.0]));
+        assert_eq!((state.direction_deg, state.stress_mpa), (Some(0.0), Some(2.0)));
     }
 
     #[test]
     fn what_does_not_fit_is_said() {
         assert!(
-            load("force_n = 1\nfixture = \"stress\"\ndirection_deg = 0")
-                .unwrap_err()
-                .what
-                .contains("needs stress_mpa")
+            load("force_n = 1\nfixture = \"stress\"\ndirection_deg = 0").unwrap_err().what.contains("needs stress_mpa")
         );
-        assert!(
-            load("stress_mpa = 1\nfixture = \"stress\"")
-                .unwrap_err()
-                .what
-                .contains("along which direction")
-        );
+        assert!(load("stress_mpa = 1\nfixture = \"stress\"").unwrap_err().what.contains("along which direction"));
         let thick = load(&BEAM.replace("thickness_mm = 0.5", "thickness_mm = 5")).unwrap();
         assert_eq!(thick.warnings.len(), 3, "{:?}", thick.warnings);
         let strong = load(&BEAM.replace("force_n = 1.5", "force_n = 1500")).unwrap();
-        assert!(
-            strong.warnings[0].contains("108000 MPa"),
-            "{:?}",
-            strong.warnings
-        );
+        assert!(strong.warnings[0].contains("108000 MPa"), "{:?}", strong.warnings);
         let pulled = load(&BEAM.replace("force_n = 1.5", "force_n = -1.5")).unwrap();
-        assert!(
-            pulled.warnings[0].contains("negative"),
-            "{:?}",
-            pulled.warnings
-        );
+        assert!(pulled.warnings[0].contains("negative"), "{:?}", pulled.warnings);
     }
 
     #[test]

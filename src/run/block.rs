@@ -13,10 +13,8 @@ use ndarray::{Array2, Axis, Slice};
 #[must_use]
 pub fn block_mean(plane: &Array2<f32>, rows: Range<usize>, columns: Range<usize>) -> f32 {
     let (height, width) = plane.dim();
-    let (rows, columns) = (
-        rows.start.min(height)..rows.end.min(height),
-        columns.start.min(width)..columns.end.min(width),
-    );
+    let (rows, columns) =
+        (rows.start.min(height)..rows.end.min(height), columns.start.min(width)..columns.end.min(width));
     let mut block = plane.view();
     block.slice_axis_inplace(Axis(0), Slice::from(rows));
     block.slice_axis_inplace(Axis(1), Slice::from(columns));

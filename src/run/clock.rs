@@ -48,8 +48,7 @@ pub fn parse_offset(text: &str) -> Option<i32> {
         None => (rest, "0"),
     };
     let digits = |text: &str| {
-        (!text.is_empty() && text.bytes().all(|byte| byte.is_ascii_digit()))
-            .then(|| text.parse::<i32>().ok())?
+        (!text.is_empty() && text.bytes().all(|byte| byte.is_ascii_digit())).then(|| text.parse::<i32>().ok())?
     };
     let (hours, minutes) = (digits(hours)?, digits(minutes)?);
     (hours <= 14 && minutes < 60).then_some(sign * (hours * 3600 + minutes * 60))
@@ -74,17 +73,12 @@ pub fn parse_stamp(text: &str, offset_s: Option<i32>) -> Result<f64, ClockError>
     }
     let civil: DateTime = plain.parse().map_err(|_| failed())?;
     let offset = Offset::from_seconds(offset_s.unwrap_or(0)).map_err(|_| failed())?;
-    Ok(unix_seconds(
-        offset.to_timestamp(civil).map_err(|_| failed())?,
-    ))
+    Ok(unix_seconds(offset.to_timestamp(civil).map_err(|_| failed())?))
 }
 
 /// Whole seconds and nanoseconds added in `f64`: exact to a microsecond for centuries.
 fn unix_seconds(stamp: Timestamp) -> f64 {
-    #[expect(
-        clippy::cast_precision_loss,
-        reason = "seconds since 1970 are far below 2^53"
-    )]
+    #[expect(clippy::cast_precision_loss, reason = "seconds since 1970 are far below 2^53")]
     let seconds = stamp.as_second() as f64;
     seconds + f64::from(stamp.subsec_nanosecond()) * 1e-9
 }
@@ -104,11 +98,8 @@ fn rearranged(text: &str) -> String {
         _ => date.to_owned(),
     };
     let time = time.trim();
-    let time = if time.split(':').next().is_some_and(|hour| hour.len() == 1) {
-        format!("0{time}")
-    } else {
-        time.to_owned()
-    };
+    let time =
+        if time.split(':').next().is_some_and(|hour| hour.len() == 1) { format!("0{time}") } else { time.to_owned() };
     format!("{date}T{time}")
 }
 
@@ -140,13 +131,7 @@ mod tests {
 
     #[test]
     fn what_is_no_date_is_said() {
-        for bad in [
-            "",
-            "yesterday",
-            "2026-13-01T00:00:00",
-            "12",
-            "2026-03-05T25:00:00",
-        ] {
+        for bad in ["", "yesterday", "2026-13-01T00:00:00", "12", "2026-03-05T25:00:00"] {
             assert!(parse_stamp(bad, None).is_err(), "{bad}");
         }
     }

@@ -81,11 +81,7 @@ impl fmt::Display for FrameFault {
                 write!(out, "{width} × {height} px is more than {MAX_PIXELS} px")
             }
             Self::OtherSize { got, want } => {
-                write!(
-                    out,
-                    "{} × {} px, but the frames of this run are {} × {} px",
-                    got.0, got.1, want.0, want.1
-                )
+                write!(out, "{} × {} px, but the frames of this run are {} × {} px", got.0, got.1, want.0, want.1)
             }
             Self::Blank => write!(out, "blank: every pixel has the same value"),
             Self::NotNumbers => write!(out, "holds values that are not finite numbers"),
@@ -128,11 +124,7 @@ pub(super) fn sha256(bytes: &[u8]) -> [u8; 32] {
 }
 
 /// Decodes a file, or one page of a multi-page TIFF. `want`: the size that the frame must have.
-pub(super) fn decode(
-    path: &Path,
-    page: Option<usize>,
-    want: Option<(u32, u32)>,
-) -> Result<Decoded, FrameFault> {
+pub(super) fn decode(path: &Path, page: Option<usize>, want: Option<(u32, u32)>) -> Result<Decoded, FrameFault> {
     let decoded = match page {
         Some(page) => decode_tiff(BufReader::new(open(path)?), page, want, None)?,
         None => {
@@ -203,24 +195,19 @@ fn open(path: &Path) -> Result<File, FrameFault> {
 fn read(path: &Path) -> Result<Vec<u8>, FrameFault> {
     let mut bytes = Vec::new();
     let mut file = open(path)?.take(MAX_BYTES + 1);
-    file.read_to_end(&mut bytes)
-        .map_err(|error| unreadable(&error))?;
+    file.read_to_end(&mut bytes).map_err(|error| unreadable(&error))?;
     if bytes.is_empty() {
         return Err(FrameFault::Empty);
     }
     if bytes.len() as u64 > MAX_BYTES {
-        return Err(FrameFault::Unreadable(format!(
-            "more than {MAX_BYTES} bytes"
-        )));
+        return Err(FrameFault::Unreadable(format!("more than {MAX_BYTES} bytes")));
     }
     Ok(bytes)
 }
 
 /// Byte-order marks of TIFF and BigTIFF.
 fn is_tiff(bytes: &[u8]) -> bool {
-    [b"II\x2a\0", b"MM\0\x2a", b"II\x2b\0", b"MM\0\x2b"]
-        .iter()
-        .any(|mark| bytes.starts_with(*mark))
+    [b"II\x2a\0", b"MM\0\x2a", b"II\x2b\0", b"MM\0\x2b"].iter().any(|mark| bytes.starts_with(*mark))
 }
 
 fn allowed(width: u32, height: u32, want: Option<(u32, u32)>) -> Result<(), FrameFault> {
@@ -229,10 +216,7 @@ fn allowed(width: u32, height: u32, want: Option<(u32, u32)>) -> Result<(), Fram
         return Err(FrameFault::TooLarge { width, height });
     }
     match want {
-        Some(want) if want != (width, height) => Err(FrameFault::OtherSize {
-            got: (width, height),
-            want,
-        }),
+        Some(want) if want != (width, height) => Err(FrameFault::OtherSize { got: (width, height), want }),
         _ if pixels == 0 => Err(damaged("no pixels")),
         _ => Ok(()),
     }
@@ -250,21 +234,13 @@ fn checked(decoded: Decoded) -> Result<Decoded, FrameFault> {
     if !finite {
         return Err(FrameFault::NotNumbers);
     }
-    if high <= low {
-        Err(FrameFault::Blank)
-    } else {
-        Ok(decoded)
-    }
+    if high <= low { Err(FrameFault::Blank) } else { Ok(decoded) }
 }
 
 // ---- PNG, JPEG, BMP, PNM ----
 
-fn plain_decoder<'a, R: std::io::BufRead + Seek + 'a>(
-    input: R,
-) -> Result<impl ImageDecoder + 'a, FrameFault> {
-    let mut reader = ImageReader::new(input)
-        .with_guessed_format()
-        .map_err(|error| unreadable(&error))?;
+fn plain_decoder<'a, R: std::io::BufRead + Seek + 'a>(input: R) -> Result<impl ImageDecoder + 'a, FrameFault> {
+    let mut reader = ImageReader::new(input).with_guessed_format().map_err(|error| unreadable(&error))?;
     if reader.format().is_none() {
         return Err(damaged("not a PNG, TIFF, JPEG, BMP or PNM file"));
     }
@@ -277,18 +253,10 @@ fn plain_decoder<'a, R: std::io::BufRead + Seek + 'a>(
 fn plain_header(decoder: &mut impl ImageDecoder) -> Result<Header, FrameFault> {
     let (width, height) = decoder.dimensions();
     let turned = orientation_turns(decoder.orientation().map_err(damaged)?.to_exif());
-    let (width, height) = if turned {
-        (height, width)
-    } else {
-        (width, height)
-    };
+    let (width, height) = if turned { (height, width) } else { (width, height) };
     let color = decoder.color_type();
     let bits = 8 * (color.bytes_per_pixel() / color.channel_count());
-    Ok(Header {
-        width,
-        height,
-        bits,
-    })
+    Ok(Header { width, height, bits })
 }
 
 /// Whether an orientation (TIFF 6.0, tag 274) swaps width and height.
@@ -296,11 +264,7 @@ fn orientation_turns(exif: u8) -> bool {
     (5..=8).contains(&exif)
 }
 
-fn decode_plain(
-    bytes: &[u8],
-    want: Option<(u32, u32)>,
-    hash: [u8; 32],
-) -> Result<Decoded, FrameFault> {
+fn decode_plain(bytes: &[u8], want: Option<(u32, u32)>, hash: [u8; 32]) -> Result<Decoded, FrameFault> {
     let mut decoder = plain_decoder(Cursor::new(bytes))?;
     let header = plain_header(&mut decoder)?;
     allowed(header.width, header.height, want)?;
@@ -337,35 +301,16 @@ fn jpeg_ends(bytes: &[u8]) -> bool {
 /// Luma of interleaved samples; of one or two channels the first, else red, green, blue weighted.
 fn luminance<T: Copy>(samples: &[T], channels: usize, level: impl Fn(T) -> f32) -> Vec<f32> {
     if channels < 3 {
-        return samples
-            .iter()
-            .step_by(channels)
-            .map(|sample| level(*sample))
-            .collect();
+        return samples.iter().step_by(channels).map(|sample| level(*sample)).collect();
     }
-    let weigh = |pixel: &[T]| {
-        LUMA.iter()
-            .zip(pixel)
-            .map(|(weight, sample)| weight * level(*sample))
-            .sum()
-    };
+    let weigh = |pixel: &[T]| LUMA.iter().zip(pixel).map(|(weight, sample)| weight * level(*sample)).sum();
     samples.chunks_exact(channels).map(weigh).collect()
 }
 
-fn shaped(
-    plane: Vec<f32>,
-    width: u32,
-    height: u32,
-    bits: u8,
-    sha256: [u8; 32],
-) -> Result<Decoded, FrameFault> {
+fn shaped(plane: Vec<f32>, width: u32, height: u32, bits: u8, sha256: [u8; 32]) -> Result<Decoded, FrameFault> {
     let shape = (height as usize, width as usize);
     let plane = Array2::from_shape_vec(shape, plane).map_err(damaged)?;
-    Ok(Decoded {
-        plane,
-        bits,
-        sha256,
-    })
+    Ok(Decoded { plane, bits, sha256 })
 }
 
 // ---- TIFF ----
@@ -375,9 +320,7 @@ fn tiff_at<R: Read + Seek>(input: R, page: usize) -> Result<TiffDecoder<R>, Fram
     let most = usize::try_from(MAX_BYTES).unwrap_or(usize::MAX);
     limits.decoding_buffer_size = most;
     limits.intermediate_buffer_size = most;
-    let mut decoder = TiffDecoder::new(input)
-        .map_err(damaged)?
-        .with_limits(limits);
+    let mut decoder = TiffDecoder::new(input).map_err(damaged)?.with_limits(limits);
     if page > 0 {
         decoder.seek_to_image(page).map_err(damaged)?;
     }
@@ -386,26 +329,15 @@ fn tiff_at<R: Read + Seek>(input: R, page: usize) -> Result<TiffDecoder<R>, Fram
 
 fn tiff_orientation<R: Read + Seek>(decoder: &mut TiffDecoder<R>) -> u8 {
     let tag = decoder.find_tag_unsigned::<u8>(Tag::Orientation);
-    tag.ok()
-        .flatten()
-        .filter(|turn| (1..=8).contains(turn))
-        .unwrap_or(1)
+    tag.ok().flatten().filter(|turn| (1..=8).contains(turn)).unwrap_or(1)
 }
 
 fn tiff_header<R: Read + Seek>(decoder: &mut TiffDecoder<R>) -> Result<Header, FrameFault> {
     let (width, height) = decoder.dimensions().map_err(damaged)?;
     let bits = decoder.colortype().map_err(damaged)?.bit_depth();
     let turned = orientation_turns(tiff_orientation(decoder));
-    let (width, height) = if turned {
-        (height, width)
-    } else {
-        (width, height)
-    };
-    Ok(Header {
-        width,
-        height,
-        bits,
-    })
+    let (width, height) = if turned { (height, width) } else { (width, height) };
+    Ok(Header { width, height, bits })
 }
 
 fn decode_tiff<R: Read + Seek>(
@@ -424,20 +356,14 @@ fn decode_tiff<R: Read + Seek>(
     let hash = hash.unwrap_or_else(|| sha256(&sample_bytes(&samples)));
     let plane = tiff_luminance(&samples, channels)?;
     let plane = shaped(plane, width, height, header.bits, hash)?;
-    Ok(Decoded {
-        plane: turned(plane.plane, orientation),
-        ..plane
-    })
+    Ok(Decoded { plane: turned(plane.plane, orientation), ..plane })
 }
 
 fn tiff_channels<R: Read + Seek>(decoder: &mut TiffDecoder<R>) -> Result<usize, FrameFault> {
     use tiff::ColorType::{Gray, GrayA, Multiband, RGB, RGBA};
     let color = decoder.colortype().map_err(damaged)?;
     if color.bit_depth() < 8 {
-        return Err(damaged(format!(
-            "{} bits a sample; save it with 8 or 16",
-            color.bit_depth()
-        )));
+        return Err(damaged(format!("{} bits a sample; save it with 8 or 16", color.bit_depth())));
     }
     let channels = match color {
         Gray(_) => 1,
@@ -446,36 +372,22 @@ fn tiff_channels<R: Read + Seek>(decoder: &mut TiffDecoder<R>) -> Result<usize, 
         RGBA(_) => 4,
         Multiband { num_samples: 1, .. } => 1,
         other => {
-            return Err(damaged(format!(
-                "colour type {other:?}; save it as grey or RGB"
-            )));
+            return Err(damaged(format!("colour type {other:?}; save it as grey or RGB")));
         }
     };
     /// Planar storage (TIFF 6.0, tag 284).
     const PLANAR: u16 = 2;
-    let planar = decoder
-        .find_tag_unsigned::<u16>(Tag::PlanarConfiguration)
-        .ok()
-        .flatten()
-        == Some(PLANAR);
+    let planar = decoder.find_tag_unsigned::<u16>(Tag::PlanarConfiguration).ok().flatten() == Some(PLANAR);
     if planar && channels > 1 {
-        return Err(damaged(
-            "colour planes stored apart; save it with interleaved colours, or as grey",
-        ));
+        return Err(damaged("colour planes stored apart; save it with interleaved colours, or as grey"));
     }
     Ok(channels)
 }
 
 fn tiff_luminance(samples: &DecodingResult, channels: usize) -> Result<Vec<f32>, FrameFault> {
-    #[expect(
-        clippy::cast_possible_truncation,
-        reason = "planes are single precision by design"
-    )]
+    #[expect(clippy::cast_possible_truncation, reason = "planes are single precision by design")]
     let single = |value: f64| value as f32;
-    #[expect(
-        clippy::cast_precision_loss,
-        reason = "planes are single precision by design"
-    )]
+    #[expect(clippy::cast_precision_loss, reason = "planes are single precision by design")]
     let plane = match samples {
         DecodingResult::U8(samples) => luminance(samples, channels, f32::from),
         DecodingResult::U16(samples) => luminance(samples, channels, f32::from),
@@ -486,9 +398,7 @@ fn tiff_luminance(samples: &DecodingResult, channels: usize) -> Result<Vec<f32>,
         DecodingResult::F32(samples) => luminance(samples, channels, |value| value),
         DecodingResult::F64(samples) => luminance(samples, channels, single),
         _ => {
-            return Err(damaged(
-                "a sample type that is not read; save it with 8 or 16 bits or 32-bit floats",
-            ));
+            return Err(damaged("a sample type that is not read; save it with 8 or 16 bits or 32-bit floats"));
         }
     };
     Ok(plane)
@@ -497,34 +407,13 @@ fn tiff_luminance(samples: &DecodingResult, channels: usize) -> Result<Vec<f32>,
 fn sample_bytes(samples: &DecodingResult) -> Vec<u8> {
     match samples {
         DecodingResult::U8(samples) => samples.clone(),
-        DecodingResult::U16(samples) => samples
-            .iter()
-            .flat_map(|sample| sample.to_le_bytes())
-            .collect(),
-        DecodingResult::U32(samples) => samples
-            .iter()
-            .flat_map(|sample| sample.to_le_bytes())
-            .collect(),
-        DecodingResult::I8(samples) => samples
-            .iter()
-            .flat_map(|sample| sample.to_le_bytes())
-            .collect(),
-        DecodingResult::I16(samples) => samples
-            .iter()
-            .flat_map(|sample| sample.to_le_bytes())
-            .collect(),
-        DecodingResult::I32(samples) => samples
-            .iter()
-            .flat_map(|sample| sample.to_le_bytes())
-            .collect(),
-        DecodingResult::F32(samples) => samples
-            .iter()
-            .flat_map(|sample| sample.to_le_bytes())
-            .collect(),
-        DecodingResult::F64(samples) => samples
-            .iter()
-            .flat_map(|sample| sample.to_le_bytes())
-            .collect(),
+        DecodingResult::U16(samples) => samples.iter().flat_map(|sample| sample.to_le_bytes()).collect(),
+        DecodingResult::U32(samples) => samples.iter().flat_map(|sample| sample.to_le_bytes()).collect(),
+        DecodingResult::I8(samples) => samples.iter().flat_map(|sample| sample.to_le_bytes()).collect(),
+        DecodingResult::I16(samples) => samples.iter().flat_map(|sample| sample.to_le_bytes()).collect(),
+        DecodingResult::I32(samples) => samples.iter().flat_map(|sample| sample.to_le_bytes()).collect(),
+        DecodingResult::F32(samples) => samples.iter().flat_map(|sample| sample.to_le_bytes()).collect(),
+        DecodingResult::F64(samples) => samples.iter().flat_map(|sample| sample.to_le_bytes()).collect(),
         _ => Vec::new(),
     }
 }
@@ -542,11 +431,7 @@ fn turned(plane: Array2<f32>, orientation: u8) -> Array2<f32> {
     if matches!(orientation, 3 | 4 | 7 | 8) {
         view.invert_axis(ndarray::Axis(0));
     }
-    if orientation == 1 {
-        plane
-    } else {
-        view.as_standard_layout().into_owned()
-    }
+    if orientation == 1 { plane } else { view.as_standard_layout().into_owned() }
 }
 
 #[cfg(test)]
@@ -557,20 +442,13 @@ mod tests {
     #[test]
     fn orientations_follow_the_standard_and_the_image_library() {
         let plane = array![[1.0, 2.0, 3.0], [4.0, 5.0, 6.0]];
-        assert_eq!(
-            turned(plane.clone(), 6),
-            array![[4.0, 1.0], [5.0, 2.0], [6.0, 3.0]]
-        );
+        assert_eq!(turned(plane.clone(), 6), array![[4.0, 1.0], [5.0, 2.0], [6.0, 3.0]]);
         for exif in 1..=8 {
             let grey = image::GrayImage::from_raw(3, 2, vec![1, 2, 3, 4, 5, 6]).unwrap();
             let mut other = DynamicImage::ImageLuma8(grey);
             other.apply_orientation(image::metadata::Orientation::from_exif(exif).unwrap());
             let ours: Vec<f32> = turned(plane.clone(), exif).iter().copied().collect();
-            let theirs: Vec<f32> = other
-                .to_luma8()
-                .iter()
-                .map(|level| f32::from(*level))
-                .collect();
+            let theirs: Vec<f32> = other.to_luma8().iter().map(|level| f32::from(*level)).collect();
             assert_eq!(ours, theirs, "orientation {exif}");
         }
     }
@@ -578,24 +456,14 @@ mod tests {
     #[test]
     fn every_format_gives_the_same_plane() {
         let folder = tempfile::tempdir().unwrap();
-        let grey = image::GrayImage::from_fn(7, 5, |x, y| {
-            image::Luma([u8::try_from(x * 20 + y).unwrap()])
-        });
+        let grey = image::GrayImage::from_fn(7, 5, |x, y| image::Luma([u8::try_from(x * 20 + y).unwrap()]));
         for name in ["a.png", "a.tif", "a.bmp", "a.pgm"] {
             let path = folder.path().join(name);
             grey.save(&path).unwrap();
             let frame = decode(&path, None, Some((7, 5))).unwrap();
             assert!((frame.plane[[3, 6]] - 123.0).abs() < 1e-6, "{name}");
             assert_eq!((frame.bits, frame.plane.dim()), (8, (5, 7)), "{name}");
-            assert_eq!(
-                probe(&path, None).unwrap(),
-                Header {
-                    width: 7,
-                    height: 5,
-                    bits: 8
-                },
-                "{name}"
-            );
+            assert_eq!(probe(&path, None).unwrap(), Header { width: 7, height: 5, bits: 8 }, "{name}");
         }
         let path = folder.path().join("a.jpg");
         grey.save(&path).unwrap();
@@ -607,23 +475,16 @@ mod tests {
         let folder = tempfile::tempdir().unwrap();
         for name in ["b.png", "b.tif"] {
             let path = folder.path().join(name);
-            image::ImageBuffer::from_fn(3, 2, |x, _| {
-                image::Luma([u16::try_from(x * 30_001).unwrap()])
-            })
-            .save(&path)
-            .unwrap();
+            image::ImageBuffer::from_fn(3, 2, |x, _| image::Luma([u16::try_from(x * 30_001).unwrap()]))
+                .save(&path)
+                .unwrap();
             let frame = decode(&path, None, None).unwrap();
             assert_eq!((frame.plane[[1, 2]], frame.bits), (60_002.0, 16), "{name}");
-            image::RgbImage::from_fn(3, 2, |x, _| {
-                image::Rgb([200, u8::try_from(x).unwrap(), 100])
-            })
-            .save(&path)
-            .unwrap();
+            image::RgbImage::from_fn(3, 2, |x, _| image::Rgb([200, u8::try_from(x).unwrap(), 100]))
+                .save(&path)
+                .unwrap();
             let luma = decode(&path, None, None).unwrap().plane[[0, 1]];
-            assert!(
-                (luma - (0.2126 * 200.0 + 0.7152 + 7.22)).abs() < 1e-3,
-                "{name}"
-            );
+            assert!((luma - (0.2126 * 200.0 + 0.7152 + 7.22)).abs() < 1e-3, "{name}");
         }
     }
 
@@ -634,25 +495,15 @@ mod tests {
         let mut encoder = tiff::encoder::TiffEncoder::new(File::create(&path).unwrap()).unwrap();
         for page in 0..3_u8 {
             let samples = [f32::from(page), 0.5, 0.25, 9.0];
-            encoder
-                .write_image::<tiff::encoder::colortype::Gray32Float>(2, 2, &samples)
-                .unwrap();
+            encoder.write_image::<tiff::encoder::colortype::Gray32Float>(2, 2, &samples).unwrap();
         }
-        encoder
-            .write_image::<tiff::encoder::colortype::Gray32Float>(2, 2, &[f32::NAN, 1.0, 2.0, 3.0])
-            .unwrap();
+        encoder.write_image::<tiff::encoder::colortype::Gray32Float>(2, 2, &[f32::NAN, 1.0, 2.0, 3.0]).unwrap();
         drop(encoder);
         assert_eq!(pages(&path), 4);
         let frame = decode(&path, Some(2), None).unwrap();
-        assert_eq!(
-            (frame.plane[[0, 0]], frame.plane[[0, 1]], frame.bits),
-            (2.0, 0.5, 32)
-        );
+        assert_eq!((frame.plane[[0, 0]], frame.plane[[0, 1]], frame.bits), (2.0, 0.5, 32));
         assert_eq!(decode(&path, Some(3), None), Err(FrameFault::NotNumbers));
-        assert!(matches!(
-            decode(&path, Some(4), None),
-            Err(FrameFault::Undecodable(_))
-        ));
+        assert!(matches!(decode(&path, Some(4), None), Err(FrameFault::Undecodable(_))));
     }
 
     #[test]
@@ -664,54 +515,30 @@ mod tests {
             path
         };
         let good = at("good.png", &[]);
-        image::GrayImage::from_fn(40, 40, |x, y| {
-            image::Luma([u8::try_from((x * 7 + y * 13) % 251).unwrap()])
-        })
-        .save(&good)
-        .unwrap();
+        image::GrayImage::from_fn(40, 40, |x, y| image::Luma([u8::try_from((x * 7 + y * 13) % 251).unwrap()]))
+            .save(&good)
+            .unwrap();
         let bytes = std::fs::read(&good).unwrap();
-        assert_eq!(
-            decode(&at("empty.png", &[]), None, None),
-            Err(FrameFault::Empty)
-        );
-        assert!(matches!(
-            decode(&at("text.png", b"not a picture"), None, None),
-            Err(FrameFault::Undecodable(_))
-        ));
+        assert_eq!(decode(&at("empty.png", &[]), None, None), Err(FrameFault::Empty));
+        assert!(matches!(decode(&at("text.png", b"not a picture"), None, None), Err(FrameFault::Undecodable(_))));
         assert!(matches!(
             decode(&at("cut.png", &bytes[..bytes.len() / 2]), None, None),
             Err(FrameFault::Undecodable(_))
         ));
-        assert!(matches!(
-            decode(&folder.path().join("none.png"), None, None),
-            Err(FrameFault::Unreadable(_))
-        ));
-        assert!(matches!(
-            decode(folder.path(), None, None),
-            Err(FrameFault::Unreadable(_))
-        ));
-        assert_eq!(
-            decode(&good, None, Some((40, 41))),
-            Err(FrameFault::OtherSize {
-                got: (40, 40),
-                want: (40, 41)
-            })
-        );
+        assert!(matches!(decode(&folder.path().join("none.png"), None, None), Err(FrameFault::Unreadable(_))));
+        assert!(matches!(decode(folder.path(), None, None), Err(FrameFault::Unreadable(_))));
+        assert_eq!(decode(&good, None, Some((40, 41))), Err(FrameFault::OtherSize { got: (40, 40), want: (40, 41) }));
         let blank = at("blank.png", &[]);
-        image::GrayImage::from_pixel(4, 4, image::Luma([7]))
-            .save(&blank)
-            .unwrap();
+        image::GrayImage::from_pixel(4, 4, image::Luma([7])).save(&blank).unwrap();
         assert_eq!(decode(&blank, None, None), Err(FrameFault::Blank));
         // A header that claims 2^31 × 2^31 px.
         let mut bomb = bytes.clone();
         bomb[16..24].copy_from_slice(&[0x7f, 0xff, 0xff, 0xff, 0x7f, 0xff, 0xff, 0xff]);
         assert!(decode(&at("bomb.png", &bomb), None, None).is_err());
         let jpeg = at("cut.jpg", &[]);
-        image::GrayImage::from_fn(64, 64, |x, y| {
-            image::Luma([u8::try_from((x * 7 + y * 13) % 251).unwrap()])
-        })
-        .save(&jpeg)
-        .unwrap();
+        image::GrayImage::from_fn(64, 64, |x, y| image::Luma([u8::try_from((x * 7 + y * 13) % 251).unwrap()]))
+            .save(&jpeg)
+            .unwrap();
         let bytes = std::fs::read(&jpeg).unwrap();
         assert!(matches!(
             decode(&at("cut2.jpg", &bytes[..bytes.len() / 2]), None, None),

@@ -18,9 +18,7 @@ pub const MARK: &str = "CONFIRM";
 const LOOKED: usize = 16;
 
 /// Extensions of frame files.
-const FRAME_TYPES: [&str; 11] = [
-    "png", "tif", "tiff", "jpg", "jpeg", "bmp", "pgm", "ppm", "pbm", "pnm", "pam",
-];
+const FRAME_TYPES: [&str; 11] = ["png", "tif", "tiff", "jpg", "jpeg", "bmp", "pgm", "ppm", "pbm", "pnm", "pam"];
 /// Extensions of text logs.
 const LOG_TYPES: [&str; 5] = ["csv", "txt", "tsv", "dat", "log"];
 
@@ -40,15 +38,9 @@ pub struct Draft {
 pub fn frame_patterns(folder: &Path) -> Vec<(String, usize)> {
     let mut counts: BTreeMap<String, usize> = BTreeMap::new();
     for file in files(folder) {
-        let (place, name) = file
-            .rsplit_once('/')
-            .map_or((String::new(), file.as_str()), |(place, name)| {
-                (format!("{place}/"), name)
-            });
-        if let Some((_, kind)) = name
-            .rsplit_once('.')
-            .filter(|(_, kind)| is_one_of(kind, &FRAME_TYPES))
-        {
+        let (place, name) =
+            file.rsplit_once('/').map_or((String::new(), file.as_str()), |(place, name)| (format!("{place}/"), name));
+        if let Some((_, kind)) = name.rsplit_once('.').filter(|(_, kind)| is_one_of(kind, &FRAME_TYPES)) {
             *counts.entry(format!("{place}*.{kind}")).or_default() += 1;
         }
     }
@@ -63,56 +55,29 @@ pub fn frame_patterns(folder: &Path) -> Vec<(String, usize)> {
 /// [`crate::Error::NoRunFolder`] and [`crate::Error::NothingToDraft`].
 pub fn propose(folder: &Path) -> Result<Draft, crate::Error> {
     if !folder.is_dir() {
-        return Err(crate::Error::NoRunFolder {
-            folder: folder.to_path_buf(),
-        });
+        return Err(crate::Error::NoRunFolder { folder: folder.to_path_buf() });
     }
     let patterns = frame_patterns(folder);
     let Some((pattern, count)) = patterns.first() else {
-        return Err(crate::Error::NothingToDraft {
-            folder: folder.to_path_buf(),
-        });
+        return Err(crate::Error::NothingToDraft { folder: folder.to_path_buf() });
     };
     let frames = Frames::look(folder, pattern);
     let mut page = Page::default();
-    page.plain("# Proposed from what the folder holds. Settle each line marked CONFIRM, then type: veerlog check FOLDER");
+    page.plain(
+        "# Proposed from what the folder holds. Settle each line marked CONFIRM, then type: veerlog check FOLDER",
+    );
     page.plain("# Lines that begin with # say what else could be given.");
     page.plain("");
     page.plain("# run = \"…\"                   the folder's name unless given");
-    page.plain(
-        "# specimen = \"…\"              what was tested; runs on one specimen are not independent",
-    );
-    write_frames(
-        &mut page,
-        pattern,
-        *count,
-        &frames,
-        times_table(folder).as_deref(),
-    );
-    write_cell(
-        &mut page,
-        &frames,
-        log_of(folder, CELL_COLUMNS, &["current_ma", "voltage_v"]).as_ref(),
-    );
-    write_load(
-        &mut page,
-        log_of(folder, LOAD_COLUMNS, &["force_n", "stress_mpa"]).as_ref(),
-    );
+    page.plain("# specimen = \"…\"              what was tested; runs on one specimen are not independent");
+    write_frames(&mut page, pattern, *count, &frames, times_table(folder).as_deref());
+    write_cell(&mut page, &frames, log_of(folder, CELL_COLUMNS, &["current_ma", "voltage_v"]).as_ref());
+    write_load(&mut page, log_of(folder, LOAD_COLUMNS, &["force_n", "stress_mpa"]).as_ref());
     for (other, count) in patterns.iter().skip(1) {
-        page.found.push(format!(
-            "{count} more files match {other}; they were left out"
-        ));
+        page.found.push(format!("{count} more files match {other}; they were left out"));
     }
-    let confirm = page
-        .text
-        .lines()
-        .filter(|line| line.contains(&format!("# {MARK}")))
-        .count();
-    Ok(Draft {
-        text: page.text,
-        found: page.found,
-        confirm,
-    })
+    let confirm = page.text.lines().filter(|line| line.contains(&format!("# {MARK}"))).count();
+    Ok(Draft { text: page.text, found: page.found, confirm })
 }
 
 /// The text as it is written, and what to tell.
@@ -168,33 +133,21 @@ struct Pictures {
 impl Frames {
     fn look(folder: &Path, pattern: &str) -> Self {
         let (place, kind) = pattern.split_once('*').unwrap_or((pattern, ""));
-        let matching = |file: &String| {
-            file.strip_prefix(place)
-                .is_some_and(|name| !name.contains('/') && name.ends_with(kind))
-        };
+        let matching =
+            |file: &String| file.strip_prefix(place).is_some_and(|name| !name.contains('/') && name.ends_with(kind));
         let mut names: Vec<String> = files(folder).into_iter().filter(matching).collect();
         names.sort_by(|a, b| order::natural(a, b));
         let paths: Vec<PathBuf> = names.iter().map(|name| folder.join(name)).collect();
-        let pages = if paths.len() == 1 {
-            decode::pages(&paths[0])
-        } else {
-            1
-        };
+        let pages = if paths.len() == 1 { decode::pages(&paths[0]) } else { 1 };
         let places: Vec<(PathBuf, Option<usize>)> = if pages > 1 {
-            (0..pages)
-                .map(|page| (paths[0].clone(), Some(page)))
-                .collect()
+            (0..pages).map(|page| (paths[0].clone(), Some(page))).collect()
         } else {
             paths.iter().map(|path| (path.clone(), None)).collect()
         };
         Self {
             header: paths.iter().find_map(|path| decode::probe(path, None).ok()),
             scale: paths.first().and_then(|path| tags::scale(path)),
-            times: if names.len() > 1 {
-                stamps::read(&names)
-            } else {
-                None
-            },
+            times: if names.len() > 1 { stamps::read(&names) } else { None },
             pictures: Pictures::look(&places),
             names,
             pages,
@@ -205,77 +158,42 @@ impl Frames {
 impl Pictures {
     fn look(places: &[(PathBuf, Option<usize>)]) -> Option<Self> {
         let frame = |(path, page): &(PathBuf, Option<usize>)| {
-            decode::decode(path, *page, None)
-                .ok()
-                .map(|frame| propose::shrunk(&frame.plane))
+            decode::decode(path, *page, None).ok().map(|frame| propose::shrunk(&frame.plane))
         };
-        let (start, (first, factor)) = places
-            .iter()
-            .enumerate()
-            .find_map(|(at, place)| Some((at, frame(place)?)))?;
-        let (_, (last, _)) = places
-            .iter()
-            .enumerate()
-            .rev()
-            .find_map(|(at, place)| Some((at, frame(place)?)))?;
+        let (start, (first, factor)) = places.iter().enumerate().find_map(|(at, place)| Some((at, frame(place)?)))?;
+        let (_, (last, _)) = places.iter().enumerate().rev().find_map(|(at, place)| Some((at, frame(place)?)))?;
         let same = |other: &ndarray::Array2<f32>| other.dim() == first.dim();
         let whole = same(&last).then(|| propose::change(&first, &last));
         let shares: Vec<f64> = places[start..]
             .iter()
             .take(LOOKED)
             .map_while(frame)
-            .map(|(later, _)| {
-                if same(&later) {
-                    propose::change(&first, &later).share()
-                } else {
-                    0.0
-                }
-            })
+            .map(|(later, _)| if same(&later) { propose::change(&first, &later).share() } else { 0.0 })
             .collect();
         // Halfway through the run, growth is still nearer to where it began.
-        let half =
-            frame(&places[start + (places.len() - start) / 2]).filter(|(half, _)| same(half));
+        let half = frame(&places[start + (places.len() - start) / 2]).filter(|(half, _)| same(half));
         let grown = whole.is_some_and(|change| change.told());
-        let centre = half
-            .and_then(|(half, _)| propose::change(&first, &half).centre)
-            .filter(|_| grown);
+        let centre = half.and_then(|(half, _)| propose::change(&first, &half).centre).filter(|_| grown);
         Some(Self {
             edges: propose::edges(&first, centre),
             factor,
             darker: !grown || whole.is_none_or(|change| change.darker >= change.brighter),
             grown,
-            bare: if places.len() == 1 {
-                0
-            } else {
-                propose::bare(&shares).min(places.len() - 1)
-            },
+            bare: if places.len() == 1 { 0 } else { propose::bare(&shares).min(places.len() - 1) },
         })
     }
 }
 
-fn write_frames(
-    page: &mut Page,
-    pattern: &str,
-    count: usize,
-    frames: &Frames,
-    times: Option<&str>,
-) {
+fn write_frames(page: &mut Page, pattern: &str, count: usize, frames: &Frames, times: Option<&str>) {
     page.table("frames");
-    let size = frames.header.map_or_else(String::new, |header| {
-        format!(
-            ", {} × {} px, {} bit",
-            header.width, header.height, header.bits
-        )
-    });
+    let size = frames
+        .header
+        .map_or_else(String::new, |header| format!(", {} × {} px, {} bit", header.width, header.height, header.bits));
     let files = match (frames.names.as_slice(), frames.pages) {
         ([only], 2..) => only.clone(),
         _ => pattern.to_owned(),
     };
-    let what = if frames.pages > 1 {
-        format!("{} pages{size}", frames.pages)
-    } else {
-        format!("{count} frames{size}")
-    };
+    let what = if frames.pages > 1 { format!("{} pages{size}", frames.pages) } else { format!("{count} frames{size}") };
     page.sure(&format!("files = {}", quote(&files)), &what);
     page.found(format!("{what} ({files})"));
     match (times, &frames.times) {
@@ -287,23 +205,14 @@ fn write_frames(
             page.found(format!("frame times in {table}"));
         }
         (None, Some(times)) => write_name_times(page, times),
-        (None, None) => page.ask(
-            "interval_s = 1.0",
-            "seconds from frame to frame; nothing in the folder tells them",
-        ),
+        (None, None) => page.ask("interval_s = 1.0", "seconds from frame to frame; nothing in the folder tells them"),
     }
     match frames.scale {
         Some((um, tag)) => {
-            page.ask(
-                &format!("um_per_px = {um:.6}"),
-                &format!("from {tag}; check it against a known length"),
-            );
+            page.ask(&format!("um_per_px = {um:.6}"), &format!("from {tag}; check it against a known length"));
             page.found(format!("scale {um:.4} µm per px in {tag}"));
         }
-        None => page.ask(
-            "um_per_px = 1.0",
-            "µm of a known length divided by its px; no tag tells it",
-        ),
+        None => page.ask("um_per_px = 1.0", "µm of a known length divided by its px; no tag tells it"),
     }
     let pictures = frames.pictures.as_ref();
     let darker = pictures.is_none_or(|pictures| pictures.darker);
@@ -319,18 +228,12 @@ fn write_frames(
         &format!("\"darker\" or \"brighter\" than the electrolyte around; {why}"),
     );
     let bare = pictures.map_or(0, |pictures| pictures.bare);
-    page.ask(
-        &format!("bare = {bare}"),
-        "leading frames taken before any growth; 0 = none",
-    );
+    page.ask(&format!("bare = {bare}"), "leading frames taken before any growth; 0 = none");
 }
 
 fn write_name_times(page: &mut Page, times: &NameTimes) {
     let Some((interval, even)) = times.interval_s() else {
-        page.ask(
-            "interval_s = 1.0",
-            "seconds from frame to frame; nothing in the folder tells them",
-        );
+        page.ask("interval_s = 1.0", "seconds from frame to frame; nothing in the folder tells them");
         return;
     };
     let why = if even {
@@ -345,17 +248,12 @@ fn write_name_times(page: &mut Page, times: &NameTimes) {
             "date of the first frame, from its name; only to join logs that hold dates",
         );
     }
-    page.found(format!(
-        "an interval of {interval} s in the file names{}",
-        if even { "" } else { " (uneven)" }
-    ));
+    page.found(format!("an interval of {interval} s in the file names{}", if even { "" } else { " (uneven)" }));
 }
 
 fn write_cell(page: &mut Page, frames: &Frames, log: Option<&FoundLog>) {
     page.table("cell");
-    let (width, height) = frames
-        .header
-        .map_or((1024, 768), |header| (header.width, header.height));
+    let (width, height) = frames.header.map_or((1024, 768), |header| (header.width, header.height));
     match &frames.pictures {
         Some(pictures) => {
             let told = if pictures.edges.told_apart {
@@ -385,11 +283,7 @@ fn write_cell(page: &mut Page, frames: &Frames, log: Option<&FoundLog>) {
                 "[x, y] in px; no frame could be decoded",
             );
             page.ask(
-                &format!(
-                    "far_edge = [[{0}, 0], [{0}, {1}]]",
-                    width.saturating_sub(1),
-                    height.saturating_sub(1)
-                ),
+                &format!("far_edge = [[{0}, 0], [{0}, {1}]]", width.saturating_sub(1), height.saturating_sub(1)),
                 "[x, y] in px",
             );
         }
@@ -405,15 +299,15 @@ fn write_cell(page: &mut Page, frames: &Frames, log: Option<&FoundLog>) {
 fn write_load(page: &mut Page, log: Option<&FoundLog>) {
     page.table("load");
     let Some(log) = log else {
-        page.ask("fixture = \"none\"", "no load log was found; give log = \"load.csv\", or force_n or stress_mpa where the load was constant");
+        page.ask(
+            "fixture = \"none\"",
+            "no load log was found; give log = \"load.csv\", or force_n or stress_mpa where the load was constant",
+        );
         return;
     };
     log.write(page, "force > 0 must press");
     if !log.columns.iter().any(|(name, _)| *name == "direction_deg") {
-        page.ask(
-            "direction_deg = 90.0",
-            "load axis, degrees anticlockwise from x to the right",
-        );
+        page.ask("direction_deg = 90.0", "load axis, degrees anticlockwise from x to the right");
     }
     let stress = log.columns.iter().any(|(name, _)| *name == "stress_mpa");
     let fixture = if stress { "stress" } else { "none" };
@@ -429,11 +323,7 @@ struct FoundLog {
 
 impl FoundLog {
     fn write(&self, page: &mut Page, sign: &str) {
-        let quantities = self
-            .columns
-            .iter()
-            .filter(|(name, _)| !matches!(*name, "time_s" | "time"))
-            .count();
+        let quantities = self.columns.iter().filter(|(name, _)| !matches!(*name, "time_s" | "time")).count();
         page.ask(&format!("log = {}", quote(&self.file)), sign);
         let renamed: Vec<String> = self
             .columns
@@ -442,17 +332,12 @@ impl FoundLog {
             .map(|(name, heading)| format!("{name} = {}", quote(heading)))
             .collect();
         if !renamed.is_empty() {
-            page.ask(
-                &format!("columns = {{ {} }}", renamed.join(", ")),
-                "which heading is what",
-            );
+            page.ask(&format!("columns = {{ {} }}", renamed.join(", ")), "which heading is what");
         }
         let factors: Vec<String> = self
             .columns
             .iter()
-            .filter_map(|(name, heading)| {
-                guess::factor_for(name, heading).map(|factor| format!("{name} = {factor:?}"))
-            })
+            .filter_map(|(name, heading)| guess::factor_for(name, heading).map(|factor| format!("{name} = {factor:?}")))
             .collect();
         if !factors.is_empty() {
             page.ask(
@@ -471,9 +356,7 @@ fn log_of(folder: &Path, columns: &'static [&'static str], needed: &[&str]) -> O
         let mut known: Vec<(&'static str, String)> = Vec::new();
         for column in columns {
             let heading = guess::heading_for(column, &headings);
-            if let Some(heading) =
-                heading.filter(|heading| !known.iter().any(|(_, taken)| taken == heading))
-            {
+            if let Some(heading) = heading.filter(|heading| !known.iter().any(|(_, taken)| taken == heading)) {
                 known.push((column, heading.to_owned()));
             }
         }
@@ -481,14 +364,9 @@ fn log_of(folder: &Path, columns: &'static [&'static str], needed: &[&str]) -> O
             known.retain(|(name, _)| *name != "time");
         }
         let has = |names: &[&str]| known.iter().any(|(name, _)| names.contains(name));
-        let more = best
-            .as_ref()
-            .is_none_or(|best| known.len() > best.columns.len());
+        let more = best.as_ref().is_none_or(|best| known.len() > best.columns.len());
         if has(&["time_s", "time"]) && has(needed) && more {
-            best = Some(FoundLog {
-                file,
-                columns: known,
-            });
+            best = Some(FoundLog { file, columns: known });
         }
     }
     best
@@ -497,9 +375,7 @@ fn log_of(folder: &Path, columns: &'static [&'static str], needed: &[&str]) -> O
 /// A table that times the frames.
 fn times_table(folder: &Path) -> Option<String> {
     let has = |headings: &[String], names: &[&str]| {
-        headings
-            .iter()
-            .any(|heading| names.contains(&heading.to_lowercase().as_str()))
+        headings.iter().any(|heading| names.contains(&heading.to_lowercase().as_str()))
     };
     text_tables(folder)
         .into_iter()
@@ -511,19 +387,12 @@ fn times_table(folder: &Path) -> Option<String> {
 fn text_tables(folder: &Path) -> Vec<(String, Vec<String>)> {
     let mut names: Vec<String> = files(folder);
     names.sort_by(|a, b| order::natural(a, b));
-    let is_log = |name: &String| {
-        name.rsplit_once('.')
-            .is_some_and(|(_, kind)| is_one_of(kind, &LOG_TYPES))
-    };
+    let is_log = |name: &String| name.rsplit_once('.').is_some_and(|(_, kind)| is_one_of(kind, &LOG_TYPES));
     let headings = |name: String| {
         let text = textlog::read_text(&folder.join(&name)).ok()?;
         guess::heading_line(&text).map(|headings| (name, headings))
     };
-    names
-        .into_iter()
-        .filter(is_log)
-        .filter_map(headings)
-        .collect()
+    names.into_iter().filter(is_log).filter_map(headings).collect()
 }
 
 /// Files in a folder and directly below it, as paths from it. Hidden ones and our own output are left out.
@@ -532,13 +401,9 @@ fn files(folder: &Path) -> Vec<String> {
         let Ok(entries) = std::fs::read_dir(place) else {
             return Vec::new();
         };
-        let named =
-            |entry: std::fs::DirEntry| Some((entry.file_name().into_string().ok()?, entry.path()));
-        let mut found: Vec<_> = entries
-            .flatten()
-            .filter_map(named)
-            .filter(|(name, _)| !name.starts_with('.'))
-            .collect();
+        let named = |entry: std::fs::DirEntry| Some((entry.file_name().into_string().ok()?, entry.path()));
+        let mut found: Vec<_> =
+            entries.flatten().filter_map(named).filter(|(name, _)| !name.starts_with('.')).collect();
         found.sort();
         found
     };
@@ -565,10 +430,7 @@ fn quote(text: &str) -> String {
 
 /// Ends of an edge as TOML, from px of a shrunk picture to px of the frame.
 fn points(ends: [[f64; 2]; 2], factor: usize) -> String {
-    #[expect(
-        clippy::cast_precision_loss,
-        reason = "a shrink factor is a small number"
-    )]
+    #[expect(clippy::cast_precision_loss, reason = "a shrink factor is a small number")]
     let factor = factor as f64;
     let mut text = String::from("[");
     for (at, point) in ends.iter().enumerate() {
@@ -606,24 +468,11 @@ mod tests {
                 };
                 image::Luma([level + noise])
             });
-            picture
-                .save(
-                    folder
-                        .path()
-                        .join(format!("film/c_20260305_10{:02}00.png", frame)),
-                )
-                .unwrap();
+            picture.save(folder.path().join(format!("film/c_20260305_10{:02}00.png", frame))).unwrap();
         }
-        std::fs::write(
-            folder.path().join("rig.txt"),
-            "Prüfstand 2\nZeit (min);Kraft [kN]\n0;0,001\n1;0,002\n",
-        )
-        .unwrap();
-        std::fs::write(
-            folder.path().join("potentiostat.csv"),
-            "time_s,I/mA,Ewe/V\n0,0.1,0.2\n",
-        )
-        .unwrap();
+        std::fs::write(folder.path().join("rig.txt"), "Prüfstand 2\nZeit (min);Kraft [kN]\n0;0,001\n1;0,002\n")
+            .unwrap();
+        std::fs::write(folder.path().join("potentiostat.csv"), "time_s,I/mA,Ewe/V\n0,0.1,0.2\n").unwrap();
         folder
     }
 
@@ -634,31 +483,14 @@ mod tests {
         let manifest = Manifest::parse(&draft.text, folder.path()).unwrap();
         assert_eq!(manifest.frames.files, "film/*.png");
         assert_eq!(manifest.frames.interval_s, Some(60.0));
-        assert_eq!(
-            manifest.frames.start.as_deref(),
-            Some("2026-03-05T10:00:00")
-        );
+        assert_eq!(manifest.frames.start.as_deref(), Some("2026-03-05T10:00:00"));
         assert_eq!(manifest.frames.filament, Filament::Brighter);
         assert_eq!(manifest.frames.bare, 3);
-        assert!(
-            (manifest.cell.plating_edge[0][0] - 139.5).abs() < 1.5,
-            "{:?}",
-            manifest.cell.plating_edge
-        );
-        assert!(
-            (manifest.cell.far_edge[0][0] - 14.5).abs() < 1.5,
-            "{:?}",
-            manifest.cell.far_edge
-        );
+        assert!((manifest.cell.plating_edge[0][0] - 139.5).abs() < 1.5, "{:?}", manifest.cell.plating_edge);
+        assert!((manifest.cell.far_edge[0][0] - 14.5).abs() < 1.5, "{:?}", manifest.cell.far_edge);
         assert_eq!(manifest.cell.columns["current_ma"], "I/mA");
         assert_eq!(manifest.load.columns["force_n"], "Kraft [kN]");
-        assert_eq!(
-            (
-                manifest.load.scale["force_n"],
-                manifest.load.scale["time_s"]
-            ),
-            (1000.0, 60.0)
-        );
+        assert_eq!((manifest.load.scale["force_n"], manifest.load.scale["time_s"]), (1000.0, 60.0));
         assert!(draft.confirm >= 8);
         let sequence = FrameSequence::open(folder.path(), &manifest).unwrap();
         assert_eq!(sequence.entries.len(), 8);
@@ -667,10 +499,7 @@ mod tests {
     #[test]
     fn an_empty_folder_has_nothing_to_draft() {
         let folder = tempfile::tempdir().unwrap();
-        assert!(matches!(
-            propose(folder.path()),
-            Err(crate::Error::NothingToDraft { .. })
-        ));
+        assert!(matches!(propose(folder.path()), Err(crate::Error::NothingToDraft { .. })));
     }
 
     #[test]
@@ -678,10 +507,6 @@ mod tests {
         let folder = tempfile::tempdir().unwrap();
         std::fs::write(folder.path().join("a\"b.png"), b"broken").unwrap();
         let draft = propose(folder.path()).unwrap();
-        assert!(
-            Manifest::parse(&draft.text, folder.path()).is_ok(),
-            "{}",
-            draft.text
-        );
+        assert!(Manifest::parse(&draft.text, folder.path()).is_ok(), "{}", draft.text);
     }
 }

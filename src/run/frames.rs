@@ -77,9 +77,7 @@ pub enum FramesError {
     #[error("none of the {count} frames can be used; the first, {file}, {fault}")]
     #[diagnostic(
         code(frames::all_broken),
-        help(
-            "open one of them in an image viewer; copy the frames again, or correct `files` in run.toml"
-        )
+        help("open one of them in an image viewer; copy the frames again, or correct `files` in run.toml")
     )]
     AllBroken {
         /// Frames found.
@@ -90,9 +88,7 @@ pub enum FramesError {
         fault: FrameFault,
     },
     /// A name is not UTF-8.
-    #[error(
-        "{folder}: the file name `{name}` is not UTF-8, so its place in the order is not known"
-    )]
+    #[error("{folder}: the file name `{name}` is not UTF-8, so its place in the order is not known")]
     #[diagnostic(code(frames::name), help("rename the file"))]
     Name {
         /// The folder.
@@ -104,9 +100,7 @@ pub enum FramesError {
     #[error("{file}: by_number = true, but {what}")]
     #[diagnostic(
         code(frames::number),
-        help(
-            "name the frames with rising numbers, or type interval_s or times in place of by_number"
-        )
+        help("name the frames with rising numbers, or type interval_s or times in place of by_number")
     )]
     Number {
         /// The frame.
@@ -162,28 +156,12 @@ impl FrameSequence {
         let (width, height, bits) = common_size(&entries)?;
         manifest.check_frame(width, height)?;
         if manifest.frames.bare >= entries.len().max(2) {
-            let what = format!(
-                "bare is {}, but there are only {} frames",
-                manifest.frames.bare,
-                entries.len()
-            );
+            let what = format!("bare is {}, but there are only {} frames", manifest.frames.bare, entries.len());
             return Err(manifest
-                .fault(
-                    "frames",
-                    "bare",
-                    what,
-                    "type how many leading frames were taken before any growth, or 0",
-                )
+                .fault("frames", "bare", what, "type how many leading frames were taken before any growth, or 0")
                 .into());
         }
-        Ok(Self {
-            entries,
-            width,
-            height,
-            bits,
-            clock,
-            warnings,
-        })
+        Ok(Self { entries, width, height, bits, clock, warnings })
     }
 
     /// Decodes frame `i`, from any thread.
@@ -207,15 +185,8 @@ impl FrameSequence {
     /// The error for a run of which no frame could be decoded. `fault`: of the first frame.
     #[must_use]
     pub fn all_broken(&self, fault: FrameFault) -> FramesError {
-        let file = self
-            .entries
-            .first()
-            .map_or_else(String::new, |entry| entry.file.clone());
-        FramesError::AllBroken {
-            count: self.entries.len(),
-            file,
-            fault,
-        }
+        let file = self.entries.first().map_or_else(String::new, |entry| entry.file.clone());
+        FramesError::AllBroken { count: self.entries.len(), file, fault }
     }
 }
 
@@ -227,12 +198,7 @@ fn find(folder: &Path, manifest: &Manifest) -> Result<Vec<String>, crate::Error>
     let parts: Result<Vec<Pattern>, _> = parts.map(Pattern::new).collect();
     let parts = parts.map_err(|error| {
         let what = format!("`{pattern}` is no file pattern: {error}");
-        manifest.fault(
-            "frames",
-            "files",
-            what,
-            "type one like files = \"frames/*.png\"",
-        )
+        manifest.fault("frames", "files", what, "type one like files = \"frames/*.png\"")
     })?;
     let mut names = Vec::new();
     expand(folder, "", &parts, &mut names)?;
@@ -241,9 +207,7 @@ fn find(folder: &Path, manifest: &Manifest) -> Result<Vec<String>, crate::Error>
     }
     if let Some(name) = names.iter().find(|name| leaves(folder, &folder.join(name))) {
         let what = format!("{name} is a link that leads out of the run folder");
-        return Err(manifest
-            .fault("frames", "files", what, "copy the file into the run folder")
-            .into());
+        return Err(manifest.fault("frames", "files", what, "copy the file into the run folder").into());
     }
     names.sort_by(|a, b| order::natural(a, b));
     names.dedup();
@@ -252,12 +216,7 @@ fn find(folder: &Path, manifest: &Manifest) -> Result<Vec<String>, crate::Error>
 
 /// Adds the files below `folder/place` that match the parts of a pattern. A name that is not UTF-8 is an error where it could
 /// match: a frame must not be lost without a word. `**` does not follow links.
-fn expand(
-    folder: &Path,
-    place: &str,
-    parts: &[Pattern],
-    found: &mut Vec<String>,
-) -> Result<(), FramesError> {
+fn expand(folder: &Path, place: &str, parts: &[Pattern], found: &mut Vec<String>) -> Result<(), FramesError> {
     let here = folder.join(place);
     let Some((part, rest)) = parts.split_first() else {
         if !here.is_dir() {
@@ -266,20 +225,12 @@ fn expand(
         return Ok(());
     };
     let below = |name: &str| {
-        if place.is_empty() {
-            name.to_owned()
-        } else {
-            format!("{place}/{name}")
-        }
+        if place.is_empty() { name.to_owned() } else { format!("{place}/{name}") }
     };
     if Pattern::escape(part.as_str()) == part.as_str() {
         let next = below(part.as_str());
         let there = folder.join(&next).symlink_metadata().is_ok();
-        return if there {
-            expand(folder, &next, rest, found)
-        } else {
-            Ok(())
-        };
+        return if there { expand(folder, &next, rest, found) } else { Ok(()) };
     }
     if !here.is_dir() {
         return Ok(());
@@ -288,25 +239,15 @@ fn expand(
     if deep {
         expand(folder, place, rest, found)?;
     }
-    let options = MatchOptions {
-        require_literal_leading_dot: true,
-        ..MatchOptions::new()
-    };
-    let io = |source| FramesError::Io {
-        path: here.clone(),
-        source,
-    };
+    let options = MatchOptions { require_literal_leading_dot: true, ..MatchOptions::new() };
+    let io = |source| FramesError::Io { path: here.clone(), source };
     for entry in std::fs::read_dir(&here).map_err(io)? {
         let entry = entry.map_err(io)?;
         let name = entry
             .file_name()
             .into_string()
-            .map_err(|name| FramesError::Name {
-                folder: here.clone(),
-                name: name.to_string_lossy().into_owned(),
-            })?;
-        let real_folder =
-            entry.file_type().is_ok_and(|kind| kind.is_dir()) && !name.starts_with('.');
+            .map_err(|name| FramesError::Name { folder: here.clone(), name: name.to_string_lossy().into_owned() })?;
+        let real_folder = entry.file_type().is_ok_and(|kind| kind.is_dir()) && !name.starts_with('.');
         if deep && real_folder {
             expand(folder, &below(&name), parts, found)?;
         } else if !deep && part.matches_with(&name, options) {
@@ -322,25 +263,14 @@ fn nothing_found(folder: &Path, pattern: &str) -> FramesError {
         Some((other, count)) => format!("{count} files match files = \"{other}\""),
         None => "put the frames (PNG, TIFF, JPEG, BMP or PNM) into the run folder, or correct the pattern".to_owned(),
     };
-    FramesError::None {
-        folder: folder.to_path_buf(),
-        pattern: pattern.to_owned(),
-        help,
-    }
+    FramesError::None { folder: folder.to_path_buf(), pattern: pattern.to_owned(), help }
 }
 
 fn entries(folder: &Path, files: Vec<String>, warnings: &mut Vec<String>) -> Vec<FrameEntry> {
-    let entry = |(frame, file): (usize, String)| FrameEntry {
-        frame,
-        path: folder.join(&file),
-        file,
-        time_s: 0.0,
-        page: None,
-    };
+    let entry =
+        |(frame, file): (usize, String)| FrameEntry { frame, path: folder.join(&file), file, time_s: 0.0, page: None };
     let mut entries: Vec<FrameEntry> = files.into_iter().enumerate().map(entry).collect();
-    let pages = entries
-        .first()
-        .map_or(1, |first| decode::pages(&first.path));
+    let pages = entries.first().map_or(1, |first| decode::pages(&first.path));
     if pages > 1 && entries.len() == 1 {
         let stack = entries.remove(0);
         let page = |page| FrameEntry {
@@ -351,10 +281,7 @@ fn entries(folder: &Path, files: Vec<String>, warnings: &mut Vec<String>) -> Vec
         };
         entries = (0..pages).map(page).collect();
     } else if pages > 1 {
-        warnings.push(format!(
-            "{} has {pages} pages; of each file only the first page is read",
-            entries[0].file
-        ));
+        warnings.push(format!("{} has {pages} pages; of each file only the first page is read", entries[0].file));
     }
     entries
 }
@@ -366,23 +293,13 @@ fn common_size(entries: &[FrameEntry]) -> Result<(u32, u32, u8), FramesError> {
     let mut readable = 0;
     for entry in entries {
         match decode::probe(&entry.path, entry.page) {
-            Ok(header)
-                if u64::from(header.width) * u64::from(header.height) <= decode::MAX_PIXELS =>
-            {
-                let count = counts
-                    .entry((header.width, header.height, header.bits))
-                    .or_insert((0, entry.frame));
+            Ok(header) if u64::from(header.width) * u64::from(header.height) <= decode::MAX_PIXELS => {
+                let count = counts.entry((header.width, header.height, header.bits)).or_insert((0, entry.frame));
                 count.0 += 1;
                 readable += 1;
             }
             Ok(header) => {
-                first_fault.get_or_insert((
-                    entry,
-                    FrameFault::TooLarge {
-                        width: header.width,
-                        height: header.height,
-                    },
-                ));
+                first_fault.get_or_insert((entry, FrameFault::TooLarge { width: header.width, height: header.height }));
             }
             Err(fault) => {
                 first_fault.get_or_insert((entry, fault));
@@ -392,48 +309,23 @@ fn common_size(entries: &[FrameEntry]) -> Result<(u32, u32, u8), FramesError> {
             break;
         }
     }
-    let best = counts
-        .into_iter()
-        .max_by_key(|(_, (count, first))| (*count, std::cmp::Reverse(*first)));
+    let best = counts.into_iter().max_by_key(|(_, (count, first))| (*count, std::cmp::Reverse(*first)));
     best.map(|(size, _)| size).ok_or_else(|| {
-        let (file, fault) = first_fault
-            .map_or((String::new(), FrameFault::Empty), |(entry, fault)| {
-                (entry.file.clone(), fault)
-            });
-        FramesError::AllBroken {
-            count: entries.len(),
-            file,
-            fault,
-        }
+        let (file, fault) =
+            first_fault.map_or((String::new(), FrameFault::Empty), |(entry, fault)| (entry.file.clone(), fault));
+        FramesError::AllBroken { count: entries.len(), file, fault }
     })
 }
 
 /// Times every frame and settles the clock shared with the logs.
-fn time(
-    entries: &mut [FrameEntry],
-    manifest: &Manifest,
-    warnings: &mut Vec<String>,
-) -> Result<Clock, crate::Error> {
+fn time(entries: &mut [FrameEntry], manifest: &Manifest, warnings: &mut Vec<String>) -> Result<Clock, crate::Error> {
     let frames = &manifest.frames;
     let utc_offset_s = frames.utc_offset.as_deref().and_then(parse_offset);
-    let start = frames
-        .start
-        .as_deref()
-        .map(|text| parse_stamp(text, utc_offset_s))
-        .transpose();
+    let start = frames.start.as_deref().map(|text| parse_stamp(text, utc_offset_s)).transpose();
     let start_unix_s = start.map_err(|error| {
-        manifest.fault(
-            "frames",
-            "start",
-            error.to_string(),
-            "type start = \"2026-03-05T10:00:00\"",
-        )
+        manifest.fault("frames", "start", error.to_string(), "type start = \"2026-03-05T10:00:00\"")
     })?;
-    let mut clock = Clock {
-        zero_s: 0.0,
-        start_unix_s,
-        utc_offset_s,
-    };
+    let mut clock = Clock { zero_s: 0.0, start_unix_s, utc_offset_s };
     match (&frames.times, frames.interval_s) {
         (Some(named), _) => {
             let path = manifest.inside("frames", "times", named)?;
@@ -445,10 +337,7 @@ fn time(
             } else {
                 clock.zero_s = zero;
             }
-            entries
-                .iter_mut()
-                .zip(times.seconds)
-                .for_each(|(entry, time)| entry.time_s = time - zero);
+            entries.iter_mut().zip(times.seconds).for_each(|(entry, time)| entry.time_s = time - zero);
         }
         (None, interval) if frames.by_number => by_number(entries, interval.unwrap_or(1.0))?,
         (None, interval) => {
@@ -459,10 +348,7 @@ fn time(
             warnings.extend(numbering_gaps(entries, interval));
         }
     }
-    match entries
-        .windows(2)
-        .find(|pair| pair[1].time_s <= pair[0].time_s)
-    {
+    match entries.windows(2).find(|pair| pair[1].time_s <= pair[0].time_s) {
         None => Ok(clock),
         Some(pair) => Err(FramesError::Order {
             file: pair[1].file.clone(),
@@ -474,36 +360,24 @@ fn time(
     }
 }
 
-#[expect(
-    clippy::cast_precision_loss,
-    reason = "frame numbers are far below 2^53"
-)]
+#[expect(clippy::cast_precision_loss, reason = "frame numbers are far below 2^53")]
 fn index(frame: usize) -> f64 {
     frame as f64
 }
 
 fn by_number(entries: &mut [FrameEntry], interval_s: f64) -> Result<(), FramesError> {
-    let fault = |file: &str, what: String| FramesError::Number {
-        file: file.to_owned(),
-        what,
-    };
+    let fault = |file: &str, what: String| FramesError::Number { file: file.to_owned(), what };
     let mut first = None;
     for entry in entries {
         let number = match entry.page {
             Some(page) => Some(page as u64),
             None => order::number(&entry.file),
         };
-        let number =
-            number.ok_or_else(|| fault(&entry.file, "its name holds no number".to_owned()))?;
+        let number = number.ok_or_else(|| fault(&entry.file, "its name holds no number".to_owned()))?;
         let zero = *first.get_or_insert(number);
-        let step = number
-            .checked_sub(zero)
-            .and_then(|step| usize::try_from(step).ok());
+        let step = number.checked_sub(zero).and_then(|step| usize::try_from(step).ok());
         let step = step.ok_or_else(|| {
-            fault(
-                &entry.file,
-                format!("its number {number} is below that of the first frame, {zero}"),
-            )
+            fault(&entry.file, format!("its number {number} is below that of the first frame, {zero}"))
         })?;
         entry.time_s = index(step) * interval_s;
     }
@@ -512,21 +386,10 @@ fn by_number(entries: &mut [FrameEntry], interval_s: f64) -> Result<(), FramesEr
 
 /// A warning where the numbers in the names jump by more than their usual step.
 fn numbering_gaps(entries: &[FrameEntry], interval_s: f64) -> Option<String> {
-    let numbers: Option<Vec<u64>> = entries
-        .iter()
-        .map(|entry| {
-            if entry.page.is_some() {
-                None
-            } else {
-                order::number(&entry.file)
-            }
-        })
-        .collect();
+    let numbers: Option<Vec<u64>> =
+        entries.iter().map(|entry| if entry.page.is_some() { None } else { order::number(&entry.file) }).collect();
     let numbers = numbers?;
-    let steps: Vec<u64> = numbers
-        .windows(2)
-        .map(|pair| pair[1].saturating_sub(pair[0]))
-        .collect();
+    let steps: Vec<u64> = numbers.windows(2).map(|pair| pair[1].saturating_sub(pair[0])).collect();
     let mut sorted: Vec<u64> = steps.iter().copied().filter(|step| *step > 0).collect();
     sorted.sort_unstable();
     // The lower median, so that of two steps the smaller counts as usual.
@@ -547,20 +410,13 @@ fn numbering_gaps(entries: &[FrameEntry], interval_s: f64) -> Option<String> {
 mod tests {
     use super::*;
 
-    fn run(
-        files: &[&str],
-        frames: &str,
-    ) -> (tempfile::TempDir, Result<FrameSequence, crate::Error>) {
+    fn run(files: &[&str], frames: &str) -> (tempfile::TempDir, Result<FrameSequence, crate::Error>) {
         let folder = tempfile::tempdir().unwrap();
         std::fs::create_dir(folder.path().join("frames")).unwrap();
         for (at, file) in files.iter().enumerate() {
             let level = u8::try_from(at).unwrap();
-            let picture = image::GrayImage::from_fn(8, 6, |x, _| {
-                image::Luma([level + u8::try_from(x).unwrap()])
-            });
-            picture
-                .save(folder.path().join("frames").join(file))
-                .unwrap();
+            let picture = image::GrayImage::from_fn(8, 6, |x, _| image::Luma([level + u8::try_from(x).unwrap()]));
+            picture.save(folder.path().join("frames").join(file)).unwrap();
         }
         let sequence = open(folder.path(), frames);
         (folder, sequence)
@@ -578,11 +434,7 @@ mod tests {
     fn natural_order_and_interval() {
         let (_folder, sequence) = run(&["f10.png", "f2.png", "f1.png"], "interval_s = 5");
         let sequence = sequence.unwrap();
-        let files: Vec<_> = sequence
-            .entries
-            .iter()
-            .map(|entry| entry.file.as_str())
-            .collect();
+        let files: Vec<_> = sequence.entries.iter().map(|entry| entry.file.as_str()).collect();
         assert_eq!(files, ["frames/f1.png", "frames/f2.png", "frames/f10.png"]);
         assert_eq!(sequence.times_s(), [0.0, 5.0, 10.0]);
         assert_eq!((sequence.width, sequence.height, sequence.bits), (8, 6, 8));
@@ -592,10 +444,7 @@ mod tests {
             sequence.warnings
         );
         assert!(sequence.decode(2).unwrap().plane[[0, 0]].abs() < 1e-6);
-        let (_folder, sequence) = run(
-            &["f10.png", "f2.png", "f1.png"],
-            "interval_s = 5\nby_number = true",
-        );
+        let (_folder, sequence) = run(&["f10.png", "f2.png", "f1.png"], "interval_s = 5\nby_number = true");
         assert_eq!(sequence.unwrap().times_s(), [0.0, 5.0, 45.0]);
     }
 
@@ -607,34 +456,15 @@ mod tests {
             open(folder.path(), "times = \"times.csv\"")
         };
         let sequence = timed("file,time_s\nb.png,17.5\nframes/a.png,10\n").unwrap();
-        assert_eq!(
-            (sequence.times_s(), sequence.clock.zero_s),
-            (vec![0.0, 7.5], 10.0)
-        );
-        let sequence =
-            timed("file;time\na.png;2026-03-05 10:00:00\nb.png;2026-03-05 10:00:30\n").unwrap();
-        assert_eq!(
-            (sequence.times_s()[1], sequence.clock.start_unix_s),
-            (30.0, Some(1_772_704_800.0))
-        );
+        assert_eq!((sequence.times_s(), sequence.clock.zero_s), (vec![0.0, 7.5], 10.0));
+        let sequence = timed("file;time\na.png;2026-03-05 10:00:00\nb.png;2026-03-05 10:00:30\n").unwrap();
+        assert_eq!((sequence.times_s()[1], sequence.clock.start_unix_s), (30.0, Some(1_772_704_800.0)));
         for (table, what) in [
             ("file,time_s\na.png,1\n", "no row for frames/b.png"),
-            (
-                "file,time_s\na.png,1\nb.png,2\nc.png,3\n",
-                "line 4: `c.png` is none of the frames",
-            ),
-            (
-                "file,time_s\na.png,1\na.png,2\nb.png,3\n",
-                "line 3: `a.png` has a second row",
-            ),
-            (
-                "file,time_s\na.png,x\nb.png,3\n",
-                "line 2: `x` is no number",
-            ),
-            (
-                "file,time_s\na.png,5\nb.png,3\n",
-                "not after the frame before it",
-            ),
+            ("file,time_s\na.png,1\nb.png,2\nc.png,3\n", "line 4: `c.png` is none of the frames"),
+            ("file,time_s\na.png,1\na.png,2\nb.png,3\n", "line 3: `a.png` has a second row"),
+            ("file,time_s\na.png,x\nb.png,3\n", "line 2: `x` is no number"),
+            ("file,time_s\na.png,5\nb.png,3\n", "not after the frame before it"),
             ("a.png,5\n", "no line holds the headings"),
         ] {
             let error = timed(table).unwrap_err().to_string();
@@ -652,12 +482,7 @@ mod tests {
             std::fs::write(folder.path().join(format!("frames/{name}.png")), b"").unwrap();
         }
         let error = open(folder.path(), "interval_s = 1").unwrap_err();
-        assert!(
-            error
-                .to_string()
-                .contains("none of the 3 frames can be used"),
-            "{error}"
-        );
+        assert!(error.to_string().contains("none of the 3 frames can be used"), "{error}");
     }
 
     #[test]
@@ -666,10 +491,7 @@ mod tests {
         std::fs::rename(folder.path().join("frames"), folder.path().join("film")).unwrap();
         let error = open(folder.path(), "interval_s = 1").unwrap_err();
         let help = miette::Diagnostic::help(&error).unwrap().to_string();
-        assert!(
-            help.contains("1 files match files = \"film/*.png\""),
-            "{help}"
-        );
+        assert!(help.contains("1 files match files = \"film/*.png\""), "{help}");
     }
 
     #[test]
@@ -680,9 +502,7 @@ mod tests {
         let mut encoder = tiff::encoder::TiffEncoder::new(file).unwrap();
         for page in 0..3_u16 {
             let samples: Vec<u16> = (0..48).map(|at| page * 1000 + at).collect();
-            encoder
-                .write_image::<tiff::encoder::colortype::Gray16>(8, 6, &samples)
-                .unwrap();
+            encoder.write_image::<tiff::encoder::colortype::Gray16>(8, 6, &samples).unwrap();
         }
         drop(encoder);
         let sequence = open(folder.path(), "interval_s = 2").unwrap();
@@ -697,16 +517,9 @@ mod tests {
         let deep = folder.path().join("frames/day 2");
         std::fs::create_dir_all(deep.join(".thumbs")).unwrap();
         std::fs::copy(folder.path().join("frames/a.png"), deep.join("c[1].png")).unwrap();
-        std::fs::copy(
-            folder.path().join("frames/a.png"),
-            deep.join(".thumbs/a.png"),
-        )
-        .unwrap();
+        std::fs::copy(folder.path().join("frames/a.png"), deep.join(".thumbs/a.png")).unwrap();
         let found = |pattern: &str| {
-            let parts: Vec<Pattern> = pattern
-                .split('/')
-                .map(|part| Pattern::new(part).unwrap())
-                .collect();
+            let parts: Vec<Pattern> = pattern.split('/').map(|part| Pattern::new(part).unwrap()).collect();
             let mut found = Vec::new();
             expand(folder.path(), "", &parts, &mut found).unwrap();
             found.sort();
@@ -714,10 +527,7 @@ mod tests {
         };
         assert_eq!(found("frames/*.png"), ["frames/a.png", "frames/b.png"]);
         assert_eq!(found("*/day ?/*.png"), ["frames/day 2/c[1].png"]);
-        assert_eq!(
-            found("**/*.png"),
-            ["frames/a.png", "frames/b.png", "frames/day 2/c[1].png"]
-        );
+        assert_eq!(found("**/*.png"), ["frames/a.png", "frames/b.png", "frames/day 2/c[1].png"]);
         assert_eq!(found("frames/day 2/c[[]1].png"), ["frames/day 2/c[1].png"]);
         assert!(found("nowhere/*.png").is_empty() && found("frames/c.png").is_empty());
         assert_eq!(found("frames/a.png"), ["frames/a.png"]);
@@ -731,16 +541,10 @@ mod tests {
         let link = folder.path().join("frames/c.png");
         std::os::unix::fs::symlink(&link, &link).unwrap();
         let sequence = open(folder.path(), "interval_s = 1").unwrap();
-        assert!(
-            sequence.entries.len() == 2
-                || matches!(sequence.decode(2), Err(FrameFault::Unreadable(_)))
-        );
+        assert!(sequence.entries.len() == 2 || matches!(sequence.decode(2), Err(FrameFault::Unreadable(_))));
         std::fs::remove_file(&link).unwrap();
         std::os::unix::fs::symlink(outside.path(), &link).unwrap();
         let error = open(folder.path(), "interval_s = 1").unwrap_err();
-        assert!(
-            error.to_string().contains("leads out of the run folder"),
-            "{error}"
-        );
+        assert!(error.to_string().contains("leads out of the run folder"), "{error}");
     }
 }

@@ -26,12 +26,7 @@ impl Series {
             }
             match gaps.last_mut() {
                 Some(gap) if gap.last + 1 == frame => (gap.last, gap.to_s) = (frame, time_s),
-                _ => gaps.push(Gap {
-                    first: frame,
-                    last: frame,
-                    from_s: time_s,
-                    to_s: time_s,
-                }),
+                _ => gaps.push(Gap { first: frame, last: frame, from_s: time_s, to_s: time_s }),
             }
         }
         gaps
@@ -51,28 +46,16 @@ pub fn describe_gaps(what: &str, gaps: &[Gap], frames: usize) -> Option<String> 
     let listed: Vec<String> = gaps
         .iter()
         .take(LISTED)
-        .map(|gap| {
-            format!(
-                "from {} s to {} s (frames {} to {})",
-                gap.from_s, gap.to_s, gap.first, gap.last
-            )
-        })
+        .map(|gap| format!("from {} s to {} s (frames {} to {})", gap.from_s, gap.to_s, gap.first, gap.last))
         .collect();
     let more = gaps.len().saturating_sub(LISTED);
-    let more = if more > 0 {
-        format!(" and {more} more stretches")
-    } else {
-        String::new()
-    };
+    let more = if more > 0 { format!(" and {more} more stretches") } else { String::new() };
     let whole = if missing == frames {
         ": no frame is covered; see clock_offset_s and the unit of time_s"
     } else {
         ": these frames have no value; see hold_s if the logger writes changes only"
     };
-    Some(format!(
-        "{what} says nothing {}{more}{whole}",
-        listed.join(", ")
-    ))
+    Some(format!("{what} says nothing {}{more}{whole}", listed.join(", ")))
 }
 
 #[cfg(test)]
@@ -86,26 +69,10 @@ mod tests {
         let gaps = series.gaps(&times);
         assert_eq!(
             gaps,
-            [
-                Gap {
-                    first: 3,
-                    last: 5,
-                    from_s: 30.0,
-                    to_s: 50.0
-                },
-                Gap {
-                    first: 8,
-                    last: 8,
-                    from_s: 80.0,
-                    to_s: 80.0
-                },
-            ]
+            [Gap { first: 3, last: 5, from_s: 30.0, to_s: 50.0 }, Gap { first: 8, last: 8, from_s: 80.0, to_s: 80.0 },]
         );
         let text = describe_gaps("the load log", &gaps, 9).unwrap();
-        assert!(
-            text.contains("from 30 s to 50 s (frames 3 to 5), from 80 s"),
-            "{text}"
-        );
+        assert!(text.contains("from 30 s to 50 s (frames 3 to 5), from 80 s"), "{text}");
         assert_eq!(describe_gaps("x", &[], 9), None);
     }
 }

@@ -15,19 +15,9 @@ static HABITS: &[Habit] = &[
     Habit {
         column: "time_s",
         words: &["time_s", "time", "zeit", "temps", "tiempo", "elapsed", "t"],
-        units: &[
-            ("ms", 1e-3),
-            ("min", 60.0),
-            ("h", 3600.0),
-            ("s", 1.0),
-            ("sec", 1.0),
-        ],
+        units: &[("ms", 1e-3), ("min", 60.0), ("h", 3600.0), ("s", 1.0), ("sec", 1.0)],
     },
-    Habit {
-        column: "time",
-        words: &["timestamp", "datetime", "date", "datum", "date_time"],
-        units: &[],
-    },
+    Habit { column: "time", words: &["timestamp", "datetime", "date", "datum", "date_time"], units: &[] },
     Habit {
         column: "force_n",
         words: &["force_n", "force", "load", "kraft", "last", "fuerza", "f"],
@@ -35,13 +25,7 @@ static HABITS: &[Habit] = &[
     },
     Habit {
         column: "stress_mpa",
-        words: &[
-            "stress_mpa",
-            "stress",
-            "spannung_mech",
-            "contrainte",
-            "sigma",
-        ],
+        words: &["stress_mpa", "stress", "spannung_mech", "contrainte", "sigma"],
         units: &[("gpa", 1e3), ("kpa", 1e-3), ("mpa", 1.0), ("pa", 1e-6)],
     },
     Habit {
@@ -52,26 +36,11 @@ static HABITS: &[Habit] = &[
     Habit {
         column: "current_ma",
         words: &["current_ma", "current", "strom", "courant", "i"],
-        units: &[
-            ("ua", 1e-3),
-            ("µa", 1e-3),
-            ("na", 1e-6),
-            ("ma", 1.0),
-            ("a", 1e3),
-        ],
+        units: &[("ua", 1e-3), ("µa", 1e-3), ("na", 1e-6), ("ma", 1.0), ("a", 1e3)],
     },
     Habit {
         column: "voltage_v",
-        words: &[
-            "voltage_v",
-            "voltage",
-            "ewe",
-            "potential",
-            "spannung",
-            "tension",
-            "u",
-            "v",
-        ],
+        words: &["voltage_v", "voltage", "ewe", "potential", "spannung", "tension", "u", "v"],
         units: &[("mv", 1e-3), ("v", 1.0)],
     },
     Habit {
@@ -86,10 +55,7 @@ fn parts(heading: &str) -> (String, String) {
     let lower = heading.trim().to_lowercase();
     let cut = lower.find(['[', '(', '/', '<', ',']);
     let (word, unit) = cut.map_or((lower.as_str(), ""), |at| lower.split_at(at));
-    let trim = |text: &str| {
-        text.trim_matches(|letter: char| " _[]()/<>,".contains(letter))
-            .to_owned()
-    };
+    let trim = |text: &str| text.trim_matches(|letter: char| " _[]()/<>,".contains(letter)).to_owned();
     (trim(word), trim(unit))
 }
 
@@ -99,10 +65,7 @@ pub(super) fn heading_for<'a>(column: &str, headings: &'a [String]) -> Option<&'
     let score = |heading: &str| {
         let (word, unit) = parts(heading);
         let first = word.split([' ', '_', '-']).next().unwrap_or("");
-        let named = habit
-            .words
-            .iter()
-            .any(|known| *known == word || (known.len() > 1 && *known == first));
+        let named = habit.words.iter().any(|known| *known == word || (known.len() > 1 && *known == first));
         let united = habit.units.iter().any(|(known, _)| *known == unit);
         match (named, united, unit.is_empty()) {
             (true, true, _) => 2,
@@ -111,9 +74,7 @@ pub(super) fn heading_for<'a>(column: &str, headings: &'a [String]) -> Option<&'
         }
     };
     let best = headings.iter().max_by_key(|heading| score(heading))?;
-    let first = headings
-        .iter()
-        .find(|heading| score(heading) == score(best))?;
+    let first = headings.iter().find(|heading| score(heading) == score(best))?;
     (score(first) > 0).then_some(first.as_str())
 }
 
@@ -150,15 +111,8 @@ mod tests {
 
     #[test]
     fn headings_of_many_loggers() {
-        let headings = [
-            "Zeit (min)",
-            "Kraft [kN]",
-            "I/mA",
-            "Ewe/V",
-            "Spannung (MPa)",
-            "Temperatur [°C]",
-        ]
-        .map(str::to_owned);
+        let headings =
+            ["Zeit (min)", "Kraft [kN]", "I/mA", "Ewe/V", "Spannung (MPa)", "Temperatur [°C]"].map(str::to_owned);
         for (column, heading) in [
             ("time_s", "Zeit (min)"),
             ("force_n", "Kraft [kN]"),

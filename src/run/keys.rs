@@ -14,11 +14,7 @@ pub struct Key {
 }
 
 const fn key(section: &'static str, name: &'static str, example: &'static str) -> Key {
-    Key {
-        section,
-        name,
-        example,
-    }
+    Key { section, name, example }
 }
 
 /// All keys, in the order of the file.
@@ -41,11 +37,7 @@ pub static KEYS: &[Key] = &[
     key("cell", "clock_offset_s", "0.0"),
     key("cell", "hold_s", "60.0"),
     key("cell", "utc_offset", "\"+01:00\""),
-    key(
-        "cell",
-        "columns",
-        "{ time_s = \"Zeit (s)\", current_ma = \"I/mA\" }",
-    ),
+    key("cell", "columns", "{ time_s = \"Zeit (s)\", current_ma = \"I/mA\" }"),
     key("cell", "scale", "{ current_ma = 1000.0 }"),
     key("cell", "area_mm2", "3.2"),
     key("cell", "view_depth_mm", "0.4"),
@@ -58,11 +50,7 @@ pub static KEYS: &[Key] = &[
     key("load", "clock_offset_s", "0.0"),
     key("load", "hold_s", "\"until-next\""),
     key("load", "utc_offset", "\"+01:00\""),
-    key(
-        "load",
-        "columns",
-        "{ time_s = \"Zeit (min)\", force_n = \"Kraft [kN]\" }",
-    ),
+    key("load", "columns", "{ time_s = \"Zeit (min)\", force_n = \"Kraft [kN]\" }"),
     key("load", "scale", "{ time_s = 60.0, force_n = 1000.0 }"),
     key("load", "direction_deg", "90.0"),
     key("load", "zero_deg", "0.0"),
@@ -127,13 +115,10 @@ pub(super) fn nearest(section: &str, typed: &str) -> Option<&'static Key> {
         let here = if key.section == section { 0.05 } else { 0.0 };
         strsim::jaro_winkler(typed, key.name) + here
     };
-    KEYS.iter()
-        .max_by(|a, b| closeness(a).total_cmp(&closeness(b)))
-        .filter(|key| closeness(key) >= NEAR)
+    KEYS.iter().max_by(|a, b| closeness(a).total_cmp(&closeness(b))).filter(|key| closeness(key) >= NEAR)
 }
 
 /// The key of a table, when there is one.
 pub(super) fn find(section: &str, name: &str) -> Option<&'static Key> {
-    KEYS.iter()
-        .find(|key| key.section == section && key.name == name)
+    KEYS.iter().find(|key| key.section == section && key.name == name)
 }

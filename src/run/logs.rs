@@ -101,11 +101,8 @@ impl LoadLog {
     pub fn open(manifest: &Manifest, clock: &Clock) -> Result<Self, crate::Error> {
         let load = &manifest.load;
         let constant = |value: Option<f64>| value.map(Series::constant);
-        let mut log = Self {
-            force_n: constant(load.force_n),
-            stress_mpa: constant(load.stress_mpa),
-            ..Self::default()
-        };
+        let mut log =
+            Self { force_n: constant(load.force_n), stress_mpa: constant(load.stress_mpa), ..Self::default() };
         if let Some(named) = &load.log {
             let source = Source {
                 path: manifest.inside("load", "log", named)?,
@@ -151,11 +148,8 @@ impl LoadLog {
     /// Warnings about frames for which the log says nothing. `times_s`: frame times.
     #[must_use]
     pub fn coverage(&self, times_s: &[f64]) -> Vec<String> {
-        let columns = [
-            ("force_n", &self.force_n),
-            ("stress_mpa", &self.stress_mpa),
-            ("direction_deg", &self.direction_deg),
-        ];
+        let columns =
+            [("force_n", &self.force_n), ("stress_mpa", &self.stress_mpa), ("direction_deg", &self.direction_deg)];
         coverage("load", columns, times_s)
     }
 }
@@ -209,21 +203,15 @@ impl CellLog {
     pub fn charge_mah(&self, from_s: f64, to_s: f64) -> Option<f64> {
         let current = self.current_ma.as_ref()?;
         let (ma_s, covered_s) = current.integral(from_s, to_s);
-        let slack_s = self
-            .facts
-            .as_ref()
-            .map_or(0.0, |facts| HOLD_SPACINGS * facts.spacing_s);
+        let slack_s = self.facts.as_ref().map_or(0.0, |facts| HOLD_SPACINGS * facts.spacing_s);
         (to_s - from_s - covered_s <= slack_s).then_some(ma_s / SECONDS_PER_HOUR)
     }
 
     /// Warnings about frames for which the log says nothing. `times_s`: frame times.
     #[must_use]
     pub fn coverage(&self, times_s: &[f64]) -> Vec<String> {
-        let columns = [
-            ("current_ma", &self.current_ma),
-            ("voltage_v", &self.voltage_v),
-            ("temperature_c", &self.temperature_c),
-        ];
+        let columns =
+            [("current_ma", &self.current_ma), ("voltage_v", &self.voltage_v), ("temperature_c", &self.temperature_c)];
         coverage("cell", columns, times_s)
     }
 }
@@ -246,11 +234,7 @@ fn coverage(log: &str, columns: [(&str, &Option<Series>); 3], times_s: &[f64]) -
         }
     }
     let warning = |(gaps, names): (Vec<super::Gap>, Vec<&str>)| {
-        super::describe_gaps(
-            &format!("the {log} log ({})", names.join(", ")),
-            &gaps,
-            times_s.len(),
-        )
+        super::describe_gaps(&format!("the {log} log ({})", names.join(", ")), &gaps, times_s.len())
     };
     said.into_iter().filter_map(warning).collect()
 }
@@ -281,17 +265,10 @@ impl Source<'_> {
             .filter(|name| !(by_date && **name == "time_s"))
             .map(|name| Wanted {
                 name,
-                heading: self
-                    .columns
-                    .get(*name)
-                    .cloned()
-                    .unwrap_or_else(|| (*name).to_owned()),
+                heading: self.columns.get(*name).cloned().unwrap_or_else(|| (*name).to_owned()),
             })
             .collect();
-        let offset = self
-            .utc_offset
-            .and_then(parse_offset)
-            .or(self.clock.utc_offset_s);
+        let offset = self.utc_offset.and_then(parse_offset).or(self.clock.utc_offset_s);
         let log = textlog::read(&self.path, &wanted, offset)?;
         self.check_named(&log, &wanted)?;
         self.on_the_clock(log)
@@ -300,17 +277,13 @@ impl Source<'_> {
     /// A heading that `columns` names must be there.
     fn check_named(&self, log: &TextLog, wanted: &[Wanted]) -> Result<(), LogError> {
         let missing = wanted.iter().find(|want| {
-            self.columns.contains_key(want.name)
-                && !log.layout.found.iter().any(|found| found.0 == want.name)
+            self.columns.contains_key(want.name) && !log.layout.found.iter().any(|found| found.0 == want.name)
         });
         let Some(want) = missing else { return Ok(()) };
         Err(LogError::Headings {
             path: self.path.clone(),
             wanted: format!("`{}` (for {})", want.heading, want.name),
-            help: format!(
-                "line {} is taken for the headings; correct `columns` in run.toml",
-                log.layout.heading_line
-            ),
+            help: format!("line {} is taken for the headings; correct `columns` in run.toml", log.layout.heading_line),
         })
     }
 
@@ -320,16 +293,10 @@ impl Source<'_> {
             (TimeKind::Seconds, _) => self.clock.zero_s,
             (TimeKind::Dates, Some(start)) => start,
             (TimeKind::Dates, None) => {
-                return Err(LogError::NoStart {
-                    path: self.path.clone(),
-                });
+                return Err(LogError::NoStart { path: self.path.clone() });
             }
         };
-        let unit = if log.kind == TimeKind::Seconds {
-            self.scale.get("time_s").copied().unwrap_or(1.0)
-        } else {
-            1.0
-        };
+        let unit = if log.kind == TimeKind::Seconds { self.scale.get("time_s").copied().unwrap_or(1.0) } else { 1.0 };
         for time in &mut log.times {
             *time = *time * unit + self.clock_offset_s - zero_s;
         }
@@ -352,11 +319,7 @@ impl Source<'_> {
             hold_s,
             layout: log.layout,
         };
-        Ok(Read {
-            columns,
-            facts,
-            warnings,
-        })
+        Ok(Read { columns, facts, warnings })
     }
 
     fn hold_s(&self, spacing_s: f64) -> f64 {
@@ -370,26 +333,18 @@ impl Source<'_> {
     /// Rows in order of time, and a warning where that is not the order of the file or times repeat.
     fn sorted(&self, log: &TextLog, warnings: &mut Vec<String>) -> Vec<usize> {
         let path = self.path.display();
-        let back: Vec<usize> = (1..log.times.len())
-            .filter(|row| log.times[*row] < log.times[row - 1])
-            .collect();
+        let back: Vec<usize> = (1..log.times.len()).filter(|row| log.times[*row] < log.times[row - 1]).collect();
         let mut order: Vec<usize> = (0..log.times.len()).collect();
         order.sort_by(|a, b| log.times[*a].total_cmp(&log.times[*b]));
         if !back.is_empty() {
-            let by_s = back
-                .iter()
-                .map(|row| log.times[row - 1] - log.times[*row])
-                .fold(0.0, f64::max);
+            let by_s = back.iter().map(|row| log.times[row - 1] - log.times[*row]).fold(0.0, f64::max);
             warnings.push(format!(
                 "{path}: time goes back at {} (by up to {by_s} s); the rows were sorted by time. If the logger restarted or its clock was set, correct the times",
                 lines(&back, log)
             ));
         }
-        let repeats: Vec<usize> = order
-            .windows(2)
-            .filter(|pair| log.times[pair[1]] <= log.times[pair[0]])
-            .map(|pair| pair[1])
-            .collect();
+        let repeats: Vec<usize> =
+            order.windows(2).filter(|pair| log.times[pair[1]] <= log.times[pair[0]]).map(|pair| pair[1]).collect();
         if !repeats.is_empty() {
             warnings.push(format!(
                 "{path}: times repeat at {}; of rows at one time the last one counts",
@@ -404,27 +359,16 @@ impl Source<'_> {
 fn lines(rows: &[usize], log: &TextLog) -> String {
     /// Lines named in one warning.
     const NAMED: usize = 3;
-    let named: Vec<String> = rows
-        .iter()
-        .take(NAMED)
-        .map(|row| log.lines[*row].to_string())
-        .collect();
+    let named: Vec<String> = rows.iter().take(NAMED).map(|row| log.lines[*row].to_string()).collect();
     let more = rows.len().saturating_sub(NAMED);
-    let more = if more > 0 {
-        format!(" and {more} more")
-    } else {
-        String::new()
-    };
+    let more = if more > 0 { format!(" and {more} more") } else { String::new() };
     let word = if rows.len() == 1 { "line" } else { "lines" };
     format!("{word} {}{more}", named.join(", "))
 }
 
 fn median_spacing(times: &[f64], order: &[usize]) -> f64 {
-    let mut steps: Vec<f64> = order
-        .windows(2)
-        .map(|pair| times[pair[1]] - times[pair[0]])
-        .filter(|step| *step > 0.0)
-        .collect();
+    let mut steps: Vec<f64> =
+        order.windows(2).map(|pair| times[pair[1]] - times[pair[0]]).filter(|step| *step > 0.0).collect();
     if steps.is_empty() {
         return 0.0;
     }
@@ -433,19 +377,10 @@ fn median_spacing(times: &[f64], order: &[usize]) -> f64 {
 }
 
 /// The values of one column in order of time; of several at one time the last stays.
-fn series(
-    times: &[f64],
-    values: &[Option<f64>],
-    order: &[usize],
-    factor: f64,
-    hold_s: f64,
-) -> Series {
+fn series(times: &[f64], values: &[Option<f64>], order: &[usize], factor: f64, hold_s: f64) -> Series {
     let mut time_s: Vec<f64> = Vec::new();
     let mut value: Vec<f64> = Vec::new();
-    for (row, found) in order
-        .iter()
-        .filter_map(|row| values[*row].map(|found| (*row, found)))
-    {
+    for (row, found) in order.iter().filter_map(|row| values[*row].map(|found| (*row, found))) {
         if time_s.last().is_some_and(|last| times[row] <= *last) {
             if let Some(last) = value.last_mut() {
                 *last = found * factor;
@@ -462,11 +397,7 @@ fn series(
 mod tests {
     use super::*;
 
-    const PLAIN: Clock = Clock {
-        zero_s: 0.0,
-        start_unix_s: None,
-        utc_offset_s: None,
-    };
+    const PLAIN: Clock = Clock { zero_s: 0.0, start_unix_s: None, utc_offset_s: None };
 
     fn manifest(folder: &std::path::Path, load: &str) -> Manifest {
         let text = format!(
@@ -479,20 +410,14 @@ mod tests {
     fn load_log(text: &str, section: &str, clock: &Clock) -> Result<LoadLog, crate::Error> {
         let folder = tempfile::tempdir().unwrap();
         std::fs::write(folder.path().join("load.csv"), text).unwrap();
-        LoadLog::open(
-            &manifest(folder.path(), &format!("log = \"load.csv\"\n{section}")),
-            clock,
-        )
+        LoadLog::open(&manifest(folder.path(), &format!("log = \"load.csv\"\n{section}")), clock)
     }
 
     #[test]
     fn headings_scales_and_offsets() {
         let text = "# rig 2\nZeit (min);Kraft [kN]\n0;0,001\n1;0,002\n";
         let section = "columns = { time_s = \"Zeit (min)\", force_n = \"Kraft [kN]\" }\nscale = { time_s = 60.0, force_n = 1000.0 }\nclock_offset_s = 5.0";
-        let clock = Clock {
-            zero_s: 2.0,
-            ..PLAIN
-        };
+        let clock = Clock { zero_s: 2.0, ..PLAIN };
         let log = load_log(text, section, &clock).unwrap();
         let force = log.force_n.unwrap();
         assert_eq!(force.time_s, [3.0, 63.0]);
@@ -503,103 +428,48 @@ mod tests {
     #[test]
     fn dates_join_by_the_first_frame() {
         let text = "time,force_n\n2026-03-05 10:00:10,1\n2026-03-05 10:00:20,2\n";
-        let clock = Clock {
-            start_unix_s: super::super::parse_stamp("2026-03-05T10:00:00", None).ok(),
-            ..PLAIN
-        };
-        assert_eq!(
-            load_log(text, "", &clock).unwrap().at(15.0).force_n,
-            Some(1.0)
-        );
+        let clock = Clock { start_unix_s: super::super::parse_stamp("2026-03-05T10:00:00", None).ok(), ..PLAIN };
+        assert_eq!(load_log(text, "", &clock).unwrap().at(15.0).force_n, Some(1.0));
         // The logger ran an hour ahead of UTC.
         let east = load_log(text, "utc_offset = \"+01:00\"", &clock).unwrap();
         assert_eq!(east.at(15.0 - 3600.0).force_n, Some(1.0));
-        assert!(matches!(
-            load_log(text, "", &PLAIN),
-            Err(crate::Error::Log(LogError::NoStart { .. }))
-        ));
+        assert!(matches!(load_log(text, "", &PLAIN), Err(crate::Error::Log(LogError::NoStart { .. }))));
     }
 
     #[test]
     fn unsorted_and_repeated_times_are_mended_and_told() {
         let log = load_log("time_s,force_n\n0,1\n20,3\n10,2\n20,4\n", "", &PLAIN).unwrap();
         assert_eq!(log.force_n.as_ref().unwrap().value, [1.0, 2.0, 4.0]);
-        assert!(
-            log.warnings[0].contains("goes back at line 4 (by up to 10 s)"),
-            "{:?}",
-            log.warnings
-        );
-        assert!(
-            log.warnings[1].contains("repeat at line 5"),
-            "{:?}",
-            log.warnings
-        );
+        assert!(log.warnings[0].contains("goes back at line 4 (by up to 10 s)"), "{:?}", log.warnings);
+        assert!(log.warnings[1].contains("repeat at line 5"), "{:?}", log.warnings);
     }
 
     #[test]
     fn a_gap_and_an_early_end_are_told_and_absent() {
-        let log = load_log(
-            "time_s,force_n\n0,1\n10,1\n20,1\n60,1\n",
-            "hold_s = 15.0",
-            &PLAIN,
-        )
-        .unwrap();
+        let log = load_log("time_s,force_n\n0,1\n10,1\n20,1\n60,1\n", "hold_s = 15.0", &PLAIN).unwrap();
         let times: Vec<f64> = (0..10).map(|frame| f64::from(frame) * 10.0).collect();
         let warnings = log.coverage(&times);
         assert_eq!(warnings.len(), 1);
-        assert!(
-            warnings[0].contains("from 40 s to 50 s") && warnings[0].contains("from 80 s to 90 s"),
-            "{warnings:?}"
-        );
-        assert_eq!(
-            (log.at(45.0).force_n, log.at(75.0).force_n),
-            (None, Some(1.0))
-        );
-        let changes = load_log(
-            "time_s,force_n\n0,1\n60,2\n",
-            "hold_s = \"until-next\"",
-            &PLAIN,
-        )
-        .unwrap();
+        assert!(warnings[0].contains("from 40 s to 50 s") && warnings[0].contains("from 80 s to 90 s"), "{warnings:?}");
+        assert_eq!((log.at(45.0).force_n, log.at(75.0).force_n), (None, Some(1.0)));
+        let changes = load_log("time_s,force_n\n0,1\n60,2\n", "hold_s = \"until-next\"", &PLAIN).unwrap();
         assert_eq!(changes.at(1e6).force_n, Some(2.0));
     }
 
     #[test]
     fn a_negative_scale_turns_the_sign_and_columns_fill_apart() {
-        let log = load_log(
-            "time_s,force_n,direction_deg\n0,-1,90\n10,,45\n20,-2,\n",
-            "scale = { force_n = -1.0 }",
-            &PLAIN,
-        )
-        .unwrap();
-        assert_eq!(
-            log.at(12.0),
-            LoadAt {
-                force_n: Some(1.0),
-                stress_mpa: None,
-                direction_deg: Some(45.0)
-            }
-        );
+        let log =
+            load_log("time_s,force_n,direction_deg\n0,-1,90\n10,,45\n20,-2,\n", "scale = { force_n = -1.0 }", &PLAIN)
+                .unwrap();
+        assert_eq!(log.at(12.0), LoadAt { force_n: Some(1.0), stress_mpa: None, direction_deg: Some(45.0) });
         assert!(!log.force_is_all_negative());
-        assert!(
-            load_log("time_s,force_n\n0,-1\n1,0\n", "", &PLAIN)
-                .unwrap()
-                .force_is_all_negative()
-        );
+        assert!(load_log("time_s,force_n\n0,-1\n1,0\n", "", &PLAIN).unwrap().force_is_all_negative());
     }
 
     #[test]
     fn a_named_heading_that_is_not_there_is_an_error() {
-        let error = load_log(
-            "time_s,force_n\n0,1\n",
-            "columns = { direction_deg = \"phi\" }",
-            &PLAIN,
-        )
-        .unwrap_err();
-        assert!(
-            error.to_string().contains("`phi` (for direction_deg)"),
-            "{error}"
-        );
+        let error = load_log("time_s,force_n\n0,1\n", "columns = { direction_deg = \"phi\" }", &PLAIN).unwrap_err();
+        assert!(error.to_string().contains("`phi` (for direction_deg)"), "{error}");
     }
 
     #[test]

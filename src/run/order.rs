@@ -29,15 +29,9 @@ pub(super) fn natural(a: &str, b: &str) -> Ordering {
 
 /// The leading digits without their leading zeros, and the rest.
 fn split_digits(text: &[u8]) -> (&[u8], &[u8]) {
-    let end = text
-        .iter()
-        .position(|byte| !byte.is_ascii_digit())
-        .unwrap_or(text.len());
+    let end = text.iter().position(|byte| !byte.is_ascii_digit()).unwrap_or(text.len());
     let (digits, rest) = text.split_at(end);
-    let zeros = digits
-        .iter()
-        .position(|byte| *byte != b'0')
-        .unwrap_or(digits.len());
+    let zeros = digits.iter().position(|byte| *byte != b'0').unwrap_or(digits.len());
     (&digits[zeros..], rest)
 }
 
@@ -48,9 +42,7 @@ pub(super) fn number(file: &str) -> Option<u64> {
     let end = stem.rfind(|letter: char| letter.is_ascii_digit())? + 1;
     let start = stem[..end]
         .rfind(|letter: char| !letter.is_ascii_digit())
-        .map_or(0, |at| {
-            at + stem[at..].chars().next().map_or(1, char::len_utf8)
-        });
+        .map_or(0, |at| at + stem[at..].chars().next().map_or(1, char::len_utf8));
     stem[start..end].parse().ok()
 }
 
@@ -60,35 +52,10 @@ mod tests {
 
     #[test]
     fn digits_compare_by_value() {
-        let mut names = vec![
-            "f10.png",
-            "f2.png",
-            "f02.png",
-            "f1.png",
-            "e.png",
-            "f2b.png",
-            "f2.png.tif",
-        ];
+        let mut names = vec!["f10.png", "f2.png", "f02.png", "f1.png", "e.png", "f2b.png", "f2.png.tif"];
         names.sort_by(|a, b| natural(a, b));
-        assert_eq!(
-            names,
-            [
-                "e.png",
-                "f1.png",
-                "f02.png",
-                "f2.png",
-                "f2.png.tif",
-                "f2b.png",
-                "f10.png"
-            ]
-        );
-        assert_eq!(
-            natural(
-                "f99999999999999999999999.png",
-                "f100000000000000000000000.png"
-            ),
-            Ordering::Less
-        );
+        assert_eq!(names, ["e.png", "f1.png", "f02.png", "f2.png", "f2.png.tif", "f2b.png", "f10.png"]);
+        assert_eq!(natural("f99999999999999999999999.png", "f100000000000000000000000.png"), Ordering::Less);
     }
 
     #[test]

@@ -66,11 +66,7 @@ impl Change {
 
 /// Compares two frames of one size.
 pub(super) fn change(first: &Array2<f32>, later: &Array2<f32>) -> Change {
-    let ratio: Vec<f64> = first
-        .iter()
-        .zip(later)
-        .map(|(a, b)| f64::from(*b) / f64::from(a.max(1.0)))
-        .collect();
+    let ratio: Vec<f64> = first.iter().zip(later).map(|(a, b)| f64::from(*b) / f64::from(a.max(1.0))).collect();
     let middle = median(ratio.clone());
     let deviation = MAD_TO_SD * median(ratio.iter().map(|value| (value - middle).abs()).collect());
     // One part in a thousand: a floor for noiseless pictures.
@@ -81,19 +77,11 @@ pub(super) fn change(first: &Array2<f32>, later: &Array2<f32>) -> Change {
         let sign = usize::from(*value > middle);
         if (value - middle).abs() > bound {
             let sum = &mut sums[sign];
-            *sum = (
-                sum.0 + 1.0,
-                sum.1 + as_f64(at % width),
-                sum.2 + as_f64(at / width),
-            );
+            *sum = (sum.0 + 1.0, sum.1 + as_f64(at % width), sum.2 + as_f64(at / width));
         }
     }
     let all = as_f64(ratio.len());
-    let most = if sums[1].0 > sums[0].0 {
-        sums[1]
-    } else {
-        sums[0]
-    };
+    let most = if sums[1].0 > sums[0].0 { sums[1] } else { sums[0] };
     Change {
         darker: sums[0].0 / all,
         brighter: sums[1].0 / all,
@@ -107,40 +95,24 @@ pub(super) fn edges(frame: &Array2<f32>, grown: Option<[f64; 2]>) -> ProposedEdg
     let across = steps(&mean_profile(frame, Axis(0)));
     let down = steps(&mean_profile(frame, Axis(1)));
     let upright = weaker(&across) >= weaker(&down);
-    let (found, size, length) = if upright {
-        (across, width, height)
-    } else {
-        (down, height, width)
-    };
+    let (found, size, length) = if upright { (across, width, height) } else { (down, height, width) };
     let edge = |step: Option<Step>, side: f64| {
         let clear = step.is_some_and(|step| step.strength >= CLEAR);
         let at = step.filter(|_| clear).map_or(side, |step| step.at);
         let end = as_f64(length.saturating_sub(1));
-        let ends = if upright {
-            [[at, 0.0], [at, end]]
-        } else {
-            [[0.0, at], [end, at]]
-        };
+        let ends = if upright { [[at, 0.0], [at, end]] } else { [[0.0, at], [end, at]] };
         ProposedEdge { ends, clear }
     };
     let last = as_f64(size.saturating_sub(1));
     let (low, high) = (edge(found[0], 0.0), edge(found[1], last));
     let place = grown.map(|centre| if upright { centre[0] } else { centre[1] });
     let place_of = |edge: &ProposedEdge| {
-        if upright {
-            edge.ends[0][0]
-        } else {
-            edge.ends[0][1]
-        }
+        if upright { edge.ends[0][0] } else { edge.ends[0][1] }
     };
     let middle = 0.5 * (place_of(&low) + place_of(&high));
     let swapped = place.is_some_and(|place| place > middle);
     let (plating, far) = if swapped { (high, low) } else { (low, high) };
-    ProposedEdges {
-        plating,
-        far,
-        told_apart: place.is_some(),
-    }
+    ProposedEdges { plating, far, told_apart: place.is_some() }
 }
 
 /// A step of a profile: where, and how strong against the profile's other steps.
@@ -151,17 +123,12 @@ struct Step {
 }
 
 fn weaker(steps: &[Option<Step>; 2]) -> f64 {
-    steps
-        .iter()
-        .map(|step| step.map_or(0.0, |step| step.strength))
-        .fold(f64::INFINITY, f64::min)
+    steps.iter().map(|step| step.map_or(0.0, |step| step.strength)).fold(f64::INFINITY, f64::min)
 }
 
 fn mean_profile(frame: &Array2<f32>, along: Axis) -> Vec<f64> {
     let mean = frame.mean_axis(along);
-    mean.map_or_else(Vec::new, |profile| {
-        profile.iter().map(|value| f64::from(*value)).collect()
-    })
+    mean.map_or_else(Vec::new, |profile| profile.iter().map(|value| f64::from(*value)).collect())
 }
 
 /// The strongest step near either end of a profile.
@@ -174,23 +141,14 @@ fn steps(profile: &[f64]) -> [Option<Step>; 2] {
     }
     let mean = |from: usize, to: usize| profile[from..to].iter().sum::<f64>() / as_f64(to - from);
     let places: Vec<usize> = (half..=size - half).collect();
-    let step: Vec<f64> = places
-        .iter()
-        .map(|at| (mean(*at, at + half) - mean(at - half, *at)).abs())
-        .collect();
+    let step: Vec<f64> = places.iter().map(|at| (mean(*at, at + half) - mean(at - half, *at)).abs()).collect();
     let noise = MAD_TO_SD * median(step.clone());
     let side = floor(SIDE * as_f64(size));
     let strongest = |from: usize, to: usize| {
-        let inside = places
-            .iter()
-            .zip(&step)
-            .filter(|(at, _)| (from..to).contains(*at));
+        let inside = places.iter().zip(&step).filter(|(at, _)| (from..to).contains(*at));
         let best = inside.max_by(|a, b| a.1.total_cmp(b.1))?;
         // The step lies between two pixels.
-        Some(Step {
-            at: as_f64(*best.0) - 0.5,
-            strength: best.1 / noise.max(f64::MIN_POSITIVE),
-        })
+        Some(Step { at: as_f64(*best.0) - 0.5, strength: best.1 / noise.max(f64::MIN_POSITIVE) })
     };
     [strongest(0, side), strongest(size - side, size + 1)]
 }
@@ -230,10 +188,7 @@ fn median(mut values: Vec<f64>) -> f64 {
     *values.select_nth_unstable_by(middle, f64::total_cmp).1
 }
 
-#[expect(
-    clippy::cast_precision_loss,
-    reason = "picture sizes are far below 2^53"
-)]
+#[expect(clippy::cast_precision_loss, reason = "picture sizes are far below 2^53")]
 fn as_f64(size: usize) -> f64 {
     size as f64
 }
@@ -254,18 +209,9 @@ mod tests {
     /// Two dark bands, a fixed pattern of noise, and a dark line that has grown to `depth` px from the left band.
     fn frame(depth: usize) -> Array2<f32> {
         Array2::from_shape_fn((120, 200), |(row, column)| {
-            let noise =
-                f32::from(u8::try_from((row * 37 + column * 91 + row * column) % 7).unwrap());
-            let band = if !(20..185).contains(&column) {
-                -60.0
-            } else {
-                0.0
-            };
-            let line = if (60..63).contains(&row) && (20..20 + depth).contains(&column) {
-                -50.0
-            } else {
-                0.0
-            };
+            let noise = f32::from(u8::try_from((row * 37 + column * 91 + row * column) % 7).unwrap());
+            let band = if !(20..185).contains(&column) { -60.0 } else { 0.0 };
+            let line = if (60..63).contains(&row) && (20..20 + depth).contains(&column) { -50.0 } else { 0.0 };
             150.0 + noise + band + line
         })
     }
@@ -281,14 +227,9 @@ mod tests {
         // Turned by 180° the plating edge is on the right, turned by 90° it lies level.
         let mut turned = frame(0);
         turned.invert_axis(Axis(1));
-        assert!(
-            (super::edges(&turned, Some([150.0, 60.0])).plating.ends[0][0] - 179.5).abs() <= 1.0
-        );
+        assert!((super::edges(&turned, Some([150.0, 60.0])).plating.ends[0][0] - 179.5).abs() <= 1.0);
         let level = super::edges(&frame(0).t().to_owned(), Some([60.0, 40.0]));
-        assert!(
-            (level.plating.ends[1][1] - 19.5).abs() <= 1.0 && level.plating.ends[1][0] > 100.0,
-            "{level:?}"
-        );
+        assert!((level.plating.ends[1][1] - 19.5).abs() <= 1.0 && level.plating.ends[1][0] > 100.0, "{level:?}");
     }
 
     #[test]

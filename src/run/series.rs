@@ -21,13 +21,7 @@ impl Series {
     /// A series from sorted samples.
     #[must_use]
     pub fn new(time_s: Vec<f64>, value: Vec<f64>, hold_s: f64) -> Self {
-        let mut series = Self {
-            time_s,
-            value,
-            hold_s,
-            constant: None,
-            running: Vec::new(),
-        };
+        let mut series = Self { time_s, value, hold_s, constant: None, running: Vec::new() };
         let mut sum = (0.0, 0.0);
         for at in 0..series.time_s.len() {
             series.running.push(sum);
@@ -40,11 +34,7 @@ impl Series {
     /// A quantity that did not change.
     #[must_use]
     pub fn constant(value: f64) -> Self {
-        Self {
-            constant: Some(value),
-            hold_s: f64::INFINITY,
-            ..Self::default()
-        }
+        Self { constant: Some(value), hold_s: f64::INFINITY, ..Self::default() }
     }
 
     /// The value in force at a time.
@@ -96,9 +86,7 @@ impl Series {
 
     /// Index of the last sample at or before a time.
     fn last_before(&self, time_s: f64) -> Option<usize> {
-        self.time_s
-            .partition_point(|sample| *sample <= time_s)
-            .checked_sub(1)
+        self.time_s.partition_point(|sample| *sample <= time_s).checked_sub(1)
     }
 
     /// How long sample `at` is in force before the next one and before `until`.

@@ -17,16 +17,10 @@ impl NameTimes {
     pub(super) fn interval_s(&self) -> Option<(f64, bool)> {
         /// Relative deviation that still counts as even (common practice).
         const EVEN: f64 = 0.01;
-        let mut steps: Vec<f64> = self
-            .times_s
-            .windows(2)
-            .map(|pair| pair[1] - pair[0])
-            .collect();
+        let mut steps: Vec<f64> = self.times_s.windows(2).map(|pair| pair[1] - pair[0]).collect();
         steps.sort_by(f64::total_cmp);
         let median = *steps.get(steps.len() / 2)?;
-        let even = steps
-            .iter()
-            .all(|step| (step - median).abs() <= EVEN * median);
+        let even = steps.iter().all(|step| (step - median).abs() <= EVEN * median);
         (median > 0.0).then_some((median, even))
     }
 }
@@ -36,26 +30,14 @@ pub(super) fn read(names: &[String]) -> Option<NameTimes> {
     let dates: Option<Vec<String>> = names.iter().map(|name| date(name)).collect();
     let (stamps, start) = match dates {
         Some(dates) => {
-            let stamps: Option<Vec<f64>> = dates
-                .iter()
-                .map(|date| parse_stamp(date, None).ok())
-                .collect();
+            let stamps: Option<Vec<f64>> = dates.iter().map(|date| parse_stamp(date, None).ok()).collect();
             (stamps?, dates.into_iter().next())
         }
-        None => (
-            names
-                .iter()
-                .map(|name| seconds(name))
-                .collect::<Option<Vec<f64>>>()?,
-            None,
-        ),
+        None => (names.iter().map(|name| seconds(name)).collect::<Option<Vec<f64>>>()?, None),
     };
     let zero = *stamps.first()?;
     let rising = stamps.windows(2).all(|pair| pair[1] > pair[0]);
-    rising.then(|| NameTimes {
-        times_s: stamps.iter().map(|stamp| stamp - zero).collect(),
-        start,
-    })
+    rising.then(|| NameTimes { times_s: stamps.iter().map(|stamp| stamp - zero).collect(), start })
 }
 
 /// Fourteen digits that are a date and a time, with or without separators between them.
@@ -86,8 +68,7 @@ fn fourteen(bytes: &[u8]) -> Option<String> {
     for &byte in bytes {
         match byte {
             b'0'..=b'9' => digits.push(char::from(byte)),
-            b'-' | b'_' | b'T' | b':' | b' ' | b'.'
-                if matches!(digits.len(), 4 | 6 | 8 | 10 | 12) => {}
+            b'-' | b'_' | b'T' | b':' | b' ' | b'.' if matches!(digits.len(), 4 | 6 | 8 | 10 | 12) => {}
             _ => return None,
         }
         if digits.len() == 14 {
@@ -101,13 +82,8 @@ fn fourteen(bytes: &[u8]) -> Option<String> {
 fn seconds(name: &str) -> Option<f64> {
     let stem = name.rsplit_once('.').map_or(name, |(stem, _)| stem);
     stem.split(['_', '-', ' ', '/']).find_map(|word| {
-        let digits = word
-            .strip_suffix('s')?
-            .trim_start_matches(|letter: char| letter.is_ascii_alphabetic());
-        let plain = !digits.is_empty()
-            && digits
-                .bytes()
-                .all(|byte| byte.is_ascii_digit() || byte == b'.');
+        let digits = word.strip_suffix('s')?.trim_start_matches(|letter: char| letter.is_ascii_alphabetic());
+        let plain = !digits.is_empty() && digits.bytes().all(|byte| byte.is_ascii_digit() || byte == b'.');
         plain.then(|| digits.parse().ok())?
     })
 }
@@ -117,22 +93,13 @@ mod tests {
     use super::*;
 
     fn times(names: &[&str]) -> Option<NameTimes> {
-        read(
-            &names
-                .iter()
-                .map(|name| (*name).to_owned())
-                .collect::<Vec<_>>(),
-        )
+        read(&names.iter().map(|name| (*name).to_owned()).collect::<Vec<_>>())
     }
 
     #[test]
     fn dates_and_seconds() {
-        let dated = times(&[
-            "cell_20260305_100000.png",
-            "cell_20260305_100010.png",
-            "cell_20260305_100020.png",
-        ])
-        .unwrap();
+        let dated =
+            times(&["cell_20260305_100000.png", "cell_20260305_100010.png", "cell_20260305_100020.png"]).unwrap();
         assert_eq!(dated.start.as_deref(), Some("2026-03-05T10:00:00"));
         assert_eq!(dated.interval_s(), Some((10.0, true)));
         let dashed = times(&["2026-03-05T10-00-00.tif", "2026-03-05T10-01-00.tif"]).unwrap();

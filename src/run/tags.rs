@@ -32,11 +32,7 @@ fn tiff_scale(path: &Path) -> Option<(f64, &'static str)> {
     /// Resolution units of TIFF 6.0: inch (also the default) and centimetre.
     const CENTIMETRE: u32 = 3;
     const INCH: u32 = 2;
-    let unit_um = match decoder
-        .find_tag_unsigned::<u32>(Tag::ResolutionUnit)
-        .ok()?
-        .unwrap_or(INCH)
-    {
+    let unit_um = match decoder.find_tag_unsigned::<u32>(Tag::ResolutionUnit).ok()?.unwrap_or(INCH) {
         CENTIMETRE => 10_000.0,
         INCH => 25_400.0,
         _ => return None,
@@ -46,13 +42,7 @@ fn tiff_scale(path: &Path) -> Option<(f64, &'static str)> {
 
 /// `PhysicalSizeX="0.65"` with its unit (µm unless given), from OME-XML.
 fn ome_scale(description: &str) -> Option<f64> {
-    let attribute = |name: &str| {
-        description
-            .split_once(&format!(" {name}=\""))?
-            .1
-            .split('"')
-            .next()
-    };
+    let attribute = |name: &str| description.split_once(&format!(" {name}=\""))?.1.split('"').next();
     let size: f64 = attribute("PhysicalSizeX")?.parse().ok()?;
     let unit_um = match attribute("PhysicalSizeXUnit").unwrap_or("µm") {
         "µm" | "um" => 1.0,
@@ -67,11 +57,7 @@ fn png_scale(path: &Path) -> Option<(f64, &'static str)> {
     /// Bytes looked through: the chunk stands before the picture data.
     const LOOKED: u64 = 1 << 16;
     let mut bytes = Vec::new();
-    File::open(path)
-        .ok()?
-        .take(LOOKED)
-        .read_to_end(&mut bytes)
-        .ok()?;
+    File::open(path).ok()?.take(LOOKED).read_to_end(&mut bytes).ok()?;
     let mut rest = bytes.strip_prefix(b"\x89PNG\r\n\x1a\n")?;
     loop {
         let length = u32::from_be_bytes(rest.get(..4)?.try_into().ok()?) as usize;
@@ -94,14 +80,8 @@ mod tests {
     #[test]
     fn ome_units() {
         let near = |text: &str, um: f64| (ome_scale(text).unwrap() - um).abs() < 1e-12;
-        assert!(near(
-            "<Pixels ID=\"p\" PhysicalSizeX=\"0.65\" PhysicalSizeXUnit=\"µm\"/>",
-            0.65
-        ));
-        assert!(near(
-            "<Pixels PhysicalSizeX=\"325\" PhysicalSizeXUnit=\"nm\"/>",
-            0.325
-        ));
+        assert!(near("<Pixels ID=\"p\" PhysicalSizeX=\"0.65\" PhysicalSizeXUnit=\"µm\"/>", 0.65));
+        assert!(near("<Pixels PhysicalSizeX=\"325\" PhysicalSizeXUnit=\"nm\"/>", 0.325));
         assert_eq!(ome_scale("no size"), None);
     }
 
@@ -110,15 +90,9 @@ mod tests {
         let folder = tempfile::tempdir().unwrap();
         let path = folder.path().join("a.tif");
         let write = |per_cm: u32| {
-            let mut encoder =
-                tiff::encoder::TiffEncoder::new(File::create(&path).unwrap()).unwrap();
-            let mut image = encoder
-                .new_image::<tiff::encoder::colortype::Gray8>(2, 2)
-                .unwrap();
-            image.resolution(
-                tiff::tags::ResolutionUnit::Centimeter,
-                tiff::encoder::Rational { n: per_cm, d: 1 },
-            );
+            let mut encoder = tiff::encoder::TiffEncoder::new(File::create(&path).unwrap()).unwrap();
+            let mut image = encoder.new_image::<tiff::encoder::colortype::Gray8>(2, 2).unwrap();
+            image.resolution(tiff::tags::ResolutionUnit::Centimeter, tiff::encoder::Rational { n: per_cm, d: 1 });
             image.write_data(&[1, 2, 3, 4]).unwrap();
         };
         write(8000);
@@ -136,11 +110,7 @@ mod tests {
             (b"IHDR", vec![0; 13]),
             (
                 b"pHYs",
-                [2_000_000_u32.to_be_bytes(), 2_000_000_u32.to_be_bytes()]
-                    .concat()
-                    .into_iter()
-                    .chain([1])
-                    .collect(),
+                [2_000_000_u32.to_be_bytes(), 2_000_000_u32.to_be_bytes()].concat().into_iter().chain([1]).collect(),
             ),
         ] {
             bytes.extend(u32::try_from(data.len()).unwrap().to_be_bytes());

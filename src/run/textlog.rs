@@ -24,10 +24,7 @@ const SEPARATORS: [char; 3] = [',', ';', '\t'];
 pub enum LogError {
     /// Reading failed.
     #[error("{path}: {source}")]
-    #[diagnostic(
-        code(log::io),
-        help("see that the log named in run.toml exists in the run folder and may be read")
-    )]
+    #[diagnostic(code(log::io), help("see that the log named in run.toml exists in the run folder and may be read"))]
     Io {
         /// The file.
         path: PathBuf,
@@ -36,10 +33,7 @@ pub enum LogError {
     },
     /// The file is too large.
     #[error("{path}: {bytes} bytes are too many for a log (at most {MAX_BYTES})")]
-    #[diagnostic(
-        code(log::size),
-        help("thin the log out, or cut it to the time of the run")
-    )]
+    #[diagnostic(code(log::size), help("thin the log out, or cut it to the time of the run"))]
     Size {
         /// The file.
         path: PathBuf,
@@ -80,9 +74,7 @@ pub enum LogError {
     #[error("{path}, line {line}: {got} fields under {want} headings")]
     #[diagnostic(
         code(log::fields),
-        help(
-            "where the decimal mark is a comma, fields must be separated by semicolons or tabs, or stand in quotes"
-        )
+        help("where the decimal mark is a comma, fields must be separated by semicolons or tabs, or stand in quotes")
     )]
     Fields {
         /// The file.
@@ -114,9 +106,7 @@ pub enum LogError {
     #[error("{path}: the log holds dates, but nothing dates the frames")]
     #[diagnostic(
         code(log::start),
-        help(
-            "add the date and time of the first frame to [frames], say start = \"2026-03-05T10:00:00\""
-        )
+        help("add the date and time of the first frame to [frames], say start = \"2026-03-05T10:00:00\"")
     )]
     NoStart {
         /// The file.
@@ -124,10 +114,7 @@ pub enum LogError {
     },
     /// No row was found.
     #[error("{path}: no row below the headings in line {line}")]
-    #[diagnostic(
-        code(log::empty),
-        help("record the log again, or drop it from run.toml")
-    )]
+    #[diagnostic(code(log::empty), help("record the log again, or drop it from run.toml"))]
     Empty {
         /// The file.
         path: PathBuf,
@@ -182,69 +169,41 @@ pub(super) struct TextLog {
 }
 
 /// Reads a log. `offset_s`: UTC offset of dates that have none.
-pub(super) fn read(
-    path: &Path,
-    wanted: &[Wanted],
-    offset_s: Option<i32>,
-) -> Result<TextLog, LogError> {
+pub(super) fn read(path: &Path, wanted: &[Wanted], offset_s: Option<i32>) -> Result<TextLog, LogError> {
     let text = read_text(path)?;
     parse(path, &text, wanted, offset_s)
 }
 
 /// The text of a file, whatever its encoding.
 pub(super) fn read_text(path: &Path) -> Result<String, LogError> {
-    let io = |source| LogError::Io {
-        path: path.to_path_buf(),
-        source,
-    };
+    let io = |source| LogError::Io { path: path.to_path_buf(), source };
     let facts = std::fs::metadata(path).map_err(io)?;
     if facts.is_dir() {
-        return Err(io(std::io::Error::new(
-            std::io::ErrorKind::IsADirectory,
-            "is a folder",
-        )));
+        return Err(io(std::io::Error::new(std::io::ErrorKind::IsADirectory, "is a folder")));
     }
     if facts.len() > MAX_BYTES {
-        return Err(LogError::Size {
-            path: path.to_path_buf(),
-            bytes: facts.len(),
-        });
+        return Err(LogError::Size { path: path.to_path_buf(), bytes: facts.len() });
     }
     Ok(decode(std::fs::read(path).map_err(io)?))
 }
 
 fn decode(bytes: Vec<u8>) -> String {
     let wide = |join: fn([u8; 2]) -> u16| {
-        let units: Vec<u16> = bytes[2..]
-            .chunks_exact(2)
-            .map(|pair| join([pair[0], pair[1]]))
-            .collect();
+        let units: Vec<u16> = bytes[2..].chunks_exact(2).map(|pair| join([pair[0], pair[1]])).collect();
         String::from_utf16_lossy(&units)
     };
     match bytes.as_slice() {
         [0xff, 0xfe, ..] => wide(u16::from_le_bytes),
         [0xfe, 0xff, ..] => wide(u16::from_be_bytes),
         [0xef, 0xbb, 0xbf, rest @ ..] => String::from_utf8_lossy(rest).into_owned(),
-        _ => String::from_utf8(bytes)
-            .unwrap_or_else(|error| error.into_bytes().into_iter().map(char::from).collect()),
+        _ => String::from_utf8(bytes).unwrap_or_else(|error| error.into_bytes().into_iter().map(char::from).collect()),
     }
 }
 
-pub(super) fn parse(
-    path: &Path,
-    text: &str,
-    wanted: &[Wanted],
-    offset_s: Option<i32>,
-) -> Result<TextLog, LogError> {
+pub(super) fn parse(path: &Path, text: &str, wanted: &[Wanted], offset_s: Option<i32>) -> Result<TextLog, LogError> {
     let heading = find_heading(text, wanted).ok_or_else(|| no_heading(path, text, wanted))?;
     let decimal = decimal_mark(text, &heading);
-    Rows {
-        path,
-        heading: &heading,
-        decimal,
-        offset_s,
-    }
-    .read(text)
+    Rows { path, heading: &heading, decimal, offset_s }.read(text)
 }
 
 /// The heading line as found.
@@ -260,15 +219,10 @@ struct Heading {
 }
 
 fn find_heading(text: &str, wanted: &[Wanted]) -> Option<Heading> {
-    text.lines()
-        .take(HEADING_LINES)
-        .enumerate()
-        .find_map(|(at, line)| {
-            let candidates = SEPARATORS
-                .into_iter()
-                .filter_map(|separator| heading_of(at, line, separator, wanted));
-            candidates.max_by_key(|heading| heading.places.len())
-        })
+    text.lines().take(HEADING_LINES).enumerate().find_map(|(at, line)| {
+        let candidates = SEPARATORS.into_iter().filter_map(|separator| heading_of(at, line, separator, wanted));
+        candidates.max_by_key(|heading| heading.places.len())
+    })
 }
 
 fn heading_of(at: usize, line: &str, separator: char, wanted: &[Wanted]) -> Option<Heading> {
@@ -276,78 +230,40 @@ fn heading_of(at: usize, line: &str, separator: char, wanted: &[Wanted]) -> Opti
     split(line, separator, &mut fields);
     let place = |heading: &str| {
         let exact = fields.iter().position(|field| *field == heading.trim());
-        exact.or_else(|| {
-            fields
-                .iter()
-                .position(|field| field.to_lowercase() == heading.trim().to_lowercase())
-        })
+        exact.or_else(|| fields.iter().position(|field| field.to_lowercase() == heading.trim().to_lowercase()))
     };
     let found: Vec<_> = wanted
         .iter()
         .filter_map(|want| place(&want.heading).map(|at| (want.name, fields[at].to_owned(), at)))
         .collect();
-    let time_of = |name: &str| {
-        found
-            .iter()
-            .find(|column| column.0 == name)
-            .map(|column| column.2)
-    };
+    let time_of = |name: &str| found.iter().find(|column| column.0 == name).map(|column| column.2);
     let (kind, time) = time_of("time_s")
         .map(|at| (TimeKind::Seconds, at))
         .or_else(|| time_of("time").map(|at| (TimeKind::Dates, at)))?;
-    let values = found
-        .iter()
-        .filter(|column| !matches!(column.0, "time_s" | "time"))
-        .count();
-    (values > 0).then_some(Heading {
-        at,
-        separator,
-        fields: fields.len(),
-        places: found,
-        kind,
-        time,
-    })
+    let values = found.iter().filter(|column| !matches!(column.0, "time_s" | "time")).count();
+    (values > 0).then_some(Heading { at, separator, fields: fields.len(), places: found, kind, time })
 }
 
 fn no_heading(path: &Path, text: &str, wanted: &[Wanted]) -> LogError {
-    let names: Vec<_> = wanted
-        .iter()
-        .map(|want| format!("`{}`", want.heading))
-        .collect();
+    let names: Vec<_> = wanted.iter().map(|want| format!("`{}`", want.heading)).collect();
     let help = match guess::heading_line(text) {
         None => "the log must have a line of headings, a time and at least one value".to_owned(),
         Some(headings) => {
             let pairs: Vec<_> = wanted
                 .iter()
                 .filter_map(|want| {
-                    guess::heading_for(want.name, &headings)
-                        .map(|found| format!("{} = \"{found}\"", want.name))
+                    guess::heading_for(want.name, &headings).map(|found| format!("{} = \"{found}\"", want.name))
                 })
                 .collect();
-            let pairs = if pairs.is_empty() {
-                format!("{} = \"…\"", wanted[0].name)
-            } else {
-                pairs.join(", ")
-            };
-            format!(
-                "the file's headings seem to be {}; say which is which: columns = {{ {pairs} }}",
-                quoted(&headings)
-            )
+            let pairs = if pairs.is_empty() { format!("{} = \"…\"", wanted[0].name) } else { pairs.join(", ") };
+            format!("the file's headings seem to be {}; say which is which: columns = {{ {pairs} }}", quoted(&headings))
         }
     };
-    LogError::Headings {
-        path: path.to_path_buf(),
-        wanted: names.join(", "),
-        help,
-    }
+    LogError::Headings { path: path.to_path_buf(), wanted: names.join(", "), help }
 }
 
 fn quoted(names: &[String]) -> String {
-    names
-        .iter()
-        .map(|name| format!("`{name}`"))
-        .collect::<Vec<_>>()
-        .join(", ")
+    names.iter().map(|name| format!("`{name}`")).collect::<Vec<_>>().join(", ")
 }
 
 /// Splits a line; quotes around a field protect separators in it and are taken off.
@@ -369,30 +285,20 @@ pub(super) fn split<'a>(line: &'a str, separator: char, fields: &mut Vec<&'a str
 fn bare(field: &str) -> &str {
     let blank = |letter: char| letter.is_whitespace() || letter == '\0' || letter == '\u{feff}';
     let field = field.trim_matches(blank);
-    let inner = field
-        .strip_prefix('"')
-        .and_then(|field| field.strip_suffix('"'));
+    let inner = field.strip_prefix('"').and_then(|field| field.strip_suffix('"'));
     inner.map_or(field, |inner| inner.trim_matches(blank))
 }
 
 /// The decimal mark of the wanted numbers: a comma where one stands in a number with no point after it.
 fn decimal_mark(text: &str, heading: &Heading) -> char {
-    let numbers: Vec<usize> = heading
-        .places
-        .iter()
-        .filter(|column| column.0 != "time")
-        .map(|column| column.2)
-        .collect();
+    let numbers: Vec<usize> =
+        heading.places.iter().filter(|column| column.0 != "time").map(|column| column.2).collect();
     let mut fields = Vec::new();
     for line in text.lines().skip(heading.at + 1) {
         split(line, heading.separator, &mut fields);
         for field in numbers.iter().filter_map(|at| fields.get(*at)) {
             if let Some(comma) = field.rfind(',') {
-                return if field[comma..].contains('.') {
-                    '.'
-                } else {
-                    ','
-                };
+                return if field[comma..].contains('.') { '.' } else { ',' };
             }
         }
     }
@@ -401,10 +307,7 @@ fn decimal_mark(text: &str, heading: &Heading) -> char {
 
 /// A field as a number: `Ok(None)` where it says that nothing was measured.
 fn number(field: &str, decimal: char) -> Result<Option<f64>, ()> {
-    if matches!(
-        field.to_ascii_lowercase().as_str(),
-        "" | "-" | "--" | "nan" | "na" | "n/a" | "null" | "none"
-    ) {
+    if matches!(field.to_ascii_lowercase().as_str(), "" | "-" | "--" | "nan" | "na" | "n/a" | "null" | "none") {
         return Ok(None);
     }
     let thousands = if decimal == ',' { '.' } else { ',' };
@@ -414,11 +317,7 @@ fn number(field: &str, decimal: char) -> Result<Option<f64>, ()> {
         (None, _) => field.to_owned(),
     };
     let value: f64 = plain.replacen(decimal, ".", 1).parse().map_err(|_| ())?;
-    if value.is_finite() {
-        Ok(Some(value))
-    } else {
-        Err(())
-    }
+    if value.is_finite() { Ok(Some(value)) } else { Err(()) }
 }
 
 struct Rows<'a> {
@@ -431,29 +330,19 @@ struct Rows<'a> {
 impl Rows<'_> {
     fn read(&self, text: &str) -> Result<TextLog, LogError> {
         let heading = self.heading;
-        let value_places: Vec<_> = heading
-            .places
-            .iter()
-            .filter(|column| !matches!(column.0, "time_s" | "time"))
-            .collect();
+        let value_places: Vec<_> =
+            heading.places.iter().filter(|column| !matches!(column.0, "time_s" | "time")).collect();
         let mut log = TextLog {
             layout: Layout {
                 heading_line: heading.at + 1,
                 separator: heading.separator,
                 decimal: self.decimal,
-                found: heading
-                    .places
-                    .iter()
-                    .map(|column| (column.0, column.1.clone()))
-                    .collect(),
+                found: heading.places.iter().map(|column| (column.0, column.1.clone())).collect(),
             },
             kind: heading.kind,
             lines: Vec::new(),
             times: Vec::new(),
-            values: value_places
-                .iter()
-                .map(|column| (column.0, Vec::new()))
-                .collect(),
+            values: value_places.iter().map(|column| (column.0, Vec::new())).collect(),
             warnings: Vec::new(),
         };
         let whole = text.ends_with('\n');
@@ -470,17 +359,11 @@ impl Rows<'_> {
             }
             let last = lines.peek().is_none() && !whole;
             if last && fields.len() < heading.fields {
-                log.warnings.push(format!(
-                    "{}, line {number}: the last line is cut off and was left out",
-                    self.path.display()
-                ));
+                log.warnings
+                    .push(format!("{}, line {number}: the last line is cut off and was left out", self.path.display()));
                 continue;
             }
-            if fields.len() > heading.fields
-                && fields[heading.fields..]
-                    .iter()
-                    .any(|field| !field.is_empty())
-            {
+            if fields.len() > heading.fields && fields[heading.fields..].iter().any(|field| !field.is_empty()) {
                 return Err(LogError::Fields {
                     path: self.path.to_path_buf(),
                     line: number,
@@ -492,82 +375,47 @@ impl Rows<'_> {
             log.lines.push(number);
             log.times.push(time);
             for (column, (_, values)) in value_places.iter().zip(&mut log.values) {
-                values.push(self.value(
-                    number,
-                    column,
-                    fields.get(column.2).copied().unwrap_or(""),
-                )?);
+                values.push(self.value(number, column, fields.get(column.2).copied().unwrap_or(""))?);
             }
         }
         if log.lines.is_empty() {
-            return Err(LogError::Empty {
-                path: self.path.to_path_buf(),
-                line: heading.at + 1,
-            });
+            return Err(LogError::Empty { path: self.path.to_path_buf(), line: heading.at + 1 });
         }
         Ok(log)
     }
 
     /// Whether the line under the headings names units: none of the wanted fields starts like a number.
     fn is_units(&self, fields: &[&str]) -> bool {
-        let starts_like_number = |field: &&str| {
-            field.starts_with(|letter: char| letter.is_ascii_digit() || "+-.".contains(letter))
-        };
-        let mut wanted = self
-            .heading
-            .places
-            .iter()
-            .filter_map(|column| fields.get(column.2));
+        let starts_like_number =
+            |field: &&str| field.starts_with(|letter: char| letter.is_ascii_digit() || "+-.".contains(letter));
+        let mut wanted = self.heading.places.iter().filter_map(|column| fields.get(column.2));
         wanted.all(|field| !field.is_empty() && !starts_like_number(field))
     }
 
     fn time(&self, line: usize, field: &str) -> Result<f64, LogError> {
         match self.heading.kind {
-            TimeKind::Dates => {
-                super::clock::parse_stamp(field, self.offset_s).map_err(|source| LogError::Date {
-                    path: self.path.to_path_buf(),
-                    line,
-                    source,
-                })
-            }
+            TimeKind::Dates => super::clock::parse_stamp(field, self.offset_s).map_err(|source| LogError::Date {
+                path: self.path.to_path_buf(),
+                line,
+                source,
+            }),
             TimeKind::Seconds => {
-                let heading = self
-                    .heading
-                    .places
-                    .iter()
-                    .find(|column| column.0 == "time_s");
+                let heading = self.heading.places.iter().find(|column| column.0 == "time_s");
                 let heading = heading.map_or("time_s", |column| column.1.as_str());
-                number(field, self.decimal)
-                    .ok()
-                    .flatten()
-                    .ok_or_else(|| self.no_number(line, heading, field))
+                number(field, self.decimal).ok().flatten().ok_or_else(|| self.no_number(line, heading, field))
             }
         }
     }
 
-    fn value(
-        &self,
-        line: usize,
-        column: &(&'static str, String, usize),
-        field: &str,
-    ) -> Result<Option<f64>, LogError> {
+    fn value(&self, line: usize, column: &(&'static str, String, usize), field: &str) -> Result<Option<f64>, LogError> {
         number(field, self.decimal).map_err(|()| self.no_number(line, &column.1, field))
     }
 
     fn no_number(&self, line: usize, heading: &str, field: &str) -> LogError {
         /// Letters of a bad field that are shown.
         const SHOWN: usize = 60;
-        let text = field
-            .chars()
-            .take(SHOWN)
-            .filter(|letter| !letter.is_control())
-            .collect();
-        LogError::Number {
-            path: self.path.to_path_buf(),
-            line,
-            heading: heading.to_owned(),
-            text,
-        }
+        let text = field.chars().take(SHOWN).filter(|letter| !letter.is_control()).collect();
+        LogError::Number { path: self.path.to_path_buf(), line, heading: heading.to_owned(), text }
     }
 }
 
@@ -576,12 +424,7 @@ mod tests {
     use super::*;
 
     fn wanted() -> Vec<Wanted> {
-        ["time_s", "time", "force_n", "direction_deg"]
-            .map(|name| Wanted {
-                name,
-                heading: name.to_owned(),
-            })
-            .to_vec()
+        ["time_s", "time", "force_n", "direction_deg"].map(|name| Wanted { name, heading: name.to_owned() }).to_vec()
     }
 
     fn read_str(text: &str) -> Result<TextLog, LogError> {
@@ -600,14 +443,7 @@ mod tests {
     fn preamble_semicolons_decimal_commas_units_and_crlf() {
         let text = "Gerät 7; geprüft\r\n\r\nNr;time_s;\"force_n\"\r\n;s;N\r\n1;0,5;1.234,5\r\n2;1,5;-0,25\r\n";
         let log = read_str(text).unwrap();
-        assert_eq!(
-            (
-                log.layout.heading_line,
-                log.layout.separator,
-                log.layout.decimal
-            ),
-            (3, ';', ',')
-        );
+        assert_eq!((log.layout.heading_line, log.layout.separator, log.layout.decimal), (3, ';', ','));
         assert_eq!(log.times, [0.5, 1.5]);
         assert_eq!(log.values[0].1, [Some(1234.5), Some(-0.25)]);
         assert_eq!(log.lines, [5, 6]);
@@ -616,10 +452,7 @@ mod tests {
     #[test]
     fn encodings() {
         let text = "time_s\tforce_n\n0\t1\n";
-        let utf16: Vec<u8> = [0xff, 0xfe]
-            .into_iter()
-            .chain(text.encode_utf16().flat_map(u16::to_le_bytes))
-            .collect();
+        let utf16: Vec<u8> = [0xff, 0xfe].into_iter().chain(text.encode_utf16().flat_map(u16::to_le_bytes)).collect();
         assert_eq!(decode(utf16), text);
         assert_eq!(decode([b"\xef\xbb\xbf", text.as_bytes()].concat()), text);
         assert_eq!(decode(b"T \xb0C".to_vec()), "T °C");
@@ -636,40 +469,14 @@ mod tests {
     #[test]
     fn what_is_no_number_names_its_line() {
         let error = read_str("time_s,force_n\n0,1\n1,OVL\n").unwrap_err();
-        assert!(
-            error.to_string().contains("line 3: `OVL` under `force_n`"),
-            "{error}"
-        );
-        assert!(matches!(
-            read_str("time_s,force_n\n0,inf\n"),
-            Err(LogError::Number { line: 2, .. })
-        ));
-        assert!(matches!(
-            read_str("time_s,force_n\n0,1,5\n"),
-            Err(LogError::Fields {
-                line: 2,
-                got: 3,
-                want: 2,
-                ..
-            })
-        ));
-        assert!(matches!(
-            read_str("time_s,force_n\n,1\n"),
-            Err(LogError::Number { line: 2, .. })
-        ));
-        assert!(matches!(
-            read_str("time_s,force_n\n\n"),
-            Err(LogError::Empty { .. })
-        ));
-        assert!(matches!(
-            read_str("time,force_n\n0,1\n"),
-            Err(LogError::Date { line: 2, .. })
-        ));
+        assert!(error.to_string().contains("line 3: `OVL` under `force_n`"), "{error}");
+        assert!(matches!(read_str("time_s,force_n\n0,inf\n"), Err(LogError::Number { line: 2, .. })));
+        assert!(matches!(read_str("time_s,force_n\n0,1,5\n"), Err(LogError::Fields { line: 2, got: 3, want: 2, .. })));
+        assert!(matches!(read_str("time_s,force_n\n,1\n"), Err(LogError::Number { line: 2, .. })));
+        assert!(matches!(read_str("time_s,force_n\n\n"), Err(LogError::Empty { .. })));
+        assert!(matches!(read_str("time,force_n\n0,1\n"), Err(LogError::Date { line: 2, .. })));
         // A point in a file of decimal commas could be either mark.
-        assert!(matches!(
-            read_str("time_s;force_n\n0,5;1\n1.5;1\n"),
-            Err(LogError::Number { line: 3, .. })
-        ));
+        assert!(matches!(read_str("time_s;force_n\n0,5;1\n1.5;1\n"), Err(LogError::Number { line: 3, .. })));
     }
 
     #[test]
@@ -683,13 +490,8 @@ mod tests {
     #[test]
     fn missing_headings_are_proposed() {
         let error = read_str("Zeit (min);Kraft [kN]\n0;1\n").unwrap_err();
-        let LogError::Headings { help, .. } = &error else {
-            panic!("{error}")
-        };
-        assert!(
-            help.contains("time_s = \"Zeit (min)\"") && help.contains("force_n = \"Kraft [kN]\""),
-            "{help}"
-        );
+        let LogError::Headings { help, .. } = &error else { panic!("{error}") };
+        assert!(help.contains("time_s = \"Zeit (min)\"") && help.contains("force_n = \"Kraft [kN]\""), "{help}");
     }
 
     proptest::proptest! {

@@ -66,49 +66,25 @@ pub(super) fn parse(
             }
         };
         let value = if heading.dated {
-            parse_stamp(time, offset_s).map_err(|error| {
-                fault(
-                    line,
-                    error.to_string(),
-                    "write dates as 2026-03-05T10:00:00",
-                )
-            })?
+            parse_stamp(time, offset_s)
+                .map_err(|error| fault(line, error.to_string(), "write dates as 2026-03-05T10:00:00"))?
         } else {
-            let value = time
-                .replace(',', ".")
-                .parse::<f64>()
-                .ok()
-                .filter(|value| value.is_finite());
+            let value = time.replace(',', ".").parse::<f64>().ok().filter(|value| value.is_finite());
             value.ok_or_else(|| {
-                fault(
-                    line,
-                    format!("`{time}` is no number of seconds"),
-                    "write seconds with a point, say 12.5",
-                )
+                fault(line, format!("`{time}` is no number of seconds"), "write seconds with a point, say 12.5")
             })?
         };
         if seconds[frame].replace(value).is_some() {
-            return Err(fault(
-                line,
-                format!("`{file}` has a second row"),
-                "keep one row a frame",
-            ));
+            return Err(fault(line, format!("`{file}` has a second row"), "keep one row a frame"));
         }
     }
     let missing = seconds.iter().position(Option::is_none);
     if let Some(frame) = missing {
         let count = seconds.iter().filter(|time| time.is_none()).count();
-        let what = format!(
-            "no row for {} ({count} of {} frames have none)",
-            entries[frame].file,
-            entries.len()
-        );
+        let what = format!("no row for {} ({count} of {} frames have none)", entries[frame].file, entries.len());
         return Err(fault(heading.at + 1, what, "add a row for every frame"));
     }
-    Ok(Times {
-        seconds: seconds.into_iter().flatten().collect(),
-        dated: heading.dated,
-    })
+    Ok(Times { seconds: seconds.into_iter().flatten().collect(), dated: heading.dated })
 }
 
 struct Heading {
@@ -126,21 +102,11 @@ fn find_heading(text: &str) -> Option<Heading> {
     text.lines().take(LINES).enumerate().find_map(|(at, line)| {
         [',', ';', '\t'].into_iter().find_map(|separator| {
             split(line, separator, &mut fields);
-            let place = |name: &str| {
-                fields
-                    .iter()
-                    .position(|field| field.eq_ignore_ascii_case(name))
-            };
+            let place = |name: &str| fields.iter().position(|field| field.eq_ignore_ascii_case(name));
             let file = place("file")?;
             let seconds = place("time_s").map(|time| (time, false));
             let (time, dated) = seconds.or_else(|| place("time").map(|time| (time, true)))?;
-            Some(Heading {
-                at,
-                separator,
-                file,
-                time,
-                dated,
-            })
+            Some(Heading { at, separator, file, time, dated })
         })
     })
 }
@@ -155,10 +121,7 @@ fn names(entries: &[FrameEntry]) -> BTreeMap<String, Option<usize>> {
     let mut known: BTreeMap<String, Option<usize>> = BTreeMap::new();
     for entry in entries {
         let bare = entry.file.rsplit('/').next().unwrap_or(&entry.file);
-        known
-            .entry(bare.to_owned())
-            .and_modify(|frame| *frame = None)
-            .or_insert(Some(entry.frame));
+        known.entry(bare.to_owned()).and_modify(|frame| *frame = None).or_insert(Some(entry.frame));
     }
     for entry in entries {
         known.insert(entry.file.clone(), Some(entry.frame));

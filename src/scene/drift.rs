@@ -78,14 +78,7 @@ impl Spectrum {
             px = refine(&cross, px, next, (step / next).ceil() as i32);
             step = next;
         }
-        Shift {
-            px,
-            peak: if spread > 0.0 {
-                f64::from(top) / spread
-            } else {
-                0.0
-            },
-        }
+        Shift { px, peak: if spread > 0.0 { f64::from(top) / spread } else { 0.0 } }
     }
 }
 
@@ -104,11 +97,7 @@ fn weigh(term: Complex<f32>, whitening: Whitening) -> Complex<f32> {
 
 /// Index of a periodic axis as a signed shift or frequency.
 fn signed(index: usize, length: usize) -> f64 {
-    if index > length / 2 {
-        index as f64 - length as f64
-    } else {
-        index as f64
-    }
+    if index > length / 2 { index as f64 - length as f64 } else { index as f64 }
 }
 
 /// Best shift on the grid `around ± reach·step`, by the discrete Fourier transform taken only there.
@@ -121,10 +110,7 @@ fn refine(cross: &Array2<Complex<f32>>, around: [f64; 2], step: f64, reach: i32)
             let angle = turn * signed(k, length) * shift;
             Complex::new(libm::cos(angle), libm::sin(angle))
         };
-        offsets
-            .iter()
-            .map(|o| (0..length).map(|k| phase(centre + o, k)).collect())
-            .collect()
+        offsets.iter().map(|o| (0..length).map(|k| phase(centre + o, k)).collect()).collect()
     };
     let (across, down) = (phases(width, around[0]), phases(height, around[1]));
     // Along every row first: one value per row and x offset.
@@ -132,12 +118,8 @@ fn refine(cross: &Array2<Complex<f32>>, around: [f64; 2], step: f64, reach: i32)
         .into_par_iter()
         .map(|y| {
             let row = cross.row(y);
-            let term =
-                |value: &Complex<f32>| Complex::new(f64::from(value.re), f64::from(value.im));
-            across
-                .iter()
-                .map(|phase| row.iter().zip(phase).map(|(v, p)| term(v) * p).sum())
-                .collect()
+            let term = |value: &Complex<f32>| Complex::new(f64::from(value.re), f64::from(value.im));
+            across.iter().map(|phase| row.iter().zip(phase).map(|(v, p)| term(v) * p).sum()).collect()
         })
         .collect();
     let mut best = (f64::NEG_INFINITY, around);

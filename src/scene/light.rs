@@ -28,11 +28,7 @@ const LEAST_SHARE: f32 = 0.25;
 
 /// Smooth background of a plane, finite everywhere unless nothing in the plane is. NaN and `excluded` pixels do not
 /// count.
-pub(crate) fn background(
-    plane: &Array2<f32>,
-    excluded: Option<&Array2<bool>>,
-    window: Window,
-) -> Array2<f32> {
+pub(crate) fn background(plane: &Array2<f32>, excluded: Option<&Array2<bool>>, window: Window) -> Array2<f32> {
     let means = block_means(plane, excluded, window.block);
     let mut nodes = window_medians(&means, window.reach);
     fill_gaps(&mut nodes);
@@ -56,11 +52,7 @@ fn block_means(plane: &Array2<f32>, excluded: Option<&Array2<bool>>, block: usiz
                     all += 1.0;
                 }
             }
-            *mean = if count > LEAST_SHARE * all {
-                sum / count
-            } else {
-                f32::NAN
-            };
+            *mean = if count > LEAST_SHARE * all { sum / count } else { f32::NAN };
         }
     });
     means
@@ -99,11 +91,7 @@ fn spread(nodes: &Array2<f32>, shape: (usize, usize), block: usize) -> Array2<f3
     let place = |at: usize, length: usize| {
         let position = ((at as f32 + 0.5) / block as f32 - 0.5).clamp(0.0, (length - 1) as f32);
         let low = position.floor();
-        (
-            low as usize,
-            (low as usize + 1).min(length - 1),
-            position - low,
-        )
+        (low as usize, (low as usize + 1).min(length - 1), position - low)
     };
     let columns: Vec<_> = (0..shape.1).map(|x| place(x, nodes.ncols())).collect();
     let mut out = Array2::<f32>::zeros(shape);
@@ -125,16 +113,11 @@ mod tests {
     #[test]
     fn a_slope_comes_back_and_a_line_does_not() {
         let slope = |y: usize, x: usize| 100.0 + 0.1 * x as f32 - 0.05 * y as f32;
-        let plane = Array2::from_shape_fn((160, 200), |(y, x)| {
-            slope(y, x) * if (90..100).contains(&x) { 0.7 } else { 1.0 }
-        });
+        let plane =
+            Array2::from_shape_fn((160, 200), |(y, x)| slope(y, x) * if (90..100).contains(&x) { 0.7 } else { 1.0 });
         let found = background(&plane, None, OWN_BACKGROUND);
         for (y, x) in [(20, 20), (80, 95), (100, 60), (140, 180)] {
-            assert!(
-                (found[[y, x]] / slope(y, x) - 1.0).abs() < 0.02,
-                "{y} {x}: {}",
-                found[[y, x]]
-            );
+            assert!((found[[y, x]] / slope(y, x) - 1.0).abs() < 0.02, "{y} {x}: {}", found[[y, x]]);
         }
     }
 

@@ -41,10 +41,7 @@ pub(crate) struct NoiseModel {
 impl NoiseModel {
     /// The same noise everywhere, grey levels.
     pub(crate) fn even(sd: f32) -> Self {
-        Self {
-            by_grey: vec![(0.0, (sd * sd).max(ROUNDING))],
-            misplacement: LEAST_MISPLACEMENT,
-        }
+        Self { by_grey: vec![(0.0, (sd * sd).max(ROUNDING))], misplacement: LEAST_MISPLACEMENT }
     }
 
     /// Measures the model from looks at bare frames.
@@ -55,14 +52,8 @@ impl NoiseModel {
         };
         looks.sort_unstable_by(|a, b| a.grey.total_cmp(&b.grey));
         let flat: Vec<Look> = looks.iter().filter(|l| l.slope <= steep).copied().collect();
-        let by_grey = flat
-            .chunks(flat.len().div_ceil(CLASSES).max(1))
-            .filter_map(class)
-            .collect();
-        let mut model = Self {
-            by_grey,
-            misplacement: 0.0,
-        };
+        let by_grey = flat.chunks(flat.len().div_ceil(CLASSES).max(1)).filter_map(class).collect();
+        let mut model = Self { by_grey, misplacement: 0.0 };
         looks.sort_unstable_by(|a, b| a.slope.total_cmp(&b.slope));
         model.misplacement = model.measured_misplacement(looks).max(LEAST_MISPLACEMENT);
         model
@@ -74,15 +65,8 @@ impl NoiseModel {
         let upper = &by_slope[by_slope.len() / 2..];
         let (mut top, mut bottom) = (0.0, 0.0);
         for looks in upper.chunks(upper.len().div_ceil(CLASSES).max(1)) {
-            let mut excess: Vec<f32> = looks
-                .iter()
-                .map(|l| l.square / self.flat_variance(l.grey))
-                .collect();
-            let base: f32 = looks
-                .iter()
-                .map(|l| self.flat_variance(l.grey))
-                .sum::<f32>()
-                / looks.len() as f32;
+            let mut excess: Vec<f32> = looks.iter().map(|l| l.square / self.flat_variance(l.grey)).collect();
+            let base: f32 = looks.iter().map(|l| self.flat_variance(l.grey)).sum::<f32>() / looks.len() as f32;
             let square = looks.iter().map(|l| l.slope * l.slope).sum::<f32>() / looks.len() as f32;
             let Some(middle) = quantile(&mut excess, 0.5) else {
                 continue;
@@ -90,20 +74,13 @@ impl NoiseModel {
             top += square * base * (middle / MEDIAN_SQUARE - 1.0);
             bottom += square * square;
         }
-        if bottom > 0.0 {
-            (top / bottom).max(0.0).sqrt()
-        } else {
-            0.0
-        }
+        if bottom > 0.0 { (top / bottom).max(0.0).sqrt() } else { 0.0 }
     }
 
     /// Variance at a grey level on flat ground: linear between classes, flat beyond them.
     fn flat_variance(&self, grey: f32) -> f32 {
         let after = self.by_grey.partition_point(|&(g, _)| g < grey);
-        match (
-            after.checked_sub(1).and_then(|i| self.by_grey.get(i)),
-            self.by_grey.get(after),
-        ) {
+        match (after.checked_sub(1).and_then(|i| self.by_grey.get(i)), self.by_grey.get(after)) {
             (Some(a), Some(b)) => a.1 + (b.1 - a.1) * (grey - a.0) / (b.0 - a.0).max(f32::EPSILON),
             (Some(end), None) | (None, Some(end)) => end.1,
             (None, None) => 1.0,
@@ -112,19 +89,14 @@ impl NoiseModel {
 
     /// Standard deviation of each pixel, grey levels.
     pub(crate) fn sd(&self, reference: &Array2<f32>, slope: &Array2<f32>) -> Array2<f32> {
-        combine(reference, slope, |grey, slope| {
-            (self.flat_variance(grey) + (self.misplacement * slope).powi(2)).sqrt()
-        })
+        combine(reference, slope, |grey, slope| (self.flat_variance(grey) + (self.misplacement * slope).powi(2)).sqrt())
     }
 }
 
 fn class(looks: &[Look]) -> Option<(f32, f32)> {
     let mut squares: Vec<f32> = looks.iter().map(|l| l.square).collect();
     let middle = quantile(&mut squares, 0.5)?;
-    Some((
-        looks[looks.len() / 2].grey,
-        (middle / MEDIAN_SQUARE).max(ROUNDING),
-    ))
+    Some((looks[looks.len() / 2].grey, (middle / MEDIAN_SQUARE).max(ROUNDING)))
 }
 
 /// Looks at one bare frame: `residual` in grey levels (NaN where not covered), scaled by `to_new_frame`.
@@ -137,11 +109,7 @@ pub(crate) fn looks(
     let columns = [reference, slope, residual].map(|plane| sample(plane, LOOKED_AT));
     (0..columns[2].len())
         .filter(|&i| columns[2][i].is_finite())
-        .map(|i| Look {
-            grey: columns[0][i],
-            slope: columns[1][i],
-            square: (columns[2][i] * to_new_frame).powi(2),
-        })
+        .map(|i| Look { grey: columns[0][i], slope: columns[1][i], square: (columns[2][i] * to_new_frame).powi(2) })
         .collect()
 }
 
@@ -161,19 +129,11 @@ mod tests {
                 let slope = rng.random_range(0.0..20.0_f32);
                 let sd = (1.0 + 0.05 * grey + (0.2 * slope).powi(2)).sqrt();
                 let draw: f32 = rng.sample(normal);
-                Look {
-                    grey,
-                    slope,
-                    square: (sd * draw).powi(2),
-                }
+                Look { grey, slope, square: (sd * draw).powi(2) }
             })
             .collect();
         let model = NoiseModel::measure(&mut looks);
-        assert!(
-            (model.misplacement - 0.2).abs() < 0.03,
-            "{}",
-            model.misplacement
-        );
+        assert!((model.misplacement - 0.2).abs() < 0.03, "{}", model.misplacement);
         // Flat ground holds slopes up to 10: half of the mean excess of 1.3 remains in the class.
         assert!(model.flat_variance(180.0) - model.flat_variance(60.0) > 4.0);
     }

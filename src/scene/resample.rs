@@ -27,10 +27,7 @@ impl Motion {
     /// Position in the frame of a reference position given from the picture's centre.
     pub(crate) fn apply(&self, x: f64, y: f64) -> (f64, f64) {
         let (sin, cos) = (libm::sin(self.turn), libm::cos(self.turn));
-        (
-            cos * x + sin * y + self.shift[0],
-            -sin * x + cos * y + self.shift[1],
-        )
+        (cos * x + sin * y + self.shift[0], -sin * x + cos * y + self.shift[1])
     }
 
     /// Whether there is any turn to account for.
@@ -52,11 +49,7 @@ pub(crate) struct Interpolator {
 impl Interpolator {
     /// Fills the table.
     pub(crate) fn new() -> Self {
-        Self {
-            table: (0..=STEPS)
-                .map(|i| weights(i as f64 / STEPS as f64))
-                .collect(),
-        }
+        Self { table: (0..=STEPS).map(|i| weights(i as f64 / STEPS as f64)).collect() }
     }
 
     /// Whole pixel and weights of a position along one axis; `None` when it lies outside `length` pixels.
@@ -102,13 +95,7 @@ impl Interpolator {
         let shift_only = !motion.turns();
         rows_mut(&mut out).for_each_init(Vec::new, |buffer, (y, row)| {
             if shift_only {
-                self.shifted_row(
-                    frame,
-                    y as f64 + motion.shift[1],
-                    motion.shift[0],
-                    buffer,
-                    row,
-                );
+                self.shifted_row(frame, y as f64 + motion.shift[1], motion.shift[0], buffer, row);
                 return;
             }
             for (x, value) in row.iter_mut().enumerate() {
@@ -120,14 +107,7 @@ impl Interpolator {
     }
 
     /// One row of a purely shifted frame: down the columns first, then along the row.
-    fn shifted_row(
-        &self,
-        frame: &Array2<f32>,
-        y: f64,
-        shift_x: f64,
-        buffer: &mut Vec<f32>,
-        out: &mut [f32],
-    ) {
+    fn shifted_row(&self, frame: &Array2<f32>, y: f64, shift_x: f64, buffer: &mut Vec<f32>, out: &mut [f32]) {
         let (height, width) = frame.dim();
         let Some((y0, down)) = self.locate(y, height) else {
             return;
@@ -149,14 +129,9 @@ impl Interpolator {
             }
             let x0 = x as isize + whole as isize - 2;
             *value = if x0 >= 0 && x0 + TAPS as isize <= width as isize {
-                buffer[x0 as usize..x0 as usize + TAPS]
-                    .iter()
-                    .zip(across)
-                    .map(|(v, w)| v * w)
-                    .sum()
+                buffer[x0 as usize..x0 as usize + TAPS].iter().zip(across).map(|(v, w)| v * w).sum()
             } else {
-                let clamped =
-                    |j: usize| buffer[(x0 + j as isize).clamp(0, width as isize - 1) as usize];
+                let clamped = |j: usize| buffer[(x0 + j as isize).clamp(0, width as isize - 1) as usize];
                 across.iter().enumerate().map(|(j, w)| w * clamped(j)).sum()
             };
         }
@@ -166,9 +141,7 @@ impl Interpolator {
     /// average over all fractions).
     pub(crate) fn noise_gain(&self, motion: &Motion) -> f32 {
         let energy = |weights: &[f32; TAPS]| weights.iter().map(|w| w * w).sum::<f32>();
-        let along = |shift: f64| {
-            energy(&self.table[((shift - shift.floor()) * STEPS as f64).round() as usize])
-        };
+        let along = |shift: f64| energy(&self.table[((shift - shift.floor()) * STEPS as f64).round() as usize]);
         if motion.turns() {
             self.table[..STEPS].iter().map(energy).sum::<f32>() / STEPS as f32
         } else {
@@ -188,11 +161,7 @@ fn weights(fraction: f64) -> [f32; TAPS] {
     };
     let raw: [f64; TAPS] = std::array::from_fn(|k| {
         let distance = fraction - (k as f64 - 2.0);
-        if distance.abs() < 3.0 {
-            kernel(distance)
-        } else {
-            0.0
-        }
+        if distance.abs() < 3.0 { kernel(distance) } else { 0.0 }
     });
     let total: f64 = raw.iter().sum();
     raw.map(|w| (w / total) as f32)
@@ -211,10 +180,7 @@ mod tests {
 
     #[test]
     fn shifting_back_restores_a_smooth_picture() {
-        let motion = Motion {
-            shift: [3.37, -2.71],
-            turn: 0.0,
-        };
+        let motion = Motion { shift: [3.37, -2.71], turn: 0.0 };
         let moved = waves(60, 80, 3.37, -2.71);
         let restored = Interpolator::new().resample(&moved, &motion);
         let truth = waves(60, 80, 0.0, 0.0);
@@ -229,11 +195,7 @@ mod tests {
     #[test]
     fn a_turn_is_anticlockwise_as_displayed() {
         // A point to the right of the centre moves up (y falls).
-        let (x, y) = Motion {
-            shift: [0.0, 0.0],
-            turn: 0.1,
-        }
-        .apply(10.0, 0.0);
+        let (x, y) = Motion { shift: [0.0, 0.0], turn: 0.1 }.apply(10.0, 0.0);
         assert!(y < 0.0 && x > 9.9);
     }
 
@@ -241,10 +203,7 @@ mod tests {
     fn row_by_row_and_point_by_point_agree() {
         let frame = waves(40, 50, 0.0, 0.0);
         let interpolator = Interpolator::new();
-        let motion = Motion {
-            shift: [1.25, -0.75],
-            turn: 0.0,
-        };
+        let motion = Motion { shift: [1.25, -0.75], turn: 0.0 };
         let whole = interpolator.resample(&frame, &motion);
         for (y, x) in [(0, 0), (1, 3), (20, 48), (39, 10), (20, 20)] {
             let single = interpolator.at(&frame, x as f64 + 1.25, y as f64 - 0.75);

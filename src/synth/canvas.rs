@@ -22,26 +22,18 @@ impl Plane {
     /// A plane of one value.
     #[must_use]
     pub fn filled(cols: usize, rows: usize, value: f32) -> Self {
-        Self {
-            cols,
-            rows,
-            data: vec![value; cols * rows],
-        }
+        Self { cols, rows, data: vec![value; cols * rows] }
     }
 
     /// Computes every sample from its column and row, in parallel.
     #[must_use]
     pub fn from_fn(cols: usize, rows: usize, sample: impl Fn(usize, usize) -> f32 + Sync) -> Self {
         let mut plane = Self::filled(cols, rows, 0.0);
-        plane
-            .data
-            .par_chunks_mut(cols)
-            .enumerate()
-            .for_each(|(row, line)| {
-                for (col, value) in line.iter_mut().enumerate() {
-                    *value = sample(col, row);
-                }
-            });
+        plane.data.par_chunks_mut(cols).enumerate().for_each(|(row, line)| {
+            for (col, value) in line.iter_mut().enumerate() {
+                *value = sample(col, row);
+            }
+        });
         plane
     }
 
@@ -83,18 +75,10 @@ impl Plane {
         let across = Self::from_fn(self.cols, self.rows, |col, row| {
             let line = self.line(row as isize);
             let at = |i: isize| line[(col as isize + i).clamp(0, self.cols as isize - 1) as usize];
-            kernel
-                .iter()
-                .zip(-reach..=reach)
-                .map(|(w, i)| w * at(i))
-                .sum()
+            kernel.iter().zip(-reach..=reach).map(|(w, i)| w * at(i)).sum()
         });
         Self::from_fn(self.cols, self.rows, |col, row| {
-            kernel
-                .iter()
-                .zip(-reach..=reach)
-                .map(|(w, i)| w * across.line(row as isize + i)[col])
-                .sum()
+            kernel.iter().zip(-reach..=reach).map(|(w, i)| w * across.line(row as isize + i)[col]).sum()
         })
     }
 
@@ -117,8 +101,7 @@ impl Plane {
             let sum: f32 = stamp
                 .iter()
                 .map(|&(i, j, w)| {
-                    w * self.line(row as isize + j)
-                        [(col as isize + i).clamp(0, self.cols as isize - 1) as usize]
+                    w * self.line(row as isize + j)[(col as isize + i).clamp(0, self.cols as isize - 1) as usize]
                 })
                 .sum();
             sum / total
@@ -129,20 +112,13 @@ impl Plane {
 /// Cubic-convolution weights of the four samples around a fraction `t` in [0, 1).
 fn keys(t: f64) -> [f64; 4] {
     let (t2, t3) = (t * t, t * t * t);
-    [
-        -0.5 * t + t2 - 0.5 * t3,
-        1.0 - 2.5 * t2 + 1.5 * t3,
-        0.5 * t + 2.0 * t2 - 1.5 * t3,
-        -0.5 * t2 + 0.5 * t3,
-    ]
+    [-0.5 * t + t2 - 0.5 * t3, 1.0 - 2.5 * t2 + 1.5 * t3, 0.5 * t + 2.0 * t2 - 1.5 * t3, -0.5 * t2 + 0.5 * t3]
 }
 
 /// A normalised Gaussian out to four standard deviations.
 fn gaussian_kernel(sigma: f64) -> Vec<f32> {
     let reach = (4.0 * sigma).ceil() as i32;
-    let raw: Vec<f64> = (-reach..=reach)
-        .map(|i| libm::exp(-0.5 * f64::from(i * i) / (sigma * sigma)))
-        .collect();
+    let raw: Vec<f64> = (-reach..=reach).map(|i| libm::exp(-0.5 * f64::from(i * i) / (sigma * sigma))).collect();
     let total: f64 = raw.iter().sum();
     raw.iter().map(|w| (w / total) as f32).collect()
 }
@@ -162,9 +138,8 @@ mod tests {
     fn a_shifted_blurred_wave_stays_itself() {
         let wave = |x: f64| libm::sin(x / 3.0) as f32;
         let plane = Plane::from_fn(80, 8, |c, _| wave(c as f64));
-        let worst = (20..60)
-            .map(|c| (plane.cubic(c as f64 + 0.37, 4.0) - wave(c as f64 + 0.37)).abs())
-            .fold(0.0, f32::max);
+        let worst =
+            (20..60).map(|c| (plane.cubic(c as f64 + 0.37, 4.0) - wave(c as f64 + 0.37)).abs()).fold(0.0, f32::max);
         assert!(worst < 2e-3, "{worst}");
     }
 
@@ -175,17 +150,10 @@ mod tests {
         for (blurred, variance) in [(dot.gaussian(2.0), 4.0), (dot.disc(6.0), 9.0)] {
             let sum: f32 = blurred.data.iter().sum();
             assert!((sum - 1.0).abs() < 1e-4);
-            let second: f64 = blurred
-                .data
-                .iter()
-                .enumerate()
-                .map(|(i, &v)| f64::from(v) * ((i % 61) as f64 - 30.0).powi(2))
-                .sum();
+            let second: f64 =
+                blurred.data.iter().enumerate().map(|(i, &v)| f64::from(v) * ((i % 61) as f64 - 30.0).powi(2)).sum();
             // A disc of radius r has variance r²/4 along x.
-            assert!(
-                (second / variance - 1.0).abs() < 0.03,
-                "{second} {variance}"
-            );
+            assert!((second / variance - 1.0).abs() < 0.03, "{second} {variance}");
         }
     }
 }

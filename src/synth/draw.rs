@@ -4,10 +4,7 @@
 
 use super::dice::{Dice, Stream};
 use super::imaging::{Grade, Imaging, Light, Psf, Texture};
-use super::plan::{
-    CellPlan, CurrentStage, FixtureKind, GrowthPlan, LoadPlan, LoadStage, Meeting, SpeedLaw,
-    TipShape,
-};
+use super::plan::{CellPlan, CurrentStage, FixtureKind, GrowthPlan, LoadPlan, LoadStage, Meeting, SpeedLaw, TipShape};
 use super::scenario::{Polarity, Scenario};
 
 /// A 480 × 360 run of 40 frames, six of them bare, drawn from `seed` within a grade.
@@ -26,13 +23,8 @@ pub fn draw(grade: Grade, seed: u64) -> Scenario {
     let mut growth = growth(&mut dice);
     let cell = cell(&mut dice, &mut growth, &blank);
     let imaging = imaging(&mut dice, grade);
-    let (plating_edge, far_edge) =
-        edges(&mut dice, f64::from(blank.width), f64::from(blank.height));
-    let filament = if dice.chance(0.2) {
-        Polarity::Brighter
-    } else {
-        Polarity::Darker
-    };
+    let (plating_edge, far_edge) = edges(&mut dice, f64::from(blank.width), f64::from(blank.height));
+    let filament = if dice.chance(0.2) { Polarity::Brighter } else { Polarity::Darker };
     let name = format!("{grade:?}-{seed}").to_lowercase();
     let note = Some("drawn by chance within its grade".to_owned());
     Scenario {
@@ -63,16 +55,8 @@ fn cell(dice: &mut Dice, growth: &mut GrowthPlan, blank: &Scenario) -> CellPlan 
     let current_ma = if kind == 0 { 0.0 } else { -plan.current_ma };
     growth.retreat_px_per_s = dice.between(0.3, 1.0);
     growth.stripped_contrast = dice.between(0.0, 0.5);
-    let stages = vec![
-        CurrentStage {
-            at_s: from,
-            current_ma,
-        },
-        CurrentStage {
-            at_s: until,
-            current_ma: plan.current_ma,
-        },
-    ];
+    let stages =
+        vec![CurrentStage { at_s: from, current_ma }, CurrentStage { at_s: until, current_ma: plan.current_ma }];
     CellPlan { stages, ..plan }
 }
 
@@ -101,10 +85,7 @@ fn edges(dice: &mut Dice, w: f64, h: f64) -> (Vec<[f64; 2]>, Vec<[f64; 2]>) {
         line[1][1] += bow;
         line
     };
-    let (bow_a, bow_b) = (
-        dice.between(-4.0, 4.0).round(),
-        dice.between(-4.0, 4.0).round(),
-    );
+    let (bow_a, bow_b) = (dice.between(-4.0, 4.0).round(), dice.between(-4.0, 4.0).round());
     match dice.below(6) {
         0..=2 => (upright(near, bow_a), upright(far, bow_b)),
         3 => (upright(far, bow_a), upright(near, bow_b)),
@@ -128,43 +109,19 @@ fn load(dice: &mut Dice, duration_s: f64) -> LoadPlan {
     let stages = match dice.below(8) {
         0 => return LoadPlan::default(),
         1 | 2 => vec![stage(0.0, stress, axis, 0.0)],
-        3 => vec![
-            stage(0.0, stress, axis, 0.0),
-            stage(middle, stress, axis + turn, 0.0),
-        ],
-        4 => vec![
-            stage(0.0, stress, axis, 0.0),
-            stage(middle, stress, axis + turn, ramp),
-        ],
-        5 => vec![
-            stage(0.0, 0.0, axis, 0.0),
-            stage(middle, stress, axis, ramp),
-        ],
-        6 => vec![
-            stage(0.0, stress, axis, 0.0),
-            stage(middle, -stress, axis, 0.0),
-        ],
+        3 => vec![stage(0.0, stress, axis, 0.0), stage(middle, stress, axis + turn, 0.0)],
+        4 => vec![stage(0.0, stress, axis, 0.0), stage(middle, stress, axis + turn, ramp)],
+        5 => vec![stage(0.0, 0.0, axis, 0.0), stage(middle, stress, axis, ramp)],
+        6 => vec![stage(0.0, stress, axis, 0.0), stage(middle, -stress, axis, 0.0)],
         _ => {
             let period = duration_s * dice.between(0.12, 0.25);
             let swings = (duration_s / period) as usize;
             (0..=swings)
-                .map(|i| {
-                    stage(
-                        i as f64 * period,
-                        stress,
-                        axis + if i % 2 == 0 { 0.0 } else { turn },
-                        0.0,
-                    )
-                })
+                .map(|i| stage(i as f64 * period, stress, axis + if i % 2 == 0 { 0.0 } else { turn }, 0.0))
                 .collect()
         }
     };
-    LoadPlan {
-        fixture: FixtureKind::Stress,
-        stages,
-        noise_mpa: dice.between(0.1, 2.0),
-        ..LoadPlan::default()
-    }
+    LoadPlan { fixture: FixtureKind::Stress, stages, noise_mpa: dice.between(0.1, 2.0), ..LoadPlan::default() }
 }
 
 fn growth(dice: &mut Dice) -> GrowthPlan {
@@ -173,12 +130,7 @@ fn growth(dice: &mut Dice) -> GrowthPlan {
         filaments: 2 + dice.below(5),
         start_s: [2.0, dice.between(20.0, 150.0)],
         width_px: [thin, (thin + dice.between(0.5, 3.0)).min(6.0)],
-        law: dice.pick(&[
-            SpeedLaw::Steady,
-            SpeedLaw::Slowing,
-            SpeedLaw::Accelerating,
-            SpeedLaw::StopAndGo,
-        ]),
+        law: dice.pick(&[SpeedLaw::Steady, SpeedLaw::Slowing, SpeedLaw::Accelerating, SpeedLaw::StopAndGo]),
         speed_noise: dice.between(0.1, 0.5),
         speed_memory_s: dice.log_within([10.0, 100.0]),
         steering_per_px: dice.log_within([0.015, 0.08]),
@@ -250,9 +202,6 @@ mod tests {
     #[test]
     fn grades_keep_their_contrast_and_noise() {
         let scenario = draw(Grade::Typical, 3);
-        assert!(
-            (scenario.imaging.contrast - 0.18).abs() < 1e-12
-                && (scenario.imaging.noise - 2.6).abs() < 1e-12
-        );
+        assert!((scenario.imaging.contrast - 0.18).abs() < 1e-12 && (scenario.imaging.noise - 2.6).abs() < 1e-12);
     }
 }

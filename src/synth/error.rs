@@ -7,10 +7,7 @@ use std::path::{Path, PathBuf};
 pub enum SynthError {
     /// Reading or writing failed.
     #[error("{path}: {source}")]
-    #[diagnostic(
-        code(synth::io),
-        help("check that the path exists and may be read or written")
-    )]
+    #[diagnostic(code(synth::io), help("check that the path exists and may be read or written"))]
     Io {
         /// The file or folder.
         path: PathBuf,
@@ -58,9 +55,7 @@ pub enum SynthError {
     #[error("{path}: {message}")]
     #[diagnostic(
         code(synth::unscorable),
-        help(
-            "`score` needs RUN/truth (written by `veerlog synth`) and RUN/veerlog (written by `veerlog report RUN`)"
-        )
+        help("`score` needs RUN/truth (written by `veerlog synth`) and RUN/veerlog (written by `veerlog report RUN`)")
     )]
     Unscorable {
         /// The file or folder.
@@ -74,9 +69,6 @@ impl SynthError {
     /// An I/O failure at `path`.
     #[must_use]
     pub fn io(path: &Path, source: std::io::Error) -> Self {
-        Self::Io {
-            path: path.to_owned(),
-            source,
-        }
+        Self::Io { path: path.to_owned(), source }
     }
 }

@@ -44,10 +44,7 @@ fn write_parts(scenario: &Scenario, folder: &Path) -> Result<(), SynthError> {
     make_folder(&folder.join("truth"))?;
     write_frames(scenario, &growth, &shots, &folder.join("frames"))?;
     write_logs(scenario, &growth, folder)?;
-    write(
-        &folder.join("run.toml"),
-        manifest(scenario, &growth)?.as_bytes(),
-    )?;
+    write(&folder.join("run.toml"), manifest(scenario, &growth)?.as_bytes())?;
     write_truth(scenario, &growth, &shots, folder)
 }
 
@@ -71,9 +68,7 @@ pub fn rebuild(folder: &Path) -> Result<(), SynthError> {
 fn refuse_occupied(folder: &Path) -> Result<(), SynthError> {
     match fs::read_dir(folder) {
         Ok(mut entries) => match entries.next() {
-            Some(_) => Err(SynthError::Occupied {
-                path: folder.to_owned(),
-            }),
+            Some(_) => Err(SynthError::Occupied { path: folder.to_owned() }),
             None => Ok(()),
         },
         Err(e) if e.kind() == std::io::ErrorKind::NotFound => Ok(()),
@@ -94,19 +89,9 @@ fn frame_name(k: usize) -> String {
     format!("frame_{k:05}.png")
 }
 
-fn write_frames(
-    scenario: &Scenario,
-    growth: &Growth,
-    shots: &[Shot],
-    folder: &Path,
-) -> Result<(), SynthError> {
-    let turn = |s: &Shot| {
-        s.rotation_deg.abs().to_radians() * f64::from(scenario.width.max(scenario.height))
-    };
-    let reach = shots
-        .iter()
-        .map(|s| s.drift[0].abs().max(s.drift[1].abs()) + turn(s))
-        .fold(0.0, f64::max);
+fn write_frames(scenario: &Scenario, growth: &Growth, shots: &[Shot], folder: &Path) -> Result<(), SynthError> {
+    let turn = |s: &Shot| s.rotation_deg.abs().to_radians() * f64::from(scenario.width.max(scenario.height));
+    let reach = shots.iter().map(|s| s.drift[0].abs().max(s.drift[1].abs()) + turn(s)).fold(0.0, f64::max);
     let ceramic = Ceramic::draw(scenario, MARGIN_PX + reach);
     let mut last: Vec<u8> = Vec::new();
     for start in (0..shots.len()).step_by(BATCH) {
@@ -116,11 +101,7 @@ fn write_frames(
             .map(|&(k, shot)| encoded_frame(scenario, &ceramic, growth, shot, k))
             .collect::<Result<_, _>>()?;
         for ((k, shot), bytes) in batch.into_iter().zip(encoded) {
-            let bytes = if shot.loss == Some(Loss::Repeated) {
-                std::mem::take(&mut last)
-            } else {
-                bytes
-            };
+            let bytes = if shot.loss == Some(Loss::Repeated) { std::mem::take(&mut last) } else { bytes };
             write(&folder.join(frame_name(k)), &bytes)?;
             last = bytes;
         }
@@ -153,18 +134,9 @@ fn encoded_frame(
 fn png(scenario: &Scenario, levels: &[f64]) -> Result<Vec<u8>, SynthError> {
     let (bytes, colour): (Vec<u8>, _) = if scenario.imaging.bits == 16 {
         let full = |v: &f64| ((v * 65535.0).round().clamp(0.0, 65535.0) as u16).to_ne_bytes();
-        (
-            levels.iter().flat_map(full).collect(),
-            ExtendedColorType::L16,
-        )
+        (levels.iter().flat_map(full).collect(), ExtendedColorType::L16)
     } else {
-        (
-            levels
-                .iter()
-                .map(|v| (v * 255.0).round().clamp(0.0, 255.0) as u8)
-                .collect(),
-            ExtendedColorType::L8,
-        )
+        (levels.iter().map(|v| (v * 255.0).round().clamp(0.0, 255.0) as u8).collect(), ExtendedColorType::L8)
     };
     let mut out = Vec::new();
     PngEncoder::new_with_quality(&mut out, CompressionType::Best, FilterType::Avg).write_image(
@@ -179,26 +151,15 @@ fn png(scenario: &Scenario, levels: &[f64]) -> Result<Vec<u8>, SynthError> {
 fn write_logs(scenario: &Scenario, growth: &Growth, folder: &Path) -> Result<(), SynthError> {
     let mut dice = Dice::new(scenario.seed, Stream::Logs, 0);
     if scenario.load.fixture != FixtureKind::None {
-        write(
-            &folder.join("load.csv"),
-            load_log(scenario, &mut dice).as_bytes(),
-        )?;
+        write(&folder.join("load.csv"), load_log(scenario, &mut dice).as_bytes())?;
     }
     if scenario.cell.log {
-        write(
-            &folder.join("cell.csv"),
-            cell_log(scenario, growth, &mut dice).as_bytes(),
-        )?;
+        write(&folder.join("cell.csv"), cell_log(scenario, growth, &mut dice).as_bytes())?;
     }
     Ok(())
 }
 
-fn write_truth(
-    scenario: &Scenario,
-    growth: &Growth,
-    shots: &[Shot],
-    folder: &Path,
-) -> Result<(), SynthError> {
+fn write_truth(scenario: &Scenario, growth: &Growth, shots: &[Shot], folder: &Path) -> Result<(), SynthError> {
     let at = |name: &str| -> PathBuf { folder.join("truth").join(name) };
     let about = serde_json::json!({ "seed": scenario.seed, "scenario": scenario });
     write(&at("truth.json"), pretty(&about)?.as_bytes())?;
@@ -208,26 +169,17 @@ fn write_truth(
         lines.push('\n');
     }
     write(&at("paths.ndjson"), lines.as_bytes())?;
-    write(
-        &at("frames.csv"),
-        frames_csv(&truth::frames(scenario, growth, shots)).as_bytes(),
-    )?;
+    write(&at("frames.csv"), frames_csv(&truth::frames(scenario, growth, shots)).as_bytes())?;
     write(&at("short.json"), pretty(&truth::short(growth))?.as_bytes())
 }
 
 fn json(value: &impl Serialize) -> Result<String, SynthError> {
-    serde_json::to_string(value).map_err(|e| SynthError::Format {
-        what: "truth",
-        message: e.to_string(),
-    })
+    serde_json::to_string(value).map_err(|e| SynthError::Format { what: "truth", message: e.to_string() })
 }
 
 fn pretty(value: &impl Serialize) -> Result<String, SynthError> {
     let text = serde_json::to_string_pretty(value);
-    text.map(|t| t + "\n").map_err(|e| SynthError::Format {
-        what: "truth",
-        message: e.to_string(),
-    })
+    text.map(|t| t + "\n").map_err(|e| SynthError::Format { what: "truth", message: e.to_string() })
 }
 
 fn frames_csv(rows: &[truth::FrameTruth]) -> String {
@@ -236,22 +188,11 @@ fn frames_csv(rows: &[truth::FrameTruth]) -> String {
     );
     let shown = |value: Option<f64>| value.map_or(String::new(), |v| v.to_string());
     for r in rows {
-        let (x, y, alignment) = (
-            shown(r.drift_x_px),
-            shown(r.drift_y_px),
-            shown(r.growth_alignment),
-        );
+        let (x, y, alignment) = (shown(r.drift_x_px), shown(r.drift_y_px), shown(r.growth_alignment));
         let _ = writeln!(
             text,
             "{},{},{x},{y},{},{},{},{},{},{alignment},{}",
-            r.frame,
-            r.time_s,
-            r.depth_um,
-            r.depth_fraction,
-            r.front_depth_um,
-            r.tips,
-            r.length_um,
-            r.usable
+            r.frame, r.time_s, r.depth_um, r.depth_fraction, r.front_depth_um, r.tips, r.length_um, r.usable
         );
     }
     text

@@ -33,15 +33,9 @@ const REFILL: f64 = 3.0;
 /// ```
 #[must_use]
 pub fn grow(scenario: &Scenario) -> Growth {
-    match (
-        Polyline::new(&scenario.plating_edge),
-        Polyline::new(&scenario.far_edge),
-    ) {
+    match (Polyline::new(&scenario.plating_edge), Polyline::new(&scenario.far_edge)) {
         (Some(plating), Some(far)) => Field::new(scenario, plating, far).run(),
-        _ => Growth {
-            tracks: Vec::new(),
-            contact: None,
-        },
+        _ => Growth { tracks: Vec::new(), contact: None },
     }
 }
 
@@ -61,20 +55,8 @@ impl<'a> Field<'a> {
     fn new(scenario: &'a Scenario, plating: Polyline, far: Polyline) -> Self {
         let side = plating.side_of(&far);
         let taken = vec![None; scenario.width as usize * scenario.height as usize];
-        let growth = Growth {
-            tracks: Vec::new(),
-            contact: None,
-        };
-        let mut field = Self {
-            scenario,
-            plan: &scenario.growth,
-            plating,
-            far,
-            side,
-            growth,
-            tips: Vec::new(),
-            taken,
-        };
+        let growth = Growth { tracks: Vec::new(), contact: None };
+        let mut field = Self { scenario, plan: &scenario.growth, plating, far, side, growth, tips: Vec::new(), taken };
         field.plant();
         field
     }
@@ -92,35 +74,20 @@ impl<'a> Field<'a> {
                 }
                 along = dice.between(0.12, 0.88);
             }
-            roots.push(RootPlan {
-                along,
-                start_s: None,
-                width_px: None,
-                speed_px_per_s: None,
-                lean_deg: None,
-            });
+            roots.push(RootPlan { along, start_s: None, width_px: None, speed_px_per_s: None, lean_deg: None });
         }
-        let left =
-            (self.scenario.end_s() - self.scenario.bare_until_s()).max(self.scenario.interval_s);
+        let left = (self.scenario.end_s() - self.scenario.bare_until_s()).max(self.scenario.interval_s);
         let gap = self.plating.gap(&self.far);
         for (i, root) in roots.into_iter().enumerate() {
-            let start = root
-                .start_s
-                .unwrap_or_else(|| self.scenario.bare_until_s() + dice.within(self.plan.start_s));
-            let width = root
-                .width_px
-                .unwrap_or_else(|| dice.within(self.plan.width_px));
-            let speed = root
-                .speed_px_per_s
-                .unwrap_or_else(|| match self.plan.speed_px_per_s {
-                    [_, high] if high <= 0.0 => gap / (left * dice.between(0.6, 1.8)),
-                    range => dice.within(range),
-                });
+            let start = root.start_s.unwrap_or_else(|| self.scenario.bare_until_s() + dice.within(self.plan.start_s));
+            let width = root.width_px.unwrap_or_else(|| dice.within(self.plan.width_px));
+            let speed = root.speed_px_per_s.unwrap_or_else(|| match self.plan.speed_px_per_s {
+                [_, high] if high <= 0.0 => gap / (left * dice.between(0.6, 1.8)),
+                range => dice.within(range),
+            });
             let (place, tangent) = self.plating.at(root.along);
             let normal = scaled([-tangent[1], tangent[0]], self.side);
-            let lean = root
-                .lean_deg
-                .unwrap_or_else(|| (self.plan.root_spread_deg * dice.normal()).clamp(-50.0, 50.0));
+            let lean = root.lean_deg.unwrap_or_else(|| (self.plan.root_spread_deg * dice.normal()).clamp(-50.0, 50.0));
             // Image angles run clockwise as displayed (y down), leans anticlockwise.
             let angle = libm::atan2(normal[1], normal[0]) - lean.to_radians();
             // A track starts only after the last bare frame, whatever was asked for.
@@ -128,12 +95,7 @@ impl<'a> Field<'a> {
             self.sprout(
                 i as u32 + 1,
                 None,
-                GrownPoint {
-                    x: place[0],
-                    y: place[1],
-                    time_s: start,
-                    width,
-                },
+                GrownPoint { x: place[0], y: place[1], time_s: start, width },
                 angle,
                 speed,
                 i + 1,
@@ -190,13 +152,7 @@ impl<'a> Field<'a> {
 
     /// Keeps every front's arc length at the end of a frame's interval.
     fn note_fronts(&mut self) {
-        let frame = self
-            .growth
-            .tracks
-            .iter()
-            .map(|t| t.front.len())
-            .max()
-            .unwrap_or(0);
+        let frame = self.growth.tracks.iter().map(|t| t.front.len()).max().unwrap_or(0);
         for tip in &self.tips {
             let track = &mut self.growth.tracks[tip.track];
             track.front.resize(frame, 0.0);
@@ -218,8 +174,7 @@ impl<'a> Field<'a> {
         } else if tip.front < grown {
             tip.front = (tip.front + REFILL * tip.speed * drive * dt).min(grown);
         } else if tip.alive {
-            let way = (tip.pace(self.plan, time, dt, self.scenario.end_s()) * drive * dt)
-                .min(1.5 * STEP_PX);
+            let way = (tip.pace(self.plan, time, dt, self.scenario.end_s()) * drive * dt).min(1.5 * STEP_PX);
             if way > 0.0 {
                 self.step(i, time + dt, way);
             }
@@ -234,29 +189,18 @@ impl<'a> Field<'a> {
         let ahead = [cos, sin];
         tip.place = plus(tip.place, scaled(ahead, way));
         let memory = libm::exp(-way / 12.0);
-        tip.width_wave = tip.width_wave * memory
-            + self.plan.width_noise * tip.dice.normal() * (1.0 - memory * memory).sqrt();
+        tip.width_wave =
+            tip.width_wave * memory + self.plan.width_noise * tip.dice.normal() * (1.0 - memory * memory).sqrt();
         let width = (tip.width * (1.0 + tip.width_wave)).max(1.2);
-        let point = GrownPoint {
-            x: tip.place[0],
-            y: tip.place[1],
-            time_s: time,
-            width,
-        };
+        let point = GrownPoint { x: tip.place[0], y: tip.place[1], time_s: time, width };
         let (track, place) = (tip.track, tip.place);
         self.growth.tracks[track].push(point);
         self.tips[i].front = self.growth.tracks[track].length();
         if self.touches_far(place, width) {
             self.stop(i, time, TrackEnd::Contact);
             self.growth.contact = Some((time, track));
-        } else if let Some(other) =
-            self.met(track, plus(place, scaled(ahead, 0.5 * width + 0.5)), width)
-        {
-            self.growth.tracks[track].push(GrownPoint {
-                x: other[0],
-                y: other[1],
-                ..point
-            });
+        } else if let Some(other) = self.met(track, plus(place, scaled(ahead, 0.5 * width + 0.5)), width) {
+            self.growth.tracks[track].push(GrownPoint { x: other[0], y: other[1], ..point });
             self.tips[i].front = self.growth.tracks[track].length();
             self.stop(i, time, TrackEnd::Met);
         } else if self.leaves(place) {
@@ -274,31 +218,22 @@ impl<'a> Field<'a> {
         let load = loading(&self.scenario.load, time, near.tangent);
         let tip = &mut self.tips[i];
         let memory = libm::exp(-way / self.plan.wander_memory_px);
-        tip.curvature = tip.curvature * memory
-            + self.plan.wander_per_px * tip.dice.normal() * (1.0 - memory * memory).sqrt();
+        tip.curvature =
+            tip.curvature * memory + self.plan.wander_per_px * tip.dice.normal() * (1.0 - memory * memory).sqrt();
         let mut turn = tip.curvature * way;
-        turn -=
-            self.plan.field_per_px * libm::sin(tip.angle - libm::atan2(normal[1], normal[0])) * way;
+        turn -= self.plan.field_per_px * libm::sin(tip.angle - libm::atan2(normal[1], normal[0])) * way;
         if let Some(axis) = load.axis_deg {
             // Image angles run clockwise (y down), load axes anticlockwise; tension turns growth across the axis.
-            let expected = if load.stress_mpa < 0.0 {
-                axis + 90.0
-            } else {
-                axis
-            };
+            let expected = if load.stress_mpa < 0.0 { axis + 90.0 } else { axis };
             let off = tip.angle + expected.to_radians();
-            turn -= self.plan.steering_per_px * load.stress_mpa.abs() / 100.0
-                * 0.5
-                * libm::sin(2.0 * off)
-                * way;
+            turn -= self.plan.steering_per_px * load.stress_mpa.abs() / 100.0 * 0.5 * libm::sin(2.0 * off) * way;
         }
         tip.angle += turn;
     }
 
     fn touches_far(&self, place: [f64; 2], width: f64) -> bool {
         let near = self.far.nearest(place, false);
-        near.distance <= 0.5 * width
-            || (near.distance < 4.0 && near.side * self.far.side_of(&self.plating) < 0.0)
+        near.distance <= 0.5 * width || (near.distance < 4.0 && near.side * self.far.side_of(&self.plating) < 0.0)
     }
 
     /// Centre of another track's (or this one's own old) ink at `ahead`, unless it is where the two part.
@@ -315,44 +250,29 @@ impl<'a> Field<'a> {
         } else {
             let theirs = &self.growth.tracks[other];
             let kin = own.parent == Some(other) || theirs.parent == Some(track);
-            let parting = if own.parent == Some(other) {
-                own.points[0]
-            } else {
-                theirs.points[0]
-            };
+            let parting = if own.parent == Some(other) { own.points[0] } else { theirs.points[0] };
             kin && distance(parting.place(), ahead) < 2.5 * (width + there.width)
         };
         (!near_parting).then_some(there.place())
     }
 
     fn leaves(&self, place: [f64; 2]) -> bool {
-        let (w, h) = (
-            f64::from(self.scenario.width),
-            f64::from(self.scenario.height),
-        );
-        let outside = place[0] < BORDER_PX
-            || place[1] < BORDER_PX
-            || place[0] > w - BORDER_PX
-            || place[1] > h - BORDER_PX;
+        let (w, h) = (f64::from(self.scenario.width), f64::from(self.scenario.height));
+        let outside =
+            place[0] < BORDER_PX || place[1] < BORDER_PX || place[0] > w - BORDER_PX || place[1] > h - BORDER_PX;
         let near = self.plating.nearest(place, true);
         outside || near.side * self.side < 0.0
     }
 
     fn cell(&self, p: [f64; 2]) -> Option<usize> {
         let (x, y) = (p[0].round(), p[1].round());
-        let inside = x >= 0.0
-            && y >= 0.0
-            && x < f64::from(self.scenario.width)
-            && y < f64::from(self.scenario.height);
+        let inside = x >= 0.0 && y >= 0.0 && x < f64::from(self.scenario.width) && y < f64::from(self.scenario.height);
         inside.then(|| y as usize * self.scenario.width as usize + x as usize)
     }
 
     /// Marks the last point's ink as taken.
     fn mark(&mut self, track: usize, place: [f64; 2], width: f64) {
-        let index = (
-            track as u32,
-            self.growth.tracks[track].points.len() as u32 - 1,
-        );
+        let index = (track as u32, self.growth.tracks[track].points.len() as u32 - 1);
         let reach = (0.5 * width).ceil() as i32;
         for dy in -reach..=reach {
             for dx in -reach..=reach {
@@ -378,12 +298,7 @@ impl<'a> Field<'a> {
         let tip = &mut self.tips[i];
         let (track, here) = (tip.track, self.growth.tracks[tip.track].length());
         let filament = self.growth.tracks[track].filament;
-        let branches = self
-            .growth
-            .tracks
-            .iter()
-            .filter(|t| t.filament == filament && t.parent.is_some())
-            .count();
+        let branches = self.growth.tracks.iter().filter(|t| t.filament == filament && t.parent.is_some()).count();
         let ready = here - tip.branched_at > BRANCH_SPACING_PX && branches < self.plan.branch_limit;
         if !ready || !tip.dice.chance(self.plan.branches_per_100_px * way / 100.0) {
             return;
@@ -391,15 +306,9 @@ impl<'a> Field<'a> {
         tip.branched_at = here;
         let side = if tip.dice.chance(0.5) { 1.0 } else { -1.0 };
         let angle = tip.angle + side * tip.dice.within(self.plan.branch_angle_deg).to_radians();
-        let width =
-            (tip.width * tip.dice.between(0.6, 0.95)).max(self.plan.width_px[0].min(tip.width));
+        let width = (tip.width * tip.dice.between(0.6, 0.95)).max(self.plan.width_px[0].min(tip.width));
         let speed = tip.speed * tip.dice.between(0.5, 1.0);
-        let first = GrownPoint {
-            x: tip.place[0],
-            y: tip.place[1],
-            time_s: time,
-            width,
-        };
+        let first = GrownPoint { x: tip.place[0], y: tip.place[1], time_s: time, width };
         let stream = 1000 + self.growth.tracks.len();
         self.sprout(filament, Some(track), first, angle, speed, stream);
     }
@@ -412,24 +321,9 @@ mod tests {
     use super::*;
 
     fn loaded(stress_mpa: f64, direction_deg: f64, seed: u64) -> Scenario {
-        let stages = vec![LoadStage {
-            at_s: 0.0,
-            stress_mpa,
-            direction_deg,
-            ramp_s: 0.0,
-        }];
-        let load = LoadPlan {
-            fixture: FixtureKind::Stress,
-            stages,
-            ..LoadPlan::default()
-        };
-        Scenario {
-            seed,
-            load,
-            ..Scenario::default()
-        }
-        .settle()
-        .unwrap()
+        let stages = vec![LoadStage { at_s: 0.0, stress_mpa, direction_deg, ramp_s: 0.0 }];
+        let load = LoadPlan { fixture: FixtureKind::Stress, stages, ..LoadPlan::default() };
+        Scenario { seed, load, ..Scenario::default() }.settle().unwrap()
     }
 
     /// Mean cos 2Δ over all growth against an axis.
@@ -439,10 +333,7 @@ mod tests {
             let step = minus(s[1].place(), s[0].place());
             let (along, across) = (dot(step, axis), cross(step, axis));
             let size = distance(s[1].place(), s[0].place());
-            sum = plus(
-                sum,
-                [(along * along - across * across) / size.max(1e-9), size],
-            );
+            sum = plus(sum, [(along * along - across * across) / size.max(1e-9), size]);
         }
         sum[0] / sum[1]
     }
@@ -454,10 +345,7 @@ mod tests {
         for seed in 0..6 {
             let along = alignment(&grow(&loaded(180.0, 90.0, seed)), [0.0, 1.0]);
             let pulled = alignment(&grow(&loaded(-180.0, 90.0, seed)), [0.0, 1.0]);
-            assert!(
-                along > 0.0 && pulled < -0.7,
-                "seed {seed}: {along} {pulled}"
-            );
+            assert!(along > 0.0 && pulled < -0.7, "seed {seed}: {along} {pulled}");
             mean += along / 6.0;
         }
         assert!(mean > 0.35, "{mean}");
@@ -483,35 +371,16 @@ mod tests {
         let end = growth.tracks[track].points.last().unwrap();
         let far = Polyline::new(&scenario.far_edge).unwrap();
         assert!(far.nearest(end.place(), false).distance <= 0.5 * end.width + 1e-9);
-        assert!(
-            growth
-                .tracks
-                .iter()
-                .flat_map(|t| &t.points)
-                .all(|p| p.time_s <= time)
-        );
+        assert!(growth.tracks.iter().flat_map(|t| &t.points).all(|p| p.time_s <= time));
     }
 
     #[test]
     fn stripping_moves_the_front_back_and_plating_refills_it() {
         use super::super::plan::CurrentStage;
-        let mut scenario = Scenario {
-            seed: 5,
-            ..Scenario::default()
-        }
-        .settle()
-        .unwrap();
+        let mut scenario = Scenario { seed: 5, ..Scenario::default() }.settle().unwrap();
         scenario.growth.retreat_px_per_s = 0.8;
-        scenario.cell.stages = vec![
-            CurrentStage {
-                at_s: 200.0,
-                current_ma: -0.02,
-            },
-            CurrentStage {
-                at_s: 240.0,
-                current_ma: 0.02,
-            },
-        ];
+        scenario.cell.stages =
+            vec![CurrentStage { at_s: 200.0, current_ma: -0.02 }, CurrentStage { at_s: 240.0, current_ma: 0.02 }];
         let growth = grow(&scenario);
         let track = &growth.tracks[0];
         assert!(track.front[24] < track.front[20] - 10.0);

@@ -16,11 +16,7 @@ const VOLTAGE_RISE: f64 = 0.15;
 
 /// Sample times of a log: at the given spacing, or a fifth of the frame interval; one sample beyond the last frame.
 fn log_times(scenario: &Scenario, every_s: f64) -> impl Iterator<Item = f64> {
-    let every = if every_s > 0.0 {
-        every_s
-    } else {
-        scenario.interval_s / 5.0
-    };
+    let every = if every_s > 0.0 { every_s } else { scenario.interval_s / 5.0 };
     let n = (scenario.end_s() / every).ceil() as usize + 1;
     (0..=n).map(move |i| i as f64 * every)
 }
@@ -29,23 +25,13 @@ fn log_times(scenario: &Scenario, every_s: f64) -> impl Iterator<Item = f64> {
 pub(super) fn load_log(scenario: &Scenario, dice: &mut Dice) -> String {
     let plan = &scenario.load;
     let has_direction = plan.fixture != FixtureKind::Stack;
-    let value = if plan.fixture == FixtureKind::Stress {
-        "stress_mpa"
-    } else {
-        "force_n"
-    };
-    let mut text = format!(
-        "time_s,{value}{}\n",
-        if has_direction { ",direction_deg" } else { "" }
-    );
+    let value = if plan.fixture == FixtureKind::Stress { "stress_mpa" } else { "force_n" };
+    let mut text = format!("time_s,{value}{}\n", if has_direction { ",direction_deg" } else { "" });
     for time in log_times(scenario, plan.log_every_s) {
         let load = loading(plan, time, [0.0, 1.0]);
         let stress = load.stress_mpa + plan.noise_mpa * dice.normal();
         let shown = force_n(plan, stress).unwrap_or(stress);
-        let direction = load
-            .axis_deg
-            .filter(|_| has_direction)
-            .map_or(String::new(), |a| format!(",{a:.2}"));
+        let direction = load.axis_deg.filter(|_| has_direction).map_or(String::new(), |a| format!(",{a:.2}"));
         let _ = writeln!(text, "{time:.3},{shown:.4}{direction}");
     }
     text

@@ -57,42 +57,17 @@ impl Polyline {
     #[must_use]
     pub fn nearest(&self, p: [f64; 2], extend: bool) -> Nearest {
         let last = self.0.len() - 2;
-        let mut best = Nearest {
-            point: self.0[0],
-            distance: f64::INFINITY,
-            side: 1.0,
-            tangent: [0.0, 1.0],
-        };
+        let mut best = Nearest { point: self.0[0], distance: f64::INFINITY, side: 1.0, tangent: [0.0, 1.0] };
         for (i, s) in self.0.windows(2).enumerate() {
             let length = distance(s[0], s[1]);
             let tangent = scaled(minus(s[1], s[0]), 1.0 / length);
-            let low = if extend && i == 0 {
-                f64::NEG_INFINITY
-            } else {
-                0.0
-            };
-            let high = if extend && i == last {
-                f64::INFINITY
-            } else {
-                length
-            };
-            let foot = plus(
-                s[0],
-                scaled(tangent, dot(minus(p, s[0]), tangent).clamp(low, high)),
-            );
+            let low = if extend && i == 0 { f64::NEG_INFINITY } else { 0.0 };
+            let high = if extend && i == last { f64::INFINITY } else { length };
+            let foot = plus(s[0], scaled(tangent, dot(minus(p, s[0]), tangent).clamp(low, high)));
             let away = distance(p, foot);
             if away < best.distance {
-                let side = if cross(tangent, minus(p, foot)) < 0.0 {
-                    -1.0
-                } else {
-                    1.0
-                };
-                best = Nearest {
-                    point: foot,
-                    distance: away,
-                    side,
-                    tangent,
-                };
+                let side = if cross(tangent, minus(p, foot)) < 0.0 { -1.0 } else { 1.0 };
+                best = Nearest { point: foot, distance: away, side, tangent };
             }
         }
         best
@@ -107,11 +82,8 @@ impl Polyline {
     /// Least distance to `other`, sampled at its points and at `self`'s.
     #[must_use]
     pub fn gap(&self, other: &Self) -> f64 {
-        let one_way = |a: &Self, b: &Self| {
-            a.0.iter()
-                .map(|&p| b.nearest(p, false).distance)
-                .fold(f64::INFINITY, f64::min)
-        };
+        let one_way =
+            |a: &Self, b: &Self| a.0.iter().map(|&p| b.nearest(p, false).distance).fold(f64::INFINITY, f64::min);
         one_way(self, other).min(one_way(other, self))
     }
 }

@@ -55,16 +55,8 @@ pub fn shots(scenario: &Scenario) -> Vec<Shot> {
     let n = scenario.frames;
     let mut dice = Dice::new(scenario.seed, Stream::Recorder, 0);
     let mut path = |size: f64| wander(&mut dice, n, size);
-    let (drift_x, drift_y, turn) = (
-        path(imaging.drift_px),
-        path(imaging.drift_px),
-        path(imaging.rotation_deg),
-    );
-    let (light, tilt_x, tilt_y) = (
-        path(imaging.light_drift),
-        path(imaging.light_drift),
-        path(imaging.light_drift),
-    );
+    let (drift_x, drift_y, turn) = (path(imaging.drift_px), path(imaging.drift_px), path(imaging.rotation_deg));
+    let (light, tilt_x, tilt_y) = (path(imaging.light_drift), path(imaging.light_drift), path(imaging.light_drift));
     let focus = path(imaging.focus_px);
     let jumps = jumps(&mut dice, n, imaging.jumps, imaging.jump_px);
     let dust = specks(&mut dice, scenario);
@@ -84,10 +76,7 @@ pub fn shots(scenario: &Scenario) -> Vec<Shot> {
         })
         .collect();
     // Coordinates are those of the first usable frame: it has no drift by definition.
-    let zero = shots
-        .iter()
-        .find(|s| s.loss.is_none())
-        .map(|s| (s.drift, s.rotation_deg));
+    let zero = shots.iter().find(|s| s.loss.is_none()).map(|s| (s.drift, s.rotation_deg));
     if let Some((drift, rotation)) = zero {
         for shot in &mut shots {
             shot.drift = [shot.drift[0] - drift[0], shot.drift[1] - drift[1]];
@@ -100,21 +89,13 @@ pub fn shots(scenario: &Scenario) -> Vec<Shot> {
 /// A slow wandering that starts at 0 and whose largest value over the run is `size`.
 fn wander(dice: &mut Dice, n: usize, size: f64) -> Vec<f64> {
     let waves: Vec<[f64; 3]> = (1..=4)
-        .map(|i| {
-            [
-                dice.normal() / f64::from(i),
-                dice.between(0.3, 1.0) * f64::from(i),
-                dice.between(0.0, TAU),
-            ]
-        })
+        .map(|i| [dice.normal() / f64::from(i), dice.between(0.3, 1.0) * f64::from(i), dice.between(0.0, TAU)])
         .collect();
     let at = |k: usize| {
         let share = k as f64 / n.max(2) as f64;
         waves
             .iter()
-            .map(|[a, turns, phase]| {
-                a * (libm::sin(TAU * turns * share + phase) - libm::sin(*phase))
-            })
+            .map(|[a, turns, phase]| a * (libm::sin(TAU * turns * share + phase) - libm::sin(*phase)))
             .sum::<f64>()
     };
     let raw: Vec<f64> = (0..n).map(at).collect();
@@ -146,11 +127,7 @@ fn specks(dice: &mut Dice, scenario: &Scenario) -> Vec<Vec<Speck>> {
         let mut velocity = [dice.normal() * 4.0, dice.normal() * 4.0];
         let mut resting = 0;
         for frame in &mut frames {
-            frame.push(Speck {
-                place,
-                radius,
-                loss,
-            });
+            frame.push(Speck { place, radius, loss });
             if resting > 0 {
                 resting -= 1;
                 continue;
@@ -174,11 +151,9 @@ fn specks(dice: &mut Dice, scenario: &Scenario) -> Vec<Vec<Speck>> {
 fn losses(dice: &mut Dice, scenario: &Scenario) -> Vec<Option<Loss>> {
     let imaging = &scenario.imaging;
     let mut losses = vec![None; scenario.frames];
-    for (kind, count) in [
-        (Loss::Broken, imaging.broken),
-        (Loss::Repeated, imaging.repeated),
-        (Loss::Blank, imaging.blank),
-    ] {
+    for (kind, count) in
+        [(Loss::Broken, imaging.broken), (Loss::Repeated, imaging.repeated), (Loss::Blank, imaging.blank)]
+    {
         for _ in 0..count {
             for _ in 0..200 {
                 let k = 1 + dice.below(scenario.frames.saturating_sub(1));
@@ -199,32 +174,21 @@ mod tests {
     use super::*;
 
     fn hard() -> Scenario {
-        Scenario {
-            seed: 9,
-            imaging: Imaging::of(Grade::Hard),
-            ..Scenario::default()
-        }
-        .settle()
-        .unwrap()
+        Scenario { seed: 9, imaging: Imaging::of(Grade::Hard), ..Scenario::default() }.settle().unwrap()
     }
 
     #[test]
     fn the_first_usable_frame_has_no_drift() {
         let shots = shots(&hard());
         assert!(shots[0].loss.is_none() && shots[0].drift.iter().all(|d| d.abs() < 1e-12));
-        let far = shots
-            .iter()
-            .map(|s| s.drift[0].abs().max(s.drift[1].abs()))
-            .fold(0.0, f64::max);
+        let far = shots.iter().map(|s| s.drift[0].abs().max(s.drift[1].abs())).fold(0.0, f64::max);
         assert!(far > 2.0 && far < 30.0, "{far}");
     }
 
     #[test]
     fn losses_are_as_many_as_asked_for_and_apart() {
         let shots = shots(&hard());
-        let lost: Vec<usize> = (0..shots.len())
-            .filter(|&k| shots[k].loss.is_some())
-            .collect();
+        let lost: Vec<usize> = (0..shots.len()).filter(|&k| shots[k].loss.is_some()).collect();
         assert_eq!(lost.len(), 2);
         assert!(lost[1] - lost[0] > 1);
     }

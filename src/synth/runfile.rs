@@ -79,48 +79,27 @@ pub(super) fn manifest(scenario: &Scenario, growth: &Growth) -> Result<String, S
             area_mm2: scenario.cell.area_mm2,
             view_depth_mm: scenario.cell.view_depth_mm,
             metal: "Li",
-            ended: if growth.contact.is_some() {
-                "short"
-            } else {
-                "stopped"
-            },
+            ended: if growth.contact.is_some() { "short" } else { "stopped" },
         },
         load: load_table(scenario),
     };
-    let body = toml::to_string(&manifest).map_err(|e| SynthError::Format {
-        what: "run.toml",
-        message: e.to_string(),
-    })?;
-    Ok(format!(
-        "# Synthetic frames with known truth (truth/); invented, no real specimen.\n{body}"
-    ))
+    let body =
+        toml::to_string(&manifest).map_err(|e| SynthError::Format { what: "run.toml", message: e.to_string() })?;
+    Ok(format!("# Synthetic frames with known truth (truth/); invented, no real specimen.\n{body}"))
 }
 
 fn load_table(scenario: &Scenario) -> LoadTable {
     let plan = &scenario.load;
     let log = Some("load.csv");
     match plan.fixture {
-        FixtureKind::None => LoadTable {
-            fixture: "none",
-            ..LoadTable::default()
-        },
-        FixtureKind::Stress => LoadTable {
-            log,
-            fixture: "stress",
-            ..LoadTable::default()
-        },
-        FixtureKind::Uniaxial => LoadTable {
-            log,
-            fixture: "uniaxial",
-            area_mm2: Some(plan.area_mm2),
-            ..LoadTable::default()
-        },
-        FixtureKind::Stack => LoadTable {
-            log,
-            fixture: "stack",
-            area_mm2: Some(plan.area_mm2),
-            ..LoadTable::default()
-        },
+        FixtureKind::None => LoadTable { fixture: "none", ..LoadTable::default() },
+        FixtureKind::Stress => LoadTable { log, fixture: "stress", ..LoadTable::default() },
+        FixtureKind::Uniaxial => {
+            LoadTable { log, fixture: "uniaxial", area_mm2: Some(plan.area_mm2), ..LoadTable::default() }
+        }
+        FixtureKind::Stack => {
+            LoadTable { log, fixture: "stack", area_mm2: Some(plan.area_mm2), ..LoadTable::default() }
+        }
         FixtureKind::Cantilever => LoadTable {
             log,
             fixture: "cantilever",

@@ -118,21 +118,15 @@ impl Scenario {
     /// # Errors
     /// [`SynthError::Scenario`] with line and key.
     pub fn parse(text: &str, path: &Path) -> Result<Self, SynthError> {
-        let wrong = |message: String| SynthError::Scenario {
-            path: path.to_owned(),
-            message,
-        };
+        let wrong = |message: String| SynthError::Scenario { path: path.to_owned(), message };
         let mut scenario: Self = toml::from_str(text).map_err(|e| wrong(e.to_string()))?;
         if let Some(grade) = scenario.grade {
             let document: toml::Table = toml::from_str(text).map_err(|e| wrong(e.to_string()))?;
-            let mut imaging =
-                toml::Table::try_from(Imaging::of(grade)).map_err(|e| wrong(e.to_string()))?;
+            let mut imaging = toml::Table::try_from(Imaging::of(grade)).map_err(|e| wrong(e.to_string()))?;
             if let Some(toml::Value::Table(own)) = document.get("imaging") {
                 imaging.extend(own.clone());
             }
-            scenario.imaging = imaging
-                .try_into()
-                .map_err(|e: toml::de::Error| wrong(e.to_string()))?;
+            scenario.imaging = imaging.try_into().map_err(|e: toml::de::Error| wrong(e.to_string()))?;
         }
         scenario.settle().map_err(wrong)
     }
@@ -154,51 +148,24 @@ impl Scenario {
             (32..=8192).contains(&self.width) && (32..=8192).contains(&self.height),
             "width and height must be 32 to 8192 px",
         )?;
-        must(
-            (1..=100_000).contains(&self.frames),
-            "frames must be 1 to 100000",
-        )?;
+        must((1..=100_000).contains(&self.frames), "frames must be 1 to 100000")?;
         must(self.bare <= self.frames, "bare must not exceed frames")?;
-        must(
-            self.interval_s > 0.0 && self.um_per_px > 0.0,
-            "interval_s and um_per_px must be above 0",
-        )?;
-        must(
-            self.plating_edge.len() >= 2 && self.far_edge.len() >= 2,
-            "an edge needs at least two points",
-        )?;
-        must(
-            self.load.stages.windows(2).all(|s| s[0].at_s < s[1].at_s),
-            "load.stages must be in order of at_s",
-        )?;
-        must(
-            self.cell.stages.windows(2).all(|s| s[0].at_s < s[1].at_s),
-            "cell.stages must be in order of at_s",
-        )?;
-        must(
-            self.cell.current_ma > 0.0,
-            "cell.current_ma must be above 0",
-        )?;
+        must(self.interval_s > 0.0 && self.um_per_px > 0.0, "interval_s and um_per_px must be above 0")?;
+        must(self.plating_edge.len() >= 2 && self.far_edge.len() >= 2, "an edge needs at least two points")?;
+        must(self.load.stages.windows(2).all(|s| s[0].at_s < s[1].at_s), "load.stages must be in order of at_s")?;
+        must(self.cell.stages.windows(2).all(|s| s[0].at_s < s[1].at_s), "cell.stages must be in order of at_s")?;
+        must(self.cell.current_ma > 0.0, "cell.current_ma must be above 0")?;
         must(
             self.load.fixture == FixtureKind::None || !self.load.stages.is_empty(),
             "load.stages is empty: give one stage, or fixture = \"none\"",
         )?;
-        must(
-            self.growth.width_px[0] > 0.0,
-            "growth.width_px must be above 0",
-        )?;
-        must(
-            self.growth.wander_memory_px > 0.0 && self.growth.speed_memory_s > 0.0,
-            "a memory must be above 0",
-        )?;
+        must(self.growth.width_px[0] > 0.0, "growth.width_px must be above 0")?;
+        must(self.growth.wander_memory_px > 0.0 && self.growth.speed_memory_s > 0.0, "a memory must be above 0")?;
         must(
             self.imaging.broken + self.imaging.repeated + self.imaging.blank < self.frames,
             "imaging.broken, repeated and blank leave no usable frame",
         )?;
-        must(
-            self.imaging.bits == 8 || self.imaging.bits == 16,
-            "imaging.bits must be 8 or 16",
-        )?;
+        must(self.imaging.bits == 8 || self.imaging.bits == 16, "imaging.bits must be 8 or 16")?;
         Ok(self)
     }
 
@@ -239,28 +206,16 @@ mod tests {
     #[test]
     fn unknown_keys_are_named_with_their_line() {
         let message = parse("seed = 3\nframs = 4").unwrap_err().to_string();
-        assert!(
-            message.contains("frams") && message.contains("line 2"),
-            "{message}"
-        );
-        let message = parse("seed = 3\n[imaging]\ncontrst = 0.4")
-            .unwrap_err()
-            .to_string();
-        assert!(
-            message.contains("contrst") && message.contains("line 3"),
-            "{message}"
-        );
+        assert!(message.contains("frams") && message.contains("line 2"), "{message}");
+        let message = parse("seed = 3\n[imaging]\ncontrst = 0.4").unwrap_err().to_string();
+        assert!(message.contains("contrst") && message.contains("line 3"), "{message}");
     }
 
     #[test]
     fn impossible_scenarios_are_refused() {
-        for text in [
-            "frames = 0",
-            "bare = 41",
-            "interval_s = 0.0",
-            "[imaging]\nbits = 12",
-            "[load]\nfixture = \"stress\"",
-        ] {
+        for text in
+            ["frames = 0", "bare = 41", "interval_s = 0.0", "[imaging]\nbits = 12", "[load]\nfixture = \"stress\""]
+        {
             assert!(parse(text).is_err(), "{text}");
         }
     }

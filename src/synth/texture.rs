@@ -35,20 +35,11 @@ impl Grains {
         let origin = [low[0] - 2.0 * size, low[1] - 2.0 * size];
         let seeds = (0..cols * rows)
             .map(|i| {
-                let cell = [
-                    (i % cols) as f64 + dice.between(0.05, 0.95),
-                    (i / cols) as f64 + dice.between(0.05, 0.95),
-                ];
+                let cell = [(i % cols) as f64 + dice.between(0.05, 0.95), (i / cols) as f64 + dice.between(0.05, 0.95)];
                 (plus(origin, scaled(cell, size)), dice.normal())
             })
             .collect();
-        Self {
-            size,
-            origin,
-            cols,
-            rows,
-            seeds,
-        }
+        Self { size, origin, cols, rows, seeds }
     }
 
     pub(super) fn at(&self, p: [f64; 2]) -> Grain {
@@ -73,11 +64,7 @@ impl Grains {
         let apart = dot(between, between).sqrt().max(1e-9);
         let pair = self.seeds[first.1].1 + self.seeds[second.1].1;
         let seam = 0.2 + 0.8 * (pair * 7.0 - (pair * 7.0).floor());
-        Grain {
-            to_border: (second.0 - first.0) / (2.0 * apart),
-            tone: self.seeds[first.1].1,
-            seam,
-        }
+        Grain { to_border: (second.0 - first.0) / (2.0 * apart), tone: self.seeds[first.1].1, seam }
     }
 }
 

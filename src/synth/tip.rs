@@ -42,8 +42,8 @@ impl Tip {
     /// Speed at `time`, px/s, with its noise moved on by `dt`.
     pub(super) fn pace(&mut self, plan: &GrowthPlan, time: f64, dt: f64, end_s: f64) -> f64 {
         let memory = libm::exp(-dt / plan.speed_memory_s);
-        self.log_speed = self.log_speed * memory
-            + plan.speed_noise * self.dice.normal() * (1.0 - memory * memory).sqrt();
+        self.log_speed =
+            self.log_speed * memory + plan.speed_noise * self.dice.normal() * (1.0 - memory * memory).sqrt();
         let tau = 0.25 * (end_s - self.start_s).max(dt);
         let age = (time - self.start_s) / tau;
         let law = match plan.law {

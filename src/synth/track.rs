@@ -82,26 +82,14 @@ impl Track {
     /// The point at arc length `s`, between points by straight line.
     #[must_use]
     pub fn at(&self, s: f64) -> GrownPoint {
-        let n = self
-            .arc
-            .partition_point(|&a| a <= s)
-            .clamp(1, self.arc.len().max(2) - 1);
+        let n = self.arc.partition_point(|&a| a <= s).clamp(1, self.arc.len().max(2) - 1);
         let (Some(a), Some(b)) = (self.points.get(n - 1), self.points.get(n)) else {
             return self.points[0];
         };
         let span = self.arc[n] - self.arc[n - 1];
-        let share = if span > 0.0 {
-            ((s - self.arc[n - 1]) / span).clamp(0.0, 1.0)
-        } else {
-            0.0
-        };
+        let share = if span > 0.0 { ((s - self.arc[n - 1]) / span).clamp(0.0, 1.0) } else { 0.0 };
         let mix = |p: f64, q: f64| p + share * (q - p);
-        GrownPoint {
-            x: mix(a.x, b.x),
-            y: mix(a.y, b.y),
-            time_s: mix(a.time_s, b.time_s),
-            width: mix(a.width, b.width),
-        }
+        GrownPoint { x: mix(a.x, b.x), y: mix(a.y, b.y), time_s: mix(a.time_s, b.time_s), width: mix(a.width, b.width) }
     }
 
     /// The points up to arc length `s`, the last one between points; empty when s is 0 or nothing has grown.
@@ -125,23 +113,12 @@ impl Track {
     /// A track of one point.
     pub(super) fn new(filament: u32, parent: Option<usize>, first: GrownPoint) -> Self {
         let (points, arc) = (vec![first], vec![0.0]);
-        Self {
-            filament,
-            parent,
-            points,
-            arc,
-            end: TrackEnd::Free,
-            front: Vec::new(),
-            stopped_s: f64::INFINITY,
-        }
+        Self { filament, parent, points, arc, end: TrackEnd::Free, front: Vec::new(), stopped_s: f64::INFINITY }
     }
 
     /// Adds a point, unless it is where the last one is.
     pub(super) fn push(&mut self, point: GrownPoint) {
-        let step = self
-            .points
-            .last()
-            .map_or(0.0, |p| distance(p.place(), point.place()));
+        let step = self.points.last().map_or(0.0, |p| distance(p.place(), point.place()));
         if step > 0.0 {
             self.arc.push(self.length() + step);
             self.points.push(point);
@@ -155,16 +132,9 @@ pub fn direction_at(track: &Track, i: usize, reach: f64) -> [f64; 2] {
     let here = track.arc[i];
     let low = track.arc.partition_point(|&a| a < here - reach);
     let high = track.arc.partition_point(|&a| a <= here + reach).max(1) - 1;
-    let (low, high) = if low == high {
-        (low.saturating_sub(1), (high + 1).min(track.arc.len() - 1))
-    } else {
-        (low, high)
-    };
+    let (low, high) =
+        if low == high { (low.saturating_sub(1), (high + 1).min(track.arc.len() - 1)) } else { (low, high) };
     let chord = minus(track.points[high].place(), track.points[low].place());
     let size = dot(chord, chord).sqrt();
-    if size > 0.0 {
-        scaled(chord, 1.0 / size)
-    } else {
-        [1.0, 0.0]
-    }
+    if size > 0.0 { scaled(chord, 1.0 / size) } else { [1.0, 0.0] }
 }

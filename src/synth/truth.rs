@@ -73,11 +73,7 @@ pub struct ShortTruth {
 #[must_use]
 pub fn paths(growth: &Growth) -> Vec<PathTruth> {
     let number = |i: usize| i as u32 + 1;
-    let grown = growth
-        .tracks
-        .iter()
-        .enumerate()
-        .filter(|(_, t)| t.points.len() > 1);
+    let grown = growth.tracks.iter().enumerate().filter(|(_, t)| t.points.len() > 1);
     grown
         .map(|(i, track)| PathTruth {
             filament: track.filament,
@@ -124,28 +120,17 @@ pub fn short(growth: &Growth) -> ShortTruth {
 /// A row a frame.
 #[must_use]
 pub fn frames(scenario: &Scenario, growth: &Growth, shots: &[Shot]) -> Vec<FrameTruth> {
-    let (Some(plating), Some(far)) = (
-        Polyline::new(&scenario.plating_edge),
-        Polyline::new(&scenario.far_edge),
-    ) else {
+    let (Some(plating), Some(far)) = (Polyline::new(&scenario.plating_edge), Polyline::new(&scenario.far_edge)) else {
         return Vec::new();
     };
-    let depths: Vec<Vec<f64>> = growth
-        .tracks
-        .iter()
-        .map(|t| running_depth(t, &plating))
-        .collect();
+    let depths: Vec<Vec<f64>> = growth.tracks.iter().map(|t| running_depth(t, &plating)).collect();
     let mut last_usable = 0.0;
     let mut rows = Vec::with_capacity(shots.len());
     for (k, shot) in shots.iter().enumerate() {
         let (time, usable) = (scenario.time(k), shot.loss.is_none());
         let grown: Vec<f64> = growth.tracks.iter().map(|t| t.grown(time)).collect();
         let deepest = deepest(growth, &depths, &grown, &plating);
-        let fronts: Vec<f64> = growth
-            .tracks
-            .iter()
-            .map(|t| t.front.get(k).copied().unwrap_or(0.0))
-            .collect();
+        let fronts: Vec<f64> = growth.tracks.iter().map(|t| t.front.get(k).copied().unwrap_or(0.0)).collect();
         let front = self::deepest(growth, &depths, &fronts, &plating).map_or(0.0, |d| d.0);
         let contact = growth.contact.is_some_and(|(at, _)| at <= time);
         rows.push(FrameTruth {
@@ -155,21 +140,12 @@ pub fn frames(scenario: &Scenario, growth: &Growth, shots: &[Shot]) -> Vec<Frame
             drift_y_px: usable.then(|| rounded(shot.drift[1])),
             depth_um: rounded(deepest.map_or(0.0, |d| d.0) * scenario.um_per_px),
             depth_fraction: deepest.map_or(0.0, |(depth, place)| {
-                if contact {
-                    1.0
-                } else {
-                    rounded(depth / (depth + far.nearest(place, false).distance))
-                }
+                if contact { 1.0 } else { rounded(depth / (depth + far.nearest(place, false).distance)) }
             }),
             front_depth_um: rounded(front * scenario.um_per_px),
-            tips: growth
-                .tracks
-                .iter()
-                .filter(|t| is_tip(growth, t, time))
-                .count(),
+            tips: growth.tracks.iter().filter(|t| is_tip(growth, t, time)).count(),
             length_um: rounded(grown.iter().sum::<f64>() * scenario.um_per_px),
-            growth_alignment: new_alignment(scenario, growth, &plating, last_usable, time)
-                .map(rounded),
+            growth_alignment: new_alignment(scenario, growth, &plating, last_usable, time).map(rounded),
             usable,
         });
         if usable {
@@ -194,27 +170,13 @@ fn running_depth(track: &Track, plating: &Polyline) -> Vec<f64> {
 }
 
 /// Greatest depth of the tracks up to the arc lengths `until`, and where it is; `None` when nothing has grown.
-fn deepest(
-    growth: &Growth,
-    depths: &[Vec<f64>],
-    until: &[f64],
-    plating: &Polyline,
-) -> Option<(f64, [f64; 2])> {
+fn deepest(growth: &Growth, depths: &[Vec<f64>], until: &[f64], plating: &Polyline) -> Option<(f64, [f64; 2])> {
     let mut best: Option<(f64, [f64; 2])> = None;
-    for ((track, depths), &s) in growth
-        .tracks
-        .iter()
-        .zip(depths)
-        .zip(until)
-        .filter(|(_, s)| **s > 0.0)
-    {
+    for ((track, depths), &s) in growth.tracks.iter().zip(depths).zip(until).filter(|(_, s)| **s > 0.0) {
         let n = track.arc.partition_point(|&a| a <= s);
         let i = depths[..n].partition_point(|&d| d < depths[n - 1]);
         let end = track.at(s).place();
-        let candidates = [
-            (depths[n - 1], track.points[i].place()),
-            (plating.nearest(end, false).distance, end),
-        ];
+        let candidates = [(depths[n - 1], track.points[i].place()), (plating.nearest(end, false).distance, end)];
         for candidate in candidates {
             if best.is_none_or(|b| candidate.0 > b.0) {
                 best = Some(candidate);
@@ -227,21 +189,13 @@ fn deepest(
 /// Whether a track shows a free end at `time`.
 #[must_use]
 pub fn is_tip(growth: &Growth, track: &Track, time: f64) -> bool {
-    let hidden = track.parent.map_or(0.0, |p| {
-        growth.tracks[p].points.first().map_or(0.0, |q| q.width)
-    });
+    let hidden = track.parent.map_or(0.0, |p| growth.tracks[p].points.first().map_or(0.0, |q| q.width));
     let free = track.end == TrackEnd::Free || time < track.stopped_s;
     free && track.grown(time) > hidden.max(1.0)
 }
 
 /// Length-weighted mean cos 2Δ of the centre-line that arrived in (from, to], against the axis halfway.
-fn new_alignment(
-    scenario: &Scenario,
-    growth: &Growth,
-    plating: &Polyline,
-    from: f64,
-    to: f64,
-) -> Option<f64> {
+fn new_alignment(scenario: &Scenario, growth: &Growth, plating: &Polyline, from: f64, to: f64) -> Option<f64> {
     let (mut sum, mut total) = (0.0, 0.0);
     for track in &growth.tracks {
         for i in 1..track.points.len() {
@@ -251,11 +205,7 @@ fn new_alignment(
             }
             let tangent = plating.nearest(p.place(), true).tangent;
             let axis = loading(&scenario.load, 0.5 * (from + to), tangent).axis_deg?;
-            let direction = axis_deg(direction_at(
-                track,
-                i,
-                (WINDOW_WIDTHS * p.width).max(WINDOW_PX),
-            ));
+            let direction = axis_deg(direction_at(track, i, (WINDOW_WIDTHS * p.width).max(WINDOW_PX)));
             let length = distance(p.place(), track.points[i - 1].place());
             sum += length * libm::cos(2.0 * acute_deg(direction, axis).to_radians());
             total += length;
@@ -278,44 +228,22 @@ mod tests {
     #[test]
     fn depth_never_falls_and_the_fraction_reaches_one_only_at_contact() {
         for seed in 0..6 {
-            let mut scenario = Scenario {
-                seed,
-                ..Scenario::default()
-            }
-            .settle()
-            .unwrap();
+            let mut scenario = Scenario { seed, ..Scenario::default() }.settle().unwrap();
             scenario.growth.speed_px_per_s = [1.2, 2.5];
             let growth = grow(&scenario);
             let rows = frames(&scenario, &growth, &shots(&scenario));
-            assert!(
-                rows.windows(2)
-                    .all(|r| r[0].depth_um <= r[1].depth_um && r[0].length_um <= r[1].length_um)
-            );
+            assert!(rows.windows(2).all(|r| r[0].depth_um <= r[1].depth_um && r[0].length_um <= r[1].length_um));
             for row in &rows {
                 let contact = growth.contact.is_some_and(|(t, _)| t <= row.time_s);
-                assert_eq!(
-                    row.depth_fraction >= 1.0,
-                    contact,
-                    "seed {seed} frame {}",
-                    row.frame
-                );
+                assert_eq!(row.depth_fraction >= 1.0, contact, "seed {seed} frame {}", row.frame);
             }
-            assert!(
-                rows[..scenario.bare]
-                    .iter()
-                    .all(|r| r.depth_um <= 0.0 && r.tips == 0)
-            );
+            assert!(rows[..scenario.bare].iter().all(|r| r.depth_um <= 0.0 && r.tips == 0));
         }
     }
 
     #[test]
     fn without_load_there_is_no_alignment() {
-        let scenario = Scenario {
-            seed: 3,
-            ..Scenario::default()
-        }
-        .settle()
-        .unwrap();
+        let scenario = Scenario { seed: 3, ..Scenario::default() }.settle().unwrap();
         let rows = frames(&scenario, &grow(&scenario), &shots(&scenario));
         assert!(rows.iter().all(|r| r.growth_alignment.is_none()));
     }

@@ -21,7 +21,11 @@ const INSIDE_EACH: f64 = 4.5;
 /// In all together.
 const INSIDE_ALL: f64 = 11.0;
 /// Least length, px.
-const INSIDE_LENGTH: f64 = 12.0;
+const INSIDE_LENGTH: f64 = 14.0;
+/// And in widths: specks are round.
+const INSIDE_WIDTHS: f64 = 4.0;
+/// Frames for which it must have stood.
+const INSIDE_FRAMES: usize = 6;
 /// Distance from the edge that a filament on it must have reached before it is believed, px: the rough rim of the
 /// electrode stays below it.
 const ROOT_DEPTH: f64 = 8.0;
@@ -195,7 +199,12 @@ fn confirmed(
     if (reached as f64) * SPACING < demand.length || deepest < demand.depth || height < demand.contrast {
         return false;
     }
+    // Later frames are witnesses too; a line that nothing holds must have stood for longer.
     let from = (known - 1).min(rows.len().saturating_sub(WITNESSES));
+    let from = from.min(rows.len().saturating_sub(demand.frames));
+    if rows.len() < demand.frames.min(tracer.frames.len()) {
+        return false;
+    }
     let witnesses: Vec<f64> = rows[from..].iter().map(|r| strength(&r[..reached], SHARED_NOISE / SPACING)).collect();
     let together = witnesses.iter().sum::<f64>() / (witnesses.len() as f64).sqrt();
     witnesses.iter().all(|&w| w >= demand.each) && together >= demand.all
@@ -209,6 +218,8 @@ struct Demand {
     depth: f64,
     /// Contrast.
     contrast: f64,
+    /// Frames in which it must be seen, as far as the run has them.
+    frames: usize,
     /// Evidence in each witness frame, sd.
     each: f64,
     /// Evidence in all together, sd.
@@ -224,9 +235,9 @@ fn demand_on(tracer: &Tracer, strand: &Strand) -> Demand {
     let contrast = LEAST_CONTRAST * usual;
     let inside = tracer.forest.filaments[strand.filament].root == Root::Inside;
     match strand.parent {
-        Some(_) => Demand { length: LEAST_FIRST, depth: 0.0, contrast, each: BRANCH_EACH, all: BRANCH_ALL },
-        None if inside => Demand { length: INSIDE_LENGTH, depth: 0.0, contrast, each: INSIDE_EACH, all: INSIDE_ALL },
-        None => Demand { length: LEAST_FIRST, depth: ROOT_DEPTH, contrast, each: NEW_EACH, all: NEW_ALL },
+        Some(_) => Demand { length: LEAST_FIRST, depth: 0.0, contrast, frames: 1, each: BRANCH_EACH, all: BRANCH_ALL },
+        None if inside => Demand { length: INSIDE_LENGTH.max(INSIDE_WIDTHS * strand.width), depth: 0.0, contrast, frames: INSIDE_FRAMES, each: INSIDE_EACH, all: INSIDE_ALL },
+        None => Demand { length: LEAST_FIRST, depth: ROOT_DEPTH, contrast, frames: 1, each: NEW_EACH, all: NEW_ALL },
     }
 }
 

@@ -4,9 +4,7 @@ use ndarray::Array2;
 use veerlog::trace::{thin::thin, threshold::for_each_component};
 
 fn picture(rows: &[String]) -> Array2<bool> {
-    Array2::from_shape_fn((rows.len(), rows[0].len()), |(row, column)| {
-        rows[row].as_bytes()[column] == b'#'
-    })
+    Array2::from_shape_fn((rows.len(), rows[0].len()), |(row, column)| rows[row].as_bytes()[column] == b'#')
 }
 
 fn count(mask: &Array2<bool>) -> usize {
@@ -15,8 +13,7 @@ fn count(mask: &Array2<bool>) -> usize {
 
 #[test]
 fn every_mask_equals_the_reference_pixel_for_pixel() {
-    let file: serde_json::Value =
-        serde_json::from_str(include_str!("../../fixtures/thinning/thinning.json")).unwrap();
+    let file: serde_json::Value = serde_json::from_str(include_str!("../../fixtures/thinning/thinning.json")).unwrap();
     let expected = [
         ("cross", 165, 29),
         ("ring", 224, 39),
@@ -30,9 +27,7 @@ fn every_mask_equals_the_reference_pixel_for_pixel() {
     ];
     assert_eq!(file["masks"].as_object().unwrap().len(), expected.len());
     for (name, area, pixels) in expected {
-        let rows = |key: &str| {
-            serde_json::from_value::<Vec<String>>(file["masks"][name][key].clone()).unwrap()
-        };
+        let rows = |key: &str| serde_json::from_value::<Vec<String>>(file["masks"][name][key].clone()).unwrap();
         let mask = picture(&rows("mask"));
         let skeleton = thin(mask.view());
         assert_eq!((count(&mask), count(&skeleton)), (area, pixels), "{name}");
@@ -42,18 +37,12 @@ fn every_mask_equals_the_reference_pixel_for_pixel() {
 
 #[test]
 fn the_horse_keeps_one_component_and_1184_pixels() {
-    let file = image::open("fixtures/thinning/horse_mask.png")
-        .unwrap()
-        .to_luma8();
-    let mask = Array2::from_shape_fn(
-        (file.height() as usize, file.width() as usize),
-        |(row, column)| file.get_pixel(column as u32, row as u32)[0] > 0,
-    );
+    let file = image::open("fixtures/thinning/horse_mask.png").unwrap().to_luma8();
+    let mask = Array2::from_shape_fn((file.height() as usize, file.width() as usize), |(row, column)| {
+        file.get_pixel(column as u32, row as u32)[0] > 0
+    });
     let skeleton = thin(mask.view());
     let mut components = 0;
     for_each_component(skeleton.view(), |_| components += 1);
-    assert_eq!(
-        (count(&mask), count(&skeleton), components),
-        (43412, 1184, 1)
-    );
+    assert_eq!((count(&mask), count(&skeleton), components), (43412, 1184, 1));
 }

@@ -23,40 +23,23 @@ fn otsu_is_exact_and_triangle_within_the_libraries_difference() {
         assert_eq!(otsu(&counts), Some(by_otsu), "{name}");
         assert_eq!(counts[by_otsu + 1..].iter().sum::<u64>(), above, "{name}");
         let found = triangle(&counts).unwrap();
-        assert!(
-            found.abs_diff(by_skimage) <= 1 && found.abs_diff(by_opencv) <= 1,
-            "{name}: {found}"
-        );
+        assert!(found.abs_diff(by_skimage) <= 1 && found.abs_diff(by_opencv) <= 1, "{name}: {found}");
     }
 }
 
 #[test]
 fn sauvola_on_a_photograph() {
-    let file = image::open("fixtures/threshold/microaneurysms.png")
-        .unwrap()
-        .to_luma8();
-    let values = Array2::from_shape_fn(
-        (file.height() as usize, file.width() as usize),
-        |(row, column)| f32::from(file.get_pixel(column as u32, row as u32)[0]),
-    );
-    let sauvola = Sauvola {
-        radius: 7,
-        k: 0.2,
-        range: 127.5,
-    };
+    let file = image::open("fixtures/threshold/microaneurysms.png").unwrap().to_luma8();
+    let values = Array2::from_shape_fn((file.height() as usize, file.width() as usize), |(row, column)| {
+        f32::from(file.get_pixel(column as u32, row as u32)[0])
+    });
+    let sauvola = Sauvola { radius: 7, k: 0.2, range: 127.5 };
     let mut thresholds = Vec::new();
     sauvola.for_each_row(values.view(), |_, row| thresholds.extend_from_slice(row));
     let columns = values.ncols();
     assert_abs_diff_eq!(thresholds[0], 78.354_748_953, epsilon = 1e-6);
-    assert_abs_diff_eq!(
-        thresholds[51 * columns + 51],
-        77.895_931_009,
-        epsilon = 1e-6
-    );
+    assert_abs_diff_eq!(thresholds[51 * columns + 51], 77.895_931_009, epsilon = 1e-6);
     let mean = thresholds.iter().sum::<f64>() / thresholds.len() as f64;
     assert_abs_diff_eq!(mean, 80.566_114_779, epsilon = 1e-6);
-    assert_eq!(
-        sauvola.above(&values).iter().filter(|on| **on).count(),
-        9_987
-    );
+    assert_eq!(sauvola.above(&values).iter().filter(|on| **on).count(), 9_987);
 }

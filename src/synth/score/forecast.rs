@@ -29,10 +29,7 @@ pub(super) fn points(recorded: &Recorded, reported: &Reported) -> Vec<ForecastPo
         return Vec::new();
     };
     let at = |&level: &f64| {
-        let truth = recorded
-            .frames
-            .iter()
-            .find(|f| f.usable && f.depth_fraction >= level && f.time_s < contact)?;
+        let truth = recorded.frames.iter().find(|f| f.usable && f.depth_fraction >= level && f.time_s < contact)?;
         let row = reported.forecasts.iter().find(|r| r.frame == truth.frame);
         let quantiles = row.and_then(|r| r.p10_p50_p90);
         let remaining = contact - truth.time_s;
@@ -71,30 +68,17 @@ mod tests {
         let recorded = Recorded {
             frames: (0..10).map(frame).collect(),
             paths: vec![],
-            short: ShortTruth {
-                time_s: Some(100.0),
-                filament: Some(1),
-            },
+            short: ShortTruth { time_s: Some(100.0), filament: Some(1) },
             um_per_px: 1.0,
         };
-        let row = |frame, q| ReportedForecast {
-            frame,
-            issued_at_s: 10.0 * frame as f64,
-            p10_p50_p90: q,
-        };
+        let row = |frame, q| ReportedForecast { frame, issued_at_s: 10.0 * frame as f64, p10_p50_p90: q };
         let reported = Reported {
-            forecasts: vec![
-                row(4, Some([80.0, 94.0, 98.0])),
-                row(5, Some([90.0, 110.0, 120.0])),
-            ],
+            forecasts: vec![row(4, Some([80.0, 94.0, 98.0])), row(5, Some([90.0, 110.0, 120.0]))],
             ..Reported::default()
         };
         let points = points(&recorded, &reported);
         // Fractions 0.3 (as 0.1·3 = 0.30000000000000004), 0.5 and 0.7000000000000001 are first reached at frames 3, 5 and 7.
-        assert_eq!(
-            points.iter().map(|p| p.frame).collect::<Vec<_>>(),
-            [3, 5, 7]
-        );
+        assert_eq!(points.iter().map(|p| p.frame).collect::<Vec<_>>(), [3, 5, 7]);
         assert_eq!((points[0].error, points[2].covered), (None, None));
         assert!((points[1].error.unwrap() - 0.2).abs() < 1e-12);
         assert_eq!(points[1].covered, Some(true));

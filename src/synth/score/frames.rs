@@ -12,11 +12,7 @@ pub(super) fn fill(score: &mut RunScore, recorded: &Recorded, reported: &Reporte
         .iter()
         .filter_map(|t| Some((t, reported.frames.iter().find(|r| r.frame == t.frame)?)))
         .collect();
-    let usable: Vec<_> = both
-        .iter()
-        .copied()
-        .filter(|(t, r)| t.usable && r.usable)
-        .collect();
+    let usable: Vec<_> = both.iter().copied().filter(|(t, r)| t.usable && r.usable).collect();
     score.usable_wrong = Some(both.iter().filter(|(t, r)| t.usable != r.usable).count() as f64);
     depth(score, &usable, recorded.um_per_px);
     drift(score, &usable);
@@ -30,13 +26,7 @@ fn depth(score: &mut RunScore, usable: &[(&FrameTruth, &ReportedFrame)], um_per_
     let errors: Vec<f64> = grown().map(|(t, r)| error(t, r) / um_per_px).collect();
     score.depth_median_px = quantile(&errors, 0.5);
     score.depth_p95_px = quantile(&errors, 0.95);
-    let covered = grown().filter_map(|(t, r)| {
-        Some(if error(t, r) <= 2.0 * r.u_depth_um? {
-            1.0
-        } else {
-            0.0
-        })
-    });
+    let covered = grown().filter_map(|(t, r)| Some(if error(t, r) <= 2.0 * r.u_depth_um? { 1.0 } else { 0.0 }));
     score.depth_covered = mean(covered);
 }
 
@@ -48,30 +38,13 @@ fn drift(score: &mut RunScore, usable: &[(&FrameTruth, &ReportedFrame)]) {
     score.drift_rms_px = mean(squares).map(f64::sqrt);
 }
 
-fn alignment(
-    score: &mut RunScore,
-    recorded: &Recorded,
-    reported: &Reported,
-    usable: &[(&FrameTruth, &ReportedFrame)],
-) {
-    let errors: Vec<f64> = usable
-        .iter()
-        .filter_map(|(t, r)| Some((r.growth_alignment? - t.growth_alignment?).abs()))
-        .collect();
+fn alignment(score: &mut RunScore, recorded: &Recorded, reported: &Reported, usable: &[(&FrameTruth, &ReportedFrame)]) {
+    let errors: Vec<f64> =
+        usable.iter().filter_map(|(t, r)| Some((r.growth_alignment? - t.growth_alignment?).abs())).collect();
     score.alignment_frame = quantile(&errors, 0.5);
-    let truth = recorded
-        .frames
-        .iter()
-        .filter(|t| t.usable)
-        .map(|t| (Some(t.length_um), t.growth_alignment));
-    let output = reported
-        .frames
-        .iter()
-        .filter(|r| r.usable)
-        .map(|r| (r.length_um, r.growth_alignment));
-    score.alignment_run = whole_run(truth)
-        .zip(whole_run(output))
-        .map(|(a, b)| (a - b).abs());
+    let truth = recorded.frames.iter().filter(|t| t.usable).map(|t| (Some(t.length_um), t.growth_alignment));
+    let output = reported.frames.iter().filter(|r| r.usable).map(|r| (r.length_um, r.growth_alignment));
+    score.alignment_run = whole_run(truth).zip(whole_run(output)).map(|(a, b)| (a - b).abs());
 }
 
 /// Mean of frames' growth alignment weighted by the length that each frame added.
@@ -88,17 +61,9 @@ fn whole_run(frames: impl Iterator<Item = (Option<f64>, Option<f64>)>) -> Option
     (total > 0.0).then(|| sum / total)
 }
 
-fn counts(
-    score: &mut RunScore,
-    recorded: &Recorded,
-    reported: &Reported,
-    usable: &[(&FrameTruth, &ReportedFrame)],
-) {
+fn counts(score: &mut RunScore, recorded: &Recorded, reported: &Reported, usable: &[(&FrameTruth, &ReportedFrame)]) {
     let first = recorded.first_s();
-    let early = usable
-        .iter()
-        .filter(|(t, r)| t.time_s < first && r.filaments + r.unrooted > 0)
-        .count();
+    let early = usable.iter().filter(|(t, r)| t.time_s < first && r.filaments + r.unrooted > 0).count();
     score.early_frames = Some(early as f64);
     if first.is_infinite() {
         score.false_filaments = Some(reported.roots.len() as f64);
@@ -150,27 +115,14 @@ mod tests {
         let recorded = Recorded {
             frames: vec![truth(0, 0.0), truth(1, 10.0), truth(2, 20.0)],
             paths: vec![],
-            short: ShortTruth {
-                time_s: None,
-                filament: None,
-            },
+            short: ShortTruth { time_s: None, filament: None },
             um_per_px: 2.0,
         };
-        let frames = vec![
-            report(0, 0.0, [0.3, 0.4]),
-            report(1, 11.0, [0.0, 0.0]),
-            report(2, 26.0, [0.0, 0.0]),
-        ];
-        let reported = Reported {
-            frames,
-            ..Reported::default()
-        };
+        let frames = vec![report(0, 0.0, [0.3, 0.4]), report(1, 11.0, [0.0, 0.0]), report(2, 26.0, [0.0, 0.0])];
+        let reported = Reported { frames, ..Reported::default() };
         let mut score = RunScore::default();
         fill(&mut score, &recorded, &reported);
-        assert!(
-            (score.depth_median_px.unwrap() - 1.75).abs() < 1e-12,
-            "errors are 0.5 and 3 px"
-        );
+        assert!((score.depth_median_px.unwrap() - 1.75).abs() < 1e-12, "errors are 0.5 and 3 px");
         assert!((score.depth_covered.unwrap() - 0.5).abs() < 1e-12);
         assert!((score.drift_rms_px.unwrap() - (0.25_f64 / 3.0).sqrt()).abs() < 1e-12);
         assert!((score.alignment_run.unwrap() - 0.1).abs() < 1e-12);

@@ -24,57 +24,26 @@ pub(super) fn fill(score: &mut RunScore, recorded: &Recorded, reported: &Reporte
     if recorded.paths.is_empty() {
         return;
     }
-    let end = recorded
-        .frames
-        .iter()
-        .filter(|f| f.usable)
-        .map(|f| f.time_s)
-        .fold(0.0, f64::max);
-    let truth: Vec<Vec<Point>> = recorded
-        .paths
-        .iter()
-        .map(|p| until(&p.points, end))
-        .collect();
-    let traced: Vec<Vec<Point>> = reported
-        .paths
-        .iter()
-        .map(|p| p.iter().map(|q| [q[0], q[1]]).collect())
-        .collect();
+    let end = recorded.frames.iter().filter(|f| f.usable).map(|f| f.time_s).fold(0.0, f64::max);
+    let truth: Vec<Vec<Point>> = recorded.paths.iter().map(|p| until(&p.points, end)).collect();
+    let traced: Vec<Vec<Point>> = reported.paths.iter().map(|p| p.iter().map(|q| [q[0], q[1]]).collect()).collect();
     let (near_truth, near_traced) = (Buckets::of(&truth), Buckets::of(&traced));
     let to_truth: Vec<f64> = spread(&traced).map(|p| near_truth.distance(p)).collect();
     let to_traced: Vec<f64> = spread(&truth).map(|p| near_traced.distance(p)).collect();
     let found = |away: &[f64]| mean(away.iter().map(|d| if *d <= NEAR_PX { 1.0 } else { 0.0 }));
     score.precision = found(&to_truth);
     score.recall = found(&to_traced);
-    score.offset_rms_px =
-        mean(to_truth.iter().filter(|d| **d <= NEAR_PX).map(|d| d * d)).map(f64::sqrt);
-    let true_length = recorded
-        .frames
-        .iter()
-        .rev()
-        .find(|f| f.usable)
-        .map(|f| f.length_um);
-    let length = reported
-        .frames
-        .iter()
-        .rev()
-        .find(|f| f.usable)
-        .map(|f| f.length_um.unwrap_or(0.0));
-    score.length_ratio = length
-        .zip(true_length)
-        .filter(|(_, t)| *t > 0.0)
-        .map(|(l, t)| l / t);
+    score.offset_rms_px = mean(to_truth.iter().filter(|d| **d <= NEAR_PX).map(|d| d * d)).map(f64::sqrt);
+    let true_length = recorded.frames.iter().rev().find(|f| f.usable).map(|f| f.length_um);
+    let length = reported.frames.iter().rev().find(|f| f.usable).map(|f| f.length_um.unwrap_or(0.0));
+    score.length_ratio = length.zip(true_length).filter(|(_, t)| *t > 0.0).map(|(l, t)| l / t);
     score.tips_f1 = Some(f1(&true_tips(recorded, end), &reported.tips));
     directions(score, recorded, &reported.growth);
 }
 
 /// The points that had arrived by `time`.
 fn until(points: &[[f64; 4]], time: f64) -> Vec<Point> {
-    points
-        .iter()
-        .take_while(|p| p[2] <= time)
-        .map(|p| [p[0], p[1]])
-        .collect()
+    points.iter().take_while(|p| p[2] <= time).map(|p| [p[0], p[1]]).collect()
 }
 
 /// Points every half pixel along all lines.
@@ -108,10 +77,7 @@ impl Buckets {
             let (a, b) = (bucket(segment[0]), bucket(segment[1]));
             for x in a.0.min(b.0)..=a.0.max(b.0) {
                 for y in a.1.min(b.1)..=a.1.max(b.1) {
-                    buckets
-                        .entry((x, y))
-                        .or_default()
-                        .push([segment[0], segment[1]]);
+                    buckets.entry((x, y)).or_default().push([segment[0], segment[1]]);
                 }
             }
         }
@@ -123,17 +89,12 @@ impl Buckets {
         let (x, y) = bucket(p);
         let around = (x - 1..=x + 1).flat_map(|x| (y - 1..=y + 1).map(move |y| (x, y)));
         let segments = around.filter_map(|cell| self.0.get(&cell)).flatten();
-        segments
-            .map(|s| to_segment(p, s))
-            .fold(f64::INFINITY, f64::min)
+        segments.map(|s| to_segment(p, s)).fold(f64::INFINITY, f64::min)
     }
 }
 
 fn bucket(p: Point) -> (i32, i32) {
-    (
-        (p[0] / BUCKET_PX).floor() as i32,
-        (p[1] / BUCKET_PX).floor() as i32,
-    )
+    ((p[0] / BUCKET_PX).floor() as i32, (p[1] / BUCKET_PX).floor() as i32)
 }
 
 fn to_segment(p: Point, s: &[Point; 2]) -> f64 {
@@ -154,9 +115,7 @@ fn true_tips(recorded: &Recorded, time: f64) -> Vec<Point> {
         let length: f64 = line.windows(2).map(|s| distance(s[0], s[1])).sum();
         let hidden = path.parent.map_or(1.0, width_of);
         let free = path.ends_in == "tip" || !finished;
-        (free && length > hidden)
-            .then(|| line.last().copied())
-            .flatten()
+        (free && length > hidden).then(|| line.last().copied()).flatten()
     };
     recorded.paths.iter().filter_map(end).collect()
 }
@@ -168,13 +127,7 @@ fn f1(truth: &[Point], found: &[Point]) -> f64 {
     }
     let mut pairs: Vec<(f64, usize, usize)> = Vec::new();
     for (i, t) in truth.iter().enumerate() {
-        pairs.extend(
-            found
-                .iter()
-                .enumerate()
-                .map(|(j, f)| (distance(*t, *f), i, j))
-                .filter(|p| p.0 <= TIP_PX),
-        );
+        pairs.extend(found.iter().enumerate().map(|(j, f)| (distance(*t, *f), i, j)).filter(|p| p.0 <= TIP_PX));
     }
     pairs.sort_by(|a, b| a.0.total_cmp(&b.0).then((a.1, a.2).cmp(&(b.1, b.2))));
     let (mut used_truth, mut used_found) = (vec![false; truth.len()], vec![false; found.len()]);
@@ -197,11 +150,7 @@ fn directions(score: &mut RunScore, recorded: &Recorded, pieces: &[ReportedPiece
         };
         let error = acute_deg(piece.angle_deg, truth);
         errors.push(error);
-        covered.extend(
-            piece
-                .u_angle_deg
-                .map(|u| if error <= 2.0 * u { 1.0 } else { 0.0 }),
-        );
+        covered.extend(piece.u_angle_deg.map(|u| if error <= 2.0 * u { 1.0 } else { 0.0 }));
     }
     score.direction_median_deg = quantile(&errors, 0.5);
     score.angle_covered = mean(covered);
@@ -214,12 +163,7 @@ fn true_direction(recorded: &Recorded, piece: &ReportedPiece) -> Option<f64> {
     let to = time(piece.frame + 1).or_else(|| time(piece.frame))?;
     let mut best: Option<(f64, f64)> = None;
     for path in &recorded.paths {
-        for (i, p) in path
-            .points
-            .iter()
-            .enumerate()
-            .filter(|(_, p)| p[2] >= from && p[2] <= to)
-        {
+        for (i, p) in path.points.iter().enumerate().filter(|(_, p)| p[2] >= from && p[2] <= to) {
             let away = distance([p[0], p[1]], piece.place);
             if away <= PIECE_PX && best.is_none_or(|b| away < b.0) {
                 best = Some((away, local_direction(&path.points, i)));
@@ -250,16 +194,8 @@ mod tests {
     use super::*;
 
     fn straight(y: f64, ends_in: &str) -> PathTruth {
-        let points = (0..=60)
-            .map(|i| [f64::from(i), y, 1.0 + f64::from(i), 3.0])
-            .collect();
-        PathTruth {
-            filament: 1,
-            path: 1,
-            parent: None,
-            ends_in: ends_in.into(),
-            points,
-        }
+        let points = (0..=60).map(|i| [f64::from(i), y, 1.0 + f64::from(i), 3.0]).collect();
+        PathTruth { filament: 1, path: 1, parent: None, ends_in: ends_in.into(), points }
     }
 
     fn recorded(paths: Vec<PathTruth>) -> Recorded {
@@ -278,42 +214,21 @@ mod tests {
                 usable: true,
             })
             .collect();
-        Recorded {
-            frames,
-            paths,
-            short: ShortTruth {
-                time_s: None,
-                filament: None,
-            },
-            um_per_px: 1.0,
-        }
+        Recorded { frames, paths, short: ShortTruth { time_s: None, filament: None }, um_per_px: 1.0 }
     }
 
     #[test]
     fn a_line_one_px_off_and_half_as_long() {
         let recorded = recorded(vec![straight(10.0, "tip")]);
         let traced = (0..=30).map(|i| [f64::from(i), 11.0, 0.0, 3.0]).collect();
-        let piece = ReportedPiece {
-            frame: 2,
-            place: [15.0, 11.0],
-            angle_deg: 176.0,
-            u_angle_deg: Some(1.0),
-        };
-        let reported = Reported {
-            paths: vec![traced],
-            tips: vec![[59.0, 12.0]],
-            growth: vec![piece],
-            ..Reported::default()
-        };
+        let piece = ReportedPiece { frame: 2, place: [15.0, 11.0], angle_deg: 176.0, u_angle_deg: Some(1.0) };
+        let reported =
+            Reported { paths: vec![traced], tips: vec![[59.0, 12.0]], growth: vec![piece], ..Reported::default() };
         let mut score = RunScore::default();
         fill(&mut score, &recorded, &reported);
         assert!((score.precision.unwrap() - 1.0).abs() < 1e-12);
         // The half found, and √3 px beyond its end that lie within 2 px of it.
-        assert!(
-            (score.recall.unwrap() - 0.53).abs() < 0.01,
-            "{:?}",
-            score.recall
-        );
+        assert!((score.recall.unwrap() - 0.53).abs() < 0.01, "{:?}", score.recall);
         assert!((score.offset_rms_px.unwrap() - 1.0).abs() < 1e-9);
         assert!((score.tips_f1.unwrap() - 1.0).abs() < 1e-12);
         assert!((score.direction_median_deg.unwrap() - 4.0).abs() < 1e-9);
@@ -331,9 +246,6 @@ mod tests {
     #[test]
     fn meetings_are_no_tips() {
         assert!(true_tips(&recorded(vec![straight(5.0, "meeting")]), 100.0).is_empty());
-        assert_eq!(
-            true_tips(&recorded(vec![straight(5.0, "meeting")]), 20.0).len(),
-            1
-        );
+        assert_eq!(true_tips(&recorded(vec![straight(5.0, "meeting")]), 20.0).len(), 1);
     }
 }

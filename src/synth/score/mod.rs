@@ -78,10 +78,7 @@ pub fn score_run(run: &Path, output: Option<&Path>) -> Result<RunScore, SynthErr
 /// Scores what was reported against what was recorded.
 #[must_use]
 pub fn score(run: String, recorded: &Recorded, reported: &Reported) -> RunScore {
-    let mut score = RunScore {
-        run,
-        ..RunScore::default()
-    };
+    let mut score = RunScore { run, ..RunScore::default() };
     frames::fill(&mut score, recorded, reported);
     lines::fill(&mut score, recorded, reported);
     score.forecasts = forecast::points(recorded, reported);

@@ -4,9 +4,7 @@
 use std::fs;
 use std::path::{Path, PathBuf};
 
-use polars::prelude::{
-    CsvParseOptions, CsvReadOptions, DataFrame, DataType, NullValues, SerReader,
-};
+use polars::prelude::{CsvParseOptions, CsvReadOptions, DataFrame, DataType, NullValues, SerReader};
 use serde::Deserialize;
 use serde::de::DeserializeOwned;
 
@@ -96,18 +94,11 @@ impl Recorded {
     /// [`SynthError::Io`] or [`SynthError::Unscorable`] naming the file.
     pub fn read(run: &Path) -> Result<Self, SynthError> {
         let folder = run.join("truth");
-        must_exist(
-            &folder,
-            "there is no truth here: only runs of `veerlog synth` can be scored",
-        )?;
+        must_exist(&folder, "there is no truth here: only runs of `veerlog synth` can be scored")?;
         let table = Table::read(&folder.join("frames.csv"))?;
         let about: serde_json::Value = json(&folder.join("truth.json"))?;
-        let scale = about
-            .pointer("/scenario/um_per_px")
-            .and_then(serde_json::Value::as_f64);
-        let um_per_px = scale.ok_or_else(|| {
-            unscorable(&folder.join("truth.json"), "it has no scenario.um_per_px")
-        })?;
+        let scale = about.pointer("/scenario/um_per_px").and_then(serde_json::Value::as_f64);
+        let um_per_px = scale.ok_or_else(|| unscorable(&folder.join("truth.json"), "it has no scenario.um_per_px"))?;
         Ok(Self {
             frames: truth_frames(&table)?,
             paths: ndjson(&folder.join("paths.ndjson"))?,
@@ -119,28 +110,12 @@ impl Recorded {
     /// First arrival of any metal, s; infinite where nothing grew.
     #[must_use]
     pub fn first_s(&self) -> f64 {
-        self.paths
-            .iter()
-            .filter_map(|p| p.points.first())
-            .map(|p| p[2])
-            .fold(f64::INFINITY, f64::min)
+        self.paths.iter().filter_map(|p| p.points.first()).map(|p| p[2]).fold(f64::INFINITY, f64::min)
     }
 }
 
 fn truth_frames(table: &Table) -> Result<Vec<FrameTruth>, SynthError> {
-    let [
-        frame,
-        time,
-        x,
-        y,
-        depth,
-        fraction,
-        front,
-        tips,
-        length,
-        alignment,
-        usable,
-    ] = table.columns([
+    let [frame, time, x, y, depth, fraction, front, tips, length, alignment, usable] = table.columns([
         "frame",
         "time_s",
         "drift_x_px",
@@ -176,10 +151,7 @@ impl Reported {
     /// # Errors
     /// [`SynthError::Io`] or [`SynthError::Unscorable`] naming the file.
     pub fn read(folder: &Path) -> Result<Self, SynthError> {
-        must_exist(
-            folder,
-            "there is no output here yet: run `veerlog report` on the run first",
-        )?;
+        must_exist(folder, "there is no output here yet: run `veerlog report` on the run first")?;
         let tables = folder.join("tables");
         let paths: Vec<TracedPath> = ndjson(&folder.join("traces.ndjson"))?;
         Ok(Self {
@@ -199,17 +171,7 @@ struct TracedPath {
 }
 
 fn frames(table: &Table) -> Result<Vec<ReportedFrame>, SynthError> {
-    let [
-        frame,
-        usable,
-        x,
-        y,
-        depth,
-        length,
-        filaments,
-        unrooted,
-        alignment,
-    ] = table.columns([
+    let [frame, usable, x, y, depth, length, filaments, unrooted, alignment] = table.columns([
         "frame",
         "usable",
         "drift_x_px",
@@ -243,12 +205,7 @@ fn growth(table: &Table) -> Result<Vec<ReportedPiece>, SynthError> {
     Ok((0..table.rows())
         .filter_map(|i| {
             let place = [x[i]?, y[i]?];
-            Some(ReportedPiece {
-                frame: frame[i]? as usize,
-                place,
-                angle_deg: angle[i]?,
-                u_angle_deg: u_angle[i],
-            })
+            Some(ReportedPiece { frame: frame[i]? as usize, place, angle_deg: angle[i]?, u_angle_deg: u_angle[i] })
         })
         .collect())
 }
@@ -259,23 +216,15 @@ fn tips(table: &Table) -> Result<Vec<[f64; 2]>, SynthError> {
     let ends = table.text("ends_in")?;
     let last = frame.iter().flatten().fold(0.0, |a: f64, b| a.max(*b));
     let of_last = |i: &usize| frame[*i].is_some_and(|f| f >= last) && ends[*i] == "tip";
-    Ok((0..table.rows())
-        .filter(of_last)
-        .filter_map(|i| Some([x[i]?, y[i]?]))
-        .collect())
+    Ok((0..table.rows()).filter(of_last).filter_map(|i| Some([x[i]?, y[i]?])).collect())
 }
 
 fn forecasts(table: &Table) -> Result<Vec<ReportedForecast>, SynthError> {
-    let [frame, issued, p10, p50, p90] =
-        table.columns(["frame", "issued_at_s", "p10_s", "p50_s", "p90_s"])?;
+    let [frame, issued, p10, p50, p90] = table.columns(["frame", "issued_at_s", "p10_s", "p50_s", "p90_s"])?;
     Ok((0..table.rows())
         .filter_map(|i| {
             let quantiles = p10[i].zip(p50[i]).zip(p90[i]).map(|((a, b), c)| [a, b, c]);
-            Some(ReportedForecast {
-                frame: frame[i]? as usize,
-                issued_at_s: issued[i]?,
-                p10_p50_p90: quantiles,
-            })
+            Some(ReportedForecast { frame: frame[i]? as usize, issued_at_s: issued[i]?, p10_p50_p90: quantiles })
         })
         .collect())
 }
@@ -291,21 +240,11 @@ impl Table {
         if let Err(source) = fs::metadata(path) {
             return Err(SynthError::io(path, source));
         }
-        let parse = CsvParseOptions::default()
-            .with_null_values(Some(NullValues::AllColumnsSingle("".into())));
-        let options = CsvReadOptions::default()
-            .with_has_header(true)
-            .with_infer_schema_length(Some(0));
-        let reader = options
-            .with_parse_options(parse)
-            .try_into_reader_with_file_path(Some(path.to_owned()));
-        let data = reader
-            .and_then(SerReader::finish)
-            .map_err(|e| unscorable(path, &e.to_string()))?;
-        Ok(Self {
-            path: path.to_owned(),
-            data,
-        })
+        let parse = CsvParseOptions::default().with_null_values(Some(NullValues::AllColumnsSingle("".into())));
+        let options = CsvReadOptions::default().with_has_header(true).with_infer_schema_length(Some(0));
+        let reader = options.with_parse_options(parse).try_into_reader_with_file_path(Some(path.to_owned()));
+        let data = reader.and_then(SerReader::finish).map_err(|e| unscorable(path, &e.to_string()))?;
+        Ok(Self { path: path.to_owned(), data })
     }
 
     fn rows(&self) -> usize {
@@ -314,20 +253,9 @@ impl Table {
 
     /// Text of a column, empty where absent.
     fn text(&self, name: &str) -> Result<Vec<String>, SynthError> {
-        let wrong =
-            |e: polars::error::PolarsError| unscorable(&self.path, &format!("column {name}: {e}"));
-        let column = self
-            .data
-            .column(name)
-            .map_err(wrong)?
-            .cast(&DataType::String)
-            .map_err(wrong)?;
-        Ok(column
-            .str()
-            .map_err(wrong)?
-            .iter()
-            .map(|v| v.unwrap_or("").to_owned())
-            .collect())
+        let wrong = |e: polars::error::PolarsError| unscorable(&self.path, &format!("column {name}: {e}"));
+        let column = self.data.column(name).map_err(wrong)?.cast(&DataType::String).map_err(wrong)?;
+        Ok(column.str().map_err(wrong)?.iter().map(|v| v.unwrap_or("").to_owned()).collect())
     }
 
     /// Numbers of a column; `true` is 1 and `false` 0.
@@ -337,20 +265,14 @@ impl Table {
             "true" => Ok(Some(1.0)),
             "false" => Ok(Some(0.0)),
             text => text.parse().map(Some).map_err(|_| {
-                unscorable(
-                    &self.path,
-                    &format!("line {}: {name} is {text:?}, a number was expected", i + 2),
-                )
+                unscorable(&self.path, &format!("line {}: {name} is {text:?}, a number was expected", i + 2))
             }),
         };
         self.text(name)?.iter().enumerate().map(number).collect()
     }
 
     /// Several columns at once.
-    fn columns<const N: usize>(
-        &self,
-        names: [&str; N],
-    ) -> Result<[Vec<Option<f64>>; N], SynthError> {
+    fn columns<const N: usize>(&self, names: [&str; N]) -> Result<[Vec<Option<f64>>; N], SynthError> {
         let mut columns = [const { Vec::new() }; N];
         for (column, name) in columns.iter_mut().zip(names) {
             *column = self.numbers(name)?;
@@ -360,27 +282,16 @@ impl Table {
 
     /// A column that may be missing: then all absent.
     fn optional(&self, name: &str) -> Result<Vec<Option<f64>>, SynthError> {
-        if self.data.column(name).is_ok() {
-            self.numbers(name)
-        } else {
-            Ok(vec![None; self.rows()])
-        }
+        if self.data.column(name).is_ok() { self.numbers(name) } else { Ok(vec![None; self.rows()]) }
     }
 }
 
 fn must_exist(folder: &Path, otherwise: &str) -> Result<(), SynthError> {
-    if folder.is_dir() {
-        Ok(())
-    } else {
-        Err(unscorable(folder, otherwise))
-    }
+    if folder.is_dir() { Ok(()) } else { Err(unscorable(folder, otherwise)) }
 }
 
 fn unscorable(path: &Path, message: &str) -> SynthError {
-    SynthError::Unscorable {
-        path: path.to_owned(),
-        message: message.to_owned(),
-    }
+    SynthError::Unscorable { path: path.to_owned(), message: message.to_owned() }
 }
 
 fn json<T: DeserializeOwned>(path: &Path) -> Result<T, SynthError> {
@@ -394,9 +305,6 @@ fn ndjson<T: DeserializeOwned>(path: &Path) -> Result<Vec<T>, SynthError> {
         .lines()
         .enumerate()
         .filter(|(_, line)| !line.trim().is_empty())
-        .map(|(i, line)| {
-            serde_json::from_str(line)
-                .map_err(|e| unscorable(path, &format!("line {}: {e}", i + 1)))
-        });
+        .map(|(i, line)| serde_json::from_str(line).map_err(|e| unscorable(path, &format!("line {}: {e}", i + 1))));
     parsed.collect()
 }

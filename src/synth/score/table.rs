@@ -110,15 +110,8 @@ impl Summary {
     pub fn of(runs: Vec<RunScore>) -> Self {
         let figures = FIGURES.iter().filter_map(|f| line(f, &runs)).collect();
         let levels = LEVELS.iter().map(|l| Some(*l)).chain([None]);
-        let forecasts = levels
-            .map(|level| forecast_line(level, &runs))
-            .filter(|l| l.points > 0)
-            .collect();
-        Self {
-            figures,
-            forecasts,
-            runs,
-        }
+        let forecasts = levels.map(|level| forecast_line(level, &runs)).filter(|l| l.points > 0).collect();
+        Self { figures, forecasts, runs }
     }
 }
 
@@ -129,27 +122,14 @@ fn line(figure: &Figure, runs: &[RunScore]) -> Option<Line> {
         Worst::Smallest => -v,
         Worst::FarFromOne => (v - 1.0).abs(),
     };
-    let worst = values
-        .iter()
-        .copied()
-        .max_by(|a, b| badness(a).total_cmp(&badness(b)))?;
+    let worst = values.iter().copied().max_by(|a, b| badness(a).total_cmp(&badness(b)))?;
     let median = quantile(&values, 0.5)?;
-    Some(Line {
-        figure: figure.key,
-        label: figure.label,
-        n: values.len(),
-        median,
-        worst,
-    })
+    Some(Line { figure: figure.key, label: figure.label, n: values.len(), median, worst })
 }
 
 fn forecast_line(level: Option<f64>, runs: &[RunScore]) -> ForecastLine {
     let chosen = |l: f64| level.is_none_or(|level| (l - level).abs() < 1e-9);
-    let points: Vec<_> = runs
-        .iter()
-        .flat_map(|r| &r.forecasts)
-        .filter(|p| chosen(p.level))
-        .collect();
+    let points: Vec<_> = runs.iter().flat_map(|r| &r.forecasts).filter(|p| chosen(p.level)).collect();
     let errors: Vec<f64> = points.iter().filter_map(|p| p.error).collect();
     let sizes: Vec<f64> = errors.iter().map(|e| e.abs()).collect();
     let widths: Vec<f64> = points.iter().filter_map(|p| p.width).collect();
@@ -167,17 +147,9 @@ fn forecast_line(level: Option<f64>, runs: &[RunScore]) -> ForecastLine {
 
 impl fmt::Display for Summary {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        writeln!(
-            f,
-            "{:<40} {:>5} {:>10} {:>10}",
-            "figure", "runs", "median", "worst"
-        )?;
+        writeln!(f, "{:<40} {:>5} {:>10} {:>10}", "figure", "runs", "median", "worst")?;
         for line in &self.figures {
-            writeln!(
-                f,
-                "{:<40} {:>5} {:>10.3} {:>10.3}",
-                line.label, line.n, line.median, line.worst
-            )?;
+            writeln!(f, "{:<40} {:>5} {:>10.3} {:>10.3}", line.label, line.n, line.median, line.worst)?;
         }
         if self.forecasts.is_empty() {
             return Ok(());
@@ -192,13 +164,7 @@ impl fmt::Display for Summary {
         for line in &self.forecasts {
             let level = line.level.map_or("all".to_owned(), |l| format!("{l}"));
             let _ = write!(text, "\n{level:<28} {:>8}", line.points);
-            for value in [
-                line.given,
-                line.error,
-                line.signed,
-                line.covered,
-                line.width,
-            ] {
+            for value in [line.given, line.error, line.signed, line.covered, line.width] {
                 let _ = write!(text, " {:>8}", shown(value));
             }
         }
@@ -211,28 +177,14 @@ mod tests {
     use super::*;
 
     fn run(length_ratio: f64, recall: f64) -> RunScore {
-        RunScore {
-            length_ratio: Some(length_ratio),
-            recall: Some(recall),
-            ..RunScore::default()
-        }
+        RunScore { length_ratio: Some(length_ratio), recall: Some(recall), ..RunScore::default() }
     }
 
     #[test]
     fn worst_is_the_bad_end() {
         let summary = Summary::of(vec![run(1.02, 0.9), run(0.8, 1.0), run(1.1, 0.95)]);
-        let find = |key: &str| {
-            summary
-                .figures
-                .iter()
-                .find(|l| l.figure == key)
-                .cloned()
-                .unwrap()
-        };
-        assert!(
-            (find("length_ratio").worst - 0.8).abs() < 1e-12
-                && (find("length_ratio").median - 1.02).abs() < 1e-12
-        );
+        let find = |key: &str| summary.figures.iter().find(|l| l.figure == key).cloned().unwrap();
+        assert!((find("length_ratio").worst - 0.8).abs() < 1e-12 && (find("length_ratio").median - 1.02).abs() < 1e-12);
         assert!((find("recall").worst - 0.9).abs() < 1e-12);
         assert!(summary.to_string().contains("centre-line recall"));
     }
