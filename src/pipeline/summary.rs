@@ -44,6 +44,7 @@ pub(super) fn summary(input: &Input, filmed: &Filmed, measured: &Measured, frame
         settings: settings(input),
         inputs: inputs(input, filmed),
         warnings: notes.warnings.clone(),
+        ..Summary::default()
     }
 }
 
