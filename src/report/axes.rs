@@ -172,19 +172,28 @@ impl Panel {
 
     /// The time along the bottom, in `unit`, with its heading at the right end.
     pub fn draw_time(&self, drawing: &mut Drawing, unit: TimeUnit) {
+        self.draw_bottom(drawing, &format!("time ({})", unit.name), unit.seconds);
+    }
+
+    /// A quantity along the bottom, with its heading at the right end.
+    pub fn draw_x(&self, drawing: &mut Drawing, heading: &str) {
+        self.draw_bottom(drawing, heading, 1.0);
+    }
+
+    /// The lower scale, read in units of `unit`.
+    fn draw_bottom(&self, drawing: &mut Drawing, heading: &str, unit: f64) {
         let scaled = Range {
-            low: self.x.low / unit.seconds,
-            high: self.x.high / unit.seconds,
+            low: self.x.low / unit,
+            high: self.x.high / unit,
         };
         let ticks = scaled.ticks((self.width / 62.0).floor().clamp(2.0, 9.0) as usize);
         let y = self.bottom();
         drawing.line(vec![[self.left, y], [self.right(), y]], Ink::Quiet, 1.0);
         for (value, label) in ticks.iter().zip(labels(&ticks)) {
-            let x = self.across(value * unit.seconds);
+            let x = self.across(value * unit);
             drawing.line(vec![[x, y], [x, y + 5.0]], Ink::Quiet, 1.0);
             drawing.text([x, y + 18.0], label, SMALL, Ink::Quiet, Anchor::Middle);
         }
-        let heading = format!("time ({})", unit.name);
         drawing.bold(
             [self.right(), y + 36.0],
             heading,

@@ -43,6 +43,9 @@ pub(crate) fn growing() -> Results {
         load: load(),
         cell: cell(),
         trace,
+        turns: vec![turn()],
+        charge: charge(&frames),
+        half_cycles: vec![half_cycle(&frames)],
         frames,
         forecasts,
         summary: Summary::default(),
@@ -89,6 +92,115 @@ pub(crate) fn still() -> Results {
     };
     results.summary = summary(&results);
     results
+}
+
+/// The step of the load, and growth that followed it.
+fn turn() -> TurnRow {
+    TurnRow {
+        step: 1,
+        time_s: TURN as f64 * STEP_S,
+        axis_before_deg: Some(90.0),
+        axis_after_deg: Some(30.0),
+        stress_before_mpa: 150.0,
+        stress_after_mpa: 120.0,
+        expected_deg: Some(30.0),
+        growth_before_deg: Some(98.0),
+        growth_after_deg: Some(33.0),
+        turned_deg: Some(52.0),
+        lag_s: Some(40.0),
+        lag_low_s: Some(20.0),
+        lag_high_s: Some(80.0),
+        lag_um: Some(11.0),
+        lag_low_um: Some(4.0),
+        lag_high_um: Some(19.0),
+        filaments: 9,
+        followed: 7,
+        gain: Some(0.9),
+        p: Some(0.000_4),
+        verdict: TurnVerdict::Turned,
+    }
+}
+
+/// Speeds that fall with the stress, charge at an even current.
+fn charge(frames: &[FrameRow]) -> Vec<ChargeRow> {
+    let row = |row: &FrameRow| {
+        let mah = 0.032 * row.time_s / 3_600.0;
+        ChargeRow {
+            frame: row.frame,
+            time_s: row.time_s,
+            charge_mah: Some(mah),
+            charge_mah_per_cm2: Some(mah / 0.032),
+            plating_s: Some(row.time_s),
+            current_ma: Some(0.032),
+            current_ma_per_cm2: Some(1.0),
+            half_cycle: Some(1),
+            depth_um: row.depth_um,
+            front_depth_um: row.front_depth_um,
+            length_um: row.length_um,
+            tip_speed_um_per_s: row.depth_um.map(|_| 0.5 + 0.2 * ragged(row.frame as u64)),
+            stress_mpa: row.stress_mpa,
+            visible_um3: row.length_um.map(|length| length * 4.0 * 400.0),
+            faraday_um3: Some(mah * 4.849_081e8).filter(|volume| *volume > 0.0),
+        }
+    };
+    frames.iter().filter(|row| row.usable).map(row).collect()
+}
+
+fn half_cycle(frames: &[FrameRow]) -> HalfCycleRow {
+    HalfCycleRow {
+        half_cycle: 1,
+        flow: Flow::Plating,
+        from_s: 100.0,
+        to_s: 1_239.0,
+        charge_mah: Some(0.0101),
+        charge_mah_per_cm2: Some(0.316),
+        depth_gain_um: frames.last().and_then(|row| row.depth_um),
+        length_gain_um: frames.last().and_then(|row| row.length_um),
+        retreat_um: Some(0.0),
+    }
+}
+
+fn direction_row() -> DirectionRow {
+    DirectionRow {
+        stress: "compression".into(),
+        filaments: 9,
+        pieces: 330,
+        length_um: 2_900.0,
+        mean_axis_deg: Some(18.0),
+        resultant: 0.41,
+        kappa: Some(0.9),
+        rayleigh_p: Some(0.02),
+        alignment: Some(0.27),
+        toward_expected: Some(0.27),
+        toward_expected_low: Some(0.08),
+        toward_expected_high: Some(0.47),
+        v_p: Some(0.04),
+    }
+}
+
+fn kink_model() -> KinkModel {
+    let bin = |i: u32| KinkBin {
+        from_deg: 15.0 * f64::from(i),
+        to_deg: 15.0 * f64::from(i + 1),
+        measured_deg: 1.0 + ragged(u64::from(i)),
+        measured_ci95: (i != 2).then(|| [ragged(u64::from(i)) - 1.0, 3.0 + ragged(u64::from(i))]),
+        predicted_deg: [3.0, 8.0, 13.0, 16.0, 14.0, 6.0][i as usize],
+        pieces: 40,
+        filaments: 9,
+    };
+    let inputs = KinkInputs {
+        metal: "Li".into(),
+        molar_volume_cm3: 12.996,
+        overpotential_mv: 55.0,
+        pressure_mpa: 408.3,
+        stress_mpa: 150.0,
+        u_stress_mpa: Some(6.2),
+        half_length_um: 90.0,
+        distance_um: 4.0,
+        pieces: 240,
+        closed: 3,
+    };
+    KinkModel { inputs, bins: (0..6).map(bin).collect() }
 }
 
 fn facts() -> RunFacts {
@@ -481,6 +593,34 @@ fn summary(results: &Results) -> Summary {
                 max: 150.0,
             }),
             dose_mpa: grew.then_some(126.0),
+        },
+        turns: if grew {
+            TurnsSummary {
+                load: LoadKnown::Stress,
+                steps: 1,
+                turned: 1,
+                p: Some(0.000_4),
+                filaments: Some(9),
+                ..TurnsSummary::default()
+            }
+        } else {
+            TurnsSummary::default()
+        },
+        directions: if grew { vec![direction_row()] } else { Vec::new() },
+        kink_model: grew.then(kink_model),
+        charge: if grew {
+            ChargeSummary {
+                logged: true,
+                charge_mah: Some(0.0107),
+                charge_mah_per_cm2: Some(0.333),
+                plating_half_cycles: 1,
+                depth_gain_um: Some(520.0),
+                visible_um3: Some(4.2e6),
+                faraday_um3: Some(5.2e6),
+                ..ChargeSummary::default()
+            }
+        } else {
+            ChargeSummary::default()
         },
         short: ShortSummary::default(),
         forecast: results.forecasts.last().cloned(),

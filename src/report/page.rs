@@ -15,6 +15,7 @@ use super::verdict::{SAFETY, Verdict};
 use super::words::bind;
 use crate::results::Results;
 
+mod effects;
 mod grid;
 mod lists;
 mod player;
@@ -33,12 +34,14 @@ struct Page<'a> {
     note: Option<&'a str>,
     facts: Vec<[String; 2]>,
     strip: Option<strip::Strip>,
-    verdict: [[String; 2]; 3],
+    verdict: [[String; 2]; 4],
     warnings: &'a [String],
     cautions: Vec<&'a str>,
     player: Option<player::Player>,
     figures: Vec<Shown>,
     not_drawn: String,
+    load: effects::LoadPart,
+    charge: effects::ChargePart,
     tables: Vec<grid::Grid>,
     set_aside: Vec<[String; 2]>,
     settings: Vec<[String; 2]>,
@@ -86,6 +89,7 @@ fn page(results: &Results) -> Result<Page<'_>, Error> {
         verdict: [
             ["Growth".into(), bind(&verdict.growth)],
             ["Direction".into(), bind(&verdict.direction)],
+            ["Load".into(), bind(&verdict.load)],
             ["Forecast".into(), bind(&verdict.forecast)],
         ],
         warnings: &summary.warnings,
@@ -95,6 +99,8 @@ fn page(results: &Results) -> Result<Page<'_>, Error> {
         player: player::of(results)?,
         figures,
         not_drawn,
+        load: effects::load(results)?,
+        charge: effects::charge(results)?,
         tables: vec![
             grid::of("Filaments", &FILAMENTS, &results.filaments),
             grid::of("Forecasts as issued", &FORECASTS, &results.forecasts),
@@ -130,8 +136,9 @@ fn colours() -> String {
         .map(|i| super::palette::arrival(f64::from(i) / 12.0).hex())
         .collect();
     format!(
-        ":root{{{light}--casing:{};--ramp:linear-gradient(to right,{})}}@media screen and (prefers-color-scheme:dark){{:root{{{dark}}}}}{classes}",
+        ":root{{{light}--casing:{};--load-mark:{};--ramp:linear-gradient(to right,{})}}@media screen and (prefers-color-scheme:dark){{:root{{{dark}}}}}{classes}",
         Ink::Black.light().hex(),
+        Ink::LoadMark.light().hex(),
         ramp.join(",")
     )
 }
@@ -157,10 +164,18 @@ fn shown(figure: &Figure, results: &Results) -> Result<Option<Shown>, Error> {
     }))
 }
 
+/// Figures that stand elsewhere on the page than under the evidence.
+const ELSEWHERE: [&str; 5] = ["overlay", "steering", "kink", "speed", "charge"];
+
 /// The figures of the evidence: those drawn, and the titles of those with nothing to show.
 fn evidence(results: &Results) -> Result<(Vec<Shown>, String), Error> {
+    drawn(results, |name| !ELSEWHERE.contains(&name))
+}
+
+/// The figures that `keep` names: those drawn, and the titles of those with nothing to show.
+fn drawn(results: &Results, keep: impl Fn(&str) -> bool) -> Result<(Vec<Shown>, String), Error> {
     let (mut drawn, mut missing) = (Vec::new(), Vec::new());
-    for figure in FIGURES.iter().filter(|figure| figure.name != "overlay") {
+    for figure in FIGURES.iter().filter(|figure| keep(figure.name)) {
         match shown(figure, results)? {
             Some(shown) => drawn.push(shown),
             None => missing.push(figure.title.to_lowercase()),

@@ -99,6 +99,8 @@ pub enum Ink {
     Current,
     /// White, in both themes: lines on a picture.
     White,
+    /// The load, in both themes: its mark on a picture.
+    LoadMark,
     /// Near black, in both themes: casings on a picture.
     Black,
     /// Time of arrival, 0 (first) to 255 (last), the same in both themes.
@@ -132,6 +134,7 @@ impl Ink {
             Self::Voltage => oklch(0.42, 0.09, 185.0),
             Self::Current => oklch(0.54, 0.17, 325.0),
             Self::White => Rgb(255, 255, 255),
+            Self::LoadMark => oklch(0.86, 0.15, 88.0),
             Self::Black => oklch(0.20, 0.02, 220.0),
             Self::Arrival(step) => arrival(f64::from(step) / 255.0),
         }

@@ -8,6 +8,10 @@ use serde::Serialize;
 
 use crate::measure::{FilamentRow, ForecastRow, FrameRow, GrowthRow, PathRow};
 
+mod effects;
+
+pub use effects::{CHARGE, DIRECTIONS, HALF_CYCLES, TURNS};
+
 /// A table: what a row is, and its columns.
 pub struct Table<R: 'static> {
     /// File name without extension.
@@ -499,6 +503,10 @@ mod tests {
             names(&GROWTH),
             names(&FILAMENTS),
             names(&FORECASTS),
+            names(&TURNS),
+            names(&DIRECTIONS),
+            names(&CHARGE),
+            names(&HALF_CYCLES),
         ] {
             let mut unique = list.clone();
             unique.sort_unstable();

@@ -1,4 +1,4 @@
-//! The run in three sentences: what grew, which way, and when contact is to be expected.
+//! The run in four sentences: what grew, which way, whether the load did it, and when contact is to be expected.
 //! Says "too few", "none was logged" or "nothing was seen" where that is so.
 
 use super::words::{counted, duration, figures, fixed, sentence, signed, with_uncertainty};
@@ -13,13 +13,15 @@ pub const CAUTION: &str =
 pub const SAFETY: &str = "A cell on test can vent, burn or shatter, and lithium reacts with water. Nothing on this page is an interlock \
      or a safety limit. Follow your lab's own rules, local codes and qualified people.";
 
-/// What happened, which way it grew, what is to come.
+/// What happened, which way it grew, whether the load did it, what is to come.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct Verdict {
     /// Filaments, depth, rate, short.
     pub growth: String,
     /// Alignment with the load axis.
     pub direction: String,
+    /// Whether growth turned when the load did.
+    pub load: String,
     /// The last forecast, always with the caution.
     pub forecast: String,
 }
@@ -30,13 +32,14 @@ impl Verdict {
         Self {
             growth: growth(results),
             direction: direction(results),
+            load: super::effect::load(results),
             forecast: forecast(results),
         }
     }
 
     /// The sentences in order.
-    pub fn sentences(&self) -> [&str; 3] {
-        [&self.growth, &self.direction, &self.forecast]
+    pub fn sentences(&self) -> [&str; 4] {
+        [&self.growth, &self.direction, &self.load, &self.forecast]
     }
 }
 

@@ -15,7 +15,9 @@ use ndarray::Array2;
 use rayon::prelude::*;
 
 use super::figures::{FIGURES, Format};
-use super::schema::{FILAMENTS, FORECASTS, FRAMES, GROWTH, PATHS, Table};
+use super::schema::{
+    CHARGE, DIRECTIONS, FILAMENTS, FORECASTS, FRAMES, GROWTH, HALF_CYCLES, PATHS, TURNS, Table,
+};
 use super::{Error, page, raster, records, svg, tables};
 use crate::results::{NEVER, Results};
 
@@ -177,6 +179,10 @@ fn fill(results: &Results, folder: &Path, save: Save) -> Result<(), Error> {
     table(folder, &GROWTH, &results.growth)?;
     table(folder, &FILAMENTS, &results.filaments)?;
     table(folder, &FORECASTS, &results.forecasts)?;
+    table(folder, &TURNS, &results.turns)?;
+    table(folder, &DIRECTIONS, &results.summary.directions)?;
+    table(folder, &CHARGE, &results.charge)?;
+    table(folder, &HALF_CYCLES, &results.half_cycles)?;
     figures(results, &folder.join("figures"))?;
     if save.masks {
         masks(results, &folder.join("masks"))?;

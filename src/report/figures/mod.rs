@@ -3,13 +3,17 @@
 
 mod alignment;
 pub(in crate::report) mod arrival;
+mod charge;
 mod depth;
 mod electrical;
 mod key;
+mod kink;
 mod load;
 pub(in crate::report) mod overlay;
 mod record;
 mod rose;
+mod speed;
+mod steering;
 
 use super::axes::{Panel, Range, TimeUnit};
 use super::drawing::Drawing;
@@ -51,7 +55,7 @@ pub struct Figure {
 }
 
 /// All figures, in the order of the page.
-pub static FIGURES: [Figure; 6] = [
+pub static FIGURES: [Figure; 10] = [
     Figure {
         name: "overlay",
         title: "What grew, and when",
@@ -91,6 +95,37 @@ pub static FIGURES: [Figure; 6] = [
         title: "The cell's log",
         caption: "Voltage, current and load on one clock. Current above zero plates at the plating edge.",
         draw: electrical::draw,
+    },
+    Figure {
+        name: "steering",
+        title: "Direction of new growth under the load",
+        caption: "Each dot is a piece of new growth, as large as it is long, at its direction in the picture; the scale is half a \
+                  turn, so its top and bottom are one direction. The broad line is the load axis, dashed lines are steps of the \
+                  load, a shaded band is the 95 % interval of the time at which growth turned.",
+        draw: steering::draw,
+    },
+    Figure {
+        name: "kink",
+        title: "Turns, measured and by a model",
+        caption: "A model, not a measurement: the kink of a pressed crack by the maximum tangential stress (Erdogan & Sih 1963, \
+                  with the T-stress after Cotterell & Rice 1980). It takes the whole cell voltage for the overpotential, so the \
+                  pressure is the most the metal can exert; with less of it the model turns further. Bars: 95 % interval, \
+                  filaments as sampling units; pale dots rest on too few filaments for one.",
+        draw: kink::draw,
+    },
+    Figure {
+        name: "speed",
+        title: "Tip speed against stress and current",
+        caption: "Mean speed of a free end in each frame against the stress and the current then in force. What did not vary in \
+                  this run takes no panel. Frames of one run are not independent.",
+        draw: speed::draw,
+    },
+    Figure {
+        name: "charge",
+        title: "Growth against charge",
+        caption: "Depth of the deepest filament against the net charge passed (thin: what is still visible), and the volume of the \
+                  visible track beside the metal that the charge deposits by Faraday's law.",
+        draw: charge::draw,
     },
 ];
 

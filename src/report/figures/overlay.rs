@@ -33,8 +33,49 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
     for path in &results.trace.paths {
         centre_line(&mut drawing, &arrivals, path, place);
     }
+    load_axis(&mut drawing, results, height);
     foot(&mut drawing, results, &arrivals, scale, height);
     Some(drawing)
+}
+
+/// 1 where a stress presses, −1 where it pulls, 0 where there is none.
+pub(in crate::report) fn push(stress_mpa: f64) -> i8 {
+    match stress_mpa {
+        s if s > 0.0 => 1,
+        s if s < 0.0 => -1,
+        _ => 0,
+    }
+}
+
+/// The load axis on the picture, in its lower right corner: arrows inwards where it presses, outwards where it pulls.
+fn load_axis(drawing: &mut Drawing, results: &Results, height: f64) {
+    /// Half the length of the mark, as a share of the picture's width.
+    const HALF: f64 = 0.055;
+    let last = results.frames.iter().rev().find(|row| row.usable);
+    let Some(row) = last else { return };
+    let Some(angle) = row.load_direction_deg else { return };
+    let half = HALF * drawing.width;
+    let inset = half + 0.02 * drawing.width;
+    let centre = [drawing.width - inset, height - inset];
+    let (sin, cos) = (angle.to_radians().sin(), angle.to_radians().cos());
+    let place = |along: f64, off: f64| [centre[0] + along * cos + off * sin, centre[1] - along * sin + off * cos];
+    let mut lines = vec![vec![place(-half, 0.0), place(half, 0.0)]];
+    let (tip, back) = match row.stress_mpa.map_or(0, push) {
+        1 => (0.24, 0.60),
+        -1 => (1.0, 0.64),
+        _ => (0.0, 0.0),
+    };
+    if tip > 0.0 {
+        for side in [-half, half] {
+            let barb = 0.24 * half;
+            lines.push(vec![place(side * back, -barb), place(side * tip, 0.0), place(side * back, barb)]);
+        }
+    }
+    for (ink, width, opacity) in [(Ink::Black, 5.6, 0.75), (Ink::LoadMark, 2.6, 1.0)] {
+        for line in &lines {
+            drawing.stroke(line.clone(), ink, width, 0.0, opacity);
+        }
+    }
 }
 
 fn edges(drawing: &mut Drawing, results: &Results, place: impl Fn(&Point) -> Point) {

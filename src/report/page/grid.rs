@@ -24,7 +24,23 @@ struct Head {
     number: bool,
 }
 
+/// The whole table.
 pub(super) fn of<R>(title: &'static str, table: &Table<R>, rows: &[R]) -> Grid {
+    with(title, table, rows, |_| true)
+}
+
+/// The columns that are named; the CSV has them all.
+pub(super) fn some<R>(title: &'static str, table: &Table<R>, rows: &[R], names: &[&str]) -> Grid {
+    with(title, table, rows, |column| names.contains(&column.name))
+}
+
+fn with<R>(
+    title: &'static str,
+    table: &Table<R>,
+    rows: &[R],
+    keep: impl Fn(&Column<R>) -> bool,
+) -> Grid {
+    let columns: Vec<&Column<R>> = table.columns.iter().filter(|column| keep(column)).collect();
     let cut = if rows.len() > ROWS {
         format!(", the last {ROWS} of {}", rows.len())
     } else {
@@ -34,16 +50,30 @@ pub(super) fn of<R>(title: &'static str, table: &Table<R>, rows: &[R]) -> Grid {
         title,
         name: table.name,
         caption: format!("{title}: {}{cut}.", table.row),
-        heads: table.columns.iter().map(head).collect(),
+        heads: columns.iter().map(|column| head(column)).collect(),
         rows: rows[rows.len().saturating_sub(ROWS)..]
             .iter()
-            .map(|row| cells(table, row))
+            .map(|row| cells(&columns, row))
             .collect(),
     }
 }
 
 fn head<R>(column: &Column<R>) -> Head {
-    let bare = ["_um2", "_um", "_mpa", "_deg", "_px", "_s"]
+    /// Endings that say the unit, which the label gives in its own way; longer ones first.
+    const UNITS: [&str; 11] = [
+        "_mah_per_cm2",
+        "_um_per_s",
+        "_mah",
+        "_ma",
+        "_um3",
+        "_um2",
+        "_um",
+        "_mpa",
+        "_deg",
+        "_px",
+        "_s",
+    ];
+    let bare = UNITS
         .iter()
         .find_map(|unit| column.name.strip_suffix(unit));
     let words = bare.unwrap_or(column.name).replace('_', " ");
@@ -59,14 +89,18 @@ fn head<R>(column: &Column<R>) -> Head {
     }
 }
 
-/// As in the table, with fewer decimals: one for lengths, angles and times, three for ratios.
-fn cells<R>(table: &Table<R>, row: &R) -> Vec<String> {
+/// As in the table, with fewer decimals: one for lengths, angles and times, three for ratios; charge keeps its own.
+fn cells<R>(columns: &[&Column<R>], row: &R) -> Vec<String> {
     let show = |column: &Column<R>| match column.values {
         Values::Number(decimals, get) => {
-            let most = if column.unit == "1" { 3 } else { 1 };
+            let most = match column.unit {
+                "1" => 3,
+                "mAh" | "mAh/cm²" => decimals,
+                _ => 1,
+            };
             Values::Number(decimals.min(most), get).show(row)
         }
         _ => column.values.show(row),
     };
-    table.columns.iter().map(show).collect()
+    columns.iter().map(|column| show(column)).collect()
 }

@@ -89,6 +89,7 @@ pub(super) fn numbers(figure: &str, results: &Results) -> Vec<[String; 2]> {
                 ),
             ]
         }
+        "kink" => return crate::report::effect::kink_inputs(results).unwrap_or_default(),
         _ => Vec::new(),
     };
     list.into_iter()

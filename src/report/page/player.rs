@@ -36,6 +36,8 @@ pub(super) struct Player {
     unit: &'static str,
     film: Vec<Shot>,
     has_axis: bool,
+    /// Where the mark of the load axis stands on the picture, px, and its scale.
+    mark: [String; 3],
     alt: String,
     caption: &'static str,
 }
@@ -51,6 +53,8 @@ struct Shot {
     said: String,
     /// Load axis, degrees.
     axis: Option<f64>,
+    /// 1 where the load presses, −1 where it pulls, 0 where the stress is none or not known.
+    push: i8,
     /// The picture; empty for the last frame, which the page holds already.
     src: String,
 }
@@ -80,6 +84,7 @@ pub(super) fn of(results: &Results) -> Result<Option<Player>, Error> {
         ramp_from: trimmed(arrivals.time.low / unit.seconds, 3),
         ramp_to: trimmed(arrivals.time.high / unit.seconds, 3),
         unit: unit.name,
+        mark: mark(width, height),
         has_axis: film.iter().any(|shot| shot.axis.is_some()),
         film,
         caption: if results.trace.filaments.is_empty() {
@@ -133,8 +138,19 @@ fn shot(results: &Results, frame: usize, src: String) -> Shot {
         time: duration(row.map_or(0.0, |row| row.time_s)),
         said: said.join(" · "),
         axis: row.and_then(|row| row.load_direction_deg),
+        push: row.and_then(|row| row.stress_mpa).map_or(0, crate::report::figures::overlay::push),
         src,
     }
+}
+
+/// The mark of the load axis in the lower right corner; its arrows are drawn 62 long.
+fn mark(width: u32, height: u32) -> [String; 3] {
+    /// Length of the mark as a share of the picture's width.
+    const SHARE: f64 = 0.11;
+    let (width, height) = (f64::from(width), f64::from(height));
+    let half = 0.5 * SHARE * width;
+    let inset = half + 0.02 * width;
+    [width - inset, height - inset, half / 31.0].map(|number| fixed(number, 3))
 }
 
 /// Corners as SVG wants them, pixel centres at half.
