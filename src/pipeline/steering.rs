@@ -238,6 +238,35 @@ mod tests {
         (1..60).flat_map(|frame| (1..9).map(move |filament| piece(frame, filament))).collect()
     }
 
+    fn demo(name: &str) -> crate::results::Results {
+        let run = std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join("synthetic-frames").join(name);
+        crate::pipeline::analyse(&run, crate::pipeline::Choices::default(), &crate::pipeline::Quiet).unwrap()
+    }
+
+    /// Growth changes direction after the step of the load (common practice: a turned load turns it).
+    #[test]
+    fn the_turning_demo_run_turned() {
+        let results = demo("turning-1");
+        let row = &results.turns[0];
+        assert_eq!((results.turns.len(), row.verdict), (1, TurnVerdict::Turned), "{row:?}");
+        // The run's own scenario: the axis turns from 40° to 130° at 660 s, frames are 30 s apart.
+        assert!((row.time_s - 660.0).abs() <= 6.0, "{row:?}");
+        assert!((row.axis_before_deg.unwrap() - 40.0).abs() < 1.0 && (row.axis_after_deg.unwrap() - 130.0).abs() < 1.0);
+        assert!((0.0..=150.0).contains(&row.lag_s.unwrap()), "{row:?}");
+        assert_eq!(results.summary.turns.load, LoadKnown::Stress);
+        assert!(results.summary.kink_model.is_some() && !results.charge.is_empty() && results.half_cycles.len() == 1);
+    }
+
+    /// No load was logged: nothing steps, nothing is judged, no model is drawn; charge is accounted all the same.
+    #[test]
+    fn a_still_demo_run_has_no_step() {
+        let results = demo("still-1");
+        assert_eq!((results.turns.len(), results.summary.turns.load), (0, LoadKnown::NoStress));
+        assert_eq!(results.summary.kink_model, None);
+        assert!(results.summary.directions.iter().all(|row| matches!(row.stress.as_str(), "all" | "none")));
+        assert!(results.summary.charge.logged);
+    }
+
     fn at(time_s: f64, axis: f64, stress: f64) -> LoadSample {
         LoadSample { time_s, axis_deg: Some(axis), stress_mpa: Some(stress) }
     }
@@ -292,10 +321,12 @@ mod tests {
     }
 
     #[test]
-    fn one_filament_is_too_few() {
-        let alone: Vec<GrowthRow> = growth(320.0).into_iter().filter(|row| row.filament == 1).collect();
-        let steered = Steered::judged(&alone, &[at(0.0, 0.0, 150.0), at(300.0, 90.0, 150.0)]);
-        assert_eq!(steered.rows[0].verdict, TurnVerdict::TooFew);
+    fn growth_on_one_side_of_the_step_is_too_little() {
+        let mut rows = growth(320.0);
+        rows.retain(|row| (row.filament <= 4) == (row.time_s <= 300.0));
+        let steered = Steered::judged(&rows, &[at(0.0, 0.0, 150.0), at(300.0, 90.0, 150.0)]);
+        let row = &steered.rows[0];
+        assert_eq!((row.verdict, row.followed, row.lag_s), (TurnVerdict::TooFew, 0, None), "{row:?}");
     }
 
     #[test]

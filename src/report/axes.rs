@@ -172,24 +172,34 @@ impl Panel {
 
     /// The time along the bottom, in `unit`, with its heading at the right end.
     pub fn draw_time(&self, drawing: &mut Drawing, unit: TimeUnit) {
-        self.draw_bottom(drawing, &format!("time ({})", unit.name), unit.seconds);
+        let scaled = Range {
+            low: self.x.low / unit.seconds,
+            high: self.x.high / unit.seconds,
+        };
+        let heading = format!("time ({})", unit.name);
+        self.draw_bottom(drawing, &heading, unit.seconds, &scaled.ticks(self.room()));
     }
 
     /// A quantity along the bottom, with its heading at the right end.
     pub fn draw_x(&self, drawing: &mut Drawing, heading: &str) {
-        self.draw_bottom(drawing, heading, 1.0);
+        self.draw_bottom(drawing, heading, 1.0, &self.x.ticks(self.room()));
     }
 
-    /// The lower scale, read in units of `unit`.
-    fn draw_bottom(&self, drawing: &mut Drawing, heading: &str, unit: f64) {
-        let scaled = Range {
-            low: self.x.low / unit,
-            high: self.x.high / unit,
-        };
-        let ticks = scaled.ticks((self.width / 62.0).floor().clamp(2.0, 9.0) as usize);
+    /// A quantity along the bottom with ticks of one's own, as angles need them.
+    pub fn draw_x_at(&self, drawing: &mut Drawing, heading: &str, ticks: &[f64]) {
+        self.draw_bottom(drawing, heading, 1.0, ticks);
+    }
+
+    /// Ticks that the lower scale has room for.
+    fn room(&self) -> usize {
+        (self.width / 62.0).floor().clamp(2.0, 9.0) as usize
+    }
+
+    /// The lower scale: ticks in units of `unit`.
+    fn draw_bottom(&self, drawing: &mut Drawing, heading: &str, unit: f64, ticks: &[f64]) {
         let y = self.bottom();
         drawing.line(vec![[self.left, y], [self.right(), y]], Ink::Quiet, 1.0);
-        for (value, label) in ticks.iter().zip(labels(&ticks)) {
+        for (value, label) in ticks.iter().zip(labels(ticks)) {
             let x = self.across(value * unit);
             drawing.line(vec![[x, y], [x, y + 5.0]], Ink::Quiet, 1.0);
             drawing.text([x, y + 18.0], label, SMALL, Ink::Quiet, Anchor::Middle);

@@ -35,6 +35,23 @@ pub fn load(results: &Results) -> String {
     }
 }
 
+/// The same for the verdict, shorter: what changed stands in the part on the load.
+pub fn load_in_short(results: &Results) -> String {
+    let [row] = results.turns.as_slice() else { return load(results) };
+    let p = row.p.map_or_else(String::new, |p| format!(" ({})", p_words(p)));
+    let when = duration(row.time_s);
+    match row.verdict {
+        TurnVerdict::Turned => format!(
+            "The load stepped at {when} and growth turned toward its new axis, by {}° on average: {} of {} followed{p}.",
+            fixed(row.turned_deg.unwrap_or(0.0), 0),
+            row.followed,
+            counted(row.filaments, "filament", "filaments"),
+        ),
+        TurnVerdict::DidNothing => format!("The load stepped at {when} and did nothing that shows{p}."),
+        TurnVerdict::TooFew | TurnVerdict::TakenOff => load(results),
+    }
+}
+
 /// What one step did.
 fn one_step(row: &TurnRow) -> String {
     let what = step(row);
@@ -85,7 +102,7 @@ fn grown_on(row: &TurnRow) -> String {
 /// The step itself: what changed of axis and stress.
 fn step(row: &TurnRow) -> String {
     let when = duration(row.time_s);
-    let stress = format!("from {} to {}", mpa(row.stress_before_mpa), mpa(row.stress_after_mpa));
+    let stress = stress_change(row.stress_before_mpa, row.stress_after_mpa);
     match (row.axis_before_deg, row.axis_after_deg) {
         (Some(before), Some(after)) if apart(before, after) >= TOLD_DEG => {
             let same = (row.stress_before_mpa - row.stress_after_mpa).abs() < 0.1 * row.stress_before_mpa.abs();
@@ -98,6 +115,15 @@ fn step(row: &TurnRow) -> String {
             format!("A load of {} along {}° came on at {when}", mpa(row.stress_after_mpa), fixed(after, 0))
         }
         _ => format!("The stress went {stress} at {when}"),
+    }
+}
+
+/// "from 150 to 120 MPa of compression", the sign twice only where it changes.
+fn stress_change(before: f64, after: f64) -> String {
+    if before * after > 0.0 {
+        format!("from {} to {}", fixed(before.abs(), 0), mpa(after))
+    } else {
+        format!("from {} to {}", mpa(before), mpa(after))
     }
 }
 
@@ -116,7 +142,7 @@ fn mpa(stress: f64) -> String {
 }
 
 fn p_words(p: f64) -> String {
-    if p < 0.001 { "one-sided p < 0.001".into() } else { format!("one-sided p = {}", trimmed(p, 2)) }
+    if p < 0.001 { "one-sided p\u{a0}<\u{a0}0.001".into() } else { format!("one-sided p\u{a0}=\u{a0}{}", trimmed(p, 2)) }
 }
 
 fn many_steps(results: &Results, rows: &[TurnRow]) -> String {
@@ -250,7 +276,7 @@ mod tests {
             ..turned()
         };
         let said = with(nothing);
-        assert!(said.contains("did nothing that shows") && said.contains("−3°") && said.contains("p = 0.41"), "{said}");
+        assert!(said.contains("did nothing that shows") && said.contains("−3°") && said.contains("p\u{a0}=\u{a0}0.41"), "{said}");
         assert!(with(TurnRow { verdict: TurnVerdict::TooFew, ..turned() }).contains("too little grew"));
         let off = TurnRow { verdict: TurnVerdict::TakenOff, axis_after_deg: None, ..turned() };
         assert!(with(off).starts_with("The load of 150 MPa of compression was taken off at 12 min"));

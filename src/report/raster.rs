@@ -148,12 +148,16 @@ fn element<B: DrawingBackend>(
             let ink = colour(*ink, 1.0);
             let style = font.color(&ink).pos(Pos::new(h_pos, VPos::Bottom));
             let base = [at[0], at[1] + size * DESCENT];
-            backend.draw_text(words, &style, place(&base))
+            backend.draw_text(&words.replace(MINUS, DASH), &style, place(&base))
         }
         Shape::Picture { .. } => Ok(()),
     }
     .map_err(|why| why.to_string())
 }
+
+/// The typeface holds no minus sign; its en dash is as wide and as high.
+const MINUS: char = '\u{2212}';
+const DASH: &str = "\u{2013}";
 
 /// Part of the type's height that hangs below its base line (from the typeface's own metrics).
 const DESCENT: f64 = 0.24;

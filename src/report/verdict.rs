@@ -32,7 +32,7 @@ impl Verdict {
         Self {
             growth: growth(results),
             direction: direction(results),
-            load: super::effect::load(results),
+            load: super::effect::load_in_short(results),
             forecast: forecast(results),
         }
     }

@@ -25,7 +25,7 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
         Drawing::new(format.width(), ABOVE + height + BELOW, "Turns of growth, measured and by the model");
     let heading = if format.is_narrow() { "turn to load axis (°)" } else { "turn toward the load axis, a piece (°)" };
     panel.draw_y(&mut drawing, heading, Ink::Metal);
-    panel.draw_x(&mut drawing, "angle of growth to the load axis (°)");
+    panel.draw_x_at(&mut drawing, "angle of growth to the load axis (°)", &[0.0, 15.0, 30.0, 45.0, 60.0, 75.0, 90.0]);
     drawing.line(vec![panel.at(0.0, 0.0), panel.at(90.0, 0.0)], Ink::Quiet, 1.4);
     let middle = |bin: &KinkBin| 0.5 * (bin.from_deg + bin.to_deg);
     let predicted = model.bins.iter().map(|bin| panel.at(middle(bin), bin.predicted_deg)).collect();

@@ -117,7 +117,7 @@ pub static FIGURES: [Figure; 10] = [
         name: "speed",
         title: "Tip speed against stress and current",
         caption: "Mean speed of a free end in each frame against the stress and the current then in force. What did not vary in \
-                  this run takes no panel. Frames of one run are not independent.",
+                  this run takes no panel. Bars: median and quartiles. Frames of one run are not independent.",
         draw: speed::draw,
     },
     Figure {

@@ -1,8 +1,8 @@
 //! Speed of the tips against stress and against current density; what did not vary in the run takes no panel.
 
 use super::{ABOVE, BELOW, Format, LEFT, RIGHT};
-use crate::report::axes::{Panel, Range, SMALL};
-use crate::report::drawing::{Anchor, Drawing};
+use crate::report::axes::{Panel, Range};
+use crate::report::drawing::Drawing;
 use crate::report::palette::Ink;
 use crate::results::{ChargeRow, Results};
 use crate::stats::order::quantile;
@@ -36,7 +36,7 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
             top: ABOVE + pitch * i as f64,
             width: format.width() - LEFT - RIGHT,
             height,
-            x: Range::around(points.iter().map(|p| p[0]))?,
+            x: roomy(points),
             y: speeds,
         };
         panel.draw_y(&mut drawing, "tip speed (µm/s)", Ink::Metal);
@@ -45,14 +45,6 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
             drawing.disc(panel.at(*x, *y), 2.6, *ink, 0.4);
         }
         medians(&mut drawing, &panel, points);
-        let words = "one dot a frame; bars: median and quartiles";
-        drawing.text(
-            [panel.left, panel.bottom() + 36.0],
-            if format.is_narrow() { "bars: quartiles" } else { words },
-            SMALL,
-            Ink::Quiet,
-            Anchor::Start,
-        );
     }
     Some(drawing)
 }
@@ -81,6 +73,15 @@ fn against_current(results: &Results) -> Option<(&'static str, Ink, Points)> {
     };
     let (span, largest) = span(&points);
     (largest > 0.0 && span >= CURRENT_SPAN * largest).then_some((heading, Ink::Current, points))
+}
+
+/// The scale of the quantity, with room for dots at its ends.
+fn roomy(points: &Points) -> Range {
+    /// Room on each side, as a share of the span.
+    const ROOM: f64 = 0.06;
+    let (low, high) = points.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), p| (l.min(p[0]), h.max(p[0])));
+    let room = ROOM * (high - low);
+    Range::new(low - room, high + room)
 }
 
 /// Median and quartiles of the speed in each class of the quantity.

@@ -40,11 +40,17 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
     ];
     key::row(&mut drawing, &above, &entries[..if axis_known { 3 } else { 2 }]);
     load::draw(&mut drawing, &below, known.as_ref());
-    for turn in &results.turns {
+    for turn in shown(results, &below) {
         mark(&mut drawing, &below, turn.time_s);
     }
     below.draw_time(&mut drawing, unit);
     Some(drawing)
+}
+
+/// The steps that lie in the time shown.
+fn shown<'a>(results: &'a Results, panel: &Panel) -> impl Iterator<Item = &'a TurnRow> {
+    let time = panel.x;
+    results.turns.iter().filter(move |turn| (time.low..=time.high).contains(&turn.time_s))
 }
 
 /// A dashed line where the load stepped.
@@ -121,7 +127,7 @@ impl Dial {
 
     /// Where the load stepped, what growth did, and when it turned.
     fn steps(&self, drawing: &mut Drawing, results: &Results, named: usize) {
-        for (i, turn) in results.turns.iter().enumerate() {
+        for (i, turn) in shown(results, &self.panel).enumerate() {
             if let (Some(low), Some(high)) = (turn.lag_low_s, turn.lag_high_s) {
                 self.turned(drawing, turn.time_s + low, turn.time_s + high);
             }
