@@ -48,7 +48,10 @@ pub fn load_in_short(results: &Results) -> String {
             counted(row.filaments, "filament", "filaments"),
         ),
         TurnVerdict::DidNothing => format!("The load stepped at {when} and did nothing that shows{p}."),
-        TurnVerdict::TooFew | TurnVerdict::TakenOff => load(results),
+        TurnVerdict::TooFew => {
+            format!("The load stepped at {when}; what grew on both sides is too little to say what it did{p}.")
+        }
+        TurnVerdict::TakenOff => load(results),
     }
 }
 
@@ -72,6 +75,12 @@ fn one_step(row: &TurnRow) -> String {
             fixed(turned, 0),
             sentence(&out_of),
         ),
+        TurnVerdict::TooFew if row.filaments > 0 && row.turned_deg.is_some() && row.p.is_some() => format!(
+            "{what}. Growth then turned by {}° toward the new axis on average, but {out_of} are too few to say that this is \
+             more than they turn at other times{p}.",
+            fixed(turned, 0),
+        )
+        .replace("one filament are", "one filament is"),
         TurnVerdict::TooFew => {
             format!("{what}; too little grew before and after it to say whether growth turned.")
         }
@@ -142,7 +151,11 @@ fn mpa(stress: f64) -> String {
 }
 
 fn p_words(p: f64) -> String {
-    if p < 0.001 { "one-sided p\u{a0}<\u{a0}0.001".into() } else { format!("one-sided p\u{a0}=\u{a0}{}", trimmed(p, 2)) }
+    if p < 0.001 {
+        "one-sided p\u{a0}<\u{a0}0.001".into()
+    } else {
+        format!("one-sided p\u{a0}=\u{a0}{}", trimmed(p, 2))
+    }
 }
 
 fn many_steps(results: &Results, rows: &[TurnRow]) -> String {
@@ -150,7 +163,7 @@ fn many_steps(results: &Results, rows: &[TurnRow]) -> String {
     let told: Vec<String> = [
         (TurnVerdict::Turned, "growth turned toward the new axis"),
         (TurnVerdict::DidNothing, "the load did nothing that shows"),
-        (TurnVerdict::TooFew, "too little grew to say"),
+        (TurnVerdict::TooFew, "the filaments are too few to say"),
         (TurnVerdict::TakenOff, "the load was taken off and no turn is expected"),
     ]
     .into_iter()
@@ -213,20 +226,13 @@ fn millions(um3: f64) -> String {
 /// What the model of the kink rests on, and that it is one; `None` without one.
 pub fn kink_inputs(results: &Results) -> Option<Vec<[String; 2]>> {
     let inputs = &results.summary.kink_model.as_ref()?.inputs;
-    let stress = match inputs.u_stress_mpa {
-        Some(u) => format!("{} ± {} MPa", signed(inputs.stress_mpa, 0), figures(u, 2)),
-        None => format!("{} MPa, uncertainty not given", signed(inputs.stress_mpa, 0)),
-    };
-    let pressure = format!(
-        "≤ {} MPa ({}, {} cm³/mol)",
-        fixed(inputs.pressure_mpa, 0),
-        inputs.metal,
-        figures(inputs.molar_volume_cm3, 4)
-    );
+    let u_stress = inputs.u_stress_mpa.map_or_else(|| "not given".into(), |u| format!("{} MPa", figures(u, 2)));
     let mut list = vec![
-        ("stress, median", stress),
-        ("overpotential", format!("≤ {} mV, the cell's voltage", fixed(inputs.overpotential_mv, 1))),
-        ("pressure F·η/V_m", pressure),
+        ("median stress", format!("{} MPa", signed(inputs.stress_mpa, 0))),
+        ("its uncertainty (k = 1)", u_stress),
+        ("η at most: cell voltage", format!("{} mV", fixed(inputs.overpotential_mv, 1))),
+        ("F·η/V_m at most", format!("{} MPa", fixed(inputs.pressure_mpa, 0))),
+        ("V_m", format!("{}, {} cm³/mol", inputs.metal, figures(inputs.molar_volume_cm3, 4))),
         ("crack half-length", format!("{} µm", figures(inputs.half_length_um, 2))),
         ("T-stress felt ahead at", format!("{} µm", figures(inputs.distance_um, 2))),
         ("turns compared", inputs.pieces.to_string()),
@@ -276,8 +282,15 @@ mod tests {
             ..turned()
         };
         let said = with(nothing);
-        assert!(said.contains("did nothing that shows") && said.contains("−3°") && said.contains("p\u{a0}=\u{a0}0.41"), "{said}");
-        assert!(with(TurnRow { verdict: TurnVerdict::TooFew, ..turned() }).contains("too little grew"));
+        assert!(
+            said.contains("did nothing that shows") && said.contains("−3°") && said.contains("p\u{a0}=\u{a0}0.41"),
+            "{said}"
+        );
+        let few = TurnRow { verdict: TurnVerdict::TooFew, filaments: 3, p: Some(0.19), ..turned() };
+        let said = with(few.clone());
+        assert!(said.contains("3 filaments are too few to say") && said.contains("52°"), "{said}");
+        let none = TurnRow { filaments: 0, turned_deg: None, p: None, ..few };
+        assert!(with(none).contains("too little grew"));
         let off = TurnRow { verdict: TurnVerdict::TakenOff, axis_after_deg: None, ..turned() };
         assert!(with(off).starts_with("The load of 150 MPa of compression was taken off at 12 min"));
     }

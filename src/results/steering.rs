@@ -58,7 +58,7 @@ pub enum TurnVerdict {
     /// It did not turn: the load did nothing that shows.
     #[serde(rename = "did nothing")]
     DidNothing,
-    /// Too little grew on both sides of the step.
+    /// Too little grew on both sides of the step, or too few filaments turned to be sure that they turned with it.
     #[default]
     #[serde(rename = "too few to say")]
     TooFew,

@@ -7,11 +7,15 @@ use crate::report::drawing::{Anchor, Drawing};
 use crate::report::palette::Ink;
 use crate::results::{KinkBin, Results};
 
+/// Room below the lowest value for the numbers of turns, as a share of the scale.
+const FOOT: f64 = 0.1;
+
 pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
     let model = results.summary.kink_model.as_ref()?;
     let ends = |bin: &KinkBin| bin.measured_ci95.unwrap_or([bin.measured_deg; 2]);
     let values = model.bins.iter().flat_map(|bin| [bin.predicted_deg, ends(bin)[0], ends(bin)[1]]);
-    let y = Range::around(values.chain([0.0]))?;
+    let tight = Range::around(values.chain([0.0]))?;
+    let y = Range { low: tight.low - FOOT * (tight.high - tight.low), ..tight };
     let height = if format.is_narrow() { 220.0 } else { 260.0 };
     let panel = Panel {
         left: LEFT,

@@ -13,6 +13,7 @@ use crate::results::Results;
 const TURN_COLUMNS: [&str; 13] = [
     "step",
     "time_s",
+    "verdict",
     "axis_before_deg",
     "axis_after_deg",
     "stress_before_mpa",
@@ -23,7 +24,6 @@ const TURN_COLUMNS: [&str; 13] = [
     "filaments",
     "followed",
     "p",
-    "verdict",
 ];
 
 /// What the load did.

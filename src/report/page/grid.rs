@@ -26,21 +26,21 @@ struct Head {
 
 /// The whole table.
 pub(super) fn of<R>(title: &'static str, table: &Table<R>, rows: &[R]) -> Grid {
-    with(title, table, rows, |_| true)
+    with(title, table, rows, table.columns.iter().collect())
 }
 
-/// The columns that are named; the CSV has them all.
+/// The columns that are named, in that order; the CSV has them all.
 pub(super) fn some<R>(title: &'static str, table: &Table<R>, rows: &[R], names: &[&str]) -> Grid {
-    with(title, table, rows, |column| names.contains(&column.name))
+    let column = |name: &&str| table.columns.iter().find(|column| column.name == *name);
+    with(title, table, rows, names.iter().filter_map(column).collect())
 }
 
 fn with<R>(
     title: &'static str,
     table: &Table<R>,
     rows: &[R],
-    keep: impl Fn(&Column<R>) -> bool,
+    columns: Vec<&Column<R>>,
 ) -> Grid {
-    let columns: Vec<&Column<R>> = table.columns.iter().filter(|column| keep(column)).collect();
     let cut = if rows.len() > ROWS {
         format!(", the last {ROWS} of {}", rows.len())
     } else {

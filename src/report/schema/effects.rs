@@ -1,6 +1,6 @@
 //! Columns of what the load and the charge did: turns, directions, charge, half-cycles.
 
-use super::{Column, Table, count, number, text, word};
+use super::{Table, count, number, text, word};
 use crate::results::{ChargeRow, DirectionRow, HalfCycleRow, TurnRow};
 
 /// `turns`: a row a step of the load.
