@@ -37,13 +37,16 @@ impl Charged {
             view_depth_um: cell.view_depth_mm.map(|depth| depth * UM_PER_MM),
             metal: cell.metal.as_deref().and_then(Metal::of),
         };
-        Self::accounted(frames, &input.cell_samples(), geometry, |from, to| input.cell.charge_mah(from, to))
+        let hold_s = input.cell.current_ma.as_ref().map_or(f64::INFINITY, |current| current.hold_s);
+        Self::accounted(frames, &input.cell_samples(), hold_s, geometry, |from, to| input.cell.charge_mah(from, to))
     }
 
-    /// The same from plain records. `charge_mah`: charge between two times.
+    /// The same from plain records. `hold_s`: how long a sample of the current is in force; `charge_mah`: charge between
+    /// two times.
     fn accounted(
         frames: &[FrameRow],
         cell: &CellSamples,
+        hold_s: f64,
         geometry: Geometry,
         charge_mah: impl Fn(f64, f64) -> Option<f64>,
     ) -> Self {
@@ -51,7 +54,7 @@ impl Charged {
             return Self::default();
         }
         let used: Vec<&FrameRow> = frames.iter().filter(|row| row.usable).collect();
-        let flows = flows(cell);
+        let flows = flows(cell, hold_s);
         let cycles = half_cycles(&flows, spacing_s(&used));
         let half_cycles: Vec<HalfCycleRow> =
             (1..).zip(&cycles).map(|(n, cycle)| cycle_row(n, *cycle, &used, geometry, &charge_mah)).collect();
@@ -83,7 +86,7 @@ struct Stretch {
 }
 
 /// Stretches of one sign in order of time, without those at rest or without a value.
-fn flows(cell: &CellSamples) -> Vec<Stretch> {
+fn flows(cell: &CellSamples, hold_s: f64) -> Vec<Stretch> {
     let largest = cell.current_ma.iter().flatten().fold(0.0_f64, |most, current| most.max(current.abs()));
     let flow = |current: Option<f64>| match current {
         Some(i) if i > REST * largest => Some(Flow::Plating),
@@ -94,6 +97,7 @@ fn flows(cell: &CellSamples) -> Vec<Stretch> {
     let next = cell.time_s.iter().skip(1).chain(cell.time_s.last());
     for ((&from_s, &to_s), current) in cell.time_s.iter().zip(next).zip(&cell.current_ma) {
         let Some(flow) = flow(*current) else { continue };
+        let to_s = to_s.min(from_s + hold_s);
         match found.last_mut() {
             Some(last) if last.flow == flow && last.to_s >= from_s => last.to_s = to_s,
             _ => found.push(Stretch { flow, from_s, to_s }),
@@ -241,7 +245,7 @@ mod tests {
 
     fn account(geometry: Geometry) -> Charged {
         let (frames, cell) = cycled();
-        Charged::accounted(&frames, &cell, geometry, |from, to| Some(0.1 * (to - from) / 3_600.0))
+        Charged::accounted(&frames, &cell, 10.0, geometry, |from, to| Some(0.1 * (to - from) / 3_600.0))
     }
 
     #[test]
@@ -290,14 +294,22 @@ mod tests {
         let mut values = vec![0.1; 100];
         values[30..50].fill(0.0005);
         values[70] = -0.1;
-        let flows = flows(&at(0, &values));
+        let flows = flows(&at(0, &values), 10.0);
         assert_eq!(flows.len(), 4);
         let joined = half_cycles(&flows, 10.0);
         assert_eq!(joined, [Stretch { flow: Flow::Plating, from_s: 0.0, to_s: 99.0 }]);
         let (frames, _) = cycled();
-        let none = Charged::accounted(&frames, &CellSamples::default(), Geometry::default(), |_, _| None);
+        let none = Charged::accounted(&frames, &CellSamples::default(), 10.0, Geometry::default(), |_, _| None);
         assert_eq!(none, Charged::default());
-        let dead = Charged::accounted(&frames, &at(0, &[0.0; 20]), Geometry::default(), |_, _| Some(0.0));
+        let dead = Charged::accounted(&frames, &at(0, &[0.0; 20]), 10.0, Geometry::default(), |_, _| Some(0.0));
         assert!(dead.half_cycles.is_empty() && dead.rows.len() == 40);
+    }
+
+    #[test]
+    fn a_hole_of_the_log_is_no_plating() {
+        let holed =
+            CellSamples { time_s: vec![0.0, 5.0, 105.0, 110.0], current_ma: vec![Some(0.1); 4], voltage_v: Vec::new() };
+        let seen = |from_s, to_s| Stretch { flow: Flow::Plating, from_s, to_s };
+        assert_eq!(flows(&holed, 10.0), [seen(0.0, 15.0), seen(105.0, 110.0)]);
     }
 }

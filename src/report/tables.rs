@@ -74,7 +74,7 @@ mod tests {
 
     use super::*;
     use crate::report::example;
-    use crate::report::schema::{FILAMENTS, FORECASTS, FRAMES, GROWTH, PATHS};
+    use crate::report::schema::{FILAMENTS, FORECASTS, FRAMES, GROWTH, PATHS, TURNS};
 
     fn csv<R>(table: &Table<R>, rows: &[R]) -> String {
         let mut bytes = Vec::new();
@@ -99,6 +99,14 @@ mod tests {
         assert!(csv(&GROWTH, &[]).starts_with(growth));
         assert_eq!(csv(&FILAMENTS, &[]), filaments);
         assert_eq!(csv(&FORECASTS, &[]), forecasts);
+    }
+
+    #[test]
+    fn a_step_of_the_load_is_a_row() {
+        let text = csv(&TURNS, &example::growing().turns);
+        assert!(text.starts_with("step,time_s,axis_before_deg,axis_after_deg,stress_before_mpa,stress_after_mpa,"), "{text}");
+        assert!(text.lines().nth(1).unwrap().starts_with("1,720.0,90.0,30.0,150.0,120.0,30.0,"), "{text}");
+        assert!(text.trim_end().ends_with(",9,7,0.9,0.0004,turned"), "{text}");
     }
 
     #[test]

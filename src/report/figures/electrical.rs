@@ -60,7 +60,10 @@ fn cell(results: &Results) -> Vec<(&'static str, load::Samples, Ink, Range)> {
     ]
     .into_iter()
     .filter_map(|(heading, values, ink)| {
-        let range = Range::around(values.iter().flatten().copied())?;
+        values.iter().find(|value| value.is_some())?;
+        // A steady current has no span of its own: it is read from zero.
+        let zero = (ink == Ink::Current).then_some(0.0);
+        let range = Range::around(values.iter().flatten().copied().chain(zero))?;
         Some((
             heading,
             log.time_s

@@ -2,6 +2,7 @@
 
 use super::key::{self, Mark};
 use super::{Format, load, run_time, stack};
+use crate::measure::GrowthRow;
 use crate::report::axes::{NORMAL, Panel, Range, SMALL};
 use crate::report::drawing::{Anchor, Drawing};
 use crate::report::palette::Ink;
@@ -107,12 +108,15 @@ impl Dial {
 
     /// Pieces as discs, as large as they are long, and their mean over neighbouring frames.
     fn growth(&self, drawing: &mut Drawing, results: &Results) {
-        let longest = results.growth.iter().map(|row| row.length_um).fold(0.0, f64::max);
-        for row in &results.growth {
+        let time = self.panel.x;
+        let seen: Vec<&GrowthRow> =
+            results.growth.iter().filter(|row| (time.low..=time.high).contains(&row.time_s)).collect();
+        let longest = seen.iter().map(|row| row.length_um).fold(0.0, f64::max);
+        for row in &seen {
             let radius = 1.4 + 2.2 * (row.length_um / longest).sqrt();
             drawing.disc(self.panel.at(row.time_s, self.fold(row.angle_deg)), radius, Ink::Metal, 0.32);
         }
-        let frames: Vec<_> = results.growth.chunk_by(|a, b| a.frame == b.frame).collect();
+        let frames: Vec<_> = seen.chunk_by(|a, b| a.frame == b.frame).collect();
         let means: Vec<(f64, Option<f64>)> = (0..frames.len())
             .map(|i| {
                 let near = i.saturating_sub(SIDE_FRAMES)..=(i + SIDE_FRAMES).min(frames.len() - 1);
