@@ -213,7 +213,7 @@ mod tests {
     /// 40 frames, 10 s apart; 0.1 mA for 100 s, then −0.1 mA for 100 s, and so on. Depth grows by 1 µm/s while plating,
     /// the front draws back by 0.2 µm/s while stripping.
     fn cycled() -> (Vec<FrameRow>, CellSamples) {
-        let plates = |t: f64| (t / 100.0) as u32 % 2 == 0;
+        let plates = |t: f64| ((t / 100.0) as u32).is_multiple_of(2);
         let mut depth = 0.0;
         let mut front = 0.0;
         let frames = (0..40_u32)

@@ -100,8 +100,9 @@ pub static FIGURES: [Figure; 10] = [
         name: "steering",
         title: "Direction of new growth under the load",
         caption: "Each dot is a piece of new growth, as large as it is long, at its direction in the picture; the scale is half a \
-                  turn, so its top and bottom are one direction. The broad line is the load axis, dashed lines are steps of the \
-                  load, a shaded band is the 95 % interval of the time at which growth turned.",
+                  turn, so its top and bottom are one direction. The broad line is the load axis (where the load pulls, growth is \
+                  expected across it, along the dashed line); upright lines are steps of the load, a shaded band is the 95 % \
+                  interval of the time at which growth turned.",
         draw: steering::draw,
     },
     Figure {

@@ -2,7 +2,7 @@
 
 use super::key::{self, Mark};
 use super::{Format, load, run_time, stack};
-use crate::measure::GrowthRow;
+use crate::measure::{FrameRow, GrowthRow};
 use crate::report::axes::{NORMAL, Panel, Range, SMALL};
 use crate::report::drawing::{Anchor, Drawing};
 use crate::report::palette::Ink;
@@ -18,13 +18,13 @@ const BREAK_DEG: f64 = 30.0;
 const NAMED: [usize; 2] = [6, 3];
 
 pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
-    let middle = mean_axis(results.growth.iter().map(|row| (row.angle_deg, row.length_um)))?;
+    results.growth.first()?;
     let (time, unit) = run_time(results);
     let known = load::samples(results);
     let loads = known.as_ref().map_or(Range { low: 0.0, high: 1.0 }, |(_, samples)| load::range(samples));
-    let low = ((middle - 90.0) / 15.0).round() * 15.0;
+    let low = seam(results);
     let directions = Range { low, high: low + 180.0 };
-    let heights = if format.is_narrow() { [230.0, 90.0] } else { [300.0, 100.0] };
+    let heights = if format.is_narrow() { [230.0, 110.0] } else { [300.0, 125.0] };
     let ([above, below], total) = stack(format, time, [(heights[0], directions), (heights[1], loads)]);
     let mut drawing = Drawing::new(format.width(), total, "Direction of new growth and the load, against time");
     let dial = Dial { panel: above };
@@ -46,6 +46,27 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
     }
     below.draw_time(&mut drawing, unit);
     Some(drawing)
+}
+
+/// Where half a turn is cut open: the direction farthest from growth and from the load axis, each counting as much.
+fn seam(results: &Results) -> f64 {
+    /// Directions tried, degrees apart.
+    const STEP_DEG: f64 = 15.0;
+    let length: f64 = results.growth.iter().map(|row| row.length_um).sum();
+    let frames = results.frames.len().max(1) as f64;
+    let near = |angle: f64, low: f64| {
+        let off = (angle - low).rem_euclid(180.0);
+        let off = off.min(180.0 - off) / 90.0;
+        (1.0 - off) * (1.0 - off)
+    };
+    let crowd = |low: f64| {
+        let growth: f64 = results.growth.iter().map(|row| row.length_um * near(row.angle_deg, low)).sum();
+        let load: f64 =
+            results.frames.iter().filter_map(|row| row.load_direction_deg).map(|axis| near(axis, low)).sum();
+        growth / length + load / frames
+    };
+    let tried = (-6..6).map(|i| STEP_DEG * f64::from(i)).map(|low| (low, crowd(low)));
+    tried.fold((0.0, f64::INFINITY), |best, next| if next.1 < best.1 { next } else { best }).0
 }
 
 /// The steps that lie in the time shown.
@@ -91,18 +112,24 @@ impl Dial {
         }
     }
 
-    /// The load axis as a broad line, held from frame to frame.
+    /// The load axis as a broad line, held from frame to frame; where it pulls, the axis across it as a dashed one.
     fn load_axis(&self, drawing: &mut Drawing, results: &Results) {
-        let mut held = Vec::new();
-        for pair in results.frames.windows(2) {
-            let at = pair[0].load_direction_deg.map(|axis| self.fold(axis));
-            held.push((pair[0].time_s, at));
-            held.push((pair[1].time_s, at));
+        let held = |axis: fn(&FrameRow) -> Option<f64>| {
+            let ends = |pair: &[FrameRow]| {
+                let at = axis(&pair[0]).map(|axis| self.fold(axis));
+                [(pair[0].time_s, at), (pair[1].time_s, at)]
+            };
+            results.frames.windows(2).flat_map(ends).collect::<Vec<_>>()
+        };
+        let points = |run: Vec<(f64, f64)>| {
+            let points: Vec<_> = run.into_iter().map(|(t, v)| self.panel.at(t, v)).collect();
+            crate::report::drawing::thin(&points, self.panel.width as usize)
+        };
+        for run in unbroken(&held(|row| row.load_direction_deg)) {
+            drawing.stroke(points(run), Ink::Load, 7.0, 0.0, 0.55);
         }
-        for run in unbroken(&held) {
-            let points = run.iter().map(|(t, v)| self.panel.at(*t, *v)).collect::<Vec<_>>();
-            let points = crate::report::drawing::thin(&points, self.panel.width as usize);
-            drawing.stroke(points, Ink::Load, 7.0, 0.0, 0.55);
+        for run in unbroken(&held(across)) {
+            drawing.stroke(points(run), Ink::Load, 2.6, 4.0, 1.0);
         }
     }
 
@@ -163,6 +190,12 @@ impl Dial {
         let y = self.panel.top + 12.0 + 13.0 * (row % 2) as f64;
         drawing.bold([x + shift, y], words, SMALL, Ink::Text, anchor);
     }
+}
+
+/// The axis along which growth is expected under a pull: across the load axis.
+fn across(row: &FrameRow) -> Option<f64> {
+    row.stress_mpa.filter(|stress| *stress < 0.0)?;
+    row.load_direction_deg.map(|axis| axis + 90.0)
 }
 
 /// Stretches without a missing value or a jump.
