@@ -13,6 +13,12 @@ use serde::{Deserialize, Serialize};
 use crate::measure::{FilamentRow, ForecastRow, FrameRow, GrowthRow, PathRow};
 use crate::trace::Trace;
 
+mod charge;
+mod steering;
+
+pub use charge::{ChargeRow, ChargeSummary, Flow, HalfCycleRow};
+pub use steering::{DirectionRow, KinkBin, KinkInputs, KinkModel, LoadKnown, TurnRow, TurnVerdict, TurnsSummary};
+
 /// A finished run.
 #[derive(Debug, Clone, Default, PartialEq)]
 pub struct Results {
@@ -28,6 +34,12 @@ pub struct Results {
     pub filaments: Vec<FilamentRow>,
     /// A row an issued forecast, in order of `frame`.
     pub forecasts: Vec<ForecastRow>,
+    /// A row a step of the load, in order of time.
+    pub turns: Vec<TurnRow>,
+    /// A row a usable frame, in order of `frame`; empty without a cell log.
+    pub charge: Vec<ChargeRow>,
+    /// A row a half-cycle, in order of time.
+    pub half_cycles: Vec<HalfCycleRow>,
     /// The best final geometry.
     pub trace: Trace,
     /// Pictures for the eye, in the coordinates of the first usable frame.
@@ -147,6 +159,18 @@ pub struct Summary {
     pub alignment: AlignmentSummary,
     /// The load over the run.
     pub load: LoadSummary,
+    /// Whether growth turned when the load did.
+    #[serde(default)]
+    pub turns: TurnsSummary,
+    /// How uneven the directions of growth are, by sign of the stress.
+    #[serde(default)]
+    pub directions: Vec<DirectionRow>,
+    /// Turns of growth beside those a model predicts; absent where an input is not known.
+    #[serde(default)]
+    pub kink_model: Option<KinkModel>,
+    /// Growth against charge.
+    #[serde(default)]
+    pub charge: ChargeSummary,
     /// Whether and when the cell shorted.
     pub short: ShortSummary,
     /// The last forecast issued.

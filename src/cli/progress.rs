@@ -34,10 +34,9 @@ impl Progress for Bar {
         self.with(|bar| {
             bar.finish_and_clear();
             let (next, form) = match frames {
-                Some(n) => (
-                    ProgressBar::new(n as u64),
-                    "{msg:<12} {wide_bar} {pos}/{len} frames  {per_sec}  {eta} left",
-                ),
+                Some(n) => {
+                    (ProgressBar::new(n as u64), "{msg:<12} {wide_bar} {pos}/{len} frames  {per_sec}  {eta} left")
+                }
                 None => (ProgressBar::new_spinner(), "{msg:<12} {spinner}"),
             };
             if let Ok(style) = ProgressStyle::with_template(form) {

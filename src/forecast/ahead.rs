@@ -12,31 +12,21 @@ use super::{Record, pauses, readable};
 pub fn depth_ahead(record: &Record, time_s: f64, depth_um: f64, u_um: f64) -> Option<f64> {
     readable(record).ok()?;
     let fits = growth::fit(record);
-    let growing: Vec<f64> = fits
-        .tips
-        .iter()
-        .map(|&tip| pauses::growing(record, &record.tips[tip]))
-        .collect();
+    let growing: Vec<f64> = fits.tips.iter().map(|&tip| pauses::growing(record, &record.tips[tip])).collect();
     let deepest = |tip: usize| {
         record.tips[tip].depth_um[record.tips[tip].depth_um.len() - 1]
             + record.tips[tip].remaining_um[record.tips[tip].remaining_um.len() - 1]
     };
     let (mut below, mut weight) = (0.0, 0.0);
     for hypothesis in &fits.hypotheses {
-        let ahead = hypothesis
-            .clock
-            .progress(fits.drives[hypothesis.clock.drive].at(time_s))
-            - 1.0;
+        let ahead = hypothesis.clock.progress(fits.drives[hypothesis.clock.drive].at(time_s)) - 1.0;
         let chances = hypothesis.outlooks.iter().enumerate().map(|(k, outlook)| {
             let now = deepest(fits.tips[k]) - outlook.remaining;
             let stays = outlook.within(depth_um - now, 0.0, u_um);
-            growing[k] * outlook.within(depth_um - now, ahead.max(0.0), u_um)
-                + (1.0 - growing[k]) * stays
+            growing[k] * outlook.within(depth_um - now, ahead.max(0.0), u_um) + (1.0 - growing[k]) * stays
         });
         // half as independent, half as moved by one cause, like contact
-        let (all, least) = chances.fold((1.0, 1.0_f64), |(all, least), chance| {
-            (all * chance, least.min(chance))
-        });
+        let (all, least) = chances.fold((1.0, 1.0_f64), |(all, least), chance| (all * chance, least.min(chance)));
         below += hypothesis.weight * 0.5 * (all + least);
         weight += hypothesis.weight;
     }

@@ -73,19 +73,12 @@ pub fn score(law: Law, fleet: &Fleet, runs: u64) -> Vec<Scored> {
         let run = draw(law, fleet, index);
         ISSUED_AT.map(|fraction| score_at(&run, fraction, lag(index)))
     };
-    (0..runs)
-        .into_par_iter()
-        .flat_map_iter(points)
-        .flatten()
-        .collect()
+    (0..runs).into_par_iter().flat_map_iter(points).flatten().collect()
 }
 
 /// Draws the same histories and follows the chance by the horizon over every frame of them.
 pub fn call(law: Law, fleet: &Fleet, runs: u64) -> Vec<Call> {
-    (0..runs)
-        .into_par_iter()
-        .map(|index| call_of(&draw(law, fleet, index), lag(index)))
-        .collect()
+    (0..runs).into_par_iter().map(|index| call_of(&draw(law, fleet, index), lag(index))).collect()
 }
 
 /// Depths are decided at once in every second run, two frames late in the others.
@@ -97,22 +90,12 @@ fn score_at(run: &History, fraction: f64, lag: usize) -> Option<Scored> {
     let contact = run.contact_s?;
     let passed = (0..run.times_s.len()).find(|&k| run.fraction_at(k) >= fraction)?;
     let frame = passed + lag;
-    let record = run
-        .record_at(frame.min(run.times_s.len() - 1), lag)
-        .filter(|_| frame < run.times_s.len())?;
+    let record = run.record_at(frame.min(run.times_s.len() - 1), lag).filter(|_| frame < run.times_s.len())?;
     let left = contact - record.issued_at_s;
     let told = forecast(&record, &Settings::default());
-    let straight =
-        straight_line(run, passed).map(|time| (time - record.issued_at_s).max(0.0) / left);
-    let quantiles = told
-        .quantiles_s
-        .map(|q| q.map(|time| (time - record.issued_at_s) / left));
-    Some(Scored {
-        law: run.law,
-        fraction,
-        quantiles,
-        straight,
-    })
+    let straight = straight_line(run, passed).map(|time| (time - record.issued_at_s).max(0.0) / left);
+    let quantiles = told.quantiles_s.map(|q| q.map(|time| (time - record.issued_at_s) / left));
+    Some(Scored { law: run.law, fraction, quantiles, straight })
 }
 
 /// Contact by the median slope between all pairs of the deepest depth (Theil 1950, Sen 1968).
@@ -140,15 +123,9 @@ pub struct Call {
 }
 
 fn call_of(run: &History, lag: usize) -> Call {
-    let mut result = Call {
-        in_time: None,
-        frames: 0,
-        wrongly: 0,
-    };
+    let mut result = Call { in_time: None, frames: 0, wrongly: 0 };
     let off_at = |frame: usize| {
-        let told = run
-            .record_at(frame, lag)
-            .map(|record| forecast(&record, &Settings::default()))?;
+        let told = run.record_at(frame, lag).map(|record| forecast(&record, &Settings::default()))?;
         Some((told.chance_by_horizon? < CALLED_OFF, told.horizon_s))
     };
     if let Some(stalled) = run.stalled_s {
@@ -192,16 +169,10 @@ fn longest_pause(run: &History, end: usize) -> usize {
 pub fn figures(scored: &[Scored]) -> Figures {
     let told: Vec<[f64; 7]> = scored.iter().filter_map(|s| s.quantiles).collect();
     if told.is_empty() {
-        return Figures {
-            points: scored.len(),
-            ..Figures::default()
-        };
+        return Figures { points: scored.len(), ..Figures::default() };
     }
-    let share = |hit: &dyn Fn(&[f64; 7]) -> bool| {
-        told.iter().filter(|q| hit(q)).count() as f64 / told.len() as f64
-    };
-    let middle =
-        |value: &dyn Fn(&[f64; 7]) -> f64| median(told.iter().map(value).collect()).unwrap_or(0.0);
+    let share = |hit: &dyn Fn(&[f64; 7]) -> bool| told.iter().filter(|q| hit(q)).count() as f64 / told.len() as f64;
+    let middle = |value: &dyn Fn(&[f64; 7]) -> f64| median(told.iter().map(value).collect()).unwrap_or(0.0);
     let straight: Vec<f64> = scored.iter().filter_map(|s| s.straight).collect();
     Figures {
         points: scored.len(),
@@ -233,33 +204,21 @@ pub fn calls(all: &[Call]) -> Calls {
 /// Mean pinball loss over [`LEVELS`] of quantiles given in parts of the true time left.
 fn pinball(quantiles: &[f64; 7]) -> f64 {
     let loss = |(level, q): (f64, &f64)| {
-        if *q <= 1.0 {
-            level * (1.0 - q)
-        } else {
-            (1.0 - level) * (q - 1.0)
-        }
+        if *q <= 1.0 { level * (1.0 - q) } else { (1.0 - level) * (q - 1.0) }
     };
     LEVELS.into_iter().zip(quantiles).map(loss).sum::<f64>() / LEVELS.len() as f64
 }
 
 /// Mean pinball loss of straight lines whose log-normal interval is widened until p10–p90 covers 80 %.
 fn widened(straight: &[f64]) -> f64 {
-    const NORMAL: [f64; 7] = [
-        -1.959_964, -1.281_552, -0.674_490, 0.0, 0.674_490, 1.281_552, 1.959_964,
-    ];
-    let mut misses: Vec<f64> = straight
-        .iter()
-        .map(|t| libm::log(t.max(1e-3)).abs())
-        .collect();
+    const NORMAL: [f64; 7] = [-1.959_964, -1.281_552, -0.674_490, 0.0, 0.674_490, 1.281_552, 1.959_964];
+    let mut misses: Vec<f64> = straight.iter().map(|t| libm::log(t.max(1e-3)).abs()).collect();
     misses.sort_by(f64::total_cmp);
     let Some(&cut) = misses.get(misses.len() * 4 / 5) else {
         return 0.0;
     };
     let sd = cut / NORMAL[5];
-    straight
-        .iter()
-        .map(|t| pinball(&NORMAL.map(|z| t.max(1e-3) * libm::exp(sd * z))))
-        .sum::<f64>()
+    straight.iter().map(|t| pinball(&NORMAL.map(|z| t.max(1e-3) * libm::exp(sd * z)))).sum::<f64>()
         / straight.len() as f64
 }
 
@@ -282,16 +241,9 @@ pub struct Table {
 
 /// Runs the calibration: `runs` histories a law, law k under seed `fleet.seed` + k. The same on any number of threads.
 pub fn run(fleet: &Fleet, runs: u64) -> Table {
-    let mut table = Table {
-        fleet: *fleet,
-        scored: Vec::new(),
-        calls: Vec::new(),
-    };
+    let mut table = Table { fleet: *fleet, scored: Vec::new(), calls: Vec::new() };
     for (k, &law) in LAWS.iter().enumerate() {
-        let fleet = Fleet {
-            seed: fleet.seed.wrapping_add(k as u64),
-            ..*fleet
-        };
+        let fleet = Fleet { seed: fleet.seed.wrapping_add(k as u64), ..*fleet };
         table.scored.extend(score(law, &fleet, runs));
         table.calls.extend(call(law, &fleet, runs));
     }
@@ -308,17 +260,7 @@ impl fmt::Display for Table {
         writeln!(
             f,
             "{:<22} {:>5} {:>5} {:>6} {:>6} {:>6} {:>7} {:>6} {:>8} {:>10} {:>10}",
-            "group",
-            "n",
-            "given",
-            "80 %",
-            "50 %",
-            "error",
-            "signed",
-            "width",
-            "pinball",
-            "/ straight",
-            "error str."
+            "group", "n", "given", "80 %", "50 %", "error", "signed", "width", "pinball", "/ straight", "error str."
         )?;
         let row = |f: &mut fmt::Formatter<'_>, name: &str, keep: &dyn Fn(&Scored) -> bool| {
             let group: Vec<Scored> = self.scored.iter().copied().filter(|s| keep(s)).collect();
@@ -340,9 +282,7 @@ impl fmt::Display for Table {
         };
         row(f, "all", &|_| true)?;
         for fraction in ISSUED_AT {
-            row(f, &format!("all at {fraction}"), &|s| {
-                s.fraction.total_cmp(&fraction).is_eq()
-            })?;
+            row(f, &format!("all at {fraction}"), &|s| s.fraction.total_cmp(&fraction).is_eq())?;
         }
         for law in LAWS {
             row(f, &format!("{law:?}"), &|s| s.law == law)?;
@@ -361,52 +301,30 @@ mod tests {
     use super::*;
 
     fn table(frames: usize, roughness: f64, runs: u64) -> Table {
-        let table = run(
-            &Fleet {
-                frames,
-                roughness,
-                seed: 20,
-            },
-            runs,
-        );
+        let table = run(&Fleet { frames, roughness, seed: 20 }, runs);
         println!("{table}");
         table
     }
 
     /// 76–84 % and 45–55 % at the size of the full set; small fleets get room for chance (three standard errors).
     fn holds(tables: &[Table]) {
-        let scored: Vec<Scored> = tables
-            .iter()
-            .flat_map(|t| t.scored.iter().copied())
-            .collect();
-        let all: Vec<Call> = tables
-            .iter()
-            .flat_map(|t| t.calls.iter().copied())
-            .collect();
+        let scored: Vec<Scored> = tables.iter().flat_map(|t| t.scored.iter().copied()).collect();
+        let all: Vec<Call> = tables.iter().flat_map(|t| t.calls.iter().copied()).collect();
         let (pool, calls) = (figures(&scored), calls(&all));
         // points of one run are not independent: count runs
-        let room =
-            |p: f64| 3.0 * (p * (1.0 - p) / (pool.points as f64 / ISSUED_AT.len() as f64)).sqrt();
+        let room = |p: f64| 3.0 * (p * (1.0 - p) / (pool.points as f64 / ISSUED_AT.len() as f64)).sqrt();
         assert!((pool.coverage80 - 0.8).abs() < 0.02 + room(0.8), "{pool:?}");
         assert!((pool.coverage50 - 0.5).abs() < 0.02 + room(0.5), "{pool:?}");
         assert!(pool.given >= 0.95 && pool.signed.abs() < 0.10, "{pool:?}");
         assert!(pool.error < 0.8 * pool.error_straight, "{pool:?}");
-        assert!(
-            calls.called_off >= 0.85 && calls.wrongly <= 0.03,
-            "{calls:?}"
-        );
+        assert!(calls.called_off >= 0.85 && calls.wrongly <= 0.03, "{calls:?}");
     }
 
     /// `VEERLOG_FULL=1 cargo test --release --lib forecast::calibration -- --nocapture` prints the whole table.
     #[test]
     fn intervals_cover_and_stalls_are_called_off() {
         if std::env::var_os("VEERLOG_FULL").is_some() {
-            holds(&[
-                table(40, 0.4, 120),
-                table(40, 1.0, 120),
-                table(300, 0.4, 40),
-                table(300, 1.0, 40),
-            ]);
+            holds(&[table(40, 0.4, 120), table(40, 1.0, 120), table(300, 0.4, 40), table(300, 1.0, 40)]);
         } else {
             holds(&[table(40, 0.7, 14)]);
         }
@@ -421,16 +339,9 @@ mod tests {
 
     #[test]
     fn fleets_are_the_same_on_any_number_of_threads() {
-        let fleet = Fleet {
-            frames: 40,
-            roughness: 1.0,
-            seed: 2,
-        };
+        let fleet = Fleet { frames: 40, roughness: 1.0, seed: 2 };
         let text = |threads| {
-            let pool = rayon::ThreadPoolBuilder::new()
-                .num_threads(threads)
-                .build()
-                .unwrap();
+            let pool = rayon::ThreadPoolBuilder::new().num_threads(threads).build().unwrap();
             pool.install(|| run(&fleet, 2).to_string())
         };
         assert_eq!(text(1), text(2));

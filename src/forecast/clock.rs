@@ -38,10 +38,7 @@ pub(crate) struct Drive {
 impl Drive {
     /// Reading at a time at or after the end of the record.
     pub(crate) fn at(&self, time: f64) -> f64 {
-        let next = self
-            .ahead
-            .partition_point(|stretch| stretch.0 <= time)
-            .max(1);
+        let next = self.ahead.partition_point(|stretch| stretch.0 <= time).max(1);
         let (from, reading, pace) = self.ahead[next - 1];
         reading + pace * (time - from)
     }
@@ -60,64 +57,33 @@ impl Drive {
         }
         let last = times.len() - 1;
         let back = last.saturating_sub(RECENT);
-        let recent = if last > back {
-            (ticks[last] - ticks[back]) / (times[last] - times[back])
-        } else {
-            1.0
-        };
+        let recent = if last > back { (ticks[last] - ticks[back]) / (times[last] - times[back]) } else { 1.0 };
         let mut ahead = vec![(times[last], ticks[last], recent)];
         for step in &record.plan {
             let (from, reading, pace) = ahead[ahead.len() - 1];
             let time = step.time_s.max(from);
-            ahead.push((
-                time,
-                reading + pace * (time - from),
-                planned(step).unwrap_or(pace),
-            ));
+            ahead.push((time, reading + pace * (time - from), planned(step).unwrap_or(pace)));
         }
-        Self {
-            name,
-            ticks,
-            ahead,
-            prior,
-        }
+        Self { name, ticks, ahead, prior }
     }
 }
 
 /// Every drive the record has evidence about; time always comes first.
 pub(crate) fn drives(record: &Record) -> Vec<Drive> {
     let mut drives = vec![Drive::new("time", record, 1.0, &|_| 1.0, &|_| None)];
-    if let Some(charge) = record
-        .charge_mah
-        .as_ref()
-        .filter(|charge| bends(&record.times_s, charge))
-    {
+    if let Some(charge) = record.charge_mah.as_ref().filter(|charge| bends(&record.times_s, charge)) {
         let span = record.times_s[record.times_s.len() - 1] - record.times_s[0];
         // readings in seconds of mean current, so that drives are comparable; stripping does not turn the clock back
-        let mean = charge
-            .windows(2)
-            .map(|pair| (pair[1] - pair[0]).max(0.0))
-            .sum::<f64>()
-            / span;
-        let pace = |k: usize| {
-            ((charge[k] - charge[k - 1]).max(0.0) / (record.times_s[k] - record.times_s[k - 1]))
-                / mean
-        };
-        let planned = |step: &super::PlanStep| {
-            step.current_ma
-                .map(|current| current.max(0.0) / 3600.0 / mean)
-        };
+        let mean = charge.windows(2).map(|pair| (pair[1] - pair[0]).max(0.0)).sum::<f64>() / span;
+        let pace =
+            |k: usize| ((charge[k] - charge[k - 1]).max(0.0) / (record.times_s[k] - record.times_s[k - 1])) / mean;
+        let planned = |step: &super::PlanStep| step.current_ma.map(|current| current.max(0.0) / 3600.0 / mean);
         drives.push(Drive::new("charge passed", record, 1.0, &pace, &planned));
     }
-    if let Some(dose) = record
-        .dose_mpa
-        .as_ref()
-        .filter(|dose| range(dose) >= LEAST_DOSE_RANGE)
-    {
+    if let Some(dose) = record.dose_mpa.as_ref().filter(|dose| range(dose) >= LEAST_DOSE_RANGE) {
         for strength in DOSE_STRENGTHS {
             let pace = |k: usize| libm::exp(-strength * dose[k]);
-            let planned =
-                |step: &super::PlanStep| step.dose_mpa.map(|dose| libm::exp(-strength * dose));
+            let planned = |step: &super::PlanStep| step.dose_mpa.map(|dose| libm::exp(-strength * dose));
             drives.push(Drive::new(
                 "time under the logged load",
                 record,
@@ -132,26 +98,18 @@ pub(crate) fn drives(record: &Record) -> Vec<Drive> {
 
 /// Whether charge and time are far enough from proportional to be told apart.
 fn bends(times: &[f64], charge: &[f64]) -> bool {
-    let (Some(&t0), Some(&t1), Some(&q0), Some(&q1)) =
-        (times.first(), times.last(), charge.first(), charge.last())
+    let (Some(&t0), Some(&t1), Some(&q0), Some(&q1)) = (times.first(), times.last(), charge.first(), charge.last())
     else {
         return false;
     };
     let straight = |t: f64| q0 + (q1 - q0) * (t - t0) / (t1 - t0);
-    let off = times
-        .iter()
-        .zip(charge)
-        .map(|(&t, &q)| (q - straight(t)).abs())
-        .fold(0.0, f64::max);
+    let off = times.iter().zip(charge).map(|(&t, &q)| (q - straight(t)).abs()).fold(0.0, f64::max);
     q1 > q0 && off > LEAST_CHARGE_BEND * (q1 - q0)
 }
 
 fn range(values: &[f64]) -> f64 {
-    let (low, high) = values
-        .iter()
-        .fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), &v| {
-            (low.min(v), high.max(v))
-        });
+    let (low, high) =
+        values.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), &v| (low.min(v), high.max(v)));
     high - low
 }
 
@@ -162,20 +120,14 @@ pub(crate) fn extrapolates(record: &Record) -> bool {
         value < low - margin || value > high + margin
     };
     let currents = record.charge_mah.as_ref().map(|charge| {
-        let paces = charge
-            .windows(2)
-            .zip(record.times_s.windows(2))
-            .map(|(q, t)| 3600.0 * (q[1] - q[0]) / (t[1] - t[0]));
-        paces.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), i| {
-            (low.min(i), high.max(i))
-        })
+        let paces =
+            charge.windows(2).zip(record.times_s.windows(2)).map(|(q, t)| 3600.0 * (q[1] - q[0]) / (t[1] - t[0]));
+        paces.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), i| (low.min(i), high.max(i)))
     });
-    let doses = record.dose_mpa.as_ref().map(|dose| {
-        dose.iter()
-            .fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), &d| {
-                (low.min(d), high.max(d))
-            })
-    });
+    let doses = record
+        .dose_mpa
+        .as_ref()
+        .map(|dose| dose.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), &d| (low.min(d), high.max(d))));
     let unknown = (f64::INFINITY, f64::NEG_INFINITY);
     record.plan.iter().any(|step| {
         let off = |value: Option<f64>, seen: Option<(f64, f64)>| {
@@ -225,11 +177,7 @@ impl Clock {
     /// Progress at a reading of the drive: 0 at first sight (or earlier), 1 at the end of the record.
     pub(crate) fn progress(&self, tick: f64) -> f64 {
         let part = (tick - self.onset) / self.span;
-        if part <= 0.0 {
-            0.0
-        } else {
-            (1.0 + integral(part, self.power) / self.whole).max(0.0)
-        }
+        if part <= 0.0 { 0.0 } else { (1.0 + integral(part, self.power) / self.whole).max(0.0) }
     }
 
     /// The law in words, for a table.
@@ -245,11 +193,7 @@ impl Clock {
 
 /// ∫ u^(power − 1) du from 1 to `part`.
 fn integral(part: f64, power: f64) -> f64 {
-    if power.abs() < 1e-6 {
-        libm::log(part)
-    } else {
-        (libm::pow(part, power) - 1.0) / power
-    }
+    if power.abs() < 1e-6 { libm::log(part) } else { (libm::pow(part, power) - 1.0) / power }
 }
 
 /// All hypotheses over the given drives. `first`: index of the first depth of any filament.
@@ -262,17 +206,11 @@ pub(crate) fn clocks(drives: &[Drive], first: usize) -> Vec<Clock> {
         if elapsed <= 0.0 {
             continue;
         }
-        let frame = if first > 0 {
-            sight - drive.ticks[first - 1]
-        } else {
-            drive.ticks[first + 1] - sight
-        };
+        let frame = if first > 0 { sight - drive.ticks[first - 1] } else { drive.ticks[first + 1] - sight };
         let half = 0.5 * frame.max(1e-3 * elapsed);
         for part in ONSETS {
             let seen = sight - half;
-            let laws = BENDS.iter().map(|&bend| {
-                Clock::new(index, drive, seen, now, 0.2 * half + part * elapsed, bend)
-            });
+            let laws = BENDS.iter().map(|&bend| Clock::new(index, drive, seen, now, 0.2 * half + part * elapsed, bend));
             all.extend(laws.filter(|clock| clock.power >= LEAST_POWER));
         }
     }

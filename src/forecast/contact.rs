@@ -40,9 +40,7 @@ impl Contact {
         let end = record.times_s[record.times_s.len() - 1];
         let wait = plain_wait(record, fits).max(1e-9 * (1.0 + end.abs()));
         let step = libm::log(FARTHEST / NEAREST) / (TIMES - 1) as f64;
-        let times: Vec<f64> = (0..TIMES)
-            .map(|k| end + wait * NEAREST * libm::exp(step * k as f64))
-            .collect();
+        let times: Vec<f64> = (0..TIMES).map(|k| end + wait * NEAREST * libm::exp(step * k as f64)).collect();
         let mut order: Vec<usize> = (0..growing.len()).collect();
         order.sort_by(|&a, &b| growing[b].total_cmp(&growing[a]).then(a.cmp(&b)));
         let mut chance = vec![0.0; TIMES];
@@ -57,12 +55,7 @@ impl Contact {
             chance[k] = chance[k].max(chance[k - 1]);
         }
         let growing = order.first().map_or(0.0, |&tip| growing[tip]);
-        Self {
-            issued: record.issued_at_s,
-            times,
-            chance,
-            growing,
-        }
+        Self { issued: record.issued_at_s, times, chance, growing }
     }
 
     /// Chance that some filament still grows.
@@ -90,14 +83,8 @@ impl Contact {
 
     /// Chance a second, just after issue, read over a twentieth of the median wait.
     pub(crate) fn hazard_now(&self) -> f64 {
-        let window = self
-            .quantiles()
-            .map_or(0.0, |q| 0.05 * (q[3] - self.issued));
-        if window > 0.0 {
-            self.chance_by(self.issued + window) / window
-        } else {
-            0.0
-        }
+        let window = self.quantiles().map_or(0.0, |q| 0.05 * (q[3] - self.issued));
+        if window > 0.0 { self.chance_by(self.issued + window) / window } else { 0.0 }
     }
 
     /// Times at [`LEVELS`], given that contact comes, none by the time of issue.
@@ -108,16 +95,9 @@ impl Contact {
     }
 
     fn time_at(&self, chance: f64) -> f64 {
-        let next = self
-            .chance
-            .partition_point(|&c| c < chance)
-            .clamp(1, TIMES - 1);
+        let next = self.chance.partition_point(|&c| c < chance).clamp(1, TIMES - 1);
         let (low, high) = (self.chance[next - 1], self.chance[next]);
-        let part = if high > low {
-            ((chance - low) / (high - low)).clamp(0.0, 1.0)
-        } else {
-            1.0
-        };
+        let part = if high > low { ((chance - low) / (high - low)).clamp(0.0, 1.0) } else { 1.0 };
         self.times[next - 1] + part * (self.times[next] - self.times[next - 1])
     }
 }
@@ -152,11 +132,8 @@ impl Outlook {
     pub(crate) fn variance(&self, ahead: f64) -> f64 {
         let end = 1.0 + ahead;
         // ∫ (end − u)²/u du from 1 to end: how a wandering rate adds up to depth
-        let lever =
-            (end * end * libm::log(end) - 2.0 * end * ahead + 0.5 * (end * end - 1.0)).max(0.0);
-        let known = self.depth_variance
-            + 2.0 * ahead * self.covariance
-            + ahead * ahead * self.rate_variance;
+        let lever = (end * end * libm::log(end) - 2.0 * end * ahead + 0.5 * (end * end - 1.0)).max(0.0);
+        let known = self.depth_variance + 2.0 * ahead * self.covariance + ahead * ahead * self.rate_variance;
         (known + self.grain * ahead + self.wander * lever).max(0.0)
     }
 
@@ -165,18 +142,12 @@ impl Outlook {
         if ahead <= 0.0 {
             return 0.0;
         }
-        let rate = self
-            .rate
-            .max(LEAST_RATE * self.remaining / (ahead + 1.0))
-            .max(f64::MIN_POSITIVE);
+        let rate = self.rate.max(LEAST_RATE * self.remaining / (ahead + 1.0)).max(f64::MIN_POSITIVE);
         let travelled = rate * ahead;
-        let spread = libm::log(
-            1.0 + self.variance(ahead) / (travelled * travelled) + LEAST_SPREAD * LEAST_SPREAD,
-        );
+        let spread = libm::log(1.0 + self.variance(ahead) / (travelled * travelled) + LEAST_SPREAD * LEAST_SPREAD);
         let lead = libm::log(travelled / self.remaining) - 0.5 * spread;
         let wide = spread + CHANGE_SD * CHANGE_SD;
-        (1.0 - CHANGE_SHARE) * normal_cdf(lead / spread.sqrt())
-            + CHANGE_SHARE * normal_cdf(lead / wide.sqrt())
+        (1.0 - CHANGE_SHARE) * normal_cdf(lead / spread.sqrt()) + CHANGE_SHARE * normal_cdf(lead / wide.sqrt())
     }
 }
 
@@ -189,22 +160,11 @@ mod tests {
     fn with_a_known_rate_it_is_the_inverse_gaussian_law() {
         // Chhikara & Folks (1989); the share of lasting changes is left out on both sides by comparing medians
         let (remaining, rate, grain) = (100.0, 200.0, 50.0_f64);
-        let known = Outlook {
-            remaining,
-            rate,
-            depth_variance: 0.0,
-            covariance: 0.0,
-            rate_variance: 0.0,
-            grain,
-            wander: 0.0,
-        };
+        let known =
+            Outlook { remaining, rate, depth_variance: 0.0, covariance: 0.0, rate_variance: 0.0, grain, wander: 0.0 };
         let exact = FirstPassage::new(remaining, rate, grain.sqrt()).unwrap();
         let median = exact.quantile(0.5).unwrap();
-        assert!(
-            (known.arrived(median) - 0.5).abs() < 0.02,
-            "{}",
-            known.arrived(median)
-        );
+        assert!((known.arrived(median) - 0.5).abs() < 0.02, "{}", known.arrived(median));
         assert!(known.arrived(1.1 * median) > 0.7 && known.arrived(0.9 * median) < 0.3);
     }
 }

@@ -57,25 +57,13 @@ pub(crate) struct Course {
 }
 
 impl Course {
-    pub(crate) fn draw(
-        law: Law,
-        nominal: f64,
-        steps: usize,
-        roughness: f64,
-        rng: &mut ChaCha8Rng,
-    ) -> Self {
+    pub(crate) fn draw(law: Law, nominal: f64, steps: usize, roughness: f64, rng: &mut ChaCha8Rng) -> Self {
         if law == Law::Stalled {
             let base = LAWS[rng.random_range(0..LAWS.len() - 1)];
             let mut course = Self::draw(base, nominal, steps, roughness, rng);
             let stop_at = rng.random_range(0.35..0.85);
-            course.ends = sums(&course.pace)
-                .iter()
-                .position(|&depth| depth >= stop_at);
-            course.creep = if rng.random::<f64>() < 0.5 {
-                0.0
-            } else {
-                rng.random_range(0.0..0.05)
-            };
+            course.ends = sums(&course.pace).iter().position(|&depth| depth >= stop_at);
+            course.creep = if rng.random::<f64>() < 0.5 { 0.0 } else { rng.random_range(0.0..0.05) };
             course.turn = None;
             return course;
         }
@@ -89,30 +77,15 @@ impl Course {
             Law::Diffusion => (0..steps).map(|k| 0.5 / at(k).sqrt()).collect(),
             Law::Exponential => {
                 let strength: f64 = rng.random_range(0.3..1.0);
-                let k0 = if rng.random::<f64>() < 0.4 {
-                    -1.6 * strength
-                } else {
-                    2.0 * strength
-                };
-                (0..steps)
-                    .map(|k| k0 * libm::exp(k0 * at(k).min(4.0)) / (libm::exp(k0) - 1.0))
-                    .collect()
+                let k0 = if rng.random::<f64>() < 0.4 { -1.6 * strength } else { 2.0 * strength };
+                (0..steps).map(|k| k0 * libm::exp(k0 * at(k).min(4.0)) / (libm::exp(k0) - 1.0)).collect()
             }
             Law::Logistic => logistic(steps, &at, rng),
             Law::Jumps => jumps(steps, length, rng),
             _ => vec![1.0; steps],
         };
-        let wander = if law == Law::Steady {
-            rng.random_range(0.1..0.35)
-        } else {
-            rng.random_range(0.0..0.2)
-        };
-        wander_about(
-            &mut pace,
-            roughness * wander,
-            length * rng.random_range(0.03..0.2),
-            rng,
-        );
+        let wander = if law == Law::Steady { rng.random_range(0.1..0.35) } else { rng.random_range(0.0..0.2) };
+        wander_about(&mut pace, roughness * wander, length * rng.random_range(0.03..0.2), rng);
         let (go, stop) = match law {
             Law::StopAndGo => (rng.random_range(0.05..0.2), rng.random_range(0.03..0.12)),
             Law::Diffusion => (rng.random_range(0.1..0.4), rng.random_range(0.01..0.05)),
@@ -124,46 +97,20 @@ impl Course {
         }
         let turn = (law == Law::Deflected).then(|| {
             let share = rng.random_range(0.2..0.8);
-            let step = sums(&pace)
-                .iter()
-                .position(|&depth| depth >= share)
-                .unwrap_or(steps);
+            let step = sums(&pace).iter().position(|&depth| depth >= share).unwrap_or(steps);
             (step, libm::cos(40.0_f64.to_radians()))
         });
-        Self {
-            pace,
-            turn,
-            ends: None,
-            creep: 1.0,
-        }
+        Self { pace, turn, ends: None, creep: 1.0 }
     }
 
     /// True depth of one filament after every step, µm, from step 0 on.
-    pub(crate) fn grow(
-        &self,
-        start: usize,
-        scale: f64,
-        grain: f64,
-        leader: bool,
-        rng: &mut ChaCha8Rng,
-    ) -> Vec<f64> {
+    pub(crate) fn grow(&self, start: usize, scale: f64, grain: f64, leader: bool, rng: &mut ChaCha8Rng) -> Vec<f64> {
         let mut depth = 0.0;
         let mut all = Vec::with_capacity(self.pace.len());
         for (k, &pace) in self.pace.iter().enumerate() {
-            let ended = if self.ends.is_some_and(|end| k >= end) {
-                self.creep
-            } else {
-                1.0
-            };
-            let turned = self
-                .turn
-                .filter(|turn| leader && k >= turn.0)
-                .map_or(1.0, |turn| turn.1);
-            let mean = if k >= start {
-                scale * pace * ended * turned
-            } else {
-                0.0
-            };
+            let ended = if self.ends.is_some_and(|end| k >= end) { self.creep } else { 1.0 };
+            let turned = self.turn.filter(|turn| leader && k >= turn.0).map_or(1.0, |turn| turn.1);
+            let mean = if k >= start { scale * pace * ended * turned } else { 0.0 };
             if mean > 0.0 {
                 // gamma steps: mean as given, variance grain × mean
                 let shape = (mean / grain).max(1e-12);
@@ -176,15 +123,10 @@ impl Course {
 }
 
 fn logistic(steps: usize, at: &dyn Fn(usize) -> f64, rng: &mut ChaCha8Rng) -> Vec<f64> {
-    let (plateau, steep, middle) = (
-        rng.random_range(1.1..1.8),
-        rng.random_range(3.0..7.0),
-        rng.random_range(0.25..0.6),
-    );
+    let (plateau, steep, middle) =
+        (rng.random_range(1.1..1.8), rng.random_range(3.0..7.0), rng.random_range(0.25..0.6));
     let rise = |x: f64| plateau / (1.0 + libm::exp(-steep * (x - middle)));
-    (0..steps)
-        .map(|k| (rise(at(k) + 0.001) - rise(at(k))) / 0.001)
-        .collect()
+    (0..steps).map(|k| (rise(at(k) + 0.001) - rise(at(k))) / 0.001).collect()
 }
 
 fn jumps(steps: usize, length: f64, rng: &mut ChaCha8Rng) -> Vec<f64> {

@@ -28,11 +28,7 @@ impl FirstPassage {
     /// ```
     pub fn new(distance: f64, drift: f64, sigma: f64) -> Option<Self> {
         let usable = distance.is_finite() && drift.is_finite() && sigma.is_finite();
-        (usable && distance > 0.0 && sigma > 0.0).then_some(Self {
-            distance,
-            drift,
-            sigma,
-        })
+        (usable && distance > 0.0 && sigma > 0.0).then_some(Self { distance, drift, sigma })
     }
 
     /// Mean time a/v; `None` when v ≤ 0 (it is infinite, or the barrier may never be reached).
@@ -42,9 +38,7 @@ impl FirstPassage {
 
     /// Variance aσ²/v³; `None` when v ≤ 0.
     pub fn variance(&self) -> Option<f64> {
-        (self.drift > 0.0).then(|| {
-            self.distance * self.sigma * self.sigma / (self.drift * self.drift * self.drift)
-        })
+        (self.drift > 0.0).then(|| self.distance * self.sigma * self.sigma / (self.drift * self.drift * self.drift))
     }
 
     /// Most likely time; for v = 0 it is a²/(3σ²), and for v < 0 that of the passages that do happen.
@@ -105,11 +99,7 @@ impl FirstPassage {
             if middle <= low || middle >= high {
                 break;
             }
-            if self.cdf(middle) < p {
-                low = middle
-            } else {
-                high = middle
-            }
+            if self.cdf(middle) < p { low = middle } else { high = middle }
         }
         Some(0.5 * (low + high))
     }

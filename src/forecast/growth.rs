@@ -70,10 +70,7 @@ pub(crate) fn fit(record: &Record) -> Fits {
         .into_iter()
         .map(|clock| weigh(record, &tips, &knots, &drives[clock.drive], clock))
         .collect();
-    let heaviest = hypotheses
-        .iter()
-        .map(|h| h.weight)
-        .fold(f64::NEG_INFINITY, f64::max);
+    let heaviest = hypotheses.iter().map(|h| h.weight).fold(f64::NEG_INFINITY, f64::max);
     for hypothesis in &mut hypotheses {
         hypothesis.weight = libm::exp(hypothesis.weight - heaviest);
     }
@@ -83,28 +80,19 @@ pub(crate) fn fit(record: &Record) -> Fits {
         hypothesis.weight /= total;
     }
     hypotheses.sort_by(|a, b| b.weight.total_cmp(&a.weight));
-    Fits {
-        tips,
-        hypotheses,
-        drives,
-    }
+    Fits { tips, hypotheses, drives }
 }
 
 /// The filaments nearest to contact by remaining distance over mean pace.
 fn followed(record: &Record) -> Vec<usize> {
     let wait = |tip: &TipSeries| {
         let last = tip.depth_um.len() - 1;
-        tip.remaining_um[last]
-            / (tip.depth_um[last] / tip.depth_um.len() as f64).max(f64::MIN_POSITIVE)
+        tip.remaining_um[last] / (tip.depth_um[last] / tip.depth_um.len() as f64).max(f64::MIN_POSITIVE)
     };
     let mut order: Vec<usize> = (0..record.tips.len())
         .filter(|&k| record.tips[k].depth_um.len() >= LEAST_POINTS && grown(&record.tips[k]))
         .collect();
-    order.sort_by(|&a, &b| {
-        wait(&record.tips[a])
-            .total_cmp(&wait(&record.tips[b]))
-            .then(a.cmp(&b))
-    });
+    order.sort_by(|&a, &b| wait(&record.tips[a]).total_cmp(&wait(&record.tips[b])).then(a.cmp(&b)));
     order.truncate(TIPS);
     order
 }
@@ -116,31 +104,16 @@ fn grown(tip: &TipSeries) -> bool {
 /// At most [`KNOTS`] + 1 indices from `from` to `to`, about evenly spaced, both ends among them.
 fn knots(from: usize, to: usize) -> Vec<usize> {
     let steps = (to - from).clamp(1, KNOTS);
-    let mut all: Vec<usize> = (0..=steps)
-        .map(|k| from + (to - from) * k / steps)
-        .collect();
+    let mut all: Vec<usize> = (0..=steps).map(|k| from + (to - from) * k / steps).collect();
     all.dedup();
     all
 }
 
 /// Sums over the noise grid; the weight of the result is still a log.
-fn weigh(
-    record: &Record,
-    tips: &[usize],
-    knots: &[usize],
-    drive: &Drive,
-    clock: Clock,
-) -> Hypothesis {
-    let progress: Vec<f64> = knots
-        .iter()
-        .map(|&k| clock.progress(drive.ticks[k]))
-        .collect();
-    let logs: Vec<f64> = progress
-        .iter()
-        .map(|&s| libm::log(s + WANDER_FLOOR))
-        .collect();
-    let mut candidates =
-        [(f64::NEG_INFINITY, [State::default(); TIPS]); GRAINS.len() * WANDERS.len()];
+fn weigh(record: &Record, tips: &[usize], knots: &[usize], drive: &Drive, clock: Clock) -> Hypothesis {
+    let progress: Vec<f64> = knots.iter().map(|&k| clock.progress(drive.ticks[k])).collect();
+    let logs: Vec<f64> = progress.iter().map(|&s| libm::log(s + WANDER_FLOOR)).collect();
+    let mut candidates = [(f64::NEG_INFINITY, [State::default(); TIPS]); GRAINS.len() * WANDERS.len()];
     for (slot, candidate) in candidates.iter_mut().enumerate() {
         let (grain, wander) = (GRAINS[slot / WANDERS.len()], WANDERS[slot % WANDERS.len()]);
         candidate.0 = libm::log(WANDER_WEIGHTS[slot % WANDERS.len()]);
@@ -149,26 +122,13 @@ fn weigh(
             candidate.0 += state.log_likelihood;
         }
     }
-    let best = candidates
-        .iter()
-        .map(|c| c.0)
-        .fold(f64::NEG_INFINITY, f64::max);
+    let best = candidates.iter().map(|c| c.0).fold(f64::NEG_INFINITY, f64::max);
     let weights = candidates.map(|c| libm::exp(c.0 - best));
     let total: f64 = weights.iter().sum();
     let outlooks = (0..tips.len())
-        .map(|t| {
-            merge(
-                &record.tips[tips[t]],
-                &weights.map(|w| w / total),
-                &candidates.map(|c| c.1[t]),
-            )
-        })
+        .map(|t| merge(&record.tips[tips[t]], &weights.map(|w| w / total), &candidates.map(|c| c.1[t])))
         .collect();
-    Hypothesis {
-        clock,
-        weight: clock.log_prior + best + libm::log(total),
-        outlooks,
-    }
+    Hypothesis { clock, weight: clock.log_prior + best + libm::log(total), outlooks }
 }
 
 #[derive(Debug, Clone, Copy, Default)]
@@ -185,48 +145,24 @@ struct State {
 
 /// Kalman filter of one filament over the knots. It starts at depth 0 at the last knot before its first sight, or at its first
 /// sight where that came late.
-fn filter(
-    tip: &TipSeries,
-    knots: &[usize],
-    progress: &[f64],
-    logs: &[f64],
-    grain: f64,
-    wander: f64,
-) -> State {
+fn filter(tip: &TipSeries, knots: &[usize], progress: &[f64], logs: &[f64], grain: f64, wander: f64) -> State {
     let unseen = usize::from(!seen_late(tip));
-    let start = knots
-        .partition_point(|&k| k < tip.first)
-        .saturating_sub(unseen)
-        .min(knots.len() - 2);
+    let start = knots.partition_point(|&k| k < tip.first).saturating_sub(unseen).min(knots.len() - 2);
     let last = tip.depth_um.len() - 1;
     let seen_from_the_start = knots[start] >= tip.first;
-    let base = if seen_from_the_start {
-        tip.depth_um[knots[start] - tip.first]
-    } else {
-        0.0
-    };
+    let base = if seen_from_the_start { tip.depth_um[knots[start] - tip.first] } else { 0.0 };
     let top = tip.depth_um[last];
-    let pace =
-        ((top - base).max(0.1 * top) / (1.0 - progress[start]).max(1e-6)).max(f64::MIN_POSITIVE);
+    let pace = ((top - base).max(0.1 * top) / (1.0 - progress[start]).max(1e-6)).max(f64::MIN_POSITIVE);
     // undetected ink at the frame before: a few uncertainties, and a hundredth of the depth
     let blur = 3.0 * tip.u_depth_um[0] + 0.01 * top;
-    let mut state = State {
-        depth: base,
-        rate: pace,
-        dd: blur * blur,
-        rr: 4.0 * pace * pace,
-        ..State::default()
-    };
+    let mut state = State { depth: base, rate: pace, dd: blur * blur, rr: 4.0 * pace * pace, ..State::default() };
     state.grain = grain * grain * top * pace;
     state.wander = wander * wander * pace * pace;
     for k in start + 1..knots.len() {
         let step = progress[k] - progress[k - 1];
         let drift = state.wander * (logs[k] - logs[k - 1]);
         state.depth += step * state.rate;
-        state.dd += 2.0 * step * state.dr
-            + step * step * state.rr
-            + state.grain * step
-            + drift * step * step / 3.0;
+        state.dd += 2.0 * step * state.dr + step * step * state.rr + state.grain * step + drift * step * step / 3.0;
         state.dr += step * state.rr + 0.5 * drift * step;
         state.rr += drift;
         let at = knots[k] - tip.first;
@@ -256,13 +192,7 @@ fn seen_late(tip: &TipSeries) -> bool {
 fn merge(tip: &TipSeries, weights: &[f64], states: &[State]) -> Outlook {
     let last = tip.depth_um.len() - 1;
     let far = tip.depth_um[last] + tip.remaining_um[last];
-    let mean = |value: &dyn Fn(&State) -> f64| {
-        weights
-            .iter()
-            .zip(states)
-            .map(|(w, s)| w * value(s))
-            .sum::<f64>()
-    };
+    let mean = |value: &dyn Fn(&State) -> f64| weights.iter().zip(states).map(|(w, s)| w * value(s)).sum::<f64>();
     let (depth, rate) = (mean(&|s| s.depth), mean(&|s| s.rate));
     Outlook {
         remaining: (far - depth).max(0.02 * tip.remaining_um[last]),

@@ -36,9 +36,7 @@ impl History {
     /// The record at frame `frame` when depths are decided `lag` frames late. `None` before two frames are decided and
     /// after the last.
     pub fn record_at(&self, frame: usize, lag: usize) -> Option<Record> {
-        let known = (frame + 1)
-            .checked_sub(lag)
-            .filter(|&n| n >= 2 && frame < self.times_s.len())?;
+        let known = (frame + 1).checked_sub(lag).filter(|&n| n >= 2 && frame < self.times_s.len())?;
         let cut = |tip: &TipSeries| {
             let n = known.saturating_sub(tip.first);
             TipSeries {
@@ -51,12 +49,7 @@ impl History {
         };
         Some(Record {
             times_s: self.times_s[..known].to_vec(),
-            tips: self
-                .tips
-                .iter()
-                .filter(|tip| tip.first < known)
-                .map(cut)
-                .collect(),
+            tips: self.tips.iter().filter(|tip| tip.first < known).map(cut).collect(),
             gap_um: self.gap_um,
             issued_at_s: self.times_s[frame],
             ..Record::default()
@@ -65,11 +58,7 @@ impl History {
 
     /// Deepest measured depth at a frame, in parts of the gap.
     pub fn fraction_at(&self, frame: usize) -> f64 {
-        let depths = self
-            .tips
-            .iter()
-            .filter(|tip| tip.first <= frame)
-            .map(|tip| tip.depth_um[frame - tip.first]);
+        let depths = self.tips.iter().filter(|tip| tip.first <= frame).map(|tip| tip.depth_um[frame - tip.first]);
         depths.fold(0.0, f64::max) / self.gap_um
     }
 }
@@ -96,11 +85,7 @@ pub struct Fleet {
 /// assert_eq!(run.times_s, draw(Law::Deflected, &fleet, 3).times_s);
 /// ```
 pub fn draw(law: Law, fleet: &Fleet, index: u64) -> History {
-    let Fleet {
-        frames,
-        roughness,
-        seed,
-    } = *fleet;
+    let Fleet { frames, roughness, seed } = *fleet;
     let mut rng = ChaCha8Rng::seed_from_u64(seed);
     rng.set_stream(index);
     let interval = 10.0 * libm::exp(1.5 * normal(&mut rng));
@@ -111,41 +96,24 @@ pub fn draw(law: Law, fleet: &Fleet, index: u64) -> History {
     let course = Course::draw(law, nominal, steps, roughness, &mut rng);
     let count = 1 + (4.0 * rng.random::<f64>() * rng.random::<f64>()) as usize;
     let blur = gap_um * rng.random_range(0.001..0.008);
-    let grain =
-        gap_um * 0.0005 * (roughness * roughness).max(1e-6) * libm::exp(rng.random_range(0.0..3.4));
+    let grain = gap_um * 0.0005 * (roughness * roughness).max(1e-6) * libm::exp(rng.random_range(0.0..3.4));
     let spread = rng.random_range(0.1..0.4);
     let mut truths: Vec<Vec<f64>> = Vec::new();
     for number in 0..count {
-        let late = if number == 0 {
-            0.0
-        } else {
-            0.25 * nominal * exponential(&mut rng)
-        };
-        let pace = if number == 0 {
-            1.0
-        } else {
-            libm::exp(-0.2 + spread * normal(&mut rng))
-        };
+        let late = if number == 0 { 0.0 } else { 0.25 * nominal * exponential(&mut rng) };
+        let pace = if number == 0 { 1.0 } else { libm::exp(-0.2 + spread * normal(&mut rng)) };
         let start = (late * FINE as f64) as usize;
         truths.push(course.grow(start, pace * gap_um, grain, number == 0, &mut rng));
     }
     let bare = BARE as f64 + rng.random::<f64>();
     let offset = (bare * FINE as f64) as usize;
-    let contact = truths
-        .iter()
-        .filter_map(|depth| crossing(depth, gap_um))
-        .fold(f64::INFINITY, f64::min);
+    let contact = truths.iter().filter_map(|depth| crossing(depth, gap_um)).fold(f64::INFINITY, f64::min);
     let time = |step: f64| interval * (step + offset as f64) / FINE as f64;
     // a contact by creep after the end of growth is not one that anybody waits for
-    let contact_s = (contact.is_finite() && course.ends.is_none_or(|end| contact < end as f64))
-        .then(|| time(contact));
-    let watched = (0..frames)
-        .take_while(|&k| contact_s.is_none_or(|t| (k as f64) * interval < t))
-        .count();
-    let tips = truths
-        .iter()
-        .enumerate()
-        .filter_map(|(k, depth)| seen(k, depth, offset, watched, gap_um, blur, &mut rng));
+    let contact_s = (contact.is_finite() && course.ends.is_none_or(|end| contact < end as f64)).then(|| time(contact));
+    let watched = (0..frames).take_while(|&k| contact_s.is_none_or(|t| (k as f64) * interval < t)).count();
+    let tips =
+        truths.iter().enumerate().filter_map(|(k, depth)| seen(k, depth, offset, watched, gap_um, blur, &mut rng));
     History {
         law,
         times_s: (0..watched).map(|k| k as f64 * interval).collect(),
@@ -173,17 +141,10 @@ fn seen(
     blur: f64,
     rng: &mut ChaCha8Rng,
 ) -> Option<TipSeries> {
-    let mut tip = TipSeries {
-        filament: number as u32 + 1,
-        ..TipSeries::default()
-    };
+    let mut tip = TipSeries { filament: number as u32 + 1, ..TipSeries::default() };
     let mut deepest = 0.0_f64;
     for frame in 0..watched {
-        let depth = (frame * FINE)
-            .checked_sub(offset)
-            .and_then(|step| truth.get(step))
-            .copied()
-            .unwrap_or(0.0);
+        let depth = (frame * FINE).checked_sub(offset).and_then(|step| truth.get(step)).copied().unwrap_or(0.0);
         if depth <= 0.0 {
             continue;
         }

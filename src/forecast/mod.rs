@@ -148,11 +148,7 @@ pub fn forecast(record: &Record, settings: &Settings) -> Forecast {
     let Some(leader) = fits.hypotheses.first() else {
         return silent(Silence::TooShort);
     };
-    let growing: Vec<f64> = fits
-        .tips
-        .iter()
-        .map(|&tip| pauses::growing(record, &record.tips[tip]))
-        .collect();
+    let growing: Vec<f64> = fits.tips.iter().map(|&tip| pauses::growing(record, &record.tips[tip])).collect();
     let contact = contact::Contact::new(record, &fits, &growing);
     let horizon_s = horizon(record, settings);
     Forecast {
@@ -170,23 +166,16 @@ pub fn forecast(record: &Record, settings: &Settings) -> Forecast {
 /// As long again as the record at issue.
 fn horizon(record: &Record, settings: &Settings) -> f64 {
     let start = record.times_s.first().copied().unwrap_or(0.0).min(0.0);
-    settings
-        .horizon_s
-        .unwrap_or(record.issued_at_s + (record.issued_at_s - start))
+    settings.horizon_s.unwrap_or(record.issued_at_s + (record.issued_at_s - start))
 }
 
 /// Whether the record can be forecast from at all.
 fn readable(record: &Record) -> Result<(), Silence> {
     let n = record.times_s.len();
     let rising = record.times_s.windows(2).all(|pair| pair[1] > pair[0]);
-    let finite = record.times_s.iter().all(|t| t.is_finite())
-        && record.issued_at_s.is_finite()
-        && record.gap_um > 0.0;
-    let beside = |values: &Option<Vec<f64>>| {
-        values
-            .as_ref()
-            .is_none_or(|v| v.len() == n && v.iter().all(|x| x.is_finite()))
-    };
+    let finite = record.times_s.iter().all(|t| t.is_finite()) && record.issued_at_s.is_finite() && record.gap_um > 0.0;
+    let beside =
+        |values: &Option<Vec<f64>>| values.as_ref().is_none_or(|v| v.len() == n && v.iter().all(|x| x.is_finite()));
     let whole = record.tips.iter().all(|tip| tip.is_whole(n));
     if !(rising && finite && whole && beside(&record.charge_mah) && beside(&record.dose_mpa)) {
         return Err(Silence::Unusable);
@@ -194,15 +183,8 @@ fn readable(record: &Record) -> Result<(), Silence> {
     if record.tips.is_empty() {
         return Err(Silence::NoGrowth);
     }
-    let touching = record
-        .tips
-        .iter()
-        .any(|tip| tip.remaining_um.last().is_some_and(|&left| left <= 0.0));
-    if touching {
-        Err(Silence::Contact)
-    } else {
-        Ok(())
-    }
+    let touching = record.tips.iter().any(|tip| tip.remaining_um.last().is_some_and(|&left| left <= 0.0));
+    if touching { Err(Silence::Contact) } else { Ok(()) }
 }
 
 impl TipSeries {
@@ -212,9 +194,7 @@ impl TipSeries {
         let series = [&self.depth_um, &self.u_depth_um, &self.remaining_um];
         n > 0
             && self.first + n == frames
-            && series
-                .iter()
-                .all(|s| s.len() == n && s.iter().all(|x| x.is_finite() && *x >= 0.0))
+            && series.iter().all(|s| s.len() == n && s.iter().all(|x| x.is_finite() && *x >= 0.0))
     }
 }
 

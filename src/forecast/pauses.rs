@@ -27,10 +27,7 @@ pub(crate) fn growing(record: &Record, tip: &TipSeries) -> f64 {
     let onset = times[0] - frame;
     let stood = standing(times, tip, last, onset);
     let start = times[last] - stood;
-    let longest = (1..last)
-        .filter(|&k| times[k] < start)
-        .map(|k| standing(times, tip, k, onset))
-        .fold(0.0, f64::max);
+    let longest = (1..last).filter(|&k| times[k] < start).map(|k| standing(times, tip, k, onset)).fold(0.0, f64::max);
     let allowed = (ALLOWED_FRAMES * frame).max(ALLOWED_PARTS * longest);
     1.0 / (1.0 + libm::pow(stood / allowed, STEEPNESS))
 }
@@ -45,9 +42,7 @@ fn standing(times: &[f64], tip: &TipSeries, at: usize, onset: f64) -> f64 {
         let pace = depth[earlier] / (times[earlier] - onset);
         let invented = INVENTED * tip.u_depth_um[at].max(tip.u_depth_um[earlier]);
         let gained = depth[at] - depth[earlier];
-        if gained > invented.max(CREEP * pace * stood)
-            || pace * stood < 1.5 * invented && gained > 0.0
-        {
+        if gained > invented.max(CREEP * pace * stood) || pace * stood < 1.5 * invented && gained > 0.0 {
             break;
         }
         from = earlier;

@@ -30,32 +30,18 @@ pub struct Ahead {
 /// Issues a forecast from each record, in their order, whatever the number of threads.
 /// Each record must hold only what was decided when it is issued: nothing else is looked at.
 pub fn reissue(records: &[Record], settings: &Settings) -> Vec<Forecast> {
-    records
-        .par_iter()
-        .map(|record| forecast(record, settings))
-        .collect()
+    records.par_iter().map(|record| forecast(record, settings)).collect()
 }
 
 /// Scores depth predicted by each of `records` against `outcome`, the last record of the same run: its `times_s` begin with theirs.
 pub fn score(records: &[Record], outcome: &Record) -> [Ahead; 3] {
     STEPS.map(|steps| {
-        let pit: Vec<f64> = records
-            .par_iter()
-            .filter_map(|record| transform(record, outcome, steps))
-            .collect();
+        let pit: Vec<f64> = records.par_iter().filter_map(|record| transform(record, outcome, steps)).collect();
         let within = |share: f64| {
-            let hits = pit
-                .iter()
-                .filter(|&&u| (u - 0.5).abs() <= 0.5 * share)
-                .count();
+            let hits = pit.iter().filter(|&&u| (u - 0.5).abs() <= 0.5 * share).count();
             (!pit.is_empty()).then(|| hits as f64 / pit.len() as f64)
         };
-        Ahead {
-            steps,
-            coverage80: within(0.8),
-            coverage50: within(0.5),
-            pit,
-        }
+        Ahead { steps, coverage80: within(0.8), coverage50: within(0.5), pit }
     })
 }
 
@@ -65,19 +51,11 @@ fn transform(record: &Record, outcome: &Record, steps: usize) -> Option<f64> {
     let time = *outcome.times_s.get(at)?;
     let tips = outcome.tips.iter().filter_map(|tip| {
         let k = at.checked_sub(tip.first)?;
-        Some((
-            *tip.depth_um.get(k)?,
-            *tip.u_depth_um.get(k)?,
-            *tip.remaining_um.get(k)?,
-        ))
+        Some((*tip.depth_um.get(k)?, *tip.u_depth_um.get(k)?, *tip.remaining_um.get(k)?))
     });
     let (depth, u, left) = tips.max_by(|a, b| a.0.total_cmp(&b.0))?;
     // a depth stopped by the far edge says nothing about growth
-    if left > 0.0 {
-        depth_ahead(record, time, depth, u)
-    } else {
-        None
-    }
+    if left > 0.0 { depth_ahead(record, time, depth, u) } else { None }
 }
 
 /// What the record says about the forecast, worst first: one sentence where the coverage of the central 80 % falls out of the
@@ -91,11 +69,7 @@ pub fn verdict(scores: &[Ahead]) -> Option<String> {
         let hits = coverage * judged as f64;
         let surer = hits < low as f64 - 0.5;
         let wider = hits > high as f64 + 0.5;
-        let word = if surer {
-            "surer than it should have been"
-        } else {
-            "less sure than it could have been"
-        };
+        let word = if surer { "surer than it should have been" } else { "less sure than it could have been" };
         let text = format!(
             "{} frame{} ahead the forecast of depth was {word}: {:.0} % of depths fell into its 80 % interval",
             ahead.steps,
@@ -104,11 +78,7 @@ pub fn verdict(scores: &[Ahead]) -> Option<String> {
         );
         (surer || wider).then(|| ((coverage - 0.8).abs() + if surer { 1.0 } else { 0.0 }, text))
     };
-    scores
-        .iter()
-        .filter_map(off)
-        .max_by(|a, b| a.0.total_cmp(&b.0))
-        .map(|(_, text)| text)
+    scores.iter().filter_map(off).max_by(|a, b| a.0.total_cmp(&b.0)).map(|(_, text)| text)
 }
 
 #[cfg(test)]
@@ -117,18 +87,8 @@ mod tests {
     use super::*;
 
     fn records(law: Law, index: u64, upto: usize) -> Vec<Record> {
-        let run = draw(
-            law,
-            &Fleet {
-                frames: 60,
-                roughness: 1.0,
-                seed: 11,
-            },
-            index,
-        );
-        (0..run.times_s.len().min(upto))
-            .filter_map(|k| run.record_at(k, 2))
-            .collect()
+        let run = draw(law, &Fleet { frames: 60, roughness: 1.0, seed: 11 }, index);
+        (0..run.times_s.len().min(upto)).filter_map(|k| run.record_at(k, 2)).collect()
     }
 
     #[test]
@@ -149,11 +109,7 @@ mod tests {
                 let records = records(law, index, usize::MAX);
                 let Some(last) = records.last() else { continue };
                 for (k, ahead) in score(&records, last).iter().enumerate() {
-                    hits[k] += ahead
-                        .pit
-                        .iter()
-                        .filter(|&&u| (u - 0.5).abs() <= 0.4)
-                        .count() as f64;
+                    hits[k] += ahead.pit.iter().filter(|&&u| (u - 0.5).abs() <= 0.4).count() as f64;
                     all[k] += ahead.pit.len() as f64;
                 }
             }
@@ -161,32 +117,16 @@ mod tests {
         for k in 0..3 {
             let coverage = hits[k] / all[k];
             println!("{} frames ahead: {coverage:.3} of {}", STEPS[k], all[k]);
-            assert!(
-                (0.70..0.93).contains(&coverage),
-                "{} frames ahead: {coverage}",
-                STEPS[k]
-            );
+            assert!((0.70..0.93).contains(&coverage), "{} frames ahead: {coverage}", STEPS[k]);
         }
     }
 
     #[test]
     fn a_forecast_too_sure_is_named() {
-        let pit = (0..40)
-            .map(|k| if k % 2 == 0 { 0.01 } else { 0.5 })
-            .collect();
-        let ahead = Ahead {
-            steps: 1,
-            pit,
-            coverage80: Some(0.5),
-            coverage50: Some(0.5),
-        };
+        let pit = (0..40).map(|k| if k % 2 == 0 { 0.01 } else { 0.5 }).collect();
+        let ahead = Ahead { steps: 1, pit, coverage80: Some(0.5), coverage50: Some(0.5) };
         assert!(verdict(&[ahead]).unwrap().contains("surer"));
-        let fine = Ahead {
-            steps: 1,
-            pit: vec![0.5; 40],
-            coverage80: Some(0.8),
-            coverage50: Some(0.5),
-        };
+        let fine = Ahead { steps: 1, pit: vec![0.5; 40], coverage80: Some(0.8), coverage50: Some(0.5) };
         assert_eq!(verdict(&[fine]), None);
         assert_eq!(verdict(&[]), None);
     }

@@ -60,13 +60,7 @@ pub struct Settings {
 impl Default for Settings {
     /// All common practice.
     fn default() -> Self {
-        Self {
-            settle_s: None,
-            rest: 0.05,
-            soft: 0.7,
-            full: 0.1,
-            noises: 6.0,
-        }
+        Self { settle_s: None, rest: 0.05, soft: 0.7, full: 0.1, noises: 6.0 }
     }
 }
 
@@ -114,12 +108,7 @@ struct Sample {
 /// assert_eq!((shorts[0].time_s, shorts[0].sign, shorts[0].grade), (400.0, Sign::VoltageCollapse, Grade::Full));
 /// assert_eq!(shorts[0].recovered_s, None);
 /// ```
-pub fn find(
-    time_s: &[f64],
-    current: &[f64],
-    voltage: &[f64],
-    settings: &Settings,
-) -> Vec<ShortEvent> {
+pub fn find(time_s: &[f64], current: &[f64], voltage: &[f64], settings: &Settings) -> Vec<ShortEvent> {
     let samples = working(time_s, current, voltage, settings);
     if samples.len() < LEAST_BEFORE + LASTING {
         return Vec::new();
@@ -173,30 +162,10 @@ fn working(time_s: &[f64], current: &[f64], voltage: &[f64], settings: &Settings
         return Vec::new();
     }
     let finite = |x: &f64| x.is_finite();
-    let greatest = current
-        .iter()
-        .filter(|x| finite(x))
-        .fold(0.0_f64, |most, x| most.max(x.abs()));
-    let usual = quantile(
-        current
-            .iter()
-            .map(|x| x.abs())
-            .filter(|x| finite(x) && *x > 0.01 * greatest)
-            .collect(),
-        0.25,
-    );
-    let typical = quantile(
-        voltage
-            .iter()
-            .filter(|x| finite(x))
-            .map(|x| x.abs())
-            .collect(),
-        0.5,
-    );
-    let spacing = quantile(
-        time_s.windows(2).map(|pair| pair[1] - pair[0]).collect(),
-        0.5,
-    );
+    let greatest = current.iter().filter(|x| finite(x)).fold(0.0_f64, |most, x| most.max(x.abs()));
+    let usual = quantile(current.iter().map(|x| x.abs()).filter(|x| finite(x) && *x > 0.01 * greatest).collect(), 0.25);
+    let typical = quantile(voltage.iter().filter(|x| finite(x)).map(|x| x.abs()).collect(), 0.5);
+    let spacing = quantile(time_s.windows(2).map(|pair| pair[1] - pair[0]).collect(), 0.5);
     let settle = settings.settle_s.unwrap_or(SETTLE_SAMPLES * spacing);
     let mut all: Vec<Sample> = Vec::new();
     let (mut last, mut rested, mut from, mut set_point): (Option<(f64, f64)>, bool, f64, usize) =
@@ -215,15 +184,8 @@ fn working(time_s: &[f64], current: &[f64], voltage: &[f64], settings: &Settings
         (last, rested) = (Some((i, v)), false);
         if time >= from {
             // a thousandth of the typical voltage stands for a voltage of 0
-            let log_resistance =
-                libm::log(v.abs().max(1e-3 * typical).max(f64::MIN_POSITIVE) / i.abs());
-            all.push(Sample {
-                time,
-                current: i,
-                voltage: v,
-                log_resistance,
-                set_point,
-            });
+            let log_resistance = libm::log(v.abs().max(1e-3 * typical).max(f64::MIN_POSITIVE) / i.abs());
+            all.push(Sample { time, current: i, voltage: v, log_resistance, set_point });
         }
     }
     all
@@ -239,16 +201,11 @@ enum Between {
 
 /// A new set point: the current steps and the voltage with it, so that the resistance changes less than the current does.
 fn between(before: (f64, f64), now: (f64, f64)) -> Between {
-    let step = |old: f64, new: f64| {
-        libm::log(new.abs().max(f64::MIN_POSITIVE) / old.abs().max(f64::MIN_POSITIVE))
-    };
+    let step = |old: f64, new: f64| libm::log(new.abs().max(f64::MIN_POSITIVE) / old.abs().max(f64::MIN_POSITIVE));
     let (current, voltage) = (step(before.0, now.0), step(before.1, now.1));
     if before.0 * now.0 < 0.0 {
         Between::Reversal
-    } else if current.abs() > NEW_SET_POINT
-        && voltage.abs() > HELD
-        && (voltage - current).abs() < current.abs()
-    {
+    } else if current.abs() > NEW_SET_POINT && voltage.abs() > HELD && (voltage - current).abs() < current.abs() {
         Between::SetPoint
     } else {
         Between::Nothing
@@ -257,30 +214,18 @@ fn between(before: (f64, f64), now: (f64, f64)) -> Between {
 
 /// SD of the log resistance from sample to sample.
 fn noise(samples: &[Sample]) -> f64 {
-    let steps = samples
-        .windows(2)
-        .map(|pair| (pair[1].log_resistance - pair[0].log_resistance).abs());
+    let steps = samples.windows(2).map(|pair| (pair[1].log_resistance - pair[0].log_resistance).abs());
     (MAD_TO_SD * median(steps) / std::f64::consts::SQRT_2).max(LEAST_NOISE)
 }
 
 /// Whether a lasting fall begins at `k`, against the level just before and the course of the whole record.
-fn fall(
-    samples: &[Sample],
-    k: usize,
-    level: f64,
-    course: f64,
-    noise: f64,
-    settings: &Settings,
-) -> Option<Grade> {
+fn fall(samples: &[Sample], k: usize, level: f64, course: f64, noise: f64, settings: &Settings) -> Option<Grade> {
     let after = &samples[k..(k + LASTING).min(samples.len())];
     // a log that ends in the fall must be judged by what there is, but never by one sample
     if after.len() < 2 {
         return None;
     }
-    let highest = after
-        .iter()
-        .map(|s| s.log_resistance)
-        .fold(f64::NEG_INFINITY, f64::max);
+    let highest = after.iter().map(|s| s.log_resistance).fold(f64::NEG_INFINITY, f64::max);
     let (full, soft) = (libm::log(settings.full), libm::log(settings.soft));
     if highest <= course + full && highest <= level - settings.noises * noise.min(0.2) {
         Some(Grade::Full)
@@ -294,11 +239,8 @@ fn fall(
 /// First sample from which the resistance is back near its level and stays there.
 fn recovery(samples: &[Sample], from: usize, level: f64, settings: &Settings) -> Option<usize> {
     let back = level + 0.5 * libm::log(settings.soft);
-    (from..samples.len().saturating_sub(LASTING - 1)).find(|&k| {
-        samples[k..k + LASTING]
-            .iter()
-            .all(|s| s.log_resistance >= back)
-    })
+    (from..samples.len().saturating_sub(LASTING - 1))
+        .find(|&k| samples[k..k + LASTING].iter().all(|s| s.log_resistance >= back))
 }
 
 fn describe(
@@ -311,29 +253,13 @@ fn describe(
 ) -> ShortEvent {
     let first = &during[..during.len().min(LASTING)];
     let of = |samples: &[Sample], value: &dyn Fn(&Sample) -> f64| median(samples.iter().map(value));
-    let (i0, i1) = (
-        of(before, &|s| s.current.abs()),
-        of(first, &|s| s.current.abs()),
-    );
-    let (v0, v1) = (
-        of(before, &|s| s.voltage.abs()),
-        of(first, &|s| s.voltage.abs()),
-    );
+    let (i0, i1) = (of(before, &|s| s.current.abs()), of(first, &|s| s.current.abs()));
+    let (v0, v1) = (of(before, &|s| s.voltage.abs()), of(first, &|s| s.voltage.abs()));
     let held = |old: f64, new: f64| (new - old).abs() <= HELD * old;
     let ratio = libm::exp(of(first, &|s| s.log_resistance) - level);
     // a soft short that runs on into a full one is told as full
-    let worst = libm::exp(
-        during
-            .iter()
-            .map(|s| s.log_resistance)
-            .fold(f64::INFINITY, f64::min)
-            - level,
-    );
-    let grade = if worst <= settings.full && during.len() >= LASTING {
-        Grade::Full
-    } else {
-        grade
-    };
+    let worst = libm::exp(during.iter().map(|s| s.log_resistance).fold(f64::INFINITY, f64::min) - level);
+    let grade = if worst <= settings.full && during.len() >= LASTING { Grade::Full } else { grade };
     let (sign, what) = if held(i0, i1) {
         (
             Sign::VoltageCollapse,
@@ -345,16 +271,10 @@ fn describe(
     } else if held(v0, v1) {
         (
             Sign::CurrentRise,
-            format!(
-                "current rose to {:.3} times its level under constant voltage",
-                i1 / i0.max(f64::MIN_POSITIVE)
-            ),
+            format!("current rose to {:.3} times its level under constant voltage", i1 / i0.max(f64::MIN_POSITIVE)),
         )
     } else {
-        (
-            Sign::ResistanceCollapse,
-            format!("|V/I| fell to {:.1} % of its level", 100.0 * ratio),
-        )
+        (Sign::ResistanceCollapse, format!("|V/I| fell to {:.1} % of its level", 100.0 * ratio))
     };
     let end = match (recovered_s, grade) {
         (Some(time), _) => format!(", back at {time:.6} s"),
@@ -362,14 +282,7 @@ fn describe(
         (None, Grade::Soft) => ", soft short".to_owned(),
     };
     let time_s = during[0].time;
-    ShortEvent {
-        time_s,
-        sign,
-        grade,
-        ratio,
-        recovered_s,
-        evidence: format!("at {time_s:.6} s {what}{end}"),
-    }
+    ShortEvent { time_s, sign, grade, ratio, recovered_s, evidence: format!("at {time_s:.6} s {what}{end}") }
 }
 
 /// What the run's short is told by.
@@ -402,30 +315,12 @@ pub struct Verdict {
 /// assert_eq!(verdict(&[], None, false).time_s, None);
 /// ```
 pub fn verdict(events: &[ShortEvent], bridged_s: Option<f64>, broke: bool) -> Verdict {
-    let full = events
-        .iter()
-        .find(|event| event.grade == Grade::Full)
-        .filter(|_| !broke)
-        .map(|event| event.time_s);
-    let lag_s = full
-        .zip(bridged_s)
-        .map(|(electrical, picture)| electrical - picture);
+    let full = events.iter().find(|event| event.grade == Grade::Full).filter(|_| !broke).map(|event| event.time_s);
+    let lag_s = full.zip(bridged_s).map(|(electrical, picture)| electrical - picture);
     match (full, bridged_s) {
-        (Some(time), _) => Verdict {
-            time_s: Some(time),
-            evidence: Some(Evidence::Electrical),
-            lag_s,
-        },
-        (None, Some(time)) => Verdict {
-            time_s: Some(time),
-            evidence: Some(Evidence::Bridging),
-            lag_s,
-        },
-        (None, None) => Verdict {
-            time_s: None,
-            evidence: None,
-            lag_s,
-        },
+        (Some(time), _) => Verdict { time_s: Some(time), evidence: Some(Evidence::Electrical), lag_s },
+        (None, Some(time)) => Verdict { time_s: Some(time), evidence: Some(Evidence::Bridging), lag_s },
+        (None, None) => Verdict { time_s: None, evidence: None, lag_s },
     }
 }
 
@@ -436,11 +331,7 @@ fn median(values: impl Iterator<Item = f64>) -> f64 {
 /// Quantile by the nearest lower rank; 0 for nothing.
 fn quantile(mut values: Vec<f64>, level: f64) -> f64 {
     values.sort_by(f64::total_cmp);
-    if values.is_empty() {
-        0.0
-    } else {
-        values[((values.len() - 1) as f64 * level) as usize]
-    }
+    if values.is_empty() { 0.0 } else { values[((values.len() - 1) as f64 * level) as usize] }
 }
 
 #[cfg(test)]

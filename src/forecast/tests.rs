@@ -15,13 +15,7 @@ fn record(frames: usize, depth: impl Fn(f64) -> f64) -> Record {
     };
     let times_s: Vec<f64> = (0..=frames).map(|k| 60.0 * k as f64).collect();
     let issued_at_s = 60.0 * frames as f64;
-    Record {
-        times_s,
-        tips: vec![tip],
-        gap_um: 400.0,
-        issued_at_s,
-        ..Record::default()
-    }
+    Record { times_s, tips: vec![tip], gap_um: 400.0, issued_at_s, ..Record::default() }
 }
 
 fn told(record: &Record) -> [f64; 7] {
@@ -45,26 +39,14 @@ fn slowing_and_speeding_growth_are_told_apart() {
 
 #[test]
 fn units_of_time_and_length_do_not_matter() {
-    let run = draw(
-        Law::Jumps,
-        &Fleet {
-            frames: 40,
-            roughness: 1.0,
-            seed: 5,
-        },
-        2,
-    );
+    let run = draw(Law::Jumps, &Fleet { frames: 40, roughness: 1.0, seed: 5 }, 2);
     let plain = run.record_at(20, 0).unwrap();
     let mut other = plain.clone();
     other.times_s.iter_mut().for_each(|t| *t *= 1024.0);
     other.issued_at_s *= 1024.0;
     other.gap_um *= 0.25;
     for tip in &mut other.tips {
-        for series in [
-            &mut tip.depth_um,
-            &mut tip.u_depth_um,
-            &mut tip.remaining_um,
-        ] {
+        for series in [&mut tip.depth_um, &mut tip.u_depth_um, &mut tip.remaining_um] {
             series.iter_mut().for_each(|x| *x *= 0.25);
         }
     }
@@ -76,15 +58,7 @@ fn units_of_time_and_length_do_not_matter() {
 #[test]
 fn order_of_filaments_does_not_matter() {
     for index in 0..20 {
-        let run = draw(
-            Law::Steady,
-            &Fleet {
-                frames: 40,
-                roughness: 1.0,
-                seed: 8,
-            },
-            index,
-        );
+        let run = draw(Law::Steady, &Fleet { frames: 40, roughness: 1.0, seed: 8 }, index);
         let Some(mut record) = run.record_at(20, 0).filter(|r| r.tips.len() > 1) else {
             continue;
         };
@@ -99,15 +73,7 @@ fn order_of_filaments_does_not_matter() {
 #[test]
 fn quantiles_rise_and_lie_after_issue() {
     for (number, law) in super::histories::LAWS.into_iter().enumerate() {
-        let run = draw(
-            law,
-            &Fleet {
-                frames: 40,
-                roughness: 1.0,
-                seed: 21,
-            },
-            number as u64,
-        );
+        let run = draw(law, &Fleet { frames: 40, roughness: 1.0, seed: 21 }, number as u64);
         for frame in 0..run.times_s.len() {
             let Some(record) = run.record_at(frame, 2) else {
                 continue;
@@ -116,10 +82,7 @@ fn quantiles_rise_and_lie_after_issue() {
             let Some(quantiles) = forecast.quantiles_s else {
                 continue;
             };
-            assert!(
-                quantiles.windows(2).all(|pair| pair[0] <= pair[1]),
-                "{law:?} {frame} {quantiles:?}"
-            );
+            assert!(quantiles.windows(2).all(|pair| pair[0] <= pair[1]), "{law:?} {frame} {quantiles:?}");
             assert!(quantiles[0] >= record.issued_at_s && quantiles[6].is_finite());
             assert!((0.0..=1.0).contains(&forecast.chance_by_horizon.unwrap()));
             assert!(forecast.hazard_now_per_s.unwrap() >= 0.0);
@@ -141,10 +104,7 @@ fn a_second_filament_in_the_lead_brings_contact_forward() {
 fn a_filament_first_seen_when_already_deep_is_not_taken_for_a_sprinter() {
     let left = told(&record(20, |k| 50.0 + 10.0 * k)).map(|time| (time - 1200.0) / 60.0);
     // true: 15 frames
-    assert!(
-        left[1] < 15.0 && 15.0 < left[5] && (left[3] - 15.0).abs() < 3.0,
-        "{left:?}"
-    );
+    assert!(left[1] < 15.0 && 15.0 < left[5] && (left[3] - 15.0).abs() < 3.0, "{left:?}");
 }
 
 #[test]
@@ -160,9 +120,7 @@ fn waiting_without_contact_moves_the_forecast_on() {
 fn a_standing_filament_is_called_off_and_a_growing_one_is_not() {
     let chance = |stood: usize| {
         let record = record(20 + stood, |k| 13.0 * k.min(20.0));
-        forecast(&record, &Settings::default())
-            .chance_by_horizon
-            .unwrap()
+        forecast(&record, &Settings::default()).chance_by_horizon.unwrap()
     };
     println!("{:?}", (0..12).map(chance).collect::<Vec<_>>());
     assert!(chance(0) > 0.8, "{}", chance(0));
@@ -173,9 +131,7 @@ fn a_standing_filament_is_called_off_and_a_growing_one_is_not() {
 #[test]
 fn growth_that_follows_charge_is_forecast_by_charge() {
     // current on and off by fives; depth follows the charge exactly
-    let charge: Vec<f64> = (0..=30)
-        .map(|k| (0..k).filter(|j| (j / 5) % 2 == 0).count() as f64)
-        .collect();
+    let charge: Vec<f64> = (0..=30).map(|k| (0..k).filter(|j| (j / 5) % 2 == 0).count() as f64).collect();
     let mut record = record(30, |k| 15.0 * charge[k as usize].max(1.0));
     record.charge_mah = Some(charge.iter().map(|q| q / 60.0).collect());
     let half = forecast(&record, &Settings::default());
@@ -183,34 +139,18 @@ fn growth_that_follows_charge_is_forecast_by_charge() {
     assert!(!half.extrapolates);
     // from here on the current that was on half the time is planned to stay on: twice as fast as before
     let on = median_of(&Record {
-        plan: vec![PlanStep {
-            time_s: 1800.0,
-            current_ma: Some(1.0),
-            dose_mpa: None,
-        }],
+        plan: vec![PlanStep { time_s: 1800.0, current_ma: Some(1.0), dose_mpa: None }],
         ..record.clone()
     });
     let before = half.quantiles_s.unwrap()[3];
-    assert!(
-        (1.6..2.4).contains(&((before - 1800.0) / (on - 1800.0))),
-        "{before} {on}"
-    );
-    let more = Record {
-        plan: vec![PlanStep {
-            time_s: 1800.0,
-            current_ma: Some(3.0),
-            dose_mpa: None,
-        }],
-        ..record
-    };
+    assert!((1.6..2.4).contains(&((before - 1800.0) / (on - 1800.0))), "{before} {on}");
+    let more = Record { plan: vec![PlanStep { time_s: 1800.0, current_ma: Some(3.0), dose_mpa: None }], ..record };
     assert!(forecast(&more, &Settings::default()).extrapolates);
 }
 
 #[test]
 fn growth_that_follows_the_dose_slows_when_a_higher_one_is_planned() {
-    let dose: Vec<f64> = (0..=30)
-        .map(|k| if (k / 6) % 2 == 0 { 0.0 } else { 100.0 })
-        .collect();
+    let dose: Vec<f64> = (0..=30).map(|k| if (k / 6) % 2 == 0 { 0.0 } else { 100.0 }).collect();
     let mut depth = vec![0.0];
     for k in 1..=30 {
         depth.push(depth[k - 1] + if dose[k] > 0.0 { 4.0 } else { 11.0 });
@@ -219,11 +159,7 @@ fn growth_that_follows_the_dose_slows_when_a_higher_one_is_planned() {
     record.dose_mpa = Some(dose);
     let planned = |dose| {
         median_of(&Record {
-            plan: vec![PlanStep {
-                time_s: 1800.0,
-                current_ma: None,
-                dose_mpa: Some(dose),
-            }],
+            plan: vec![PlanStep { time_s: 1800.0, current_ma: None, dose_mpa: Some(dose) }],
             ..record.clone()
         })
     };
@@ -237,13 +173,7 @@ fn silence_has_a_reason() {
     let silence = |record: &Record| forecast(record, &Settings::default()).silence;
     let good = record(20, |k| 10.0 * k);
     assert_eq!(silence(&good), None);
-    assert_eq!(
-        silence(&Record {
-            tips: Vec::new(),
-            ..good.clone()
-        }),
-        Some(Silence::NoGrowth)
-    );
+    assert_eq!(silence(&Record { tips: Vec::new(), ..good.clone() }), Some(Silence::NoGrowth));
     assert_eq!(silence(&record(2, |k| 10.0 * k)), Some(Silence::TooShort));
     assert_eq!(silence(&record(20, |k| 20.0 * k)), Some(Silence::Contact));
     let mut back = good.clone();
@@ -256,32 +186,17 @@ fn silence_has_a_reason() {
 
 #[test]
 fn one_forecast_is_cheap() {
-    let run = draw(
-        Law::Power,
-        &Fleet {
-            frames: 300,
-            roughness: 1.0,
-            seed: 3,
-        },
-        1,
-    );
+    let run = draw(Law::Power, &Fleet { frames: 300, roughness: 1.0, seed: 3 }, 1);
     let record = run.record_at(run.times_s.len() - 1, 0).unwrap();
     let mut costs: Vec<f64> = (0..21)
         .map(|_| {
             let start = std::time::Instant::now();
-            std::hint::black_box(forecast(
-                std::hint::black_box(&record),
-                &Settings::default(),
-            ));
+            std::hint::black_box(forecast(std::hint::black_box(&record), &Settings::default()));
             start.elapsed().as_secs_f64()
         })
         .collect();
     costs.sort_by(f64::total_cmp);
-    println!(
-        "fastest {:.2} ms, median {:.2} ms",
-        1e3 * costs[0],
-        1e3 * costs[10]
-    );
+    println!("fastest {:.2} ms, median {:.2} ms", 1e3 * costs[0], 1e3 * costs[10]);
     // the least of many, so that a busy machine does not decide
     assert!(costs[0] < 2e-3, "{} ms", 1e3 * costs[0]);
 }

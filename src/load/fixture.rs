@@ -372,8 +372,10 @@ impl Needs<'_> {
                 stoney_mpa(modulus, self.poisson()?, plate, film_um, radius) * film_um * 1e-3 / plate
             }
             (Some(_), Some(_)) => {
-                return Err(self
-                    .fault("both film_stress_mpa and radius_m are given".to_owned(), "keep the one that was measured"));
+                return Err(self.fault(
+                    "both film_stress_mpa and radius_m are given".to_owned(),
+                    "keep the one that was measured",
+                ));
             }
             _ => {
                 return Err(self.fault(

@@ -104,22 +104,11 @@ pub fn measure(trace: &Trace, scale: &Scale) -> Measured {
     for (k, used) in scale.used.iter().enumerate() {
         let before = k.checked_sub(1).map(|j| scale.used[j]);
         let growth = growth_rows(&courses, scale, *used, before);
-        out.frames.push(frame_row(
-            trace,
-            &courses,
-            scale,
-            *used,
-            &growth,
-            out.frames.last(),
-        ));
+        out.frames.push(frame_row(trace, &courses, scale, *used, &growth, out.frames.last()));
         out.paths.extend(path_rows(&courses, scale, *used));
         out.growth.extend(growth);
     }
-    out.filaments = trace
-        .filaments
-        .iter()
-        .map(|f| filament_row(f.filament, trace, &courses, scale))
-        .collect();
+    out.filaments = trace.filaments.iter().map(|f| filament_row(f.filament, trace, &courses, scale)).collect();
     out.final_stretches = stretches(&courses, scale);
     out
 }
@@ -137,19 +126,10 @@ fn frame_row(
     last: Option<&FrameRow>,
 ) -> FrameRow {
     let um = scale.um_per_px;
-    let mut row = FrameRow {
-        frame: used.frame,
-        time_s: used.time_s,
-        usable: true,
-        ..FrameRow::default()
-    };
-    let (mut sum, mut along, mut axis_length, mut area, mut u_length) =
-        (AxialSum::default(), 0.0, 0.0, 0.0, 0.0);
+    let mut row = FrameRow { frame: used.frame, time_s: used.time_s, usable: true, ..FrameRow::default() };
+    let (mut sum, mut along, mut axis_length, mut area, mut u_length) = (AxialSum::default(), 0.0, 0.0, 0.0, 0.0);
     let mut tips = 0;
-    for course in courses
-        .iter()
-        .filter(|c| is_rooted(c) && c.begun(used.frame))
-    {
+    for course in courses.iter().filter(|c| is_rooted(c) && c.begun(used.frame)) {
         let reached = course.reached(used.frame);
         let here = course.sum(reached);
         sum = sum.and(&here);
@@ -159,23 +139,12 @@ fn frame_row(
             along += here.along(axis);
             axis_length += here.length;
         }
-        u_length +=
-            uncertainty::length_px(here.length, &course.path.points[..reached], scale.noise)
-                .powi(2);
+        u_length += uncertainty::length_px(here.length, &course.path.points[..reached], scale.noise).powi(2);
         tips += usize::from(course.ends_in(used.frame, courses) == EndsIn::Tip);
     }
-    let first = |f: u32| {
-        courses
-            .iter()
-            .filter(|c| c.path.filament == f)
-            .any(|c| c.begun(used.frame))
-    };
+    let first = |f: u32| courses.iter().filter(|c| c.path.filament == f).any(|c| c.begun(used.frame));
     let begun = |inside: bool| {
-        trace
-            .filaments
-            .iter()
-            .filter(|f| (f.root == Root::Inside) == inside && first(f.filament))
-            .count()
+        trace.filaments.iter().filter(|f| (f.root == Root::Inside) == inside && first(f.filament)).count()
     };
     row.filaments = Some(begun(false));
     row.unrooted = Some(begun(true));
@@ -198,10 +167,7 @@ fn depth_columns(
     last: Option<&FrameRow>,
 ) {
     let um = scale.um_per_px;
-    let plated: Vec<&PathCourse> = courses
-        .iter()
-        .filter(|c| c.root == Root::Plating && c.begun(used.frame))
-        .collect();
+    let plated: Vec<&PathCourse> = courses.iter().filter(|c| c.root == Root::Plating && c.begun(used.frame)).collect();
     let deepest = plated
         .iter()
         .map(|c| (*c, c.deepest[c.reached(used.frame) - 1]))
@@ -220,15 +186,8 @@ fn depth_columns(
     row.deepest_x_px = Some(point.x);
     row.deepest_y_px = Some(point.y);
     let remaining = course.remaining[at].max(0.0);
-    let bridged = trace
-        .filaments
-        .iter()
-        .any(|f| f.root == Root::Plating && f.bridged.is_some_and(|b| b <= used.frame));
-    row.depth_fraction = Some(if bridged {
-        1.0
-    } else {
-        depth / (depth + remaining).max(f64::MIN_POSITIVE)
-    });
+    let bridged = trace.filaments.iter().any(|f| f.root == Root::Plating && f.bridged.is_some_and(|b| b <= used.frame));
+    row.depth_fraction = Some(if bridged { 1.0 } else { depth / (depth + remaining).max(f64::MIN_POSITIVE) });
     row.front_depth_um = Some(front_depth(&plated, used.frame) * um);
 }
 
@@ -301,12 +260,7 @@ struct Part {
 }
 
 /// The new stretches at a frame, those that run on through a node joined.
-fn growth_rows(
-    courses: &[PathCourse],
-    scale: &Scale,
-    used: UsedFrame,
-    before: Option<UsedFrame>,
-) -> Vec<GrowthRow> {
+fn growth_rows(courses: &[PathCourse], scale: &Scale, used: UsedFrame, before: Option<UsedFrame>) -> Vec<GrowthRow> {
     let reached_before = |c: &PathCourse| before.map_or(0, |b| c.reached(b.frame));
     let mut joined = vec![false; courses.len()];
     let mut rows = Vec::new();
@@ -318,20 +272,13 @@ fn growth_rows(
         let mut next = Some(index);
         while let Some(at) = next {
             let course = &courses[at];
-            let (from, to) = (
-                reached_before(course).saturating_sub(1),
-                course.reached(used.frame),
-            );
+            let (from, to) = (reached_before(course).saturating_sub(1), course.reached(used.frame));
             next = None;
             if to < from + 2 {
                 break;
             }
             joined[at] = true;
-            chain.push(Part {
-                course: at,
-                from,
-                to: to - 1,
-            });
+            chain.push(Part { course: at, from, to: to - 1 });
             if to == course.path.points.len() {
                 next = straight_child(courses, at, used.frame, &joined);
             }
@@ -342,17 +289,10 @@ fn growth_rows(
 }
 
 /// The child that goes on most nearly straight from a path's end, if one has begun.
-fn straight_child(
-    courses: &[PathCourse],
-    at: usize,
-    frame: usize,
-    joined: &[bool],
-) -> Option<usize> {
+fn straight_child(courses: &[PathCourse], at: usize, frame: usize, joined: &[bool]) -> Option<usize> {
     let end = |c: &PathCourse| {
         let n = c.direction.len();
-        c.direction[n - 1]
-            .since(&c.direction[n - 1 - (n - 1).min(12)])
-            .mean_deg()
+        c.direction[n - 1].since(&c.direction[n - 1 - (n - 1).min(12)]).mean_deg()
     };
     let start = |c: &PathCourse| c.direction[(c.direction.len() - 1).min(12)].mean_deg();
     let heading = end(&courses[at])?;
@@ -411,10 +351,7 @@ fn middle_of(courses: &[PathCourse], chain: &[Part], half: f64) -> Option<(u32, 
         let base = c.direction[s.from].length;
         let length = c.direction[s.to].length - base;
         if left <= length {
-            let at = c
-                .direction
-                .partition_point(|d| d.length < base + left)
-                .clamp(s.from, s.to);
+            let at = c.direction.partition_point(|d| d.length < base + left).clamp(s.from, s.to);
             let p = c.path.points[at];
             return Some((c.path.filament, [p.x, p.y]));
         }
@@ -427,30 +364,16 @@ fn middle_of(courses: &[PathCourse], chain: &[Part], half: f64) -> Option<(u32, 
 
 fn filament_row(number: u32, trace: &Trace, courses: &[PathCourse], scale: &Scale) -> FilamentRow {
     let um = scale.um_per_px;
-    let own: Vec<&PathCourse> = courses
-        .iter()
-        .filter(|c| c.path.filament == number)
-        .collect();
+    let own: Vec<&PathCourse> = courses.iter().filter(|c| c.path.filament == number).collect();
     let (root, root_px, bridged) = trace
         .filaments
         .iter()
         .find(|f| f.filament == number)
-        .map_or((Root::Inside, [0.0, 0.0], false), |f| {
-            (f.root, f.root_px, f.bridged.is_some())
-        });
+        .map_or((Root::Inside, [0.0, 0.0], false), |f| (f.root, f.root_px, f.bridged.is_some()));
     let last = scale.used.last().map_or(0, |u| u.frame);
-    let first = own
-        .iter()
-        .filter_map(|c| c.path.points.get(1))
-        .map(|p| p.arrival)
-        .min();
-    let time = first
-        .and_then(|f| scale.used.iter().find(|u| u.frame == f))
-        .map_or(0.0, |u| u.time_s);
-    let depth = own
-        .iter()
-        .filter_map(|c| c.deepest.last().map(|&i| c.depth[i]))
-        .fold(0.0, f64::max);
+    let first = own.iter().filter_map(|c| c.path.points.get(1)).map(|p| p.arrival).min();
+    let time = first.and_then(|f| scale.used.iter().find(|u| u.frame == f)).map_or(0.0, |u| u.time_s);
+    let depth = own.iter().filter_map(|c| c.deepest.last().map(|&i| c.depth[i])).fold(0.0, f64::max);
     FilamentRow {
         filament: number,
         first_time_s: time,
@@ -458,62 +381,41 @@ fn filament_row(number: u32, trace: &Trace, courses: &[PathCourse], scale: &Scal
         root_x_px: root_px[0],
         root_y_px: root_px[1],
         final_depth_um: (root == Root::Plating).then_some(depth * um),
-        final_length_um: own
-            .iter()
-            .map(|c| c.sum(c.direction.len()).length)
-            .sum::<f64>()
-            * um,
-        tips: own
-            .iter()
-            .filter(|c| c.ends_in(last, courses) == EndsIn::Tip)
-            .count(),
+        final_length_um: own.iter().map(|c| c.sum(c.direction.len()).length).sum::<f64>() * um,
+        tips: own.iter().filter(|c| c.ends_in(last, courses) == EndsIn::Tip).count(),
         bridged,
         turned: turned(&own, courses, scale, root_px),
     }
 }
 
 /// Whether the last 100 µm to the filament's deepest end run more than 45° off the plating edge's normal at its root.
-fn turned(
-    own: &[&PathCourse],
-    courses: &[PathCourse],
-    scale: &Scale,
-    root_px: [f64; 2],
-) -> Option<bool> {
+fn turned(own: &[&PathCourse], courses: &[PathCourse], scale: &Scale, root_px: [f64; 2]) -> Option<bool> {
     let normal = {
         let d = scale.edges.plating.nearest(root_px).direction;
         super::geometry::axial_deg(-d[1], d[0])
     };
     let ends = own.iter().filter(|c| c.children.is_empty());
-    let mut course =
-        *ends.max_by(|a, b| longest_to(a, courses).total_cmp(&longest_to(b, courses)))?;
+    let mut course = *ends.max_by(|a, b| longest_to(a, courses).total_cmp(&longest_to(b, courses)))?;
     let mut left = TURN_LENGTH_UM / scale.um_per_px;
     let mut sum = AxialSum::default();
     loop {
         let n = course.direction.len();
         let total = course.direction[n - 1].length;
-        let from = course
-            .direction
-            .partition_point(|d| d.length < total - left)
-            .min(n - 1);
+        let from = course.direction.partition_point(|d| d.length < total - left).min(n - 1);
         let part = course.direction[n - 1].since(&course.direction[from]);
         sum = sum.and(&part);
         left -= part.length;
         if left <= 0.5 {
             return sum.mean_deg().map(|a| acute_deg(a, normal) > TURN_DEG);
         }
-        course = courses
-            .iter()
-            .find(|c| Some(c.path.path) == course.path.parent)?;
+        course = courses.iter().find(|c| Some(c.path.path) == course.path.parent)?;
     }
 }
 
 /// Length from the root to a path's end, px.
 fn longest_to(course: &PathCourse, courses: &[PathCourse]) -> f64 {
     let own = course.sum(course.direction.len()).length;
-    match courses
-        .iter()
-        .find(|c| Some(c.path.path) == course.path.parent)
-    {
+    match courses.iter().find(|c| Some(c.path.path) == course.path.parent) {
         Some(parent) => own + longest_to(parent, courses),
         None => own,
     }

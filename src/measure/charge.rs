@@ -22,21 +22,9 @@ pub struct Metal {
 
 /// Metals known by their symbol.
 pub const METALS: [Metal; 3] = [
-    Metal {
-        symbol: "Li",
-        g_per_mol: 6.94,
-        g_per_cm3: 0.534,
-    },
-    Metal {
-        symbol: "Na",
-        g_per_mol: 22.990,
-        g_per_cm3: 0.968,
-    },
-    Metal {
-        symbol: "K",
-        g_per_mol: 39.098,
-        g_per_cm3: 0.862,
-    },
+    Metal { symbol: "Li", g_per_mol: 6.94, g_per_cm3: 0.534 },
+    Metal { symbol: "Na", g_per_mol: 22.990, g_per_cm3: 0.968 },
+    Metal { symbol: "K", g_per_mol: 39.098, g_per_cm3: 0.862 },
 ];
 
 impl Metal {

@@ -48,38 +48,24 @@ impl PathCourse {
     /// The sums up to and including the first `reached` points.
     #[must_use]
     pub fn sum(&self, reached: usize) -> AxialSum {
-        reached
-            .checked_sub(1)
-            .map_or_else(AxialSum::default, |i| self.direction[i])
+        reached.checked_sub(1).map_or_else(AxialSum::default, |i| self.direction[i])
     }
 
     /// What its tipward end is at `frame`.
     #[must_use]
     pub fn ends_in(&self, frame: usize, all: &[PathCourse]) -> EndsIn {
         let whole = self.reached(frame) == self.path.points.len();
-        let open = self.path.ends_in == EndsIn::Branch
-            && !self.children.iter().any(|&c| all[c].begun(frame));
-        if whole && !open {
-            self.path.ends_in
-        } else {
-            EndsIn::Tip
-        }
+        let open = self.path.ends_in == EndsIn::Branch && !self.children.iter().any(|&c| all[c].begun(frame));
+        if whole && !open { self.path.ends_in } else { EndsIn::Tip }
     }
 }
 
 /// The courses of all paths of a trace, in its order.
 #[must_use]
 pub fn courses(trace: &Trace, edges: &Edges) -> Vec<PathCourse> {
-    let mut out: Vec<PathCourse> = trace
-        .paths
-        .iter()
-        .map(|p| course(p, trace, edges))
-        .collect();
+    let mut out: Vec<PathCourse> = trace.paths.iter().map(|p| course(p, trace, edges)).collect();
     for (i, path) in trace.paths.iter().enumerate() {
-        if let Some(parent) = path
-            .parent
-            .and_then(|number| trace.paths.iter().position(|p| p.path == number))
-        {
+        if let Some(parent) = path.parent.and_then(|number| trace.paths.iter().position(|p| p.path == number)) {
             out[parent].children.push(i);
         }
     }
@@ -89,11 +75,7 @@ pub fn courses(trace: &Trace, edges: &Edges) -> Vec<PathCourse> {
 fn course(path: &TracePath, trace: &Trace, edges: &Edges) -> PathCourse {
     let points = &path.points;
     let angles = directions_with_lead(path, trace);
-    let root = trace
-        .filaments
-        .iter()
-        .find(|f| f.filament == path.filament)
-        .map_or(Root::Inside, |f| f.root);
+    let root = trace.filaments.iter().find(|f| f.filament == path.filament).map_or(Root::Inside, |f| f.root);
     let depth: Vec<f64> = points.iter().map(|p| edges.depth([p.x, p.y])).collect();
     let remaining = points.iter().map(|p| edges.remaining([p.x, p.y])).collect();
     let mut sum = AxialSum::default();
@@ -110,29 +92,16 @@ fn course(path: &TracePath, trace: &Trace, edges: &Edges) -> PathCourse {
         let best = deepest[i - 1];
         deepest.push(if depth[i] > depth[best] { i } else { best });
     }
-    PathCourse {
-        path: path.clone(),
-        root,
-        direction,
-        area,
-        deepest,
-        depth,
-        remaining,
-        children: Vec::new(),
-    }
+    PathCourse { path: path.clone(), root, direction, area, deepest, depth, remaining, children: Vec::new() }
 }
 
 /// Local directions of a path; one that goes straight on from its parent is led in by the parent's end.
 fn directions_with_lead(path: &TracePath, trace: &Trace) -> Vec<f64> {
     let own = local_directions(&path.points);
-    let Some(parent) = path
-        .parent
-        .and_then(|n| trace.paths.iter().find(|p| p.path == n))
-    else {
+    let Some(parent) = path.parent.and_then(|n| trace.paths.iter().find(|p| p.path == n)) else {
         return own;
     };
-    let lead: Vec<TracePoint> =
-        parent.points[parent.points.len().saturating_sub(LEAD_POINTS)..].to_vec();
+    let lead: Vec<TracePoint> = parent.points[parent.points.len().saturating_sub(LEAD_POINTS)..].to_vec();
     let turn = turn_deg(&lead, &path.points);
     if turn.is_none_or(|t| t > STRAIGHT_ON_DEG) {
         return own;
@@ -145,10 +114,7 @@ fn directions_with_lead(path: &TracePath, trace: &Trace) -> Vec<f64> {
 /// Angle between the end of one line and the start of the next, over about 8 px each.
 fn turn_deg(before: &[TracePoint], after: &[TracePoint]) -> Option<f64> {
     let reach = 16;
-    let (a, b) = (
-        before.get(before.len().checked_sub(1)?.saturating_sub(reach))?,
-        before.last()?,
-    );
+    let (a, b) = (before.get(before.len().checked_sub(1)?.saturating_sub(reach))?, before.last()?);
     let (c, d) = (after.first()?, after.get(reach.min(after.len() - 1))?);
     let (u, v) = ([b.x - a.x, b.y - a.y], [d.x - c.x, d.y - c.y]);
     let angle = libm::atan2(u[0] * v[1] - u[1] * v[0], u[0] * v[0] + u[1] * v[1]);

@@ -53,21 +53,13 @@ impl AxialSum {
     /// This sum less an earlier one.
     #[must_use]
     pub fn since(&self, earlier: &AxialSum) -> AxialSum {
-        AxialSum {
-            length: self.length - earlier.length,
-            c: self.c - earlier.c,
-            s: self.s - earlier.s,
-        }
+        AxialSum { length: self.length - earlier.length, c: self.c - earlier.c, s: self.s - earlier.s }
     }
 
     /// Both together.
     #[must_use]
     pub fn and(&self, other: &AxialSum) -> AxialSum {
-        AxialSum {
-            length: self.length + other.length,
-            c: self.c + other.c,
-            s: self.s + other.s,
-        }
+        AxialSum { length: self.length + other.length, c: self.c + other.c, s: self.s + other.s }
     }
 
     /// Length-weighted axial mean, degrees in [0, 180); `None` where the directions cancel.

@@ -88,7 +88,8 @@ pub(super) fn follow(input: &Input, progress: &dyn Progress) -> Result<Filmed, E
     let starts: Vec<usize> = (0..count).step_by(BATCH).collect();
     for start in starts {
         let batch: Vec<usize> = (start..(start + BATCH).min(count)).collect();
-        let decoded: Vec<_> = batch.par_iter().map(|&i| follower.held(i).map_or_else(|| input.sequence.decode(i), Ok)).collect();
+        let decoded: Vec<_> =
+            batch.par_iter().map(|&i| follower.held(i).map_or_else(|| input.sequence.decode(i), Ok)).collect();
         for (i, frame) in batch.into_iter().zip(decoded) {
             follower.take(i, frame);
             progress.frame();
@@ -227,7 +228,8 @@ impl<'a> Follower<'a> {
         };
         let (count, file, reason) = (self.fates.len(), &self.input.sequence.entries[0].file, &first.reason);
         let what = format!("none of the {count} frames can be used; the first, {file}, is set aside: {reason}");
-        let help = "open one of them in an image viewer: correct `files`, or record the run again with other light or focus";
+        let help =
+            "open one of them in an image viewer: correct `files`, or record the run again with other light or focus";
         Err(self.input.manifest.fault("frames", "files", what, help).into())
     }
 

@@ -128,7 +128,8 @@ impl Input {
         }
         let frames = self.sequence.times_s();
         let last = frames.last().copied().unwrap_or(0.0);
-        let mut times: Vec<f64> = known.iter().flat_map(|s| s.time_s.iter().copied()).filter(|t| (0.0..=last).contains(t)).collect();
+        let mut times: Vec<f64> =
+            known.iter().flat_map(|s| s.time_s.iter().copied()).filter(|t| (0.0..=last).contains(t)).collect();
         times.extend([0.0, last]);
         times.sort_by(f64::total_cmp);
         times.dedup_by(|a, b| (*a - *b).abs() < 1e-9);

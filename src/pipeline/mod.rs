@@ -1,19 +1,22 @@
 //! The stages in order: read, correct, trace, measure, forecast, sum up. [`analyse`] reads as the table of contents.
 
+mod charge;
 mod edges;
 mod film;
 mod forecasts;
 mod input;
+mod kinks;
 mod notes;
 mod pictures;
 mod rows;
+mod steering;
 mod summary;
 
 use std::path::Path;
 
 use crate::Error;
 use crate::measure::{Scale, measure};
-use crate::results::Results;
+use crate::results::{Results, Summary};
 
 pub use input::Input;
 
@@ -51,18 +54,21 @@ pub fn analyse(run: &Path, choices: Choices, progress: &dyn Progress) -> Result<
     progress.stage("measuring", None);
     let load = |time_s: f64, px: [f64; 2]| input.load.at(time_s, Some(px));
     let used = filmed.used();
-    let scale = Scale {
-        um_per_px: input.um_per_px(),
-        edges: &input.edges,
-        used: &used,
-        load: &load,
-        noise: filmed.noise,
-    };
+    let scale =
+        Scale { um_per_px: input.um_per_px(), edges: &input.edges, used: &used, load: &load, noise: filmed.noise };
     let measured = measure(&filmed.trace, &scale);
     let frames = rows::frame_rows(&input, &filmed, &measured);
     let pictures = pictures::finished(&filmed, &input);
     let notes = notes::Notes::of(&input, &filmed, &frames);
-    let summary = summary::summary(&input, &filmed, &measured, &frames, &notes);
+    let steered = steering::Steered::of(&input, &measured.growth);
+    let charged = charge::Charged::of(&input, &frames);
+    let summary = Summary {
+        turns: steered.summary,
+        directions: steering::directions(&measured.growth, input.manifest.settings.seed),
+        kink_model: kinks::kink_model(&input, &measured.growth),
+        charge: charged.summary,
+        ..summary::summary(&input, &filmed, &measured, &frames, &notes)
+    };
     Ok(Results {
         facts: input.facts(),
         frames,
@@ -70,6 +76,9 @@ pub fn analyse(run: &Path, choices: Choices, progress: &dyn Progress) -> Result<
         growth: measured.growth,
         filaments: measured.filaments,
         forecasts: filmed.forecasts,
+        turns: steered.rows,
+        charge: charged.rows,
+        half_cycles: charged.half_cycles,
         trace: filmed.trace,
         pictures,
         load: input.load_samples(),

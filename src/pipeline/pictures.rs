@@ -42,7 +42,9 @@ impl Tone {
 /// The frame as it would look without drift, flicker and uneven light: the reference with what differs put back.
 pub(super) fn shown(reference: &Array2<f32>, residual: &Array2<f32>, darker: bool) -> Array2<f32> {
     let sign = if darker { -1.0 } else { 1.0 };
-    ndarray::Zip::from(reference).and(residual).par_map_collect(|&r, &d| if d.is_nan() { r } else { r * (1.0 + sign * d) })
+    ndarray::Zip::from(reference)
+        .and(residual)
+        .par_map_collect(|&r, &d| if d.is_nan() { r } else { r * (1.0 + sign * d) })
 }
 
 /// The pictures of a finished run.

@@ -22,7 +22,13 @@ use crate::stats::theil_sen::{slope_interval_by_blocks, theil_sen};
 /// Resamples of the rate's interval.
 const RESAMPLES: usize = 999;
 
-pub(super) fn summary(input: &Input, filmed: &Filmed, measured: &Measured, frames: &[FrameRow], notes: &Notes) -> Summary {
+pub(super) fn summary(
+    input: &Input,
+    filmed: &Filmed,
+    measured: &Measured,
+    frames: &[FrameRow],
+    notes: &Notes,
+) -> Summary {
     let seed = input.manifest.settings.seed;
     Summary {
         tool: "veerlog".to_owned(),
@@ -44,16 +50,13 @@ pub(super) fn summary(input: &Input, filmed: &Filmed, measured: &Measured, frame
         settings: settings(input),
         inputs: inputs(input, filmed),
         warnings: notes.warnings.clone(),
+        ..Summary::default()
     }
 }
 
 fn count(frames: &[FrameRow]) -> FrameCount {
     let aside = frames.iter().filter(|f| !f.usable).map(|f| SetAside { frame: f.frame, reason: f.reason.clone() });
-    FrameCount {
-        total: frames.len(),
-        usable: frames.iter().filter(|f| f.usable).count(),
-        set_aside: aside.collect(),
-    }
+    FrameCount { total: frames.len(), usable: frames.iter().filter(|f| f.usable).count(), set_aside: aside.collect() }
 }
 
 fn depth(frames: &[FrameRow], short_s: Option<f64>, seed: u64) -> DepthSummary {
@@ -129,10 +132,20 @@ fn settings(input: &Input) -> serde_json::Value {
 /// SHA-256 of each input file by its path from the run folder.
 fn inputs(input: &Input, filmed: &Filmed) -> BTreeMap<String, String> {
     let hex = |bytes: &[u8]| bytes.iter().map(|b| format!("{b:02x}")).collect::<String>();
-    let frames = input.sequence.entries.iter().zip(&filmed.fates).filter_map(|(e, f)| f.sha256.map(|s| (e.file.clone(), hex(&s))));
+    let frames = input
+        .sequence
+        .entries
+        .iter()
+        .zip(&filmed.fates)
+        .filter_map(|(e, f)| f.sha256.map(|s| (e.file.clone(), hex(&s))));
     let mut out: BTreeMap<String, String> = frames.collect();
     let folder = &input.manifest.origin.folder;
-    let named = [Some(crate::run::manifest::FILE_NAME), input.manifest.frames.times.as_deref(), input.manifest.cell.log.as_deref(), input.manifest.load.log.as_deref()];
+    let named = [
+        Some(crate::run::manifest::FILE_NAME),
+        input.manifest.frames.times.as_deref(),
+        input.manifest.cell.log.as_deref(),
+        input.manifest.load.log.as_deref(),
+    ];
     for name in named.into_iter().flatten() {
         if let Ok(bytes) = std::fs::read(folder.join(Path::new(name))) {
             out.insert(name.to_owned(), hex(&Sha256::digest(&bytes)));

@@ -25,10 +25,7 @@ impl Range {
         if high - low > f64::EPSILON * low.abs().max(high.abs()) {
             Self { low, high }
         } else {
-            Self {
-                low: low - 0.5,
-                high: low + 0.5,
-            }
+            Self { low: low - 0.5, high: low + 0.5 }
         }
     }
 
@@ -37,26 +34,18 @@ impl Range {
         let (low, high) = values
             .into_iter()
             .filter(|v| v.is_finite())
-            .fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), v| {
-                (l.min(v), h.max(v))
-            });
+            .fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), v| (l.min(v), h.max(v)));
         (low <= high).then(|| {
             let raw = Self::new(low, high);
             let step = step(raw.high - raw.low, 5);
-            Self {
-                low: (raw.low / step).floor() * step,
-                high: (raw.high / step).ceil() * step,
-            }
+            Self { low: (raw.low / step).floor() * step, high: (raw.high / step).ceil() * step }
         })
     }
 
     /// Round values inside, about `count` of them.
     pub fn ticks(self, count: usize) -> Vec<f64> {
         let step = step(self.high - self.low, count);
-        let (first, last) = (
-            (self.low / step - 1e-9).ceil() as i64,
-            (self.high / step + 1e-9).floor() as i64,
-        );
+        let (first, last) = ((self.low / step - 1e-9).ceil() as i64, (self.high / step + 1e-9).floor() as i64);
         (first..=last).map(|i| i as f64 * step).collect()
     }
 }
@@ -65,24 +54,14 @@ impl Range {
 fn step(span: f64, count: usize) -> f64 {
     let raw = span / count.max(1) as f64;
     let power = 10_f64.powf(raw.log10().floor());
-    let lead = [1.0, 2.0, 5.0]
-        .into_iter()
-        .find(|m| m * power >= raw * (1.0 - 1e-9))
-        .unwrap_or(10.0);
+    let lead = [1.0, 2.0, 5.0].into_iter().find(|m| m * power >= raw * (1.0 - 1e-9)).unwrap_or(10.0);
     lead * power
 }
 
 /// Tick labels with as many decimals as their step needs.
 fn labels(ticks: &[f64]) -> Vec<String> {
-    let gap = ticks
-        .windows(2)
-        .map(|p| p[1] - p[0])
-        .fold(f64::INFINITY, f64::min);
-    let decimals = if gap.is_finite() {
-        (-(gap * 1.000_1).log10().floor()).max(0.0) as usize
-    } else {
-        2
-    };
+    let gap = ticks.windows(2).map(|p| p[1] - p[0]).fold(f64::INFINITY, f64::min);
+    let decimals = if gap.is_finite() { (-(gap * 1.000_1).log10().floor()).max(0.0) as usize } else { 2 };
     ticks.iter().map(|t| fixed(*t, decimals)).collect()
 }
 
@@ -154,64 +133,56 @@ impl Panel {
     /// The heading, grid lines and values of the upright scale.
     pub fn draw_y(&self, drawing: &mut Drawing, heading: &str, ink: Ink) {
         drawing.bold([0.0, self.top - 16.0], heading, NORMAL, ink, Anchor::Start);
-        let ticks = self
-            .y
-            .ticks((self.height / 34.0).floor().clamp(2.0, 6.0) as usize);
+        let ticks = self.y.ticks((self.height / 34.0).floor().clamp(2.0, 6.0) as usize);
         for (value, label) in ticks.iter().zip(labels(&ticks)) {
             let y = self.up(*value);
             drawing.line(vec![[self.left, y], [self.right(), y]], Ink::Grid, 1.0);
-            drawing.text(
-                [self.left - 7.0, y + 4.0],
-                label,
-                SMALL,
-                Ink::Quiet,
-                Anchor::End,
-            );
+            drawing.text([self.left - 7.0, y + 4.0], label, SMALL, Ink::Quiet, Anchor::End);
         }
     }
 
     /// The time along the bottom, in `unit`, with its heading at the right end.
     pub fn draw_time(&self, drawing: &mut Drawing, unit: TimeUnit) {
-        let scaled = Range {
-            low: self.x.low / unit.seconds,
-            high: self.x.high / unit.seconds,
-        };
-        let ticks = scaled.ticks((self.width / 62.0).floor().clamp(2.0, 9.0) as usize);
+        let scaled = Range { low: self.x.low / unit.seconds, high: self.x.high / unit.seconds };
+        let heading = format!("time ({})", unit.name);
+        self.draw_bottom(drawing, &heading, unit.seconds, &scaled.ticks(self.room()));
+    }
+
+    /// A quantity along the bottom, with its heading at the right end.
+    pub fn draw_x(&self, drawing: &mut Drawing, heading: &str) {
+        self.draw_bottom(drawing, heading, 1.0, &self.x.ticks(self.room()));
+    }
+
+    /// A quantity along the bottom with ticks of one's own, as angles need them.
+    pub fn draw_x_at(&self, drawing: &mut Drawing, heading: &str, ticks: &[f64]) {
+        self.draw_bottom(drawing, heading, 1.0, ticks);
+    }
+
+    /// Ticks that the lower scale has room for.
+    fn room(&self) -> usize {
+        (self.width / 62.0).floor().clamp(2.0, 9.0) as usize
+    }
+
+    /// The lower scale: ticks in units of `unit`.
+    fn draw_bottom(&self, drawing: &mut Drawing, heading: &str, unit: f64, ticks: &[f64]) {
         let y = self.bottom();
         drawing.line(vec![[self.left, y], [self.right(), y]], Ink::Quiet, 1.0);
-        for (value, label) in ticks.iter().zip(labels(&ticks)) {
-            let x = self.across(value * unit.seconds);
+        for (value, label) in ticks.iter().zip(labels(ticks)) {
+            let x = self.across(value * unit);
             drawing.line(vec![[x, y], [x, y + 5.0]], Ink::Quiet, 1.0);
             drawing.text([x, y + 18.0], label, SMALL, Ink::Quiet, Anchor::Middle);
         }
-        let heading = format!("time ({})", unit.name);
-        drawing.bold(
-            [self.right(), y + 36.0],
-            heading,
-            NORMAL,
-            Ink::Quiet,
-            Anchor::End,
-        );
+        drawing.bold([self.right(), y + 36.0], heading, NORMAL, Ink::Quiet, Anchor::End);
     }
 
     /// A line through those samples that are there, broken where they are not.
-    pub fn line(
-        &self,
-        drawing: &mut Drawing,
-        samples: impl Iterator<Item = (f64, Option<f64>)>,
-        ink: Ink,
-        width: f64,
-    ) {
+    pub fn line(&self, drawing: &mut Drawing, samples: impl Iterator<Item = (f64, Option<f64>)>, ink: Ink, width: f64) {
         for run in runs(samples) {
             let points = run.iter().map(|[x, y]| self.at(*x, *y)).collect::<Vec<_>>();
             if let [alone] = points[..] {
                 drawing.disc(alone, width, ink, 1.0);
             }
-            drawing.line(
-                super::drawing::thin(&points, self.width as usize),
-                ink,
-                width,
-            );
+            drawing.line(super::drawing::thin(&points, self.width as usize), ink, width);
         }
     }
 
@@ -235,12 +206,7 @@ impl Panel {
         if let Some(Some(value)) = last {
             held.push((self.x.high, Some(value)));
         }
-        self.line(
-            drawing,
-            held.into_iter().filter(|(x, _)| *x <= self.x.high),
-            ink,
-            width,
-        );
+        self.line(drawing, held.into_iter().filter(|(x, _)| *x <= self.x.high), ink, width);
     }
 }
 
@@ -263,32 +229,15 @@ mod tests {
 
     #[test]
     fn ticks_are_round_and_inside() {
-        assert_eq!(
-            Range::new(0.0, 944.0).ticks(5),
-            [0.0, 200.0, 400.0, 600.0, 800.0]
-        );
-        assert_eq!(
-            labels(&Range::new(-1.0, 1.0).ticks(4)),
-            ["−1.0", "−0.5", "0.0", "0.5", "1.0"]
-        );
-        assert_eq!(
-            Range::around([3.0, 3.0]).map(|r| r.low < 3.0 && r.high > 3.0),
-            Some(true)
-        );
+        assert_eq!(Range::new(0.0, 944.0).ticks(5), [0.0, 200.0, 400.0, 600.0, 800.0]);
+        assert_eq!(labels(&Range::new(-1.0, 1.0).ticks(4)), ["−1.0", "−0.5", "0.0", "0.5", "1.0"]);
+        assert_eq!(Range::around([3.0, 3.0]).map(|r| r.low < 3.0 && r.high > 3.0), Some(true));
         assert_eq!(Range::around([]), None);
     }
 
     #[test]
     fn gaps_break_a_line() {
-        let samples = [
-            (0.0, Some(1.0)),
-            (1.0, None),
-            (2.0, Some(2.0)),
-            (3.0, Some(2.0)),
-        ];
-        assert_eq!(
-            runs(samples.into_iter()),
-            [vec![[0.0, 1.0]], vec![[2.0, 2.0], [3.0, 2.0]]]
-        );
+        let samples = [(0.0, Some(1.0)), (1.0, None), (2.0, Some(2.0)), (3.0, Some(2.0))];
+        assert_eq!(runs(samples.into_iter()), [vec![[0.0, 1.0]], vec![[2.0, 2.0], [3.0, 2.0]]]);
     }
 }

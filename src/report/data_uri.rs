@@ -21,12 +21,7 @@ pub(crate) fn jpeg(picture: &GrayImage, longest: u32) -> Result<String, Error> {
     let small;
     let shown = if largest > longest {
         let side = |s: u32| (u64::from(s) * u64::from(longest) / u64::from(largest)).max(1) as u32;
-        small = image::imageops::resize(
-            picture,
-            side(w),
-            side(h),
-            image::imageops::FilterType::CatmullRom,
-        );
+        small = image::imageops::resize(picture, side(w), side(h), image::imageops::FilterType::CatmullRom);
         &small
     } else {
         picture
@@ -42,16 +37,10 @@ fn base64(bytes: &[u8]) -> String {
     const DIGITS: &[u8; 64] = b"ABCDEFGHIJKLMNOPQRSTUVWXYZabcdefghijklmnopqrstuvwxyz0123456789+/";
     let mut text = String::with_capacity(bytes.len().div_ceil(3) * 4);
     for chunk in bytes.chunks(3) {
-        let word = (0..3).fold(0_u32, |w, i| {
-            w << 8 | u32::from(*chunk.get(i).unwrap_or(&0))
-        });
+        let word = (0..3).fold(0_u32, |w, i| w << 8 | u32::from(*chunk.get(i).unwrap_or(&0)));
         for i in 0..4 {
             let digit = DIGITS[(word >> (18 - 6 * i) & 63) as usize];
-            text.push(if i <= chunk.len() {
-                char::from(digit)
-            } else {
-                '='
-            });
+            text.push(if i <= chunk.len() { char::from(digit) } else { '=' });
         }
     }
     text

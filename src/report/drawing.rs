@@ -97,12 +97,7 @@ pub enum Anchor {
 impl Drawing {
     /// An empty drawing on paper.
     pub fn new(width: f64, height: f64, title: impl Into<String>) -> Self {
-        Self {
-            width,
-            height,
-            title: title.into(),
-            shapes: Vec::new(),
-        }
+        Self { width, height, title: title.into(), shapes: Vec::new() }
     }
 
     /// A full line; fewer than two points draw nothing.
@@ -118,73 +113,30 @@ impl Drawing {
     /// A line with all its properties.
     pub fn stroke(&mut self, points: Vec<Point>, ink: Ink, width: f64, dash: f64, opacity: f64) {
         if points.len() > 1 {
-            self.shapes.push(Shape::Line {
-                points,
-                ink,
-                width,
-                dash,
-                opacity,
-            });
+            self.shapes.push(Shape::Line { points, ink, width, dash, opacity });
         }
     }
 
     /// A filled area; fewer than three points draw nothing.
     pub fn area(&mut self, points: Vec<Point>, ink: Ink, opacity: f64) {
         if points.len() > 2 {
-            self.shapes.push(Shape::Area {
-                points,
-                ink,
-                opacity,
-            });
+            self.shapes.push(Shape::Area { points, ink, opacity });
         }
     }
 
     /// A filled disc.
     pub fn disc(&mut self, at: Point, radius: f64, ink: Ink, opacity: f64) {
-        self.shapes.push(Shape::Disc {
-            at,
-            radius,
-            ink,
-            opacity,
-        });
+        self.shapes.push(Shape::Disc { at, radius, ink, opacity });
     }
 
     /// Words in the normal type.
-    pub fn text(
-        &mut self,
-        at: Point,
-        words: impl Into<String>,
-        size: f64,
-        ink: Ink,
-        anchor: Anchor,
-    ) {
-        self.shapes.push(Shape::Text {
-            at,
-            words: words.into(),
-            size,
-            ink,
-            anchor,
-            bold: false,
-        });
+    pub fn text(&mut self, at: Point, words: impl Into<String>, size: f64, ink: Ink, anchor: Anchor) {
+        self.shapes.push(Shape::Text { at, words: words.into(), size, ink, anchor, bold: false });
     }
 
     /// Words in heavy type.
-    pub fn bold(
-        &mut self,
-        at: Point,
-        words: impl Into<String>,
-        size: f64,
-        ink: Ink,
-        anchor: Anchor,
-    ) {
-        self.shapes.push(Shape::Text {
-            at,
-            words: words.into(),
-            size,
-            ink,
-            anchor,
-            bold: true,
-        });
+    pub fn bold(&mut self, at: Point, words: impl Into<String>, size: f64, ink: Ink, anchor: Anchor) {
+        self.shapes.push(Shape::Text { at, words: words.into(), size, ink, anchor, bold: true });
     }
 }
 

@@ -7,10 +7,7 @@ use std::path::{Path, PathBuf};
 pub enum Error {
     /// The output folder holds something that is not ours.
     #[error("{path} holds {found:?}, which this program did not write: nothing was changed")]
-    #[diagnostic(
-        code(output::foreign),
-        help("name another folder with --out DIR, or move its files away")
-    )]
+    #[diagnostic(code(output::foreign), help("name another folder with --out DIR, or move its files away"))]
     Foreign {
         /// The folder.
         path: PathBuf,
@@ -19,10 +16,7 @@ pub enum Error {
     },
     /// Something that is not a folder stands where the output should go.
     #[error("{path} is not a folder: nothing was changed")]
-    #[diagnostic(
-        code(output::not_a_folder),
-        help("name another folder with --out DIR, or move the file away")
-    )]
+    #[diagnostic(code(output::not_a_folder), help("name another folder with --out DIR, or move the file away"))]
     NotAFolder {
         /// Where.
         path: PathBuf,
@@ -31,9 +25,7 @@ pub enum Error {
     #[error("{path}: {source}")]
     #[diagnostic(
         code(output::io),
-        help(
-            "check that the folder can be written and the disc has room, or name another with --out DIR"
-        )
+        help("check that the folder can be written and the disc has room, or name another with --out DIR")
     )]
     Io {
         /// The file or folder.
@@ -43,10 +35,7 @@ pub enum Error {
     },
     /// A table, figure or page could not be made from the results.
     #[error("{what} could not be made: {why}")]
-    #[diagnostic(
-        code(output::made),
-        help("this is a fault of the program, please report it")
-    )]
+    #[diagnostic(code(output::made), help("this is a fault of the program, please report it"))]
     Made {
         /// Which output.
         what: String,
@@ -58,17 +47,11 @@ pub enum Error {
 impl Error {
     /// An error of the system at `path`.
     pub(crate) fn io(path: &Path, source: std::io::Error) -> Self {
-        Self::Io {
-            path: path.to_owned(),
-            source,
-        }
+        Self::Io { path: path.to_owned(), source }
     }
 
     /// An output that a library refused to make.
     pub(crate) fn made(what: &str, why: impl std::fmt::Display) -> Self {
-        Self::Made {
-            what: what.to_owned(),
-            why: why.to_string(),
-        }
+        Self::Made { what: what.to_owned(), why: why.to_string() }
     }
 }

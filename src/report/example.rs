@@ -24,31 +24,24 @@ pub(crate) fn growing() -> Results {
     let trace = trace();
     let frames = frames(&trace);
     let last = last_picture(&trace);
-    let film = (BARE..FRAMES)
-        .step_by(6)
-        .map(|frame| film_frame(&trace, frame))
-        .collect();
+    let film = (BARE..FRAMES).step_by(6).map(|frame| film_frame(&trace, frame)).collect();
     let forecasts = forecasts(&frames);
     let mut results = Results {
         facts: facts(),
         growth: growth(&trace),
         paths: paths(&trace),
         filaments: filaments(&trace, &frames),
-        pictures: Pictures {
-            first: bare_picture(),
-            last,
-            film,
-            arrivals: Some(arrivals(&trace)),
-        },
+        pictures: Pictures { first: bare_picture(), last, film, arrivals: Some(arrivals(&trace)) },
         load: load(),
         cell: cell(),
         trace,
+        turns: vec![turn()],
+        charge: charge(&frames),
+        half_cycles: vec![half_cycle(&frames)],
         frames,
         forecasts,
         summary: Summary::default(),
-        cautions: vec![
-            "The specimen was handled in air between the second and the third bend.".into(),
-        ],
+        cautions: vec!["The specimen was handled in air between the second and the third bend.".into()],
     };
     results.summary = summary(&results);
     results
@@ -58,11 +51,8 @@ pub(crate) fn growing() -> Results {
 pub(crate) fn shorted() -> Results {
     let mut results = growing();
     let time = 52.0 * STEP_S + 8.0;
-    results.summary.short = ShortSummary {
-        observed: true,
-        time_s: Some(time),
-        evidence: Some(ShortEvidence::Electrical),
-    };
+    results.summary.short =
+        ShortSummary { observed: true, time_s: Some(time), evidence: Some(ShortEvidence::Electrical) };
     results.forecasts.retain(|row| row.issued_at_s < time);
     results.summary.forecast = results.forecasts.last().cloned();
     for (t, v) in results.cell.time_s.iter().zip(&mut results.cell.voltage_v) {
@@ -75,20 +65,122 @@ pub(crate) fn shorted() -> Results {
 pub(crate) fn still() -> Results {
     let frames: Vec<FrameRow> = (0..12).map(|frame| row(frame, None)).collect();
     let mut results = Results {
-        facts: RunFacts {
-            fixture: None,
-            ..facts()
-        },
+        facts: RunFacts { fixture: None, ..facts() },
         frames,
-        pictures: Pictures {
-            first: bare_picture(),
-            last: bare_picture(),
-            ..Pictures::default()
-        },
+        pictures: Pictures { first: bare_picture(), last: bare_picture(), ..Pictures::default() },
         ..Results::default()
     };
     results.summary = summary(&results);
     results
+}
+
+/// The step of the load, and growth that followed it.
+fn turn() -> TurnRow {
+    TurnRow {
+        step: 1,
+        time_s: TURN as f64 * STEP_S,
+        axis_before_deg: Some(90.0),
+        axis_after_deg: Some(30.0),
+        stress_before_mpa: 150.0,
+        stress_after_mpa: 120.0,
+        expected_deg: Some(30.0),
+        growth_before_deg: Some(98.0),
+        growth_after_deg: Some(33.0),
+        turned_deg: Some(52.0),
+        lag_s: Some(40.0),
+        lag_low_s: Some(20.0),
+        lag_high_s: Some(80.0),
+        lag_um: Some(11.0),
+        lag_low_um: Some(4.0),
+        lag_high_um: Some(19.0),
+        filaments: 9,
+        followed: 7,
+        gain: Some(0.9),
+        p: Some(0.000_4),
+        verdict: TurnVerdict::Turned,
+    }
+}
+
+/// Speeds that fall with the stress, charge at an even current.
+fn charge(frames: &[FrameRow]) -> Vec<ChargeRow> {
+    let row = |row: &FrameRow| {
+        let mah = 0.032 * row.time_s / 3_600.0;
+        ChargeRow {
+            frame: row.frame,
+            time_s: row.time_s,
+            charge_mah: Some(mah),
+            charge_mah_per_cm2: Some(mah / 0.032),
+            plating_s: Some(row.time_s),
+            current_ma: Some(0.032),
+            current_ma_per_cm2: Some(1.0),
+            half_cycle: Some(1),
+            depth_um: row.depth_um,
+            front_depth_um: row.front_depth_um,
+            length_um: row.length_um,
+            tip_speed_um_per_s: row.depth_um.map(|_| 0.5 + 0.2 * ragged(row.frame as u64)),
+            stress_mpa: row.stress_mpa,
+            visible_um3: row.length_um.map(|length| length * 4.0 * 400.0),
+            faraday_um3: Some(mah * 4.849_081e8).filter(|volume| *volume > 0.0),
+        }
+    };
+    frames.iter().filter(|row| row.usable).map(row).collect()
+}
+
+fn half_cycle(frames: &[FrameRow]) -> HalfCycleRow {
+    HalfCycleRow {
+        half_cycle: 1,
+        flow: Flow::Plating,
+        from_s: 100.0,
+        to_s: 1_239.0,
+        charge_mah: Some(0.0101),
+        charge_mah_per_cm2: Some(0.316),
+        depth_gain_um: frames.last().and_then(|row| row.depth_um),
+        length_gain_um: frames.last().and_then(|row| row.length_um),
+        retreat_um: Some(0.0),
+    }
+}
+
+fn direction_row() -> DirectionRow {
+    DirectionRow {
+        stress: "compression".into(),
+        filaments: 9,
+        pieces: 330,
+        length_um: 2_900.0,
+        mean_axis_deg: Some(18.0),
+        resultant: 0.41,
+        kappa: Some(0.9),
+        rayleigh_p: Some(0.02),
+        alignment: Some(0.27),
+        toward_expected: Some(0.27),
+        toward_expected_low: Some(0.08),
+        toward_expected_high: Some(0.47),
+        v_p: Some(0.04),
+    }
+}
+
+fn kink_model() -> KinkModel {
+    let bin = |i: u32| KinkBin {
+        from_deg: 15.0 * f64::from(i),
+        to_deg: 15.0 * f64::from(i + 1),
+        measured_deg: 1.0 + ragged(u64::from(i)),
+        measured_ci95: (i != 2).then(|| [ragged(u64::from(i)) - 1.0, 3.0 + ragged(u64::from(i))]),
+        predicted_deg: [3.0, 8.0, 13.0, 16.0, 14.0, 6.0][i as usize],
+        pieces: 40,
+        filaments: 9,
+    };
+    let inputs = KinkInputs {
+        metal: "Li".into(),
+        molar_volume_cm3: 12.996,
+        overpotential_mv: 55.0,
+        pressure_mpa: 408.3,
+        stress_mpa: 150.0,
+        u_stress_mpa: Some(6.2),
+        half_length_um: 90.0,
+        distance_um: 4.0,
+        pieces: 240,
+        closed: 3,
+    };
+    KinkModel { inputs, bins: (0..6).map(bin).collect() }
 }
 
 fn facts() -> RunFacts {
@@ -127,20 +219,12 @@ fn trace() -> Trace {
         let mut heading: f64 = 20.0 * ragged(u64::from(i));
         let mut points = vec![point(at, start)];
         for frame in start..FRAMES {
-            let pixels = (3.0 + 3.5 * f64::from(i % 4))
-                * (1.0 + 0.5 * ragged(u64::from(i) * 97 + frame as u64));
-            let aim = if frame < TURN {
-                34.0 * if i % 2 == 0 { 1.0 } else { -1.0 }
-            } else {
-                30.0
-            };
+            let pixels = (3.0 + 3.5 * f64::from(i % 4)) * (1.0 + 0.5 * ragged(u64::from(i) * 97 + frame as u64));
+            let aim = if frame < TURN { 34.0 * if i % 2 == 0 { 1.0 } else { -1.0 } } else { 30.0 };
             for _ in 0..pixels.round() as usize {
-                heading += 0.12 * (aim - heading)
-                    + 5.0 * ragged(frame as u64 * 31 + u64::from(i) + points.len() as u64);
-                at = [
-                    at[0] + heading.to_radians().cos(),
-                    at[1] - heading.to_radians().sin(),
-                ];
+                heading +=
+                    0.12 * (aim - heading) + 5.0 * ragged(frame as u64 * 31 + u64::from(i) + points.len() as u64);
+                at = [at[0] + heading.to_radians().cos(), at[1] - heading.to_radians().sin()];
                 if at[1] < 4.0 || at[1] > f64::from(SIZE[1]) - 4.0 || at[0] > EDGES[1] - 40.0 {
                     break;
                 }
@@ -155,27 +239,14 @@ fn trace() -> Trace {
         });
         if points.len() > 1 {
             let ends_in = EndsIn::Tip;
-            trace.paths.push(TracePath {
-                path: i + 1,
-                filament: i + 1,
-                parent: None,
-                points,
-                ends_in,
-            });
+            trace.paths.push(TracePath { path: i + 1, filament: i + 1, parent: None, points, ends_in });
         }
     }
     trace
 }
 
 fn point(at: [f64; 2], arrival: usize) -> TracePoint {
-    TracePoint {
-        x: at[0],
-        y: at[1],
-        arrival,
-        retreat: None,
-        width: 3.0,
-        u_across: 0.2,
-    }
+    TracePoint { x: at[0], y: at[1], arrival, retreat: None, width: 3.0, u_across: 0.2 }
 }
 
 fn bare_picture() -> GrayImage {
@@ -193,12 +264,7 @@ fn last_picture(trace: &Trace) -> GrayImage {
 
 fn film_frame(trace: &Trace, frame: usize) -> FilmFrame {
     let mut picture = bare_picture();
-    for p in trace
-        .paths
-        .iter()
-        .flat_map(|path| &path.points)
-        .filter(|p| p.arrival <= frame)
-    {
+    for p in trace.paths.iter().flat_map(|path| &path.points).filter(|p| p.arrival <= frame) {
         for (dx, dy) in [(0, 0), (1, 0), (0, 1), (-1, 0), (0, -1)] {
             let (x, y) = ((p.x as i64 + dx) as u32, (p.y as i64 + dy) as u32);
             if let Some(pixel) = picture.get_pixel_mut_checked(x, y) {
@@ -206,11 +272,7 @@ fn film_frame(trace: &Trace, frame: usize) -> FilmFrame {
             }
         }
     }
-    FilmFrame {
-        frame,
-        time_s: frame as f64 * STEP_S,
-        picture,
-    }
+    FilmFrame { frame, time_s: frame as f64 * STEP_S, picture }
 }
 
 fn arrivals(trace: &Trace) -> Array2<u32> {
@@ -224,35 +286,20 @@ fn arrivals(trace: &Trace) -> Array2<u32> {
 
 /// A frame's row; `trace` gives what had grown by then.
 fn row(frame: usize, trace: Option<&Trace>) -> FrameRow {
-    let points = || {
-        trace
-            .into_iter()
-            .flat_map(|t| &t.paths)
-            .flat_map(|p| &p.points)
-            .filter(|p| p.arrival <= frame)
-    };
+    let points = || trace.into_iter().flat_map(|t| &t.paths).flat_map(|p| &p.points).filter(|p| p.arrival <= frame);
     let deepest = points().map(|p| p.x).reduce(f64::max);
     let depth = deepest.map(|x| (x - EDGES[0]) * UM_PER_PX);
     let loaded = trace.is_some();
     let usable = !(loaded && (frame == 23 || frame == 24));
     let time = frame as f64 * STEP_S;
     let measured = |value: f64| usable.then_some(value);
-    let roots = trace.map_or(0, |t| {
-        t.paths
-            .iter()
-            .filter(|p| p.points[0].arrival <= frame)
-            .count()
-    });
+    let roots = trace.map_or(0, |t| t.paths.iter().filter(|p| p.points[0].arrival <= frame).count());
     FrameRow {
         frame,
         file: format!("frames/f{frame:04}.png"),
         time_s: time,
         usable,
-        reason: if usable {
-            String::new()
-        } else {
-            "repeats the frame before it, byte for byte".into()
-        },
+        reason: if usable { String::new() } else { "repeats the frame before it, byte for byte".into() },
         drift_x_px: measured(0.4 * (time / 300.0).sin()),
         drift_y_px: measured(0.3 * (time / 410.0).cos()),
         load_n: loaded.then_some(2.08),
@@ -266,12 +313,10 @@ fn row(frame: usize, trace: Option<&Trace>) -> FrameRow {
         filaments: Some(roots),
         tips: Some(roots),
         length_um: Some(points().count() as f64 * UM_PER_PX),
-        alignment: deepest
+        alignment: deepest.filter(|_| usable && loaded).map(|_| -0.2 + 0.7 * (time / 1_200.0)),
+        growth_alignment: deepest
             .filter(|_| usable && loaded)
-            .map(|_| -0.2 + 0.7 * (time / 1_200.0)),
-        growth_alignment: deepest.filter(|_| usable && loaded).map(|_| {
-            (if frame < TURN { -0.35 } else { 0.8 } + 0.2 * ragged(frame as u64)).clamp(-1.0, 1.0)
-        }),
+            .map(|_| (if frame < TURN { -0.35 } else { 0.8 } + 0.2 * ragged(frame as u64)).clamp(-1.0, 1.0)),
         ..FrameRow::default()
     }
 }
@@ -283,16 +328,9 @@ fn frames(trace: &Trace) -> Vec<FrameRow> {
 fn growth(trace: &Trace) -> Vec<GrowthRow> {
     let mut rows = Vec::new();
     for path in &trace.paths {
-        for piece in path
-            .points
-            .chunk_by(|a, b| a.arrival == b.arrival)
-            .filter(|piece| piece.len() > 3)
-        {
+        for piece in path.points.chunk_by(|a, b| a.arrival == b.arrival).filter(|piece| piece.len() > 3) {
             let (a, b) = (piece[0], piece[piece.len() - 1]);
-            let angle = (-(b.y - a.y))
-                .atan2(b.x - a.x)
-                .to_degrees()
-                .rem_euclid(180.0);
+            let angle = (-(b.y - a.y)).atan2(b.x - a.x).to_degrees().rem_euclid(180.0);
             let load = direction(a.arrival);
             let off = (angle - load).rem_euclid(180.0);
             rows.push(GrowthRow {
@@ -348,11 +386,7 @@ fn filaments(trace: &Trace, frames: &[FrameRow]) -> Vec<FilamentRow> {
         root: Root::Plating,
         root_x_px: path.points[0].x,
         root_y_px: path.points[0].y,
-        final_depth_um: path
-            .points
-            .iter()
-            .map(|p| (p.x - EDGES[0]) * UM_PER_PX)
-            .reduce(f64::max),
+        final_depth_um: path.points.iter().map(|p| (p.x - EDGES[0]) * UM_PER_PX).reduce(f64::max),
         final_length_um: path.points.len() as f64 * UM_PER_PX,
         tips: 1,
         bridged: false,
@@ -365,9 +399,8 @@ fn filaments(trace: &Trace, frames: &[FrameRow]) -> Vec<FilamentRow> {
 fn forecasts(frames: &[FrameRow]) -> Vec<ForecastRow> {
     let issue = |row: &FrameRow| {
         let now = row.time_s;
-        let middle = 1_500.0
-            + 240.0 * ragged(row.frame as u64) * (1.0 - now / 1_400.0)
-            + 700.0 * (-now / 300.0_f64).exp();
+        let middle =
+            1_500.0 + 240.0 * ragged(row.frame as u64) * (1.0 - now / 1_400.0) + 700.0 * (-now / 300.0_f64).exp();
         let at = |z: f64| Some(now + (middle - now) * (z * (0.75 - now / 2_400.0)).exp());
         ForecastRow {
             frame: row.frame,
@@ -384,29 +417,19 @@ fn forecasts(frames: &[FrameRow]) -> Vec<ForecastRow> {
             model: "first passage".into(),
         }
     };
-    frames
-        .iter()
-        .filter(|row| row.usable && row.depth_um.is_some())
-        .map(issue)
-        .collect()
+    frames.iter().filter(|row| row.usable && row.depth_um.is_some()).map(issue).collect()
 }
 
 fn load() -> LoadSamples {
     let time_s: Vec<f64> = (0..1_240).map(f64::from).collect();
     let turned = |t: &f64| *t >= TURN as f64 * STEP_S;
     LoadSamples {
-        force_n: time_s
-            .iter()
-            .map(|t| Some(if turned(t) { 1.67 } else { 2.08 }))
-            .collect(),
+        force_n: time_s.iter().map(|t| Some(if turned(t) { 1.67 } else { 2.08 })).collect(),
         stress_mpa: time_s
             .iter()
             .map(|t| Some(if turned(t) { 120.0 } else { 150.0 } + 1.5 * ragged(*t as u64)))
             .collect(),
-        direction_deg: time_s
-            .iter()
-            .map(|t| Some(if turned(t) { 30.0 } else { 90.0 }))
-            .collect(),
+        direction_deg: time_s.iter().map(|t| Some(if turned(t) { 30.0 } else { 90.0 })).collect(),
         time_s,
     }
 }
@@ -414,20 +437,12 @@ fn load() -> LoadSamples {
 fn cell() -> CellSamples {
     let time_s: Vec<f64> = (0..1_240).map(f64::from).collect();
     CellSamples {
-        current_ma: time_s
-            .iter()
-            .map(|t| Some(if *t < 100.0 { 0.0 } else { 0.032 }))
-            .collect(),
+        current_ma: time_s.iter().map(|t| Some(if *t < 100.0 { 0.0 } else { 0.032 })).collect(),
         voltage_v: time_s
             .iter()
             .map(|t| {
-                (!(700.0..740.0).contains(t)).then_some(
-                    if *t < 100.0 {
-                        0.0
-                    } else {
-                        0.061 - t / 60_000.0
-                    } + 0.0008 * ragged(*t as u64),
-                )
+                (!(700.0..740.0).contains(t))
+                    .then_some(if *t < 100.0 { 0.0 } else { 0.061 - t / 60_000.0 } + 0.0008 * ragged(*t as u64))
             })
             .collect(),
         time_s,
@@ -454,12 +469,7 @@ fn summary(results: &Results) -> Summary {
         frames: FrameCount {
             total: results.frames.len(),
             usable,
-            set_aside: set_aside
-                .map(|r| SetAside {
-                    frame: r.frame,
-                    reason: r.reason.clone(),
-                })
-                .collect(),
+            set_aside: set_aside.map(|r| SetAside { frame: r.frame, reason: r.reason.clone() }).collect(),
         },
         um_per_px: UM_PER_PX,
         gap_um: results.facts.gap_um,
@@ -470,30 +480,45 @@ fn summary(results: &Results) -> Summary {
             rate_um_per_s: grew.then_some(0.412),
             rate_ci95: grew.then_some([0.371, 0.455]),
         },
-        alignment: AlignmentSummary {
-            paths: alignment(0.31, [0.12, 0.50]),
-            growth: alignment(0.27, [0.08, 0.47]),
-        },
+        alignment: AlignmentSummary { paths: alignment(0.31, [0.12, 0.50]), growth: alignment(0.27, [0.08, 0.47]) },
         load: LoadSummary {
-            stress_mpa: grew.then_some(Spread {
-                min: 120.0,
-                median: 150.0,
-                max: 150.0,
-            }),
+            stress_mpa: grew.then_some(Spread { min: 120.0, median: 150.0, max: 150.0 }),
             dose_mpa: grew.then_some(126.0),
+        },
+        turns: if grew {
+            TurnsSummary {
+                load: LoadKnown::Stress,
+                steps: 1,
+                turned: 1,
+                p: Some(0.000_4),
+                filaments: Some(9),
+                ..TurnsSummary::default()
+            }
+        } else {
+            TurnsSummary::default()
+        },
+        directions: if grew { vec![direction_row()] } else { Vec::new() },
+        kink_model: grew.then(kink_model),
+        charge: if grew {
+            ChargeSummary {
+                logged: true,
+                charge_mah: Some(0.0107),
+                charge_mah_per_cm2: Some(0.333),
+                plating_half_cycles: 1,
+                depth_gain_um: Some(520.0),
+                visible_um3: Some(4.2e6),
+                faraday_um3: Some(5.2e6),
+                ..ChargeSummary::default()
+            }
+        } else {
+            ChargeSummary::default()
         },
         short: ShortSummary::default(),
         forecast: results.forecasts.last().cloned(),
         settings: serde_json::json!({ "confirm_frames": 2, "trace": { "false_alarms": 0.01 }, "seed": 20_260_305 }),
         inputs: BTreeMap::from([
-            (
-                "run.toml".into(),
-                "6b86b273ff34fce19d6b804eff5a3f5747ada4eaa22f1d49c01e52ddb7875b4b".into(),
-            ),
-            (
-                "load.csv".into(),
-                "d4735e3a265e16eee03f59718b9b5d03019c07d8b6c51f90da3a666eec13ab35".into(),
-            ),
+            ("run.toml".into(), "6b86b273ff34fce19d6b804eff5a3f5747ada4eaa22f1d49c01e52ddb7875b4b".into()),
+            ("load.csv".into(), "d4735e3a265e16eee03f59718b9b5d03019c07d8b6c51f90da3a666eec13ab35".into()),
         ]),
         warnings: if grew {
             vec![

@@ -5,12 +5,14 @@
 //! tables     schema + rows → CSV, Parquet           drawing    shapes of a figure → svg, raster
 //! records    traces.ndjson, summary.json            axes       panels, scales, ticks
 //! words      numbers and times for the eye          figures/   one file a figure
-//! verdict    the run in three sentences             page       report.html
+//! verdict    the run in four sentences              page       report.html
+//! effect     what load and charge did, in words
 //! write      the output folder, swapped in whole
 //! ```
 
 pub mod axes;
 pub mod drawing;
+pub mod effect;
 pub mod figures;
 pub mod page;
 pub mod palette;

@@ -6,6 +6,7 @@
   const shots = JSON.parse(film.textContent);
   const byId = (id) => document.getElementById(id);
   const [shot, scrub, play, readout, axis] = ["shot", "scrub", "play", "readout", "axis"].map(byId);
+  const [mark, turn] = ["load-mark", "load-turn"].map(byId);
   const stretches = [...document.querySelectorAll("#traces [data-shot]")];
   const last = shot.getAttribute("href");
   /** Milliseconds a frame stands while playing. */
@@ -20,7 +21,17 @@
     readout.textContent = words;
     scrub.value = String(index);
     scrub.setAttribute("aria-valuetext", words);
+    if (mark) aim(now);
     if (axis && now.axis !== null) axis.style.transform = "rotate(" + -now.axis + "deg)";
+  }
+
+  /** Lays the mark on the picture along the load axis of the frame: arrows inwards where it presses. */
+  function aim(now) {
+    mark.style.display = now.axis === null ? "none" : "";
+    if (now.axis === null) return;
+    turn.setAttribute("transform", "rotate(" + -now.axis + ")");
+    for (const p of mark.querySelectorAll(".press")) p.style.display = now.push > 0 ? "" : "none";
+    for (const p of mark.querySelectorAll(".pull")) p.style.display = now.push < 0 ? "" : "none";
   }
 
   function stop() {

@@ -15,6 +15,7 @@ use super::verdict::{SAFETY, Verdict};
 use super::words::bind;
 use crate::results::Results;
 
+mod effects;
 mod grid;
 mod lists;
 mod player;
@@ -33,12 +34,14 @@ struct Page<'a> {
     note: Option<&'a str>,
     facts: Vec<[String; 2]>,
     strip: Option<strip::Strip>,
-    verdict: [[String; 2]; 3],
+    verdict: [[String; 2]; 4],
     warnings: &'a [String],
     cautions: Vec<&'a str>,
     player: Option<player::Player>,
     figures: Vec<Shown>,
     not_drawn: String,
+    load: effects::LoadPart,
+    charge: effects::ChargePart,
     tables: Vec<grid::Grid>,
     set_aside: Vec<[String; 2]>,
     settings: Vec<[String; 2]>,
@@ -86,81 +89,66 @@ fn page(results: &Results) -> Result<Page<'_>, Error> {
         verdict: [
             ["Growth".into(), bind(&verdict.growth)],
             ["Direction".into(), bind(&verdict.direction)],
+            ["Load".into(), bind(&verdict.load)],
             ["Forecast".into(), bind(&verdict.forecast)],
         ],
         warnings: &summary.warnings,
-        cautions: std::iter::once(SAFETY)
-            .chain(results.cautions.iter().map(String::as_str))
-            .collect(),
+        cautions: std::iter::once(SAFETY).chain(results.cautions.iter().map(String::as_str)).collect(),
         player: player::of(results)?,
         figures,
         not_drawn,
+        load: effects::load(results)?,
+        charge: effects::charge(results)?,
         tables: vec![
             grid::of("Filaments", &FILAMENTS, &results.filaments),
             grid::of("Forecasts as issued", &FORECASTS, &results.forecasts),
         ],
         set_aside: lists::set_aside(summary),
         settings: lists::flat(&summary.settings),
-        inputs: summary
-            .inputs
-            .iter()
-            .map(|(path, hash)| [path.as_str(), hash.as_str()])
-            .collect(),
+        inputs: summary.inputs.iter().map(|(path, hash)| [path.as_str(), hash.as_str()]).collect(),
         made_by: format!("{} {}", summary.tool, summary.version),
     })
 }
 
 /// The themed colours as CSS variables, light then dark, and the classes of the figures that use them.
 fn colours() -> String {
-    let light: String = THEMED
-        .iter()
-        .map(|(ink, name)| format!("--{name}:{};", ink.light().hex()))
-        .collect();
-    let dark: String = THEMED
-        .iter()
-        .map(|(ink, name)| format!("--{name}:{};", ink.dark().hex()))
-        .collect();
+    let light: String = THEMED.iter().map(|(ink, name)| format!("--{name}:{};", ink.light().hex())).collect();
+    let dark: String = THEMED.iter().map(|(ink, name)| format!("--{name}:{};", ink.dark().hex())).collect();
     let classes: String = THEMED
         .iter()
-        .map(|(_, name)| {
-            format!(".s-{name}{{stroke:var(--{name})}}.f-{name}{{fill:var(--{name})}}")
-        })
+        .map(|(_, name)| format!(".s-{name}{{stroke:var(--{name})}}.f-{name}{{fill:var(--{name})}}"))
         .collect();
-    let ramp: Vec<String> = (0..=12)
-        .map(|i| super::palette::arrival(f64::from(i) / 12.0).hex())
-        .collect();
+    let ramp: Vec<String> = (0..=12).map(|i| super::palette::arrival(f64::from(i) / 12.0).hex()).collect();
     format!(
-        ":root{{{light}--casing:{};--ramp:linear-gradient(to right,{})}}@media screen and (prefers-color-scheme:dark){{:root{{{dark}}}}}{classes}",
+        ":root{{{light}--casing:{};--load-mark:{};--ramp:linear-gradient(to right,{})}}@media screen and (prefers-color-scheme:dark){{:root{{{dark}}}}}{classes}",
         Ink::Black.light().hex(),
+        Ink::LoadMark.light().hex(),
         ramp.join(",")
     )
 }
 
 /// The figure in both layouts; `None` where there is nothing to show.
 fn shown(figure: &Figure, results: &Results) -> Result<Option<Shown>, Error> {
-    let draw = |format| {
-        (figure.draw)(results, format)
-            .map(|drawing| svg::write(&drawing, 0.0))
-            .transpose()
-    };
+    let draw = |format| (figure.draw)(results, format).map(|drawing| svg::write(&drawing, 0.0)).transpose();
     let (Some(wide), Some(narrow)) = (draw(Format::Wide)?, draw(Format::Narrow)?) else {
         return Ok(None);
     };
     let numbers = lists::numbers(figure.name, results);
-    Ok(Some(Shown {
-        name: figure.name,
-        title: figure.title,
-        caption: figure.caption,
-        numbers,
-        wide,
-        narrow,
-    }))
+    Ok(Some(Shown { name: figure.name, title: figure.title, caption: figure.caption, numbers, wide, narrow }))
 }
+
+/// Figures that stand elsewhere on the page than under the evidence.
+const ELSEWHERE: [&str; 5] = ["overlay", "steering", "kink", "speed", "charge"];
 
 /// The figures of the evidence: those drawn, and the titles of those with nothing to show.
 fn evidence(results: &Results) -> Result<(Vec<Shown>, String), Error> {
+    drawn(results, |name| !ELSEWHERE.contains(&name))
+}
+
+/// The figures that `keep` names: those drawn, and the titles of those with nothing to show.
+fn drawn(results: &Results, keep: impl Fn(&str) -> bool) -> Result<(Vec<Shown>, String), Error> {
     let (mut drawn, mut missing) = (Vec::new(), Vec::new());
-    for figure in FIGURES.iter().filter(|figure| figure.name != "overlay") {
+    for figure in FIGURES.iter().filter(|figure| keep(figure.name)) {
         match shown(figure, results)? {
             Some(shown) => drawn.push(shown),
             None => missing.push(figure.title.to_lowercase()),
@@ -194,10 +182,7 @@ mod tests {
         }
         assert!(html.contains("default-src 'none'"));
         let addresses = html.matches("http://").count() + html.matches("https://").count();
-        assert_eq!(
-            addresses,
-            html.matches("xmlns=\"http://www.w3.org/2000/svg\"").count()
-        );
+        assert_eq!(addresses, html.matches("xmlns=\"http://www.w3.org/2000/svg\"").count());
     }
 
     #[test]
@@ -209,27 +194,15 @@ mod tests {
         results.facts.note = Some(hostile.into());
         results.summary.warnings = vec![hostile.into()];
         results.cautions = vec![hostile.into()];
-        results
-            .summary
-            .inputs
-            .insert(hostile.into(), hostile.into());
+        results.summary.inputs.insert(hostile.into(), hostile.into());
         results.summary.settings = serde_json::json!({ hostile: hostile });
         results.summary.frames.set_aside[0].reason = hostile.into();
         results.forecasts[0].model = hostile.into();
-        results
-            .frames
-            .iter_mut()
-            .for_each(|row| row.file = hostile.into());
+        results.frames.iter_mut().for_each(|row| row.file = hostile.into());
         let plain = render(&example::growing()).unwrap();
         let html = render(&results).unwrap();
-        assert_eq!(
-            html.matches("<script").count(),
-            plain.matches("<script").count()
-        );
-        assert_eq!(
-            html.matches("</script").count(),
-            plain.matches("</script").count()
-        );
+        assert_eq!(html.matches("<script").count(), plain.matches("<script").count());
+        assert_eq!(html.matches("</script").count(), plain.matches("</script").count());
         assert!(!html.contains("\" onmouseover"));
         assert!(!html.contains("11111103"), "the template ran the name");
     }
@@ -253,8 +226,7 @@ mod tests {
             ("still", example::still()),
             ("empty", Results::default()),
         ] {
-            crate::report::write(&results, &home.join(name), crate::report::Save::default())
-                .unwrap();
+            crate::report::write(&results, &home.join(name), crate::report::Save::default()).unwrap();
         }
     }
 }

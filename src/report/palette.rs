@@ -19,11 +19,7 @@ impl Rgb {
     pub fn luminance(self) -> f64 {
         let linear = |byte: u8| {
             let c = f64::from(byte) / 255.0;
-            if c <= 0.040_45 {
-                c / 12.92
-            } else {
-                libm::pow((c + 0.055) / 1.055, 2.4)
-            }
+            if c <= 0.040_45 { c / 12.92 } else { libm::pow((c + 0.055) / 1.055, 2.4) }
         };
         0.2126 * linear(self.0) + 0.7152 * linear(self.1) + 0.0722 * linear(self.2)
     }
@@ -68,11 +64,7 @@ fn linear_srgb(l: f64, c: f64, h: f64) -> [f64; 3] {
 /// A linear component as an sRGB byte (IEC 61966-2-1).
 fn encode(linear: f64) -> u8 {
     let x = linear.clamp(0.0, 1.0);
-    let s = if x <= 0.003_130_8 {
-        12.92 * x
-    } else {
-        1.055 * libm::pow(x, 1.0 / 2.4) - 0.055
-    };
+    let s = if x <= 0.003_130_8 { 12.92 * x } else { 1.055 * libm::pow(x, 1.0 / 2.4) - 0.055 };
     (s * 255.0).round() as u8
 }
 
@@ -99,6 +91,8 @@ pub enum Ink {
     Current,
     /// White, in both themes: lines on a picture.
     White,
+    /// The load, in both themes: its mark on a picture.
+    LoadMark,
     /// Near black, in both themes: casings on a picture.
     Black,
     /// Time of arrival, 0 (first) to 255 (last), the same in both themes.
@@ -132,6 +126,7 @@ impl Ink {
             Self::Voltage => oklch(0.42, 0.09, 185.0),
             Self::Current => oklch(0.54, 0.17, 325.0),
             Self::White => Rgb(255, 255, 255),
+            Self::LoadMark => oklch(0.86, 0.15, 88.0),
             Self::Black => oklch(0.20, 0.02, 220.0),
             Self::Arrival(step) => arrival(f64::from(step) / 255.0),
         }
@@ -155,10 +150,7 @@ impl Ink {
 
     /// The class that a themed ink carries in an SVG.
     pub fn name(self) -> Option<&'static str> {
-        THEMED
-            .iter()
-            .find(|(ink, _)| *ink == self)
-            .map(|(_, name)| *name)
+        THEMED.iter().find(|(ink, _)| *ink == self).map(|(_, name)| *name)
     }
 }
 
@@ -187,26 +179,16 @@ mod tests {
 
     #[test]
     fn words_can_be_read_on_both_papers() {
-        let words = THEMED
-            .into_iter()
-            .filter(|(ink, _)| !matches!(ink, Ink::Paper | Ink::Grid));
+        let words = THEMED.into_iter().filter(|(ink, _)| !matches!(ink, Ink::Paper | Ink::Grid));
         for (ink, name) in words {
-            assert!(
-                ink.light().contrast(Ink::Paper.light()) >= 4.5,
-                "{name} on light paper"
-            );
-            assert!(
-                ink.dark().contrast(Ink::Paper.dark()) >= 4.5,
-                "{name} on dark paper"
-            );
+            assert!(ink.light().contrast(Ink::Paper.light()) >= 4.5, "{name} on light paper");
+            assert!(ink.dark().contrast(Ink::Paper.dark()) >= 4.5, "{name} on dark paper");
         }
     }
 
     #[test]
     fn arrival_gets_lighter_with_time() {
-        let steps: Vec<f64> = (0..=50)
-            .map(|i| arrival(f64::from(i) / 50.0).luminance())
-            .collect();
+        let steps: Vec<f64> = (0..=50).map(|i| arrival(f64::from(i) / 50.0).luminance()).collect();
         assert!(steps.windows(2).all(|pair| pair[1] > pair[0]), "{steps:?}");
     }
 }

@@ -32,29 +32,19 @@ pub fn paint(drawing: &Drawing, margin: f64, scale: f64) -> Result<RgbImage, Err
     let side = |length: f64, by: f64| (length * by).round().max(1.0) as u32;
     let [w, h] = [drawing.width, drawing.height].map(|length| length + 2.0 * margin);
     let paper = Ink::Paper.light();
-    let mut picture = RgbImage::from_pixel(
-        side(w, fine),
-        side(h, fine),
-        image::Rgb([paper.0, paper.1, paper.2]),
-    );
+    let mut picture = RgbImage::from_pixel(side(w, fine), side(h, fine), image::Rgb([paper.0, paper.1, paper.2]));
     register()?;
     let place = |p: &Point| p.map(|v| ((v + margin) * fine).round() as i32);
     for shape in &drawing.shapes {
         if let Shape::Picture { at, size, image } = shape {
-            let enlarged = resize(
-                image,
-                side(size[0], fine),
-                side(size[1], fine),
-                FilterType::Triangle,
-            );
+            let enlarged = resize(image, side(size[0], fine), side(size[1], fine), FilterType::Triangle);
             let rgb = image::DynamicImage::ImageLuma8(enlarged).to_rgb8();
             let [x, y] = place(at);
             replace(&mut picture, &rgb, x.into(), y.into());
         } else {
             let size = picture.dimensions();
             let mut backend = BitMapBackend::with_buffer(&mut picture, size);
-            element(&mut backend, shape, fine, |p| place(p).into())
-                .map_err(|why| Error::made("a figure", why))?;
+            element(&mut backend, shape, fine, |p| place(p).into()).map_err(|why| Error::made("a figure", why))?;
         }
     }
     Ok(thumbnail(&picture, side(w, scale), side(h, scale)))
@@ -78,14 +68,9 @@ fn register() -> Result<(), Error> {
     let known = *DONE.get_or_init(|| {
         let regular = include_bytes!("fonts/NotoSans-Regular.ttf");
         let bold = include_bytes!("fonts/NotoSans-Bold.ttf");
-        register_font(FACE, FontStyle::Normal, regular).is_ok()
-            && register_font(FACE, FontStyle::Bold, bold).is_ok()
+        register_font(FACE, FontStyle::Normal, regular).is_ok() && register_font(FACE, FontStyle::Bold, bold).is_ok()
     });
-    if known {
-        Ok(())
-    } else {
-        Err(Error::made("a figure", "the typeface cannot be read"))
-    }
+    if known { Ok(()) } else { Err(Error::made("a figure", "the typeface cannot be read")) }
 }
 
 fn element<B: DrawingBackend>(
@@ -99,46 +84,19 @@ fn element<B: DrawingBackend>(
         RGBColor(rgb.0, rgb.1, rgb.2).mix(opacity)
     };
     match shape {
-        Shape::Line {
-            points,
-            ink,
-            width,
-            dash,
-            opacity,
-        } => {
-            let style =
-                colour(*ink, *opacity).stroke_width((width * scale).round().max(1.0) as u32);
-            dashes(points, *dash)
-                .iter()
-                .try_for_each(|piece| backend.draw_path(piece.iter().map(&place), &style))
+        Shape::Line { points, ink, width, dash, opacity } => {
+            let style = colour(*ink, *opacity).stroke_width((width * scale).round().max(1.0) as u32);
+            dashes(points, *dash).iter().try_for_each(|piece| backend.draw_path(piece.iter().map(&place), &style))
         }
-        Shape::Area {
-            points,
-            ink,
-            opacity,
-        } => backend.fill_polygon(points.iter().map(&place), &colour(*ink, *opacity)),
-        Shape::Disc {
-            at,
-            radius,
-            ink,
-            opacity,
-        } => {
+        Shape::Area { points, ink, opacity } => {
+            backend.fill_polygon(points.iter().map(&place), &colour(*ink, *opacity))
+        }
+        Shape::Disc { at, radius, ink, opacity } => {
             let r = (radius * scale).round().max(1.0) as u32;
             backend.draw_circle(place(at), r, &colour(*ink, *opacity), true)
         }
-        Shape::Text {
-            at,
-            words,
-            size,
-            ink,
-            anchor,
-            bold,
-        } => {
-            let style = if *bold {
-                FontStyle::Bold
-            } else {
-                FontStyle::Normal
-            };
+        Shape::Text { at, words, size, ink, anchor, bold } => {
+            let style = if *bold { FontStyle::Bold } else { FontStyle::Normal };
             let h_pos = match anchor {
                 Anchor::Start => HPos::Left,
                 Anchor::Middle => HPos::Center,
@@ -148,12 +106,16 @@ fn element<B: DrawingBackend>(
             let ink = colour(*ink, 1.0);
             let style = font.color(&ink).pos(Pos::new(h_pos, VPos::Bottom));
             let base = [at[0], at[1] + size * DESCENT];
-            backend.draw_text(words, &style, place(&base))
+            backend.draw_text(&words.replace(MINUS, DASH), &style, place(&base))
         }
         Shape::Picture { .. } => Ok(()),
     }
     .map_err(|why| why.to_string())
 }
+
+/// The typeface holds no minus sign; its en dash is as wide and as high.
+const MINUS: char = '\u{2212}';
+const DASH: &str = "\u{2013}";
 
 /// Part of the type's height that hangs below its base line (from the typeface's own metrics).
 const DESCENT: f64 = 0.24;
@@ -171,10 +133,7 @@ fn dashes(points: &[Point], dash: f64) -> Vec<Vec<Point>> {
         let mut done = 0.0;
         while length - done > left {
             done += left;
-            let corner = [
-                ax + (bx - ax) * done / length,
-                ay + (by - ay) * done / length,
-            ];
+            let corner = [ax + (bx - ax) * done / length, ay + (by - ay) * done / length];
             if on && let Some(piece) = pieces.last_mut() {
                 piece.push(corner);
             } else {

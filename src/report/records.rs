@@ -27,18 +27,11 @@ pub fn write_traces(results: &Results, path: &Path, mut out: impl Write) -> Resu
     for trace in &results.trace.paths {
         let points = trace.points.iter().map(|p| {
             let row = results.frames.get(p.arrival).ok_or_else(|| {
-                Error::made(
-                    "traces.ndjson",
-                    format!("path {} names frame {}", trace.path, p.arrival),
-                )
+                Error::made("traces.ndjson", format!("path {} names frame {}", trace.path, p.arrival))
             })?;
             Ok([p.x, p.y, row.time_s, p.width].map(|v| round(v, DECIMALS).unwrap_or(v)))
         });
-        let line = Line {
-            filament: trace.filament,
-            path: trace.path,
-            points: points.collect::<Result<_, Error>>()?,
-        };
+        let line = Line { filament: trace.filament, path: trace.path, points: points.collect::<Result<_, Error>>()? };
         let json = serde_json::to_string(&line).map_err(|why| Error::made("traces.ndjson", why))?;
         writeln!(out, "{json}").map_err(|source| Error::io(path, source))?;
     }
@@ -50,8 +43,7 @@ pub fn write_traces(results: &Results, path: &Path, mut out: impl Write) -> Resu
 /// # Errors
 /// [`Error::Made`] when a value cannot be written as JSON.
 pub fn summary_json(summary: &Summary) -> Result<String, Error> {
-    let mut json =
-        serde_json::to_string_pretty(summary).map_err(|why| Error::made("summary.json", why))?;
+    let mut json = serde_json::to_string_pretty(summary).map_err(|why| Error::made("summary.json", why))?;
     json.push('\n');
     Ok(json)
 }

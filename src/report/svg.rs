@@ -35,18 +35,8 @@ pub fn write(drawing: &Drawing, margin: f64) -> Result<String, Error> {
 
 fn element(shape: &Shape) -> Result<String, Error> {
     Ok(match shape {
-        Shape::Line {
-            points,
-            ink,
-            width,
-            dash,
-            opacity,
-        } => {
-            let dashes = if *dash > 0.0 {
-                format!(" stroke-dasharray=\"{dash}\"")
-            } else {
-                String::new()
-            };
+        Shape::Line { points, ink, width, dash, opacity } => {
+            let dashes = if *dash > 0.0 { format!(" stroke-dasharray=\"{dash}\"") } else { String::new() };
             format!(
                 "<polyline points=\"{}\" fill=\"none\" stroke-width=\"{width}\" stroke-linejoin=\"round\" \
                  stroke-linecap=\"round\"{dashes}{}/>",
@@ -54,23 +44,10 @@ fn element(shape: &Shape) -> Result<String, Error> {
                 paint("stroke", *ink, *opacity),
             )
         }
-        Shape::Area {
-            points,
-            ink,
-            opacity,
-        } => {
-            format!(
-                "<polygon points=\"{}\"{}/>",
-                corners(points),
-                paint("fill", *ink, *opacity)
-            )
+        Shape::Area { points, ink, opacity } => {
+            format!("<polygon points=\"{}\"{}/>", corners(points), paint("fill", *ink, *opacity))
         }
-        Shape::Disc {
-            at: [x, y],
-            radius,
-            ink,
-            opacity,
-        } => {
+        Shape::Disc { at: [x, y], radius, ink, opacity } => {
             format!(
                 "<circle cx=\"{}\" cy=\"{}\" r=\"{radius}\"{}/>",
                 short(*x),
@@ -78,14 +55,7 @@ fn element(shape: &Shape) -> Result<String, Error> {
                 paint("fill", *ink, *opacity)
             )
         }
-        Shape::Text {
-            at: [x, y],
-            words,
-            size,
-            ink,
-            anchor,
-            bold,
-        } => {
+        Shape::Text { at: [x, y], words, size, ink, anchor, bold } => {
             let anchor = match anchor {
                 Anchor::Start => "",
                 Anchor::Middle => " text-anchor=\"middle\"",
@@ -100,11 +70,7 @@ fn element(shape: &Shape) -> Result<String, Error> {
                 escape(words),
             )
         }
-        Shape::Picture {
-            at: [x, y],
-            size: [w, h],
-            image,
-        } => format!(
+        Shape::Picture { at: [x, y], size: [w, h], image } => format!(
             "<image x=\"{x}\" y=\"{y}\" width=\"{w}\" height=\"{h}\" preserveAspectRatio=\"none\" href=\"{}\"/>",
             data_uri::jpeg(image, data_uri::LARGE)?,
         ),
@@ -123,10 +89,7 @@ fn paint(what: &str, ink: Ink, opacity: f64) -> String {
 }
 
 fn corners(points: &[Point]) -> String {
-    let list: Vec<String> = points
-        .iter()
-        .map(|[x, y]| format!("{},{}", short(*x), short(*y)))
-        .collect();
+    let list: Vec<String> = points.iter().map(|[x, y]| format!("{},{}", short(*x), short(*y))).collect();
     list.join(" ")
 }
 
@@ -160,13 +123,7 @@ mod tests {
     #[test]
     fn hostile_words_are_inert() {
         let mut drawing = Drawing::new(10.0, 10.0, "</title><script>alert(1)</script>");
-        drawing.text(
-            [0.0, 0.0],
-            "\" onload=\"x\u{0}",
-            10.0,
-            Ink::Text,
-            Anchor::Start,
-        );
+        drawing.text([0.0, 0.0], "\" onload=\"x\u{0}", 10.0, Ink::Text, Anchor::Start);
         let svg = write(&drawing, 0.0).unwrap();
         assert!(!svg.contains("<script"));
         assert!(!svg.contains("\" onload"));

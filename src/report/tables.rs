@@ -5,8 +5,7 @@
 use std::io::Write;
 
 use polars::prelude::{
-    Column as Series, CsvWriter, DataFrame, NamedFrom, ParquetCompression, ParquetWriter,
-    SerWriter, Series as Plain,
+    Column as Series, CsvWriter, DataFrame, NamedFrom, ParquetCompression, ParquetWriter, SerWriter, Series as Plain,
 };
 
 use super::Error;
@@ -18,10 +17,7 @@ use super::schema::{Table, Values, round};
 /// [`Error::Made`] when the library cannot write to `out`.
 pub fn write_csv<R>(table: &Table<R>, rows: &[R], out: impl Write) -> Result<(), Error> {
     let mut frame = data_frame(table, rows)?;
-    CsvWriter::new(out)
-        .n_threads(1)
-        .finish(&mut frame)
-        .map_err(|why| Error::made(table.name, why))
+    CsvWriter::new(out).n_threads(1).finish(&mut frame).map_err(|why| Error::made(table.name, why))
 }
 
 /// The rows as Parquet: one row group, not compressed beyond its own encodings.
@@ -40,11 +36,7 @@ pub fn write_parquet<R>(table: &Table<R>, rows: &[R], out: impl Write) -> Result
 
 /// The table in memory, columns as in the schema.
 fn data_frame<R>(table: &Table<R>, rows: &[R]) -> Result<DataFrame, Error> {
-    let columns = table
-        .columns
-        .iter()
-        .map(|c| series(c.name, &c.values, rows))
-        .collect();
+    let columns = table.columns.iter().map(|c| series(c.name, &c.values, rows)).collect();
     DataFrame::new(rows.len(), columns).map_err(|why| Error::made(table.name, why))
 }
 
@@ -74,7 +66,7 @@ mod tests {
 
     use super::*;
     use crate::report::example;
-    use crate::report::schema::{FILAMENTS, FORECASTS, FRAMES, GROWTH, PATHS};
+    use crate::report::schema::{FILAMENTS, FORECASTS, FRAMES, GROWTH, PATHS, TURNS};
 
     fn csv<R>(table: &Table<R>, rows: &[R]) -> String {
         let mut bytes = Vec::new();
@@ -92,13 +84,26 @@ mod tests {
                      y1_px,ends_in,";
         let growth = "frame,time_s,load_time_s,filament,x_px,y_px,length_um,angle_deg,load_direction_deg,angle_to_load_deg,\
                       stress_mpa,";
-        let filaments = "filament,first_time_s,root,root_x_px,root_y_px,final_depth_um,final_length_um,tips,bridged,turned\n";
-        let forecasts = "frame,issued_at_s,p025_s,p10_s,p25_s,p50_s,p75_s,p90_s,p975_s,horizon_s,chance_by_horizon,model\n";
+        let filaments =
+            "filament,first_time_s,root,root_x_px,root_y_px,final_depth_um,final_length_um,tips,bridged,turned\n";
+        let forecasts =
+            "frame,issued_at_s,p025_s,p10_s,p25_s,p50_s,p75_s,p90_s,p975_s,horizon_s,chance_by_horizon,model\n";
         assert!(csv(&FRAMES, &[]).starts_with(frames));
         assert!(csv(&PATHS, &[]).starts_with(paths));
         assert!(csv(&GROWTH, &[]).starts_with(growth));
         assert_eq!(csv(&FILAMENTS, &[]), filaments);
         assert_eq!(csv(&FORECASTS, &[]), forecasts);
+    }
+
+    #[test]
+    fn a_step_of_the_load_is_a_row() {
+        let text = csv(&TURNS, &example::growing().turns);
+        assert!(
+            text.starts_with("step,time_s,axis_before_deg,axis_after_deg,stress_before_mpa,stress_after_mpa,"),
+            "{text}"
+        );
+        assert!(text.lines().nth(1).unwrap().starts_with("1,720.0,90.0,30.0,150.0,120.0,30.0,"), "{text}");
+        assert!(text.trim_end().ends_with(",9,7,0.9,0.0004,turned"), "{text}");
     }
 
     #[test]
@@ -110,10 +115,7 @@ mod tests {
         results.frames[0].file = "a,\"b\".png".into();
         let text = csv(&FRAMES, &results.frames);
         let line = text.lines().nth(1).unwrap();
-        assert!(
-            line.starts_with("0,\"a,\"\"b\"\".png\",0.0,true,,,0.3,2.08,90.0,150.0,,,"),
-            "{line}"
-        );
+        assert!(line.starts_with("0,\"a,\"\"b\"\".png\",0.0,true,,,0.3,2.08,90.0,150.0,,,"), "{line}");
     }
 
     #[test]

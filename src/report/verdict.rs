@@ -1,4 +1,4 @@
-//! The run in three sentences: what grew, which way, and when contact is to be expected.
+//! The run in four sentences: what grew, which way, whether the load did it, and when contact is to be expected.
 //! Says "too few", "none was logged" or "nothing was seen" where that is so.
 
 use super::words::{counted, duration, figures, fixed, sentence, signed, with_uncertainty};
@@ -6,20 +6,21 @@ use crate::measure::ForecastRow;
 use crate::results::{Results, ShortEvidence};
 
 /// Stands with every forecast.
-pub const CAUTION: &str =
-    "A forecast is no interlock: a cell on test can vent, burn or shatter at any time.";
+pub const CAUTION: &str = "A forecast is no interlock: a cell on test can vent, burn or shatter at any time.";
 
 /// What a person must know before acting on a report of a cell on test.
 pub const SAFETY: &str = "A cell on test can vent, burn or shatter, and lithium reacts with water. Nothing on this page is an interlock \
      or a safety limit. Follow your lab's own rules, local codes and qualified people.";
 
-/// What happened, which way it grew, what is to come.
+/// What happened, which way it grew, whether the load did it, what is to come.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct Verdict {
     /// Filaments, depth, rate, short.
     pub growth: String,
     /// Alignment with the load axis.
     pub direction: String,
+    /// Whether growth turned when the load did.
+    pub load: String,
     /// The last forecast, always with the caution.
     pub forecast: String,
 }
@@ -30,32 +31,24 @@ impl Verdict {
         Self {
             growth: growth(results),
             direction: direction(results),
+            load: super::effect::load_in_short(results),
             forecast: forecast(results),
         }
     }
 
     /// The sentences in order.
-    pub fn sentences(&self) -> [&str; 3] {
-        [&self.growth, &self.direction, &self.forecast]
+    pub fn sentences(&self) -> [&str; 4] {
+        [&self.growth, &self.direction, &self.load, &self.forecast]
     }
 }
 
 /// Whether any metal was traced.
 fn grew(results: &Results) -> bool {
-    !results.filaments.is_empty()
-        || results
-            .summary
-            .depth
-            .final_um
-            .is_some_and(|depth| depth > 0.0)
+    !results.filaments.is_empty() || results.summary.depth.final_um.is_some_and(|depth| depth > 0.0)
 }
 
 fn length_of_run(results: &Results) -> f64 {
-    results
-        .frames
-        .iter()
-        .map(|row| row.time_s)
-        .fold(0.0, f64::max)
+    results.frames.iter().map(|row| row.time_s).fold(0.0, f64::max)
 }
 
 fn growth(results: &Results) -> String {
@@ -71,22 +64,14 @@ fn growth(results: &Results) -> String {
     if !grew(results) {
         return format!("No growth was seen {over}{}.", short_clause(results));
     }
-    let rooted = results
-        .filaments
-        .iter()
-        .filter(|f| f.final_depth_um.is_some())
-        .count();
+    let rooted = results.filaments.iter().filter(|f| f.final_depth_um.is_some()).count();
     let elsewhere = match results.filaments.len() - rooted {
         0 => String::new(),
         n => format!(" and {n} elsewhere"),
     };
     let Some(depth) = summary.depth.final_um else {
         let all = counted(results.filaments.len(), "filament", "filaments");
-        return format!(
-            "{} grew {over}, none of them from the plating edge{}.",
-            sentence(&all),
-            short_clause(results)
-        );
+        return format!("{} grew {over}, none of them from the plating edge{}.", sentence(&all), short_clause(results));
     };
     let deepest = format!("{} µm", with_uncertainty(depth, summary.depth.u_final_um));
     let share = match (summary.depth.final_fraction, summary.gap_um) {
@@ -166,30 +151,18 @@ fn direction(results: &Results) -> String {
     }
     let growth = &results.summary.alignment.growth;
     let Some(value) = growth.value else {
-        let logged = results
-            .frames
-            .iter()
-            .any(|row| row.load_direction_deg.is_some());
+        let logged = results.frames.iter().any(|row| row.load_direction_deg.is_some());
         return if logged {
-            "No growth could be matched with the load of its time, so its alignment is not given."
-                .into()
+            "No growth could be matched with the load of its time, so its alignment is not given.".into()
         } else {
             "No load axis was logged, so growth is not judged against one.".into()
         };
     };
     let filaments = counted(growth.n, "filament", "filaments");
-    let angle = growth
-        .mean_angle_to_load_deg
-        .map_or_else(String::new, |a| format!(", mean angle {}°", fixed(a, 0)));
+    let angle = growth.mean_angle_to_load_deg.map_or_else(String::new, |a| format!(", mean angle {}°", fixed(a, 0)));
     let stress = match results.summary.load.stress_mpa {
-        Some(s) if s.median > 0.0 => format!(
-            ", under a median of {} MPa of compression",
-            figures(s.median, 3)
-        ),
-        Some(s) if s.median < 0.0 => format!(
-            ", under a median of {} MPa of tension",
-            figures(-s.median, 3)
-        ),
+        Some(s) if s.median > 0.0 => format!(", under a median of {} MPa of compression", figures(s.median, 3)),
+        Some(s) if s.median < 0.0 => format!(", under a median of {} MPa of tension", figures(-s.median, 3)),
         _ => String::new(),
     };
     let Some([low, high]) = growth.ci95 else {
@@ -231,22 +204,13 @@ fn forecast(results: &Results) -> String {
             format!("If metal reaches the far edge, the forecast puts {}{chance}.", quantiles(row))
         }
     };
-    if results.summary.forecast.is_some() {
-        format!("{said} {CAUTION}")
-    } else {
-        said
-    }
+    if results.summary.forecast.is_some() { format!("{said} {CAUTION}") } else { said }
 }
 
 fn quantiles(row: &ForecastRow) -> String {
     match (row.p10_s, row.p50_s, row.p90_s) {
         (Some(low), Some(middle), Some(high)) => {
-            format!(
-                "contact at {} (80 % interval {} to {})",
-                duration(middle),
-                duration(low),
-                duration(high)
-            )
+            format!("contact at {} (80 % interval {} to {})", duration(middle), duration(low), duration(high))
         }
         _ => "no time to contact, for the record allows none".into(),
     }
@@ -270,34 +234,16 @@ mod tests {
     fn a_growing_cell_is_told_with_its_uncertainty() {
         let verdict = Verdict::of(&example::growing());
         assert!(verdict.growth.contains("±"), "{}", verdict.growth);
-        assert!(
-            verdict.direction.contains("95 % interval"),
-            "{}",
-            verdict.direction
-        );
-        assert!(
-            verdict.forecast.contains("80 % interval"),
-            "{}",
-            verdict.forecast
-        );
+        assert!(verdict.direction.contains("95 % interval"), "{}", verdict.direction);
+        assert!(verdict.forecast.contains("80 % interval"), "{}", verdict.forecast);
         assert!(verdict.forecast.ends_with(CAUTION));
     }
 
     #[test]
     fn nothing_is_told_as_nothing() {
         let verdict = Verdict::of(&example::still());
-        assert!(
-            verdict
-                .growth
-                .starts_with("No growth was seen in 12 usable frames"),
-            "{}",
-            verdict.growth
-        );
-        assert!(
-            verdict
-                .forecast
-                .contains("does not show that the cell is safe")
-        );
+        assert!(verdict.growth.starts_with("No growth was seen in 12 usable frames"), "{}", verdict.growth);
+        assert!(verdict.forecast.contains("does not show that the cell is safe"));
     }
 
     #[test]
@@ -305,35 +251,16 @@ mod tests {
         let mut results = example::growing();
         results.summary.alignment.growth.ci95 = None;
         results.summary.alignment.growth.n = 1;
-        assert!(
-            Verdict::of(&results)
-                .direction
-                .contains("one filament is too few to say more")
-        );
+        assert!(Verdict::of(&results).direction.contains("one filament is too few to say more"));
         results.summary.alignment.growth.value = None;
-        results
-            .frames
-            .iter_mut()
-            .for_each(|row| row.load_direction_deg = None);
-        assert!(
-            Verdict::of(&results)
-                .direction
-                .starts_with("No load axis was logged")
-        );
+        results.frames.iter_mut().for_each(|row| row.load_direction_deg = None);
+        assert!(Verdict::of(&results).direction.starts_with("No load axis was logged"));
     }
 
     #[test]
     fn a_short_is_told_with_its_evidence() {
         let verdict = Verdict::of(&example::shorted());
-        assert!(
-            verdict.growth.contains("the cell's log shows a short at"),
-            "{}",
-            verdict.growth
-        );
-        assert!(
-            verdict
-                .forecast
-                .starts_with("The last forecast before the short")
-        );
+        assert!(verdict.growth.contains("the cell's log shows a short at"), "{}", verdict.growth);
+        assert!(verdict.forecast.starts_with("The last forecast before the short"));
     }
 }

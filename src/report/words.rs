@@ -3,11 +3,7 @@
 /// `value` with `digits` significant figures, without exponent for everyday sizes.
 pub fn figures(value: f64, digits: i32) -> String {
     if value == 0.0 || !value.is_finite() {
-        return if value == 0.0 {
-            "0".into()
-        } else {
-            "not a number".into()
-        };
+        return if value == 0.0 { "0".into() } else { "not a number".into() };
     }
     let order = value.abs().log10().floor() as i32;
     if !(-4..9).contains(&order) {
@@ -22,25 +18,14 @@ pub fn figures(value: f64, digits: i32) -> String {
 /// `value` with so many decimals and a true minus sign.
 pub fn fixed(value: f64, decimals: usize) -> String {
     let text = format!("{value:.decimals$}");
-    let zero = text
-        .trim_start_matches('-')
-        .chars()
-        .all(|c| matches!(c, '0' | '.'));
-    if zero {
-        text.trim_start_matches('-').to_owned()
-    } else {
-        minus(&text)
-    }
+    let zero = text.trim_start_matches('-').chars().all(|c| matches!(c, '0' | '.'));
+    if zero { text.trim_start_matches('-').to_owned() } else { minus(&text) }
 }
 
 /// As [`fixed`], a plus sign before what is above zero.
 pub fn signed(value: f64, decimals: usize) -> String {
     let text = fixed(value, decimals);
-    if text.starts_with('−') || fixed(0.0, decimals) == text {
-        text
-    } else {
-        format!("+{text}")
-    }
+    if text.starts_with('−') || fixed(0.0, decimals) == text { text } else { format!("+{text}") }
 }
 
 fn minus(text: &str) -> String {
@@ -66,22 +51,14 @@ pub fn duration(seconds: f64) -> String {
 /// As [`figures`], without zeros that end a decimal fraction.
 pub fn trimmed(value: f64, digits: i32) -> String {
     let text = figures(value, digits);
-    if text.contains('.') {
-        text.trim_end_matches('0').trim_end_matches('.').to_owned()
-    } else {
-        text
-    }
+    if text.contains('.') { text.trim_end_matches('0').trim_end_matches('.').to_owned() } else { text }
 }
 
 /// `small` units of which `per` make a large one.
 fn pair(small: f64, per: f64, large: &str, little: &str) -> String {
     let whole = small.round();
     let (many, rest) = ((whole / per).floor(), whole % per);
-    if rest < 1.0 {
-        format!("{many} {large}")
-    } else {
-        format!("{many} {large} {rest} {little}")
-    }
+    if rest < 1.0 { format!("{many} {large}") } else { format!("{many} {large} {rest} {little}") }
 }
 
 /// Keeps a number and its unit on one line: the space between them becomes one that does not break.
@@ -92,11 +69,7 @@ pub fn bind(text: &str) -> String {
         let unit = word.trim_end_matches([',', ';', '.', ')']);
         let after_number = out.chars().last().is_some_and(|c| c.is_ascii_digit());
         if i > 0 {
-            out.push(if after_number && UNITS.contains(&unit) {
-                '\u{a0}'
-            } else {
-                ' '
-            });
+            out.push(if after_number && UNITS.contains(&unit) { '\u{a0}' } else { ' ' });
         }
         out.push_str(word);
     }
@@ -115,9 +88,7 @@ pub fn counted(n: usize, one: &str, many: &str) -> String {
 /// The text with its first letter large.
 pub fn sentence(text: &str) -> String {
     let mut letters = text.chars();
-    letters.next().map_or_else(String::new, |first| {
-        first.to_uppercase().chain(letters).collect()
-    })
+    letters.next().map_or_else(String::new, |first| first.to_uppercase().chain(letters).collect())
 }
 
 /// A value and its standard uncertainty, rounded to the uncertainty's first two figures at most:
@@ -125,11 +96,7 @@ pub fn sentence(text: &str) -> String {
 pub fn with_uncertainty(value: f64, u: Option<f64>) -> String {
     match u {
         Some(u) if u > 0.0 && u.is_finite() => {
-            let digits = if u.log10().fract().rem_euclid(1.0) < 0.4 {
-                1
-            } else {
-                0
-            };
+            let digits = if u.log10().fract().rem_euclid(1.0) < 0.4 { 1 } else { 0 };
             let decimals = usize::try_from(digits - u.log10().floor() as i32).unwrap_or(0);
             format!("{} ± {}", fixed(value, decimals), fixed(u, decimals))
         }
@@ -157,10 +124,7 @@ mod tests {
 
     #[test]
     fn units_stay_with_their_numbers() {
-        assert_eq!(
-            bind("over 20 min, 82 % of 5 cells"),
-            "over 20\u{a0}min, 82\u{a0}% of 5 cells"
-        );
+        assert_eq!(bind("over 20 min, 82 % of 5 cells"), "over 20\u{a0}min, 82\u{a0}% of 5 cells");
     }
 
     #[test]

@@ -15,7 +15,7 @@ use ndarray::Array2;
 use rayon::prelude::*;
 
 use super::figures::{FIGURES, Format};
-use super::schema::{FILAMENTS, FORECASTS, FRAMES, GROWTH, PATHS, Table};
+use super::schema::{CHARGE, DIRECTIONS, FILAMENTS, FORECASTS, FRAMES, GROWTH, HALF_CYCLES, PATHS, TURNS, Table};
 use super::{Error, page, raster, records, svg, tables};
 use crate::results::{NEVER, Results};
 
@@ -23,7 +23,8 @@ use crate::results::{NEVER, Results};
 pub const MARK: &str = ".veerlog-output";
 
 /// What the mark says to someone who opens it.
-const MARK_TEXT: &str = "Written by veerlog, which replaces this whole folder when it runs again: keep nothing of your own here.\n";
+const MARK_TEXT: &str =
+    "Written by veerlog, which replaces this whole folder when it runs again: keep nothing of your own here.\n";
 
 /// Paper around a figure that stands alone, in its units.
 const MARGIN: f64 = 14.0;
@@ -75,9 +76,7 @@ pub fn replace_folder(
 fn open_to_readers(folder: &Path) -> Result<(), Error> {
     let probe = folder.join("probe");
     make(&probe)?;
-    let open = fs::metadata(&probe)
-        .map_err(|source| Error::io(&probe, source))?
-        .permissions();
+    let open = fs::metadata(&probe).map_err(|source| Error::io(&probe, source))?.permissions();
     fs::remove_dir(&probe).map_err(|source| Error::io(&probe, source))?;
     fs::set_permissions(folder, open).map_err(|source| Error::io(folder, source))
 }
@@ -97,9 +96,7 @@ pub fn refuse_foreign(target: &Path, ours: &[&str]) -> Result<(), Error> {
         Err(why) if why.kind() == std::io::ErrorKind::NotFound => return Ok(()),
         Err(source) => return Err(Error::io(target, source)),
         Ok(found) if !found.is_dir() => {
-            return Err(Error::NotAFolder {
-                path: target.to_owned(),
-            });
+            return Err(Error::NotAFolder { path: target.to_owned() });
         }
         Ok(_) => {}
     }
@@ -112,30 +109,17 @@ pub fn refuse_foreign(target: &Path, ours: &[&str]) -> Result<(), Error> {
     let ours = |name: &String| name == MARK || ours.contains(&name.as_str());
     let marked = names.iter().any(|name| name == MARK);
     match names.into_iter().find(|name| !marked || !ours(name)) {
-        Some(found) => Err(Error::Foreign {
-            path: target.to_owned(),
-            found,
-        }),
+        Some(found) => Err(Error::Foreign { path: target.to_owned(), found }),
         None => Ok(()),
     }
 }
 
 /// All that stands at the top of a run's output folder, beside the mark.
-pub const OURS: [&str; 6] = [
-    "report.html",
-    "summary.json",
-    "tables",
-    "traces.ndjson",
-    "figures",
-    "masks",
-];
+pub const OURS: [&str; 6] = ["report.html", "summary.json", "tables", "traces.ndjson", "figures", "masks"];
 
 /// Puts `built` in the place of `target`.
 fn swap(built: PathBuf, target: &Path) -> Result<(), Error> {
-    let old = built.with_file_name(format!(
-        "{}-old",
-        built.file_name().unwrap_or_default().to_string_lossy()
-    ));
+    let old = built.with_file_name(format!("{}-old", built.file_name().unwrap_or_default().to_string_lossy()));
     let had_one = match fs::rename(target, &old) {
         Ok(()) => true,
         Err(why) if why.kind() == std::io::ErrorKind::NotFound => false,
@@ -147,11 +131,7 @@ fn swap(built: PathBuf, target: &Path) -> Result<(), Error> {
         }
         return Err(clean(&built, Error::io(target, source)));
     }
-    if had_one {
-        fs::remove_dir_all(&old).map_err(|source| Error::io(&old, source))
-    } else {
-        Ok(())
-    }
+    if had_one { fs::remove_dir_all(&old).map_err(|source| Error::io(&old, source)) } else { Ok(()) }
 }
 
 /// Removes what was built in vain and passes the error on.
@@ -165,10 +145,7 @@ fn clean(built: &Path, error: Error) -> Error {
 /// Writes every file into an empty folder.
 fn fill(results: &Results, folder: &Path, save: Save) -> Result<(), Error> {
     put(&folder.join(MARK), MARK_TEXT.as_bytes())?;
-    put(
-        &folder.join("summary.json"),
-        records::summary_json(&results.summary)?.as_bytes(),
-    )?;
+    put(&folder.join("summary.json"), records::summary_json(&results.summary)?.as_bytes())?;
     let traces = folder.join("traces.ndjson");
     stream(&traces, |out| records::write_traces(results, &traces, out))?;
     make(&folder.join("tables"))?;
@@ -177,26 +154,21 @@ fn fill(results: &Results, folder: &Path, save: Save) -> Result<(), Error> {
     table(folder, &GROWTH, &results.growth)?;
     table(folder, &FILAMENTS, &results.filaments)?;
     table(folder, &FORECASTS, &results.forecasts)?;
+    table(folder, &TURNS, &results.turns)?;
+    table(folder, &DIRECTIONS, &results.summary.directions)?;
+    table(folder, &CHARGE, &results.charge)?;
+    table(folder, &HALF_CYCLES, &results.half_cycles)?;
     figures(results, &folder.join("figures"))?;
     if save.masks {
         masks(results, &folder.join("masks"))?;
     }
-    put(
-        &folder.join("report.html"),
-        page::render(results)?.as_bytes(),
-    )
+    put(&folder.join("report.html"), page::render(results)?.as_bytes())
 }
 
 fn table<R>(folder: &Path, schema: &Table<R>, rows: &[R]) -> Result<(), Error> {
-    let path = |extension: &str| {
-        folder
-            .join("tables")
-            .join(format!("{}.{extension}", schema.name))
-    };
+    let path = |extension: &str| folder.join("tables").join(format!("{}.{extension}", schema.name));
     stream(&path("csv"), |out| tables::write_csv(schema, rows, out))?;
-    stream(&path("parquet"), |out| {
-        tables::write_parquet(schema, rows, out)
-    })
+    stream(&path("parquet"), |out| tables::write_parquet(schema, rows, out))
 }
 
 fn figures(results: &Results, folder: &Path) -> Result<(), Error> {
@@ -205,14 +177,8 @@ fn figures(results: &Results, folder: &Path) -> Result<(), Error> {
         let Some(drawing) = (figure.draw)(results, Format::Wide) else {
             return Ok(());
         };
-        put(
-            &folder.join(format!("{}.svg", figure.name)),
-            svg::write(&drawing, MARGIN)?.as_bytes(),
-        )?;
-        put(
-            &folder.join(format!("{}.png", figure.name)),
-            &raster::png(&drawing, MARGIN)?,
-        )
+        put(&folder.join(format!("{}.svg", figure.name)), svg::write(&drawing, MARGIN)?.as_bytes())?;
+        put(&folder.join(format!("{}.png", figure.name)), &raster::png(&drawing, MARGIN)?)
     })
 }
 
@@ -223,9 +189,7 @@ fn masks(results: &Results, folder: &Path) -> Result<(), Error> {
     };
     for row in results.frames.iter().filter(|row| row.usable) {
         let path = folder.join(format!("{:06}.png", row.frame));
-        mask(arrivals, row.frame)
-            .save(&path)
-            .map_err(|why| Error::made(&path.to_string_lossy(), why))?;
+        mask(arrivals, row.frame).save(&path).map_err(|why| Error::made(&path.to_string_lossy(), why))?;
     }
     Ok(())
 }
@@ -235,11 +199,7 @@ fn mask(arrivals: &Array2<u32>, frame: usize) -> GrayImage {
     let (rows, columns) = arrivals.dim();
     GrayImage::from_fn(columns as u32, rows as u32, |x, y| {
         let arrival = arrivals[[y as usize, x as usize]];
-        image::Luma([if arrival != NEVER && arrival as usize <= frame {
-            255
-        } else {
-            0
-        }])
+        image::Luma([if arrival != NEVER && arrival as usize <= frame { 255 } else { 0 }])
     })
 }
 
@@ -251,10 +211,7 @@ fn put(path: &Path, bytes: &[u8]) -> Result<(), Error> {
     fs::write(path, bytes).map_err(|source| Error::io(path, source))
 }
 
-fn stream(
-    path: &Path,
-    fill: impl FnOnce(&mut BufWriter<File>) -> Result<(), Error>,
-) -> Result<(), Error> {
+fn stream(path: &Path, fill: impl FnOnce(&mut BufWriter<File>) -> Result<(), Error>) -> Result<(), Error> {
     let mut out = BufWriter::new(File::create(path).map_err(|source| Error::io(path, source))?);
     fill(&mut out)?;
     out.flush().map_err(|source| Error::io(path, source))
@@ -301,13 +258,8 @@ mod tests {
             assert!(first.contains_key(&out.join(name)), "{name}");
         }
         fs::write(out.join("figures/stale.png"), "old").unwrap();
-        let alone = rayon::ThreadPoolBuilder::new()
-            .num_threads(1)
-            .build()
-            .unwrap();
-        alone
-            .install(|| write(&example::growing(), &out, Save { masks: true }))
-            .unwrap();
+        let alone = rayon::ThreadPoolBuilder::new().num_threads(1).build().unwrap();
+        alone.install(|| write(&example::growing(), &out, Save { masks: true })).unwrap();
         assert_eq!(contents(&out), first);
         assert_eq!(fs::read_dir(home.path().join("deep")).unwrap().count(), 1);
     }
@@ -334,10 +286,7 @@ mod tests {
         let home = tempfile::tempdir().unwrap();
         write(&example::still(), home.path(), Save::default()).unwrap();
         let file = home.path().join("report.html");
-        assert!(matches!(
-            write(&example::still(), &file, Save::default()),
-            Err(Error::NotAFolder { .. })
-        ));
+        assert!(matches!(write(&example::still(), &file, Save::default()), Err(Error::NotAFolder { .. })));
     }
 
     #[test]

@@ -3,7 +3,7 @@
 use ndarray::Array2;
 
 use super::Root;
-use super::centreline::{sample, distance, normal, onto_ridge, resample, smooth, tangents, unit};
+use super::centreline::{distance, normal, onto_ridge, resample, sample, smooth, tangents, unit};
 use super::edges::Edges;
 use super::forest::{Filament, Forest, Joint, Owners, SPACING, Strand, Vertex, disc, vertices_in};
 use super::link::{Line, Start};
@@ -56,15 +56,9 @@ impl Attachment<'_> {
                     Some(strand) => self.go_on(strand, line, forest),
                     None => self.branch(joint, line, forest),
                 },
-                Start::Line(earlier, pixel) => {
-                    made.get(earlier).copied().flatten().and_then(|strand| {
-                        self.branch(
-                            nearest_joint(strand, lines[earlier].pixels[pixel], forest)?,
-                            line,
-                            forest,
-                        )
-                    })
-                }
+                Start::Line(earlier, pixel) => made.get(earlier).copied().flatten().and_then(|strand| {
+                    self.branch(nearest_joint(strand, lines[earlier].pixels[pixel], forest)?, line, forest)
+                }),
                 Start::Plating => self.root(Root::Plating, line, forest),
                 Start::Far => self.root(Root::Far, line, forest),
                 Start::Inside => self.root(Root::Inside, line, forest),
@@ -78,7 +72,9 @@ impl Attachment<'_> {
     fn go_on(&self, index: usize, line: &Line, forest: &mut Forest) -> Option<usize> {
         let strand = &forest.strands[index];
         let end = strand.vertices.last()?.p;
-        if strand.vertices.len() > strand.decided && distance(end, point(*line.pixels.first()?)) > 0.5 * strand.width + SEAM {
+        if strand.vertices.len() > strand.decided
+            && distance(end, point(*line.pixels.first()?)) > 0.5 * strand.width + SEAM
+        {
             return self.branch(nearest_joint(index, *line.pixels.first()?, forest)?, line, forest);
         }
         let from = strand.vertices.len().saturating_sub(vertices_in(OVERLAP));
@@ -97,13 +93,10 @@ impl Attachment<'_> {
         let goes = unit([aim[0] - first[0], aim[1] - first[1]])?;
         let found = (0..forest.strands.len()).find(|&s| {
             let strand = &forest.strands[s];
-            let met = strand.meets.is_some_and(|m| {
-                m.strand == joint.strand && m.vertex.abs_diff(joint.vertex) <= slack
-            });
+            let met =
+                strand.meets.is_some_and(|m| m.strand == joint.strand && m.vertex.abs_diff(joint.vertex) <= slack);
             let straight = || {
-                strand
-                    .heading(vertices_in(HEADING))
-                    .is_some_and(|h| h[0] * goes[0] + h[1] * goes[1] > CROSSING_COSINE)
+                strand.heading(vertices_in(HEADING)).is_some_and(|h| h[0] * goes[0] + h[1] * goes[1] > CROSSING_COSINE)
             };
             met && strand.closed() && strand.reached_far.is_none() && straight()
         })?;
@@ -120,19 +113,12 @@ impl Attachment<'_> {
         }
         let (p, n, width) = (end.p, end.n, strand.width);
         let near_own_joint = |j: Joint| {
-            strand.parent.is_some_and(|own| {
-                own.strand == j.strand && own.vertex.abs_diff(j.vertex) < vertices_in(12.0)
-            })
+            strand.parent.is_some_and(|own| own.strand == j.strand && own.vertex.abs_diff(j.vertex) < vertices_in(12.0))
         };
         let met = disc(p, 0.5 * strand.width + MEETING_REACH, owners.strand.dim())
             .filter_map(|pixel| owners.at(pixel))
             .filter(|j| j.strand != index && !near_own_joint(*j))
-            .filter_map(|j| {
-                forest.strands[j.strand]
-                    .vertices
-                    .get(j.vertex)
-                    .map(|v| (j, v.p, distance(v.p, p)))
-            })
+            .filter_map(|j| forest.strands[j.strand].vertices.get(j.vertex).map(|v| (j, v.p, distance(v.p, p))))
             .min_by(|a, b| a.2.total_cmp(&b.2));
         let Some((joint, target, gap)) = met else {
             return;
@@ -144,9 +130,7 @@ impl Attachment<'_> {
         let steps = vertices_in(gap);
         let bridge = (1..=steps).map(|k| {
             let t = k as f64 / steps as f64;
-            Vertex::new(
-                [p[0] + t * (target[0] - p[0]), p[1] + t * (target[1] - p[1])],
-                n, width, self.edges)
+            Vertex::new([p[0] + t * (target[0] - p[0]), p[1] + t * (target[1] - p[1])], n, width, self.edges)
         });
         let strand = &mut forest.strands[index];
         strand.vertices.extend(bridge);
@@ -175,9 +159,7 @@ impl Attachment<'_> {
         let (filament, width, contrast) = (parent.filament, parent.width, parent.contrast);
         let mut vertices = self.drawn(&[at], &line.pixels, width);
         vertices.insert(0, Vertex::new(at, vertices.first()?.n, width, self.edges));
-        forest
-            .strands
-            .push(strand(filament, Some(joint), vertices, width, contrast));
+        forest.strands.push(strand(filament, Some(joint), vertices, width, contrast));
         Some(forest.strands.len() - 1)
     }
 
@@ -200,17 +182,8 @@ impl Attachment<'_> {
         if vertices.len() < 3 {
             return None;
         }
-        forest.filaments.push(Filament {
-            root,
-            root_px: foot,
-        });
-        forest.strands.push(strand(
-            forest.filaments.len() - 1,
-            None,
-            vertices,
-            FIRST_WIDTH,
-            0.0,
-        ));
+        forest.filaments.push(Filament { root, root_px: foot });
+        forest.strands.push(strand(forest.filaments.len() - 1, None, vertices, FIRST_WIDTH, 0.0));
         Some(forest.strands.len() - 1)
     }
 
@@ -243,12 +216,7 @@ impl Attachment<'_> {
         let seam = guide.last().copied();
         let along = vertices_in(ALONG);
         let rough = smooth(&resample(&points, SPACING), along);
-        let ridge = onto_ridge(
-            &onto_ridge(&rough, self.plane, along, SEARCH),
-            self.plane,
-            along,
-            SEARCH,
-        );
+        let ridge = onto_ridge(&onto_ridge(&rough, self.plane, along, SEARCH), self.plane, along, SEARCH);
         let tidy = smooth(&ridge, along);
         let from = seam.map_or(0, |s| nearest_index(&tidy, s, guide.len() + along) + 1);
         let mut line: Vec<[f64; 2]> = seam.into_iter().collect();
@@ -256,12 +224,7 @@ impl Attachment<'_> {
         let spaced = resample(&line, SPACING);
         let directions = tangents(&spaced, along);
         let skip = usize::from(seam.is_some());
-        spaced
-            .iter()
-            .zip(directions)
-            .skip(skip)
-            .map(|(&p, t)| Vertex::new(p, normal(t), width, self.edges))
-            .collect()
+        spaced.iter().zip(directions).skip(skip).map(|(&p, t)| Vertex::new(p, normal(t), width, self.edges)).collect()
     }
 }
 
@@ -271,29 +234,18 @@ fn point(pixel: [usize; 2]) -> [f64; 2] {
 
 fn nearest_index(points: &[[f64; 2]], to: [f64; 2], within: usize) -> usize {
     let n = points.len().min(within.max(1));
-    (0..n)
-        .min_by(|&a, &b| distance(points[a], to).total_cmp(&distance(points[b], to)))
-        .unwrap_or(0)
+    (0..n).min_by(|&a, &b| distance(points[a], to).total_cmp(&distance(points[b], to))).unwrap_or(0)
 }
 
 fn nearest_joint(index: usize, pixel: [usize; 2], forest: &Forest) -> Option<Joint> {
     let vertices = &forest.strands[index].vertices;
     let to = point(pixel);
-    let vertex = (0..vertices.len())
-        .min_by(|&a, &b| distance(vertices[a].p, to).total_cmp(&distance(vertices[b].p, to)))?;
-    Some(Joint {
-        strand: index,
-        vertex,
-    })
+    let vertex =
+        (0..vertices.len()).min_by(|&a, &b| distance(vertices[a].p, to).total_cmp(&distance(vertices[b].p, to)))?;
+    Some(Joint { strand: index, vertex })
 }
 
-fn strand(
-    filament: usize,
-    parent: Option<Joint>,
-    vertices: Vec<Vertex>,
-    width: f64,
-    contrast: f64,
-) -> Strand {
+fn strand(filament: usize, parent: Option<Joint>, vertices: Vec<Vertex>, width: f64, contrast: f64) -> Strand {
     Strand {
         filament,
         parent,

@@ -44,10 +44,7 @@ pub struct Profile {
 
 impl Default for Profile {
     fn default() -> Self {
-        Self {
-            sum: [0.0; PROFILE_LEN],
-            weight: [0.0; PROFILE_LEN],
-        }
+        Self { sum: [0.0; PROFILE_LEN], weight: [0.0; PROFILE_LEN] }
     }
 }
 
@@ -107,12 +104,9 @@ impl Profile {
     /// `None` where there is no crest above its sides.
     #[must_use]
     pub fn section(&self, search: f64) -> Option<Section> {
-        let values: Vec<f64> = (0..PROFILE_LEN)
-            .map(|i| self.value(i).unwrap_or(f64::NAN))
-            .collect();
-        let smooth: Vec<f64> = (0..PROFILE_LEN)
-            .map(|i| mean_known(&values[i.saturating_sub(1)..(i + 2).min(PROFILE_LEN)]))
-            .collect();
+        let values: Vec<f64> = (0..PROFILE_LEN).map(|i| self.value(i).unwrap_or(f64::NAN)).collect();
+        let smooth: Vec<f64> =
+            (0..PROFILE_LEN).map(|i| mean_known(&values[i.saturating_sub(1)..(i + 2).min(PROFILE_LEN)])).collect();
         let crest = (0..PROFILE_LEN)
             .filter(|&i| offset_of(i).abs() <= search && !smooth[i].is_nan())
             .max_by(|&a, &b| smooth[a].total_cmp(&smooth[b]))?;
@@ -134,11 +128,7 @@ impl Profile {
 
 fn mean_known(values: &[f64]) -> f64 {
     let known: Vec<f64> = values.iter().copied().filter(|v| !v.is_nan()).collect();
-    if known.is_empty() {
-        f64::NAN
-    } else {
-        known.iter().sum::<f64>() / known.len() as f64
-    }
+    if known.is_empty() { f64::NAN } else { known.iter().sum::<f64>() / known.len() as f64 }
 }
 
 /// Mean of the lower half of the values: the level of the side.
@@ -172,10 +162,7 @@ pub fn tangents(points: &[[f64; 2]], reach: usize) -> Vec<[f64; 2]> {
     let last = points.len().saturating_sub(1);
     (0..points.len())
         .map(|i| {
-            let (a, b) = (
-                points[i.saturating_sub(reach)],
-                points[(i + reach).min(last)],
-            );
+            let (a, b) = (points[i.saturating_sub(reach)], points[(i + reach).min(last)]);
             unit([b[0] - a[0], b[1] - a[1]]).unwrap_or([1.0, 0.0])
         })
         .collect()
@@ -205,17 +192,9 @@ pub fn smooth(points: &[[f64; 2]], reach: usize) -> Vec<[f64; 2]> {
                 return points[i];
             }
             let fit = |axis: usize| {
-                local_quadratic(
-                    points[a..=b]
-                        .iter()
-                        .enumerate()
-                        .map(|(k, p)| ((a + k) as f64 - i as f64, p[axis])),
-                )
+                local_quadratic(points[a..=b].iter().enumerate().map(|(k, p)| ((a + k) as f64 - i as f64, p[axis])))
             };
-            [
-                fit(0).unwrap_or(points[i][0]),
-                fit(1).unwrap_or(points[i][1]),
-            ]
+            [fit(0).unwrap_or(points[i][0]), fit(1).unwrap_or(points[i][1])]
         })
         .collect()
 }
@@ -234,13 +213,13 @@ fn local_quadratic(samples: impl Iterator<Item = (f64, f64)>) -> Option<f64> {
             power *= t;
         }
     }
-    let det = s[0] * (s[2] * s[4] - s[3] * s[3]) - s[1] * (s[1] * s[4] - s[3] * s[2])
-        + s[2] * (s[1] * s[3] - s[2] * s[2]);
+    let det =
+        s[0] * (s[2] * s[4] - s[3] * s[3]) - s[1] * (s[1] * s[4] - s[3] * s[2]) + s[2] * (s[1] * s[3] - s[2] * s[2]);
     if det.abs() < 1e-9 {
         return None;
     }
-    let top = m[0] * (s[2] * s[4] - s[3] * s[3]) - s[1] * (m[1] * s[4] - s[3] * m[2])
-        + s[2] * (m[1] * s[3] - s[2] * m[2]);
+    let top =
+        m[0] * (s[2] * s[4] - s[3] * s[3]) - s[1] * (m[1] * s[4] - s[3] * m[2]) + s[2] * (m[1] * s[3] - s[2] * m[2]);
     Some(top / det)
 }
 
@@ -256,9 +235,7 @@ pub fn resample(points: &[[f64; 2]], step: f64) -> Vec<[f64; 2]> {
     let (mut walked, mut segment) = (0.0, 0);
     for k in 1..pieces {
         let target = total * k as f64 / pieces as f64;
-        while segment + 2 < points.len()
-            && walked + distance(points[segment], points[segment + 1]) < target
-        {
+        while segment + 2 < points.len() && walked + distance(points[segment], points[segment + 1]) < target {
             walked += distance(points[segment], points[segment + 1]);
             segment += 1;
         }
@@ -286,12 +263,7 @@ pub fn length(points: &[[f64; 2]]) -> f64 {
 /// Moves points onto the ridge of `plane`: the profile across each, averaged along ± `reach` points,
 /// gives the offset; then the line is smoothed and made evenly spaced again.
 #[must_use]
-pub fn onto_ridge(
-    points: &[[f64; 2]],
-    plane: &Array2<f32>,
-    reach: usize,
-    search: f64,
-) -> Vec<[f64; 2]> {
+pub fn onto_ridge(points: &[[f64; 2]], plane: &Array2<f32>, reach: usize, search: f64) -> Vec<[f64; 2]> {
     let directions = tangents(points, reach);
     let profiles: Vec<Profile> = points
         .iter()
@@ -305,9 +277,7 @@ pub fn onto_ridge(
     let moved: Vec<[f64; 2]> = (0..points.len())
         .map(|i| {
             let n = normal(directions[i]);
-            let shift = pooled(&profiles, i, reach)
-                .section(search)
-                .map_or(0.0, |s| s.offset.clamp(-search, search));
+            let shift = pooled(&profiles, i, reach).section(search).map_or(0.0, |s| s.offset.clamp(-search, search));
             [points[i][0] + shift * n[0], points[i][1] + shift * n[1]]
         })
         .collect();
@@ -332,19 +302,13 @@ mod tests {
     fn length_of_a_smoothed_digitised_circle_is_its_circumference() {
         // Closed form 2πr; the staircase itself is 4–8 % too long.
         let r = 40.0f64;
-        let points: Vec<[f64; 2]> = (0..252)
-            .map(|i| f64::from(i) / 40.0)
-            .map(|a| [(r * a.cos()).round(), (r * a.sin()).round()])
-            .collect();
+        let points: Vec<[f64; 2]> =
+            (0..252).map(|i| f64::from(i) / 40.0).map(|a| [(r * a.cos()).round(), (r * a.sin()).round()]).collect();
         let mut tidy = points.clone();
         tidy.dedup();
         let smoothed = smooth(&smooth(&tidy, 4), 4);
         let arc = 251.0 / 40.0 * r;
-        assert!(
-            (length(&smoothed) / arc - 1.0).abs() < 0.015,
-            "{}",
-            length(&smoothed) / arc
-        );
+        assert!((length(&smoothed) / arc - 1.0).abs() < 0.015, "{}", length(&smoothed) / arc);
     }
 
     #[test]

@@ -12,13 +12,26 @@ use ndarray::Array2;
 use super::centreline::sample;
 use super::recent::Corrected;
 
-/// Half width of the core of the ink that is read, in widths: narrow, so that the end of a round or tapered tip is
+/// Half width of the core of clear ink that is read, in widths: narrow, so that the end of a round or tapered tip is
 /// where its middle line ends.
 const CORE: f64 = 0.25;
 /// Its least half width, px.
 const LEAST_CORE: f64 = 0.6;
 /// Its greatest, px.
 const MOST_CORE: f64 = 1.25;
+/// Contrast over pixel noise above which a narrow core is enough.
+const CLEAR: f64 = 6.0;
+/// And below which all of the ink is read.
+const FAINT: f64 = 2.5;
+
+/// Half width of the core to be read for ink of full width `width` whose contrast is `clarity` times a pixel's noise:
+/// narrow where it is clear, all of it where it is faint.
+#[must_use]
+pub fn core_of(width: f64, clarity: f64) -> f64 {
+    let narrow = (CORE * width).clamp(LEAST_CORE, MOST_CORE);
+    let share = ((CLEAR - clarity) / (CLEAR - FAINT)).clamp(0.0, 1.0);
+    narrow + share * (0.5 * width - narrow).max(0.0)
+}
 
 /// Contrast at one vertex in one frame and its standard deviation.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -38,14 +51,12 @@ pub fn contrast(
     p: [f64; 2],
     n: [f64; 2],
     width: f64,
+    core: f64,
 ) -> Option<Contrast> {
-    let half = (CORE * width).clamp(LEAST_CORE, MOST_CORE);
+    let half = core.min(0.5 * width - 0.25).max(0.5);
     let inside = strip(&frame.residual, p, n, -half, half)?;
     let (near, far) = (0.5 * width + 2.0, 0.5 * width + 5.5);
-    let sides = [
-        strip(&frame.residual, p, n, near, far),
-        strip(&frame.residual, p, n, -far, -near),
-    ];
+    let sides = [strip(&frame.residual, p, n, near, far), strip(&frame.residual, p, n, -far, -near)];
     let known: Vec<(f64, f64)> = sides.into_iter().flatten().collect();
     if known.is_empty() {
         return None;
@@ -53,10 +64,7 @@ pub fn contrast(
     let beside = known.iter().map(|k| k.0).sum::<f64>() / known.len() as f64;
     let sigma = f64::from(sample(noise, p[0], p[1])? * frame.noise_factor);
     let spread = 1.0 / inside.1 + 1.0 / (known.len() as f64 * known[0].1);
-    Some(Contrast {
-        value: inside.0 - beside,
-        sd: sigma * spread.sqrt(),
-    })
+    Some(Contrast { value: inside.0 - beside, sd: sigma * spread.sqrt() })
 }
 
 /// Mean of the plane between offsets `a` and `b` along the normal, and the number of pixels it is worth.
@@ -126,11 +134,7 @@ pub fn strength(row: &[Option<Contrast>], share: f64) -> f64 {
     let known: Vec<&Contrast> = row.iter().flatten().collect();
     let sum: f64 = known.iter().map(|c| c.value).sum();
     let power: f64 = known.iter().map(|c| c.sd * c.sd).sum();
-    if power > 0.0 {
-        sum / (power * share).sqrt()
-    } else {
-        0.0
-    }
+    if power > 0.0 { sum / (power * share).sqrt() } else { 0.0 }
 }
 
 #[cfg(test)]
@@ -138,19 +142,12 @@ mod tests {
     use super::*;
 
     fn row(values: &[f64]) -> Vec<Option<Contrast>> {
-        values
-            .iter()
-            .map(|&value| Some(Contrast { value, sd: 0.3 }))
-            .collect()
+        values.iter().map(|&value| Some(Contrast { value, sd: 0.3 })).collect()
     }
 
     #[test]
     fn the_tip_of_each_frame_is_found() {
-        let rows = [
-            row(&[1.0, 0.0, 0.1, 0.0]),
-            row(&[1.0, 0.9, 0.1, 0.0]),
-            row(&[1.0, 1.1, 0.9, 0.8]),
-        ];
+        let rows = [row(&[1.0, 0.0, 0.1, 0.0]), row(&[1.0, 0.9, 0.1, 0.0]), row(&[1.0, 1.1, 0.9, 0.8])];
         assert_eq!(positions(&rows, 1.0), [1, 2, 4]);
     }
 
@@ -167,11 +164,7 @@ mod tests {
 
     #[test]
     fn a_root_that_fades_in_one_frame_does_not_cut_the_filament() {
-        let rows = [
-            row(&[1.0, 1.0, 1.0, 0.0]),
-            row(&[0.0, 0.1, 1.0, 1.0]),
-            row(&[1.0, 1.0, 1.0, 1.0]),
-        ];
+        let rows = [row(&[1.0, 1.0, 1.0, 0.0]), row(&[0.0, 0.1, 1.0, 1.0]), row(&[1.0, 1.0, 1.0, 1.0])];
         assert_eq!(positions(&rows, 1.0), [3, 4, 4]);
     }
 

@@ -28,9 +28,7 @@ impl Polyline {
     #[must_use]
     pub fn new(points: Vec<[f64; 2]>) -> Option<Self> {
         let first = *points.first()?;
-        let spread = points
-            .iter()
-            .any(|p| libm::hypot(p[0] - first[0], p[1] - first[1]) > 0.0);
+        let spread = points.iter().any(|p| libm::hypot(p[0] - first[0], p[1] - first[1]) > 0.0);
         spread.then_some(Self { points })
     }
 
@@ -58,12 +56,7 @@ impl Polyline {
             let distance = libm::hypot(off[0], off[1]);
             let side = u[0] * (p[1] - a[1]) - u[1] * (p[0] - a[0]);
             if best.is_none_or(|n| distance < n.distance) {
-                best = Some(Nearest {
-                    distance,
-                    foot,
-                    direction: u,
-                    side,
-                });
+                best = Some(Nearest { distance, foot, direction: u, side });
             }
         }
         best.unwrap_or(Nearest {
@@ -77,19 +70,13 @@ impl Polyline {
     /// The middle of the polyline by arc length.
     #[must_use]
     pub fn middle(&self) -> [f64; 2] {
-        let lengths: Vec<f64> = self
-            .points
-            .windows(2)
-            .map(|w| libm::hypot(w[1][0] - w[0][0], w[1][1] - w[0][1]))
-            .collect();
+        let lengths: Vec<f64> =
+            self.points.windows(2).map(|w| libm::hypot(w[1][0] - w[0][0], w[1][1] - w[0][1])).collect();
         let mut left = 0.5 * lengths.iter().sum::<f64>();
         for (pair, length) in self.points.windows(2).zip(&lengths) {
             if *length > 0.0 && left <= *length {
                 let t = left / length;
-                return [
-                    pair[0][0] + t * (pair[1][0] - pair[0][0]),
-                    pair[0][1] + t * (pair[1][1] - pair[0][1]),
-                ];
+                return [pair[0][0] + t * (pair[1][0] - pair[0][0]), pair[0][1] + t * (pair[1][1] - pair[0][1])];
             }
             left -= length;
         }
@@ -114,34 +101,21 @@ impl Edges {
     pub fn new(plating: Polyline, far: Polyline) -> Self {
         let plating_side = plating.nearest(far.middle()).side.signum();
         let far_side = far.nearest(plating.middle()).side.signum();
-        Self {
-            plating,
-            far,
-            plating_side,
-            far_side,
-        }
+        Self { plating, far, plating_side, far_side }
     }
 
     /// Depth from the plating edge, px; negative behind it.
     #[must_use]
     pub fn depth(&self, p: [f64; 2]) -> f64 {
         let n = self.plating.nearest(p);
-        if n.side * self.plating_side < 0.0 {
-            -n.distance
-        } else {
-            n.distance
-        }
+        if n.side * self.plating_side < 0.0 { -n.distance } else { n.distance }
     }
 
     /// Distance to the far edge, px; negative behind it.
     #[must_use]
     pub fn remaining(&self, p: [f64; 2]) -> f64 {
         let n = self.far.nearest(p);
-        if n.side * self.far_side < 0.0 {
-            -n.distance
-        } else {
-            n.distance
-        }
+        if n.side * self.far_side < 0.0 { -n.distance } else { n.distance }
     }
 
     /// Depth / (depth + remaining distance), within [0, 1].
@@ -149,26 +123,14 @@ impl Edges {
     pub fn fraction(&self, p: [f64; 2]) -> f64 {
         let depth = self.depth(p).max(0.0);
         let remaining = self.remaining(p).max(0.0);
-        if depth + remaining > 0.0 {
-            depth / (depth + remaining)
-        } else {
-            0.0
-        }
+        if depth + remaining > 0.0 { depth / (depth + remaining) } else { 0.0 }
     }
 
     /// Least distance between the two edges, px.
     #[must_use]
     pub fn gap(&self) -> f64 {
-        let to_far = self
-            .plating
-            .points()
-            .iter()
-            .map(|&p| self.far.nearest(p).distance);
-        let to_plating = self
-            .far
-            .points()
-            .iter()
-            .map(|&p| self.plating.nearest(p).distance);
+        let to_far = self.plating.points().iter().map(|&p| self.far.nearest(p).distance);
+        let to_plating = self.far.points().iter().map(|&p| self.plating.nearest(p).distance);
         to_far.chain(to_plating).fold(f64::INFINITY, f64::min)
     }
 }

@@ -30,73 +30,37 @@ struct Refined {
 #[must_use]
 pub(super) fn finish(tracer: &Tracer) -> Trace {
     let kept = kept_strands(tracer);
-    let refined: Vec<Refined> = tracer
-        .forest
-        .strands
-        .iter()
-        .map(|s| refine(tracer, s))
-        .collect();
+    let refined: Vec<Refined> = tracer.forest.strands.iter().map(|s| refine(tracer, s)).collect();
     let mut order: Vec<(usize, usize)> = (0..tracer.forest.filaments.len())
         .filter_map(|f| {
             let root = root_strand(tracer, &kept, f)?;
             let long = refined[root].points.len() as f64 * SPACING;
-            let least = if tracer.forest.filaments[f].root == Root::Inside {
-                LEAST_INSIDE
-            } else {
-                LEAST_ROOTED
-            };
+            let least = if tracer.forest.filaments[f].root == Root::Inside { LEAST_INSIDE } else { LEAST_ROOTED };
             let gone = refined[root].points.iter().filter(|p| p.retreat.is_some()).count();
             let passing = tracer.forest.filaments[f].root == Root::Inside && 2 * gone > refined[root].points.len();
             (long >= least && !passing).then_some((f, root))
         })
         .collect();
-    order.sort_by_key(|&(f, root)| {
-        (
-            refined[root]
-                .points
-                .first()
-                .map_or(usize::MAX, |p| p.arrival),
-            f,
-        )
-    });
-    let mut trace = Trace {
-        withdrawn: tracer.withdrawn,
-        ..Trace::default()
-    };
+    order.sort_by_key(|&(f, root)| (refined[root].points.first().map_or(usize::MAX, |p| p.arrival), f));
+    let mut trace = Trace { withdrawn: tracer.withdrawn, ..Trace::default() };
     for (number, &(f, root)) in order.iter().enumerate() {
         let filament = number as u32 + 1;
-        let mut walk = Walk {
-            tracer,
-            kept: &kept,
-            refined: &refined,
-            filament,
-            trace: &mut trace,
-        };
+        let mut walk = Walk { tracer, kept: &kept, refined: &refined, filament, trace: &mut trace };
         walk.path(None, Vec::new(), root, 0);
         let bridged = (0..kept.len())
             .filter(|&s| kept[s] && tracer.forest.strands[s].filament == f)
             .filter_map(|s| tracer.forest.strands[s].reached_far)
             .min()
             .map(|ordinal| tracer.frames[ordinal]);
-        let root_px = refined[root]
-            .points
-            .first()
-            .map_or(tracer.forest.filaments[f].root_px, |p| [p.x, p.y]);
-        trace.filaments.push(TracedFilament {
-            filament,
-            root: tracer.forest.filaments[f].root,
-            root_px,
-            bridged,
-        });
+        let root_px = refined[root].points.first().map_or(tracer.forest.filaments[f].root_px, |p| [p.x, p.y]);
+        trace.filaments.push(TracedFilament { filament, root: tracer.forest.filaments[f].root, root_px, bridged });
     }
     trace
 }
 
 fn root_strand(tracer: &Tracer, kept: &[bool], filament: usize) -> Option<usize> {
     (0..kept.len()).find(|&s| {
-        kept[s]
-            && tracer.forest.strands[s].filament == filament
-            && tracer.forest.strands[s].parent.is_none()
+        kept[s] && tracer.forest.strands[s].filament == filament && tracer.forest.strands[s].parent.is_none()
     })
 }
 
@@ -110,7 +74,8 @@ fn kept_strands(tracer: &Tracer) -> Vec<bool> {
         if strand.withdrawn || strand.decided < 2 {
             continue;
         }
-        let carries = (index + 1..strands.len()).any(|c| kept[c] && strands[c].parent.is_some_and(|j| j.strand == index));
+        let carries =
+            (index + 1..strands.len()).any(|c| kept[c] && strands[c].parent.is_some_and(|j| j.strand == index));
         let long = outside[index] >= LEAST_BRANCH.max(SPUR_WIDTHS * strand.width);
         kept[index] = carries || strand.parent.is_none() || long;
     }
@@ -154,10 +119,7 @@ fn refine(tracer: &Tracer, strand: &Strand) -> Refined {
         let section = pooled(&profiles, i, vertices_in(POOL)).section(SEARCH);
         let shift = section.map_or(0.0, |s| s.offset.clamp(-SEARCH, SEARCH));
         let shift = if i < lead { 0.0 } else { shift };
-        positions.push([
-            vertex.p[0] + shift * vertex.n[0],
-            vertex.p[1] + shift * vertex.n[1],
-        ]);
+        positions.push([vertex.p[0] + shift * vertex.n[0], vertex.p[1] + shift * vertex.n[1]]);
         widths.push(section.map_or(strand.width, |s| s.width));
     }
     straighten(&mut positions, lead);
@@ -188,11 +150,7 @@ fn lead_in(tracer: &Tracer, strand: &Strand) -> usize {
             let width = tracer.forest.strands[joint.strand].width;
             vertices_in(0.5 * width + 0.5 * strand.width + 2.0)
         }
-        None => strand
-            .vertices
-            .iter()
-            .take_while(|v| v.depth < 4.0 || v.remaining < 4.0)
-            .count(),
+        None => strand.vertices.iter().take_while(|v| v.depth < 4.0 || v.remaining < 4.0).count(),
     }
     .min(strand.decided / 2)
 }
@@ -223,19 +181,11 @@ impl Walk<'_> {
         let children = self.children(s);
         let last = all.len() - 1;
         let at_end = |v: usize| v + vertices_in(END_SLACK) > last;
-        let node = children
-            .iter()
-            .map(|&(v, _)| v)
-            .filter(|&v| v > from && !at_end(v))
-            .min();
+        let node = children.iter().map(|&(v, _)| v).filter(|&v| v > from && !at_end(v)).min();
         if let Some(node) = node {
             points.extend_from_slice(&all[from..=node]);
             let number = self.emit(parent, points, EndsIn::Branch);
-            let here: Vec<usize> = children
-                .iter()
-                .filter(|&&(v, _)| v == node)
-                .map(|&(_, c)| c)
-                .collect();
+            let here: Vec<usize> = children.iter().filter(|&&(v, _)| v == node).map(|&(_, c)| c).collect();
             self.path(Some(number), vec![all[node]], s, node + 1);
             for child in here {
                 self.path(Some(number), vec![all[node]], child, 1);
@@ -243,11 +193,7 @@ impl Walk<'_> {
             return;
         }
         points.extend_from_slice(&all[from.min(last)..]);
-        let here: Vec<usize> = children
-            .iter()
-            .filter(|&&(v, _)| v > from && at_end(v))
-            .map(|&(_, c)| c)
-            .collect();
+        let here: Vec<usize> = children.iter().filter(|&&(v, _)| v > from && at_end(v)).map(|&(_, c)| c).collect();
         match here[..] {
             [only] => self.path(parent, points, only, 1),
             [] => {
@@ -270,10 +216,7 @@ impl Walk<'_> {
         let mut out: Vec<(usize, usize)> = (0..self.kept.len())
             .filter(|&c| self.kept[c])
             .filter_map(|c| {
-                self.tracer.forest.strands[c]
-                    .parent
-                    .filter(|j| j.strand == s)
-                    .map(|j| (j.vertex.min(last), c))
+                self.tracer.forest.strands[c].parent.filter(|j| j.strand == s).map(|j| (j.vertex.min(last), c))
             })
             .collect();
         out.sort_unstable();

@@ -125,20 +125,14 @@ impl Owners {
     /// Nobody owns anything.
     #[must_use]
     pub fn new(shape: (usize, usize)) -> Self {
-        Self {
-            strand: Array2::zeros(shape),
-            vertex: Array2::zeros(shape),
-        }
+        Self { strand: Array2::zeros(shape), vertex: Array2::zeros(shape) }
     }
 
     /// The owner of a pixel.
     #[must_use]
     pub fn at(&self, pixel: [usize; 2]) -> Option<Joint> {
         let strand = self.strand[pixel];
-        (strand > 0).then(|| Joint {
-            strand: strand as usize - 1,
-            vertex: self.vertex[pixel] as usize,
-        })
+        (strand > 0).then(|| Joint { strand: strand as usize - 1, vertex: self.vertex[pixel] as usize })
     }
 
     /// Gives a strand the pixels within `margin` px of its ink, from vertex `from` on.
@@ -150,10 +144,7 @@ impl Owners {
                     None => true,
                     Some(old) if old.strand == index => {
                         let at = [pixel[1] as f64, pixel[0] as f64];
-                        strand
-                            .vertices
-                            .get(old.vertex)
-                            .is_none_or(|o| distance(o.p, at) > distance(vertex.p, at))
+                        strand.vertices.get(old.vertex).is_none_or(|o| distance(o.p, at) > distance(vertex.p, at))
                     }
                     Some(_) => false,
                 };
@@ -172,12 +163,10 @@ pub fn disc(p: [f64; 2], radius: f64, shape: (usize, usize)) -> impl Iterator<It
     let high = |v: f64, n: usize| ((v + radius).floor() + 1.0).clamp(0.0, n as f64) as usize;
     let (r0, r1) = (low(p[1]), high(p[1], shape.0));
     let (c0, c1) = (low(p[0]), high(p[0], shape.1));
-    (r0..r1)
-        .flat_map(move |r| (c0..c1).map(move |c| [r, c]))
-        .filter(move |&[r, c]| {
-            let (dx, dy) = (c as f64 - p[0], r as f64 - p[1]);
-            dx * dx + dy * dy <= radius * radius
-        })
+    (r0..r1).flat_map(move |r| (c0..c1).map(move |c| [r, c])).filter(move |&[r, c]| {
+        let (dx, dy) = (c as f64 - p[0], r as f64 - p[1]);
+        dx * dx + dy * dy <= radius * radius
+    })
 }
 
 impl Strand {
@@ -186,9 +175,8 @@ impl Strand {
         self.vertices.truncate(self.decided);
         self.provisional.clear();
         if self.reached_far.is_none() {
-            self.meets = self.meets.filter(|_| {
-                self.decided > 0 && self.vertices.len() == self.decided && self.closed()
-            });
+            self.meets =
+                self.meets.filter(|_| self.decided > 0 && self.vertices.len() == self.decided && self.closed());
         }
     }
 
@@ -228,14 +216,7 @@ impl Forest {
         while self.strands.last().is_some_and(|s| s.vertices.is_empty()) {
             self.strands.pop();
         }
-        while self.filaments.len()
-            > self
-                .strands
-                .iter()
-                .map(|s| s.filament + 1)
-                .max()
-                .unwrap_or(0)
-        {
+        while self.filaments.len() > self.strands.iter().map(|s| s.filament + 1).max().unwrap_or(0) {
             self.filaments.pop();
         }
     }

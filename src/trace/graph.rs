@@ -34,13 +34,8 @@ impl Node {
     /// Mean of its pixels' centres, [row, column], px.
     #[must_use]
     pub fn centre(&self) -> [f64; 2] {
-        let mean = |axis: usize| {
-            self.pixels
-                .iter()
-                .map(|pixel| pixel[axis] as f64)
-                .sum::<f64>()
-                / self.pixels.len() as f64
-        };
+        let mean =
+            |axis: usize| self.pixels.iter().map(|pixel| pixel[axis] as f64).sum::<f64>() / self.pixels.len() as f64;
         [mean(0), mean(1)]
     }
 }
@@ -83,39 +78,18 @@ impl SkeletonGraph {
     #[must_use]
     pub fn from_mask(mask: ArrayView2<'_, bool>) -> Self {
         let skeleton = Skeleton { mask };
-        let pixels: Vec<Pixel> = mask
-            .indexed_iter()
-            .filter(|(_, on)| **on)
-            .map(|((row, column), _)| [row, column])
-            .collect();
-        let mut graph = Self {
-            nodes: skeleton.nodes(&pixels),
-            chains: Vec::new(),
-        };
+        let pixels: Vec<Pixel> =
+            mask.indexed_iter().filter(|(_, on)| **on).map(|((row, column), _)| [row, column]).collect();
+        let mut graph = Self { nodes: skeleton.nodes(&pixels), chains: Vec::new() };
         let mut owner = graph.owners();
-        graph.chains = graph
-            .nodes
-            .iter()
-            .flat_map(|node| skeleton.chains_from(node, &owner))
-            .collect();
+        graph.chains = graph.nodes.iter().flat_map(|node| skeleton.chains_from(node, &owner)).collect();
 
-        let mut seen: HashSet<Pixel> = graph
-            .chains
-            .iter()
-            .flat_map(|chain| chain.pixels.iter().copied())
-            .collect();
+        let mut seen: HashSet<Pixel> = graph.chains.iter().flat_map(|chain| chain.pixels.iter().copied()).collect();
         for &first in &pixels {
             if !owner.contains_key(&first) && !seen.contains(&first) {
                 owner.insert(first, graph.nodes.len());
-                graph.nodes.push(Node {
-                    pixels: vec![first],
-                });
-                let ring = skeleton.chains_from(
-                    &Node {
-                        pixels: vec![first],
-                    },
-                    &owner,
-                );
+                graph.nodes.push(Node { pixels: vec![first] });
+                let ring = skeleton.chains_from(&Node { pixels: vec![first] }, &owner);
                 seen.extend(ring.iter().flat_map(|chain| chain.pixels.iter().copied()));
                 graph.chains.extend(ring);
             }
@@ -136,12 +110,7 @@ impl SkeletonGraph {
     }
 
     fn owners(&self) -> HashMap<Pixel, NodeId> {
-        let owned = |(id, node): (NodeId, &Node)| {
-            node.pixels
-                .iter()
-                .map(|&pixel| (pixel, id))
-                .collect::<Vec<_>>()
-        };
+        let owned = |(id, node): (NodeId, &Node)| node.pixels.iter().map(|&pixel| (pixel, id)).collect::<Vec<_>>();
         self.nodes.iter().enumerate().flat_map(owned).collect()
     }
 }
@@ -163,10 +132,7 @@ impl Skeleton<'_> {
 
     fn linked(&self, [row, column]: Pixel) -> impl Iterator<Item = Pixel> {
         NEIGHBOURS.into_iter().filter_map(move |(down, right)| {
-            let (next_row, next_column) = (
-                row.wrapping_add_signed(down),
-                column.wrapping_add_signed(right),
-            );
+            let (next_row, next_column) = (row.wrapping_add_signed(down), column.wrapping_add_signed(right));
             let diagonal = down != 0 && right != 0;
             let bridged = diagonal && (self.on([row, next_column]) || self.on([next_row, column]));
             (self.on([next_row, next_column]) && !bridged).then_some([next_row, next_column])
@@ -178,17 +144,10 @@ impl Skeleton<'_> {
     }
 
     fn in_block(&self, [row, column]: Pixel) -> bool {
-        [(-1, -1), (-1, 1), (1, -1), (1, 1)]
-            .into_iter()
-            .any(|(down, right)| {
-                let (next_row, next_column) = (
-                    row.wrapping_add_signed(down),
-                    column.wrapping_add_signed(right),
-                );
-                self.on([next_row, column])
-                    && self.on([row, next_column])
-                    && self.on([next_row, next_column])
-            })
+        [(-1, -1), (-1, 1), (1, -1), (1, 1)].into_iter().any(|(down, right)| {
+            let (next_row, next_column) = (row.wrapping_add_signed(down), column.wrapping_add_signed(right));
+            self.on([next_row, column]) && self.on([row, next_column]) && self.on([next_row, next_column])
+        })
     }
 
     /// Ends, single pixels, and branching pixels gathered where they are linked.
@@ -208,9 +167,7 @@ impl Skeleton<'_> {
                 cluster.sort_unstable();
                 nodes.extend((!cluster.is_empty()).then_some(Node { pixels: cluster }));
             } else if self.linked(first).count() < 2 {
-                nodes.push(Node {
-                    pixels: vec![first],
-                });
+                nodes.push(Node { pixels: vec![first] });
             }
         }
         nodes
@@ -218,14 +175,9 @@ impl Skeleton<'_> {
 
     /// The chains that leave a node, each only as seen from the lower of its two ends.
     fn chains_from(&self, node: &Node, owner: &HashMap<Pixel, NodeId>) -> Vec<Chain> {
-        let exits = node
-            .pixels
-            .iter()
-            .flat_map(|&from| self.linked(from).map(move |to| (from, to)));
+        let exits = node.pixels.iter().flat_map(|&from| self.linked(from).map(move |to| (from, to)));
         let leaves = exits.filter(|(_, to)| !node.pixels.contains(to));
-        leaves
-            .filter_map(|(from, to)| self.walk(from, to, owner))
-            .collect()
+        leaves.filter_map(|(from, to)| self.walk(from, to, owner)).collect()
     }
 
     fn walk(&self, first: Pixel, second: Pixel, owner: &HashMap<Pixel, NodeId>) -> Option<Chain> {
@@ -237,11 +189,7 @@ impl Skeleton<'_> {
             pixels.push(at);
         }
         let lower = [first, second] <= [at, before];
-        lower.then_some(Chain {
-            pixels,
-            start: owner[&first],
-            end: owner[&at],
-        })
+        lower.then_some(Chain { pixels, start: owner[&first], end: owner[&at] })
     }
 }
 
@@ -253,9 +201,7 @@ mod tests {
     use proptest::prelude::*;
 
     fn drawn(rows: &[&str]) -> Array2<bool> {
-        Array2::from_shape_fn((rows.len(), rows[0].len()), |(row, column)| {
-            rows[row].as_bytes()[column] == b'#'
-        })
+        Array2::from_shape_fn((rows.len(), rows[0].len()), |(row, column)| rows[row].as_bytes()[column] == b'#')
     }
 
     fn graph(rows: &[&str]) -> SkeletonGraph {
@@ -264,52 +210,25 @@ mod tests {
 
     #[test]
     fn nothing_a_pixel_and_a_pair() {
-        assert_eq!(
-            SkeletonGraph::from_mask(Array2::from_elem((0, 0), true).view()),
-            SkeletonGraph::default()
-        );
+        assert_eq!(SkeletonGraph::from_mask(Array2::from_elem((0, 0), true).view()), SkeletonGraph::default());
         let single = graph(&["...", ".#.", "..."]);
         assert_eq!((single.nodes.len(), single.chains.len()), (1, 0));
         let pair = graph(&["#.", ".#"]);
-        assert_eq!(
-            pair.chains,
-            [Chain {
-                pixels: vec![[0, 0], [1, 1]],
-                start: 0,
-                end: 1
-            }]
-        );
+        assert_eq!(pair.chains, [Chain { pixels: vec![[0, 0], [1, 1]], start: 0, end: 1 }]);
         let block = graph(&["##", "##"]);
-        assert_eq!(
-            (
-                block.nodes.len(),
-                block.nodes[0].pixels.len(),
-                block.chains.len()
-            ),
-            (1, 4, 0)
-        );
+        assert_eq!((block.nodes.len(), block.nodes[0].pixels.len(), block.chains.len()), (1, 4, 0));
     }
 
     #[test]
     fn a_staircase_is_one_chain() {
         let stairs = graph(&["##...", ".##..", "..##.", "...##"]);
-        assert_eq!(
-            (
-                stairs.nodes.len(),
-                stairs.chains.len(),
-                stairs.chains[0].pixels.len()
-            ),
-            (2, 1, 8)
-        );
+        assert_eq!((stairs.nodes.len(), stairs.chains.len(), stairs.chains[0].pixels.len()), (2, 1, 8));
     }
 
     #[test]
     fn a_ring_is_a_chain_that_closes() {
         let ring = graph(&[".##.", "#..#", "#..#", ".##."]);
-        assert_eq!(
-            (ring.nodes.len(), ring.chains.len(), ring.degrees()),
-            (1, 1, vec![2])
-        );
+        assert_eq!((ring.nodes.len(), ring.chains.len(), ring.degrees()), (1, 1, vec![2]));
         let pixels = &ring.chains[0].pixels;
         assert_eq!((pixels.len(), pixels[0]), (9, *pixels.last().unwrap()));
     }
@@ -318,25 +237,13 @@ mod tests {
     fn a_ring_on_a_stem_is_kept() {
         let lollipop = graph(&["..#..", ".#.#.", "..#..", "..#..", "..#.."]);
         assert_eq!((lollipop.nodes.len(), lollipop.chains.len()), (2, 2));
-        assert!(
-            lollipop
-                .chains
-                .iter()
-                .any(|chain| chain.start == chain.end && chain.pixels.len() == 5)
-        );
+        assert!(lollipop.chains.iter().any(|chain| chain.start == chain.end && chain.pixels.len() == 5));
     }
 
     #[test]
     fn two_lines_cross_in_one_node() {
         let cross = graph(&["#...#", ".#.#.", "..#..", ".#.#.", "#...#"]);
-        assert_eq!(
-            (
-                cross.nodes.len(),
-                cross.chains.len(),
-                cross.degrees().into_iter().max()
-            ),
-            (5, 4, Some(4))
-        );
+        assert_eq!((cross.nodes.len(), cross.chains.len(), cross.degrees().into_iter().max()), (5, 4, Some(4)));
     }
 
     fn skeletons() -> impl Strategy<Value = Array2<bool>> {
@@ -355,10 +262,7 @@ mod tests {
                 (part[chain.start], part[chain.end]) = (least, least);
             }
         }
-        part.iter()
-            .enumerate()
-            .filter(|&(id, &least)| id == least)
-            .count()
+        part.iter().enumerate().filter(|&(id, &least)| id == least).count()
     }
 
     proptest! {

@@ -10,12 +10,12 @@ use ndarray::{Array2, Zip};
 use super::attach::Attachment;
 use super::edges::Edges;
 use super::forest::{Forest, Owners, Vertex, disc};
+use super::graph::{self, SkeletonGraph};
 use super::link::{self, Component, Ground, Start};
 use super::recent::{Corrected, Recent};
 use super::ridge::line_evidence;
 use super::settle::{self, EDGE_SHADE};
 use super::tip::TipShape;
-use super::graph::{self, SkeletonGraph};
 use super::{thin, threshold};
 
 /// Corrected frames held at once: how far back a line that is found late can be dated.
@@ -52,11 +52,7 @@ pub struct TraceSettings {
 
 impl Default for TraceSettings {
     fn default() -> Self {
-        Self {
-            confirm_frames: 2,
-            bare: 0,
-            false_alarms_per_frame: 1e-4,
-        }
+        Self { confirm_frames: 2, bare: 0, false_alarms_per_frame: 1e-4 }
     }
 }
 
@@ -130,13 +126,7 @@ impl Tracer {
 
     fn claim_all(&mut self) {
         self.owners = Owners::new(self.noise.dim());
-        for (index, strand) in self
-            .forest
-            .strands
-            .iter()
-            .enumerate()
-            .filter(|(_, s)| !s.withdrawn)
-        {
+        for (index, strand) in self.forest.strands.iter().enumerate().filter(|(_, s)| !s.withdrawn) {
             self.owners.claim(index, strand, 0, CLAIM_MARGIN);
         }
     }
@@ -193,20 +183,11 @@ impl Tracer {
     }
 
     fn evidence(&self, median: &Array2<f32>, sd: f32) -> Array2<f32> {
-        let whitened = Zip::from(median)
-            .and(&self.noise)
-            .and(&self.inside)
-            .par_map_collect(|&m, &n, &inside| {
-                let u = m / (n * sd);
-                if inside && u.is_finite() {
-                    u.clamp(-30.0, 30.0)
-                } else {
-                    0.0
-                }
-            });
-        let wanted = Zip::from(&self.inside)
-            .and(&self.owners.strand)
-            .par_map_collect(|&i, &o| i && o == 0);
+        let whitened = Zip::from(median).and(&self.noise).and(&self.inside).par_map_collect(|&m, &n, &inside| {
+            let u = m / (n * sd);
+            if inside && u.is_finite() { u.clamp(-30.0, 30.0) } else { 0.0 }
+        });
+        let wanted = Zip::from(&self.inside).and(&self.owners.strand).par_map_collect(|&i, &o| i && o == 0);
         line_evidence(&whitened, &wanted).z
     }
 
@@ -225,14 +206,8 @@ impl Tracer {
         let mask = threshold::hysteresis(&boosted, LOW_Z, self.high_z);
         let mask = threshold::clean(&mask, LEAST_PIXELS);
         let mut components = skeleton_components(&mask);
-        let tips: Vec<[f64; 2]> = self
-            .forest
-            .strands
-            .iter()
-            .filter(|s| s.live())
-            .filter_map(|s| s.vertices.last())
-            .map(|v| v.p)
-            .collect();
+        let tips: Vec<[f64; 2]> =
+            self.forest.strands.iter().filter(|s| s.live()).filter_map(|s| s.vertices.last()).map(|v| v.p).collect();
         components.sort_by_cached_key(|c| (nearest_square(&c.pixels, &tips), c.pixels[0]));
         components
     }
@@ -240,13 +215,8 @@ impl Tracer {
 
 /// Squared distance, px², of a component to the nearest tip: what goes on from a tip is linked first.
 fn nearest_square(pixels: &[[usize; 2]], tips: &[[f64; 2]]) -> u64 {
-    let square = |p: &[usize; 2], t: &[f64; 2]| {
-        ((p[1] as f64 - t[0]).powi(2) + (p[0] as f64 - t[1]).powi(2)) as u64
-    };
-    tips.iter()
-        .flat_map(|t| pixels.iter().map(move |p| square(p, t)))
-        .min()
-        .unwrap_or(u64::MAX)
+    let square = |p: &[usize; 2], t: &[f64; 2]| ((p[1] as f64 - t[0]).powi(2) + (p[0] as f64 - t[1]).powi(2)) as u64;
+    tips.iter().flat_map(|t| pixels.iter().map(move |p| square(p, t))).min().unwrap_or(u64::MAX)
 }
 
 /// Evidence that bare ceramic reaches `rate` times a frame over `area` pixels (Bonferroni over independent tests).
@@ -279,8 +249,14 @@ fn skeleton_ends(pixels: &[[usize; 2]]) -> Vec<[usize; 2]> {
     graph.prune_short(graph::distance::distance(cut.view()).view(), SPUR_HALF_WIDTHS);
     let degrees = graph.degrees();
     let back = |p: &[usize; 2]| [p[0] + origin[0] - 1, p[1] + origin[1] - 1];
-    let mut ends: Vec<[usize; 2]> =
-        graph.nodes.iter().zip(&degrees).filter(|(_, d)| **d <= 1).flat_map(|(n, _)| n.pixels.first()).map(back).collect();
+    let mut ends: Vec<[usize; 2]> = graph
+        .nodes
+        .iter()
+        .zip(&degrees)
+        .filter(|(_, d)| **d <= 1)
+        .flat_map(|(n, _)| n.pixels.first())
+        .map(back)
+        .collect();
     if ends.is_empty() {
         ends.extend(graph.chains.iter().filter_map(|c| c.pixels.first()).take(1).map(back));
     }
@@ -310,17 +286,12 @@ impl Tracer {
         let count = self.frames.len();
         let sure = count.saturating_sub(self.settings.confirm_frames);
         let mut out = Vec::new();
-        for filament in (0..self.forest.filaments.len())
-            .filter(|&f| self.forest.filaments[f].root == super::Root::Plating)
+        for filament in
+            (0..self.forest.filaments.len()).filter(|&f| self.forest.filaments[f].root == super::Root::Plating)
         {
             let mut by_frame: Vec<Option<(f64, f64)>> = vec![None; count];
             let mut bridged = false;
-            for strand in self
-                .forest
-                .strands
-                .iter()
-                .filter(|s| s.filament == filament && !s.withdrawn)
-            {
+            for strand in self.forest.strands.iter().filter(|s| s.filament == filament && !s.withdrawn) {
                 let setback = strand.setback(&self.tip_shape);
                 bridged |= strand.reached_far.is_some();
                 let decided = strand.vertices[..strand.decided].iter().skip(setback).zip(&strand.vertices);
@@ -354,13 +325,7 @@ fn rising(filament: usize, by_frame: &[Option<(f64, f64)>], bridged: bool) -> Op
         depth_px.push(now.0.max(0.0));
         remaining_px.push(now.1.max(0.0));
     }
-    Some(DepthCourse {
-        filament,
-        first,
-        depth_px,
-        remaining_px,
-        bridged,
-    })
+    Some(DepthCourse { filament, first, depth_px, remaining_px, bridged })
 }
 
 impl Tracer {

@@ -63,10 +63,7 @@ struct Item {
 impl Eq for Item {}
 impl Ord for Item {
     fn cmp(&self, other: &Self) -> Ordering {
-        other
-            .cost
-            .total_cmp(&self.cost)
-            .then(other.at.cmp(&self.at))
+        other.cost.total_cmp(&self.cost).then(other.at.cmp(&self.at))
     }
 }
 impl PartialOrd for Item {
@@ -99,13 +96,7 @@ pub struct Component {
 
 /// The lines of a component; none where nothing ties it to older metal or an edge and `free` is false.
 #[must_use]
-pub fn lines(
-    component: &Component,
-    ground: Ground,
-    forest: &Forest,
-    owners: &Owners,
-    free: bool,
-) -> Vec<Line> {
+pub fn lines(component: &Component, ground: Ground, forest: &Forest, owners: &Owners, free: bool) -> Vec<Line> {
     let Some(field) = Field::new(component, ground, forest, owners, free) else {
         return Vec::new();
     };
@@ -124,30 +115,11 @@ struct Field<'a> {
 const NONE: usize = usize::MAX;
 
 impl<'a> Field<'a> {
-    fn new(
-        component: &Component,
-        ground: Ground<'a>,
-        forest: &Forest,
-        owners: &Owners,
-        free: bool,
-    ) -> Option<Self> {
+    fn new(component: &Component, ground: Ground<'a>, forest: &Forest, owners: &Owners, free: bool) -> Option<Self> {
         let shape = ground.z.dim();
-        let low = |axis: usize| {
-            component
-                .pixels
-                .iter()
-                .map(|p| p[axis])
-                .min()
-                .map(|v| v.saturating_sub(ROOM))
-        };
-        let high = |axis: usize, n: usize| {
-            component
-                .pixels
-                .iter()
-                .map(|p| p[axis])
-                .max()
-                .map(|v| (v + ROOM + 1).min(n))
-        };
+        let low = |axis: usize| component.pixels.iter().map(|p| p[axis]).min().map(|v| v.saturating_sub(ROOM));
+        let high =
+            |axis: usize, n: usize| component.pixels.iter().map(|p| p[axis]).max().map(|v| (v + ROOM + 1).min(n));
         let (r0, c0) = (low(0)?, low(1)?);
         let (r1, c1) = (high(0, shape.0)?, high(1, shape.1)?);
         let (height, width) = (r1 - r0, c1 - c0);
@@ -172,10 +144,7 @@ impl<'a> Field<'a> {
     }
 
     fn pixel(&self, at: usize) -> [usize; 2] {
-        [
-            at / self.width + self.origin[0],
-            at % self.width + self.origin[1],
-        ]
+        [at / self.width + self.origin[0], at % self.width + self.origin[1]]
     }
 
     fn offer(&mut self, at: usize, start: Start, cost: f32) {
@@ -189,8 +158,7 @@ impl<'a> Field<'a> {
         for at in 0..self.cost.len() {
             if let Some(joint) = owners.at(self.pixel(at)) {
                 let strand = &forest.strands[joint.strand];
-                let near_end =
-                    joint.vertex + vertices_in(0.5 * strand.width + 3.0) >= strand.vertices.len();
+                let near_end = joint.vertex + vertices_in(0.5 * strand.width + 3.0) >= strand.vertices.len();
                 let (start, cost) = if near_end && strand.live() {
                     (Start::Tip(joint.strand), 0.0)
                 } else {
@@ -214,11 +182,7 @@ impl<'a> Field<'a> {
     /// A component that nothing holds starts at its end nearest to the plating edge.
     fn seed_free(&mut self, component: &Component) {
         let depth = |p: &[usize; 2]| self.ground.edges.depth([p[1] as f64, p[0] as f64]);
-        if let Some(&end) = component
-            .ends
-            .iter()
-            .min_by(|a, b| depth(a).total_cmp(&depth(b)))
-        {
+        if let Some(&end) = component.ends.iter().min_by(|a, b| depth(a).total_cmp(&depth(b))) {
             let at = self.index(end);
             self.offer(at, Start::Inside, 0.0);
         }
@@ -233,10 +197,7 @@ impl<'a> Field<'a> {
     fn spread(&mut self, height: usize) {
         let mut heap: BinaryHeap<Item> = (0..self.cost.len())
             .filter(|&at| self.starts[at].is_some())
-            .map(|at| Item {
-                cost: self.cost[at],
-                at,
-            })
+            .map(|at| Item { cost: self.cost[at], at })
             .collect();
         while let Some(Item { cost, at }) = heap.pop() {
             if cost > self.cost[at] {
@@ -252,10 +213,7 @@ impl<'a> Field<'a> {
                     self.cost[near] = next;
                     self.before[near] = at;
                     self.starts[near] = None;
-                    heap.push(Item {
-                        cost: next,
-                        at: near,
-                    });
+                    heap.push(Item { cost: next, at: near });
                 }
             }
         }
@@ -263,12 +221,8 @@ impl<'a> Field<'a> {
 
     /// Lines to all ends, the costliest (farthest) first; later ones leave earlier ones where they part.
     fn lines(&self, component: &Component, forest: &Forest) -> Vec<Line> {
-        let mut ends: Vec<usize> = component
-            .ends
-            .iter()
-            .map(|&p| self.index(p))
-            .filter(|&at| self.cost[at].is_finite())
-            .collect();
+        let mut ends: Vec<usize> =
+            component.ends.iter().map(|&p| self.index(p)).filter(|&at| self.cost[at].is_finite()).collect();
         ends.sort_by(|&a, &b| self.cost[b].total_cmp(&self.cost[a]).then(a.cmp(&b)));
         let mut taken: Vec<Option<(usize, usize)>> = vec![None; self.cost.len()];
         let mut lines: Vec<Line> = Vec::new();
@@ -292,10 +246,7 @@ impl<'a> Field<'a> {
         loop {
             if let Some((line, k)) = taken[at] {
                 pixels.reverse();
-                return (!pixels.is_empty()).then_some(Line {
-                    start: Start::Line(line, k),
-                    pixels,
-                });
+                return (!pixels.is_empty()).then_some(Line { start: Start::Line(line, k), pixels });
             }
             if let Some(start) = self.starts[at] {
                 if matches!(start, Start::Plating | Start::Far | Start::Inside) {
@@ -314,11 +265,7 @@ impl<'a> Field<'a> {
 
     /// Whether the evidence along the line bears it: the bare pixels it crosses are few for its start.
     fn supported(&self, line: &Line, _forest: &Forest) -> bool {
-        let bare = line
-            .pixels
-            .iter()
-            .filter(|&&p| self.ground.z[p] < self.ground.low)
-            .count();
+        let bare = line.pixels.iter().filter(|&&p| self.ground.z[p] < self.ground.low).count();
         let allowed = match line.start {
             Start::Tip(_) => TIP_GAP,
             _ => SIDE_GAP,
@@ -330,20 +277,10 @@ impl<'a> Field<'a> {
 /// The eight neighbours of a cell in a `height` × `width` box with the length of the step.
 fn neighbours(at: usize, height: usize, width: usize) -> impl Iterator<Item = (usize, f32)> {
     let (row, col) = ((at / width) as isize, (at % width) as isize);
-    (-1isize..=1)
-        .flat_map(move |dr| (-1isize..=1).map(move |dc| (dr, dc)))
-        .filter_map(move |(dr, dc)| {
-            let (r, c) = (row + dr, col + dc);
-            let ok = (dr, dc) != (0, 0)
-                && r >= 0
-                && c >= 0
-                && (r as usize) < height
-                && (c as usize) < width;
-            let step = if dr != 0 && dc != 0 {
-                std::f32::consts::SQRT_2
-            } else {
-                1.0
-            };
-            ok.then(|| (r as usize * width + c as usize, step))
-        })
+    (-1isize..=1).flat_map(move |dr| (-1isize..=1).map(move |dc| (dr, dc))).filter_map(move |(dr, dc)| {
+        let (r, c) = (row + dr, col + dc);
+        let ok = (dr, dc) != (0, 0) && r >= 0 && c >= 0 && (r as usize) < height && (c as usize) < width;
+        let step = if dr != 0 && dc != 0 { std::f32::consts::SQRT_2 } else { 1.0 };
+        ok.then(|| (r as usize * width + c as usize, step))
+    })
 }

@@ -35,10 +35,7 @@ impl Recent {
     /// Holds at most `capacity` frames (at least one).
     #[must_use]
     pub fn new(capacity: usize) -> Self {
-        Self {
-            frames: VecDeque::new(),
-            capacity: capacity.max(1),
-        }
+        Self { frames: VecDeque::new(), capacity: capacity.max(1) }
     }
 
     /// Takes in the newest frame and lets go of the oldest.
@@ -64,9 +61,7 @@ impl Recent {
             [] => None,
             [only] => Some((only.residual.clone(), only.noise_factor)),
             [a, b] => {
-                let mean = Zip::from(&a.residual)
-                    .and(&b.residual)
-                    .par_map_collect(|x, y| 0.5 * (x + y));
+                let mean = Zip::from(&a.residual).and(&b.residual).par_map_collect(|x, y| 0.5 * (x + y));
                 let sd = 0.5 * (a.noise_factor.powi(2) + b.noise_factor.powi(2)).sqrt();
                 Some((mean, sd))
             }
@@ -75,8 +70,7 @@ impl Recent {
                     .and(&b.residual)
                     .and(&c.residual)
                     .par_map_collect(|&x, &y, &z| median_of_three(x, y, z));
-                let power =
-                    a.noise_factor.powi(2) + b.noise_factor.powi(2) + c.noise_factor.powi(2);
+                let power = a.noise_factor.powi(2) + b.noise_factor.powi(2) + c.noise_factor.powi(2);
                 Some((middle, MEDIAN_OF_THREE_SD * (power / 3.0).sqrt()))
             }
         }
@@ -98,11 +92,7 @@ mod tests {
     use super::*;
 
     fn flat(frame: usize, value: f32) -> Corrected {
-        Corrected {
-            frame,
-            residual: Array2::from_elem((2, 2), value),
-            noise_factor: 1.0,
-        }
+        Corrected { frame, residual: Array2::from_elem((2, 2), value), noise_factor: 1.0 }
     }
 
     #[test]
@@ -119,10 +109,7 @@ mod tests {
     fn the_window_is_bounded() {
         let mut recent = Recent::new(3);
         (0..10).for_each(|i| recent.push(flat(i, 0.0)));
-        assert_eq!(
-            recent.frames().iter().map(|f| f.frame).collect::<Vec<_>>(),
-            [7, 8, 9]
-        );
+        assert_eq!(recent.frames().iter().map(|f| f.frame).collect::<Vec<_>>(), [7, 8, 9]);
     }
 
     #[test]

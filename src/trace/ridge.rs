@@ -41,10 +41,7 @@ struct Hessian {
 #[must_use]
 pub fn line_evidence(plane: &Array2<f32>, wanted: &Array2<bool>) -> LineEvidence {
     let steps = orientation_steps();
-    let scales: Vec<Hessian> = SCALES
-        .iter()
-        .map(|&s| hessian(plane, s, wanted, &steps))
-        .collect();
+    let scales: Vec<Hessian> = SCALES.iter().map(|&s| hessian(plane, s, wanted, &steps)).collect();
     let (rows, cols) = plane.dim();
     let lines: Vec<Vec<f32>> = (0..rows)
         .into_par_iter()
@@ -54,18 +51,13 @@ pub fn line_evidence(plane: &Array2<f32>, wanted: &Array2<bool>) -> LineEvidence
                     if !wanted[[row, col]] {
                         return 0.0;
                     }
-                    scales
-                        .iter()
-                        .fold(0.0f32, |best, h| best.max(h.along(row, col, &steps)))
+                    scales.iter().fold(0.0f32, |best, h| best.max(h.along(row, col, &steps)))
                 })
                 .collect()
         })
         .collect();
     let flat: Vec<f32> = lines.into_iter().flatten().collect();
-    LineEvidence {
-        z: Array2::from_shape_vec((rows, cols), flat)
-            .unwrap_or_else(|_| Array2::zeros((rows, cols))),
-    }
+    LineEvidence { z: Array2::from_shape_vec((rows, cols), flat).unwrap_or_else(|_| Array2::zeros((rows, cols))) }
 }
 
 struct Orientation {
@@ -94,18 +86,12 @@ fn orientation_steps() -> Vec<Orientation> {
 
 impl Hessian {
     fn across(&self, row: usize, col: usize, normal: &[f32; 3]) -> f32 {
-        -(normal[0] * self.xx[[row, col]]
-            + normal[1] * self.xy[[row, col]]
-            + normal[2] * self.yy[[row, col]])
+        -(normal[0] * self.xx[[row, col]] + normal[1] * self.xy[[row, col]] + normal[2] * self.yy[[row, col]])
     }
 
     /// The largest evidence over orientations, 0 when the pixel does not pass the screen.
     fn along(&self, row: usize, col: usize, steps: &[Orientation]) -> f32 {
-        let (xx, xy, yy) = (
-            self.xx[[row, col]],
-            self.xy[[row, col]],
-            self.yy[[row, col]],
-        );
+        let (xx, xy, yy) = (self.xx[[row, col]], self.xy[[row, col]], self.yy[[row, col]]);
         let half = 0.5 * (xx - yy);
         let strongest = -(0.5 * (xx + yy) - (half * half + xy * xy).sqrt());
         if strongest < SCREEN_SD * self.sd {
@@ -127,12 +113,7 @@ impl Hessian {
     }
 }
 
-fn hessian(
-    plane: &Array2<f32>,
-    scale: f32,
-    wanted: &Array2<bool>,
-    steps: &[Orientation],
-) -> Hessian {
+fn hessian(plane: &Array2<f32>, scale: f32, wanted: &Array2<bool>, steps: &[Orientation]) -> Hessian {
     let kernels = Kernels::new(scale);
     let smooth = rows_filtered(plane, &kernels.g0);
     let slope = rows_filtered(plane, &kernels.g1);
@@ -143,17 +124,8 @@ fn hessian(
     let energy = |k: &[f32]| k.iter().map(|v| v * v).sum::<f32>();
     let theory = (energy(&kernels.g0) * energy(&kernels.g2)).sqrt();
     let sd = theory * excess(&xx, &yy, wanted, theory);
-    let sd_along = steps
-        .iter()
-        .map(|step| sd * step.along_factor(scale))
-        .collect();
-    Hessian {
-        xx,
-        xy,
-        yy,
-        sd,
-        sd_along,
-    }
+    let sd_along = steps.iter().map(|step| sd * step.along_factor(scale)).collect();
+    Hessian { xx, xy, yy, sd, sd_along }
 }
 
 /// How much larger the filtered noise is than that of white unit noise, from the median absolute value
@@ -207,18 +179,12 @@ impl Kernels {
     fn new(scale: f32) -> Self {
         let radius = (3.5 * scale).ceil() as i32;
         let s2 = scale * scale;
-        let gauss: Vec<f32> = (-radius..=radius)
-            .map(|i| libm::expf(-(i * i) as f32 / (2.0 * s2)))
-            .collect();
+        let gauss: Vec<f32> = (-radius..=radius).map(|i| libm::expf(-(i * i) as f32 / (2.0 * s2))).collect();
         let total: f32 = gauss.iter().sum();
         let g0: Vec<f32> = gauss.iter().map(|v| v / total).collect();
         let at = |i: usize| (i as i32 - radius) as f32;
         let g1 = g0.iter().enumerate().map(|(i, v)| at(i) / s2 * v).collect();
-        let mut g2: Vec<f32> = g0
-            .iter()
-            .enumerate()
-            .map(|(i, v)| (at(i) * at(i) / s2 - 1.0) / s2 * v)
-            .collect();
+        let mut g2: Vec<f32> = g0.iter().enumerate().map(|(i, v)| (at(i) * at(i) / s2 - 1.0) / s2 * v).collect();
         let mean = g2.iter().sum::<f32>() / g2.len() as f32;
         g2.iter_mut().for_each(|v| *v -= mean);
         Self { g0, g1, g2 }
@@ -230,23 +196,13 @@ fn rows_filtered(plane: &Array2<f32>, kernel: &[f32]) -> Array2<f32> {
     let (rows, cols) = plane.dim();
     let radius = kernel.len() / 2;
     let mut out = Array2::<f32>::zeros((rows, cols));
-    out.axis_iter_mut(ndarray::Axis(0))
-        .into_par_iter()
-        .enumerate()
-        .for_each(|(row, mut line)| {
-            let mut padded = vec![0.0f32; cols + 2 * radius];
-            padded[radius..radius + cols]
-                .iter_mut()
-                .zip(plane.row(row))
-                .for_each(|(a, b)| *a = *b);
-            for (col, value) in line.iter_mut().enumerate() {
-                *value = padded[col..col + kernel.len()]
-                    .iter()
-                    .zip(kernel)
-                    .map(|(a, b)| a * b)
-                    .sum();
-            }
-        });
+    out.axis_iter_mut(ndarray::Axis(0)).into_par_iter().enumerate().for_each(|(row, mut line)| {
+        let mut padded = vec![0.0f32; cols + 2 * radius];
+        padded[radius..radius + cols].iter_mut().zip(plane.row(row)).for_each(|(a, b)| *a = *b);
+        for (col, value) in line.iter_mut().enumerate() {
+            *value = padded[col..col + kernel.len()].iter().zip(kernel).map(|(a, b)| a * b).sum();
+        }
+    });
     out
 }
 
@@ -255,18 +211,13 @@ fn columns_filtered(plane: &Array2<f32>, kernel: &[f32]) -> Array2<f32> {
     let (rows, cols) = plane.dim();
     let radius = kernel.len() / 2;
     let mut out = Array2::<f32>::zeros((rows, cols));
-    out.axis_iter_mut(ndarray::Axis(0))
-        .into_par_iter()
-        .enumerate()
-        .for_each(|(row, mut line)| {
-            for (k, weight) in kernel.iter().enumerate() {
-                if let Some(source) = (row + k).checked_sub(radius).filter(|&r| r < rows) {
-                    line.iter_mut()
-                        .zip(plane.row(source))
-                        .for_each(|(a, b)| *a += weight * b);
-                }
+    out.axis_iter_mut(ndarray::Axis(0)).into_par_iter().enumerate().for_each(|(row, mut line)| {
+        for (k, weight) in kernel.iter().enumerate() {
+            if let Some(source) = (row + k).checked_sub(radius).filter(|&r| r < rows) {
+                line.iter_mut().zip(plane.row(source)).for_each(|(a, b)| *a += weight * b);
             }
-        });
+        }
+    });
     out
 }
 

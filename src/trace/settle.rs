@@ -1,9 +1,9 @@
 //! Decides what has arrived, keeps watch over what is decided, and withdraws what later frames deny.
 
-use super::centreline::{Profile, pooled};
-use super::dating::{Contrast, contrast, positions, strength};
-use super::forest::{SPACING, Strand, vertices_in};
 use super::Root;
+use super::centreline::{Profile, pooled, sample};
+use super::dating::{Contrast, contrast, core_of, positions, strength};
+use super::forest::{SPACING, Strand, vertices_in};
 use super::growth::Tracer;
 
 /// Evidence that the first stretch of a new filament must show in each of three frames, sd.
@@ -37,6 +37,8 @@ const LEAST_FIRST: f64 = 4.0;
 const SHARED_NOISE: f64 = 1.6;
 /// Length at the tip over which width and contrast are read, px.
 const TIP_READ: f64 = 24.0;
+/// Half width of the ink that keeps watch over what is decided, px.
+const MIDDLE: f64 = 1.25;
 /// Greatest width that a profile can show, px.
 const WIDEST: f64 = 14.0;
 /// Length over which one width is read, px.
@@ -86,18 +88,13 @@ fn date_strand(tracer: &mut Tracer, index: usize, confirm: usize) {
     let start = strand.decided;
     let strand = &mut tracer.forest.strands[index];
     for i in 0..reached[known - 1] {
-        let arrival = reached[..known]
-            .iter()
-            .position(|&s| s > i)
-            .map(|j| first + j);
+        let arrival = reached[..known].iter().position(|&s| s > i).map(|j| first + j);
         strand.vertices[start + i].arrival = arrival;
     }
     strand.decided = start + reached[known - 1];
     strand.provisional = reached[known..].iter().map(|&s| start + s).collect();
     let end = strand.decided.checked_sub(1).map(|i| &strand.vertices[i]);
-    let touching = end
-        .filter(|v| v.remaining <= EDGE_BLUR)
-        .and_then(|v| v.arrival);
+    let touching = end.filter(|v| v.remaining <= EDGE_BLUR).and_then(|v| v.arrival);
     strand.reached_far = strand.reached_far.or(touching);
     if reached[known - 1] > 0 {
         picture_tip(tracer, index, first + known - 1);
@@ -132,11 +129,7 @@ fn earliest_arrival(tracer: &Tracer, index: usize) -> Option<usize> {
     }
     match strand.parent {
         None => Some(floor),
-        Some(joint) => tracer.forest.strands[joint.strand]
-            .vertices
-            .get(joint.vertex)?
-            .arrival
-            .map(|a| a.max(floor)),
+        Some(joint) => tracer.forest.strands[joint.strand].vertices.get(joint.vertex)?.arrival.map(|a| a.max(floor)),
     }
 }
 
@@ -144,6 +137,7 @@ fn earliest_arrival(tracer: &Tracer, index: usize) -> Option<usize> {
 fn contrast_rows(tracer: &Tracer, strand: &Strand, first: usize) -> Vec<Vec<Option<Contrast>>> {
     let now = tracer.frames.len() - 1;
     let oldest = now + 1 - tracer.recent.frames().len();
+    let core = core_of(strand.width, clarity(tracer, strand));
     tracer
         .recent
         .frames()
@@ -154,17 +148,18 @@ fn contrast_rows(tracer: &Tracer, strand: &Strand, first: usize) -> Vec<Vec<Opti
             strand.vertices[strand.decided..]
                 .iter()
                 .map(|v| {
-                    let shaded = tracer.edges.depth(v.p) < EDGE_SHADE
-                        || tracer.edges.remaining(v.p) < EDGE_SHADE;
-                    if shaded {
-                        None
-                    } else {
-                        contrast(frame, &tracer.noise, v.p, v.n, strand.width)
-                    }
+                    let shaded = tracer.edges.depth(v.p) < EDGE_SHADE || tracer.edges.remaining(v.p) < EDGE_SHADE;
+                    if shaded { None } else { contrast(frame, &tracer.noise, v.p, v.n, strand.width, core) }
                 })
                 .collect()
         })
         .collect()
+}
+
+/// Contrast of a strand over the noise of a pixel at its end; nothing is clear of which nothing is known.
+fn clarity(tracer: &Tracer, strand: &Strand) -> f64 {
+    let noise = strand.vertices.get(strand.decided).and_then(|v| sample(&tracer.noise, v.p[0], v.p[1]));
+    noise.filter(|n| *n > 0.0).map_or(0.0, |n| strand.contrast / f64::from(n))
 }
 
 /// The strand's contrast, or for one not yet known that of the upper part of its proposal in the latest frames.
@@ -188,7 +183,12 @@ fn height_of(strand: &Strand, rows: &[Vec<Option<Contrast>>]) -> Option<f64> {
 
 /// Whether the first stretch of a strand is sure enough to be decided; one that goes on always is.
 fn confirmed(
-    tracer: &Tracer, index: usize, rows: &[Vec<Option<Contrast>>], reached: usize, known: usize, height: f64,
+    tracer: &Tracer,
+    index: usize,
+    rows: &[Vec<Option<Contrast>>],
+    reached: usize,
+    known: usize,
+    height: f64,
 ) -> bool {
     let strand = &tracer.forest.strands[index];
     if strand.decided > 0 {
@@ -236,7 +236,14 @@ fn demand_on(tracer: &Tracer, strand: &Strand) -> Demand {
     let inside = tracer.forest.filaments[strand.filament].root == Root::Inside;
     match strand.parent {
         Some(_) => Demand { length: LEAST_FIRST, depth: 0.0, contrast, frames: 1, each: BRANCH_EACH, all: BRANCH_ALL },
-        None if inside => Demand { length: INSIDE_LENGTH.max(INSIDE_WIDTHS * strand.width), depth: 0.0, contrast, frames: INSIDE_FRAMES, each: INSIDE_EACH, all: INSIDE_ALL },
+        None if inside => Demand {
+            length: INSIDE_LENGTH.max(INSIDE_WIDTHS * strand.width),
+            depth: 0.0,
+            contrast,
+            frames: INSIDE_FRAMES,
+            each: INSIDE_EACH,
+            all: INSIDE_ALL,
+        },
         None => Demand { length: LEAST_FIRST, depth: ROOT_DEPTH, contrast, frames: 1, each: NEW_EACH, all: NEW_ALL },
     }
 }
@@ -258,16 +265,11 @@ pub(super) fn observe(tracer: &mut Tracer) {
     for strand in &mut tracer.forest.strands {
         let decided = strand.decided;
         for vertex in &mut strand.vertices[..decided] {
-            vertex
-                .profile
-                .add(&frame.residual, vertex.p, vertex.n, PROFILE_MEMORY);
-            if let Some(c) = contrast(frame, noise, vertex.p, vertex.n, vertex.width) {
+            vertex.profile.add(&frame.residual, vertex.p, vertex.n, PROFILE_MEMORY);
+            if let Some(c) = contrast(frame, noise, vertex.p, vertex.n, vertex.width, MIDDLE) {
                 let value = c.value as f32;
-                vertex.recent = if vertex.recent.is_nan() {
-                    value
-                } else {
-                    vertex.recent + NEWEST * (value - vertex.recent)
-                };
+                vertex.recent =
+                    if vertex.recent.is_nan() { value } else { vertex.recent + NEWEST * (value - vertex.recent) };
             }
         }
         read_tip(strand);
@@ -291,15 +293,10 @@ pub(super) fn observe_new(tracer: &mut Tracer) {
     let oldest = tracer.frames.len() - tracer.recent.frames().len();
     for strand in &mut tracer.forest.strands {
         let decided = strand.decided;
-        for vertex in strand.vertices[..decided]
-            .iter_mut()
-            .filter(|v| v.profile.is_empty())
-        {
+        for vertex in strand.vertices[..decided].iter_mut().filter(|v| v.profile.is_empty()) {
             for (k, frame) in tracer.recent.frames().iter().enumerate() {
                 if vertex.arrival.is_some_and(|a| oldest + k >= a) {
-                    vertex
-                        .profile
-                        .add(&frame.residual, vertex.p, vertex.n, PROFILE_MEMORY);
+                    vertex.profile.add(&frame.residual, vertex.p, vertex.n, PROFILE_MEMORY);
                 }
             }
         }
@@ -313,18 +310,12 @@ fn read_tip(strand: &mut Strand) {
         return;
     }
     let from = strand.decided.saturating_sub(vertices_in(TIP_READ));
-    let profiles: Vec<_> = strand.vertices[from..strand.decided]
-        .iter()
-        .map(|v| v.profile.clone())
-        .collect();
+    let profiles: Vec<_> = strand.vertices[from..strand.decided].iter().map(|v| v.profile.clone()).collect();
     if let Some(section) = pooled(&profiles, profiles.len() / 2, profiles.len()).section(1.5) {
         strand.width = section.width.clamp(1.5, WIDEST);
     }
-    let mut values: Vec<f32> = strand.vertices[from..strand.decided]
-        .iter()
-        .map(|v| v.recent)
-        .filter(|v| !v.is_nan())
-        .collect();
+    let mut values: Vec<f32> =
+        strand.vertices[from..strand.decided].iter().map(|v| v.recent).filter(|v| !v.is_nan()).collect();
     if values.is_empty() {
         return;
     }
@@ -344,13 +335,8 @@ pub(super) fn withdraw(tracer: &mut Tracer) {
         if strand.withdrawn || strand.decided == 0 {
             continue;
         }
-        let seen = |v: &super::forest::Vertex| {
-            v.recent.is_nan() || f64::from(v.recent) > GONE * strand.contrast
-        };
-        let visible = strand.vertices[..strand.decided]
-            .iter()
-            .rposition(seen)
-            .map_or(0, |i| i + 1);
+        let seen = |v: &super::forest::Vertex| v.recent.is_nan() || f64::from(v.recent) > GONE * strand.contrast;
+        let visible = strand.vertices[..strand.decided].iter().rposition(seen).map_or(0, |i| i + 1);
         let run = strand.decided - visible;
         if run < vertices_in(GONE_RUN).min(strand.decided) {
             restore(strand);
@@ -370,10 +356,7 @@ pub(super) fn withdraw(tracer: &mut Tracer) {
                 strand.decided = 0;
             }
         } else {
-            for vertex in strand.vertices[visible..]
-                .iter_mut()
-                .filter(|v| v.retreat.is_none() && v.arrival.is_some())
-            {
+            for vertex in strand.vertices[visible..].iter_mut().filter(|v| v.retreat.is_none() && v.arrival.is_some()) {
                 vertex.retreat = Some(now);
             }
         }

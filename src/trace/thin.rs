@@ -13,16 +13,7 @@
 use ndarray::{Array2, ArrayView2};
 
 /// The 8 neighbours as (row, column) offsets, clockwise from the one above; bit i of a code is neighbour i.
-pub const NEIGHBOURS: [(isize, isize); 8] = [
-    (-1, 0),
-    (-1, 1),
-    (0, 1),
-    (1, 1),
-    (1, 0),
-    (1, -1),
-    (0, -1),
-    (-1, -1),
-];
+pub const NEIGHBOURS: [(isize, isize); 8] = [(-1, 0), (-1, 1), (0, 1), (1, 1), (1, 0), (1, -1), (0, -1), (-1, -1)];
 
 /// The pixel is foreground.
 const SET: u8 = 1;
@@ -56,9 +47,7 @@ pub fn thin(mask: ArrayView2<'_, bool>) -> Array2<bool> {
         PASSES.into_iter().for_each(|pass| peel.pass(pass));
     }
     let (rows, columns) = mask.dim();
-    Array2::from_shape_fn((rows, columns), |(row, column)| {
-        peel.pixels[(row + 1) * peel.stride + column + 1] & SET != 0
-    })
+    Array2::from_shape_fn((rows, columns), |(row, column)| peel.pixels[(row + 1) * peel.stride + column + 1] & SET != 0)
 }
 
 /// A mask with a margin of one background pixel, and for each pass the pixels it has still to test.
@@ -125,25 +114,15 @@ impl Peel {
     /// Which neighbours of a foreground pixel are set, one bit each. Such a pixel is never in the margin.
     fn code(&self, at: usize) -> usize {
         let set = |step: isize| usize::from(self.pixels[at.wrapping_add_signed(step)] & SET);
-        self.steps
-            .iter()
-            .enumerate()
-            .fold(0, |code, (bit, &step)| code | set(step) << bit)
+        self.steps.iter().enumerate().fold(0, |code, (bit, &step)| code | set(step) << bit)
     }
 }
 
 /// The rule of Guo & Hall for one neighbourhood: one component of neighbours, no end point, and on a side that this pass peels.
 fn is_deletable(code: usize, pass: Pass) -> bool {
     let on = |bit: usize| code >> (bit % 8) & 1 == 1;
-    let components = (0..8)
-        .step_by(2)
-        .filter(|&i| !on(i) && (on(i + 1) || on(i + 2)))
-        .count();
-    let pairs = |first: usize| {
-        (0..4)
-            .filter(|i| on(first + 2 * i) || on(first + 2 * i + 1))
-            .count()
-    };
+    let components = (0..8).step_by(2).filter(|&i| !on(i) && (on(i + 1) || on(i + 2))).count();
+    let pairs = |first: usize| (0..4).filter(|i| on(first + 2 * i) || on(first + 2 * i + 1)).count();
     let thickness = pairs(7).min(pairs(0));
     let blocked = match pass {
         Pass::LeftTop => (on(4) || on(5) || !on(7)) && on(6),
@@ -170,18 +149,10 @@ mod tests {
             for pass in PASSES {
                 let image = now.clone();
                 for ((row, column), pixel) in now.indexed_iter_mut().filter(|(_, on)| **on) {
-                    let code =
-                        NEIGHBOURS
-                            .iter()
-                            .enumerate()
-                            .fold(0, |code, (bit, &(down, right))| {
-                                let set = on(
-                                    &image,
-                                    row.cast_signed() + down,
-                                    column.cast_signed() + right,
-                                );
-                                code | usize::from(set) << bit
-                            });
+                    let code = NEIGHBOURS.iter().enumerate().fold(0, |code, (bit, &(down, right))| {
+                        let set = on(&image, row.cast_signed() + down, column.cast_signed() + right);
+                        code | usize::from(set) << bit
+                    });
                     *pixel = !is_deletable(code, pass);
                 }
             }
@@ -201,19 +172,11 @@ mod tests {
         let (rows, columns) = mask.dim();
         let outside = image::GrayImage::from_fn(columns as u32 + 2, rows as u32 + 2, |x, y| {
             let inside = (1..=columns as u32).contains(&x) && (1..=rows as u32).contains(&y);
-            image::Luma([u8::from(
-                !(inside && mask[[y as usize - 1, x as usize - 1]]),
-            )])
+            image::Luma([u8::from(!(inside && mask[[y as usize - 1, x as usize - 1]]))])
         });
         let four = imageproc::region_labelling::Connectivity::Four;
-        let labels =
-            imageproc::region_labelling::connected_components(&outside, four, image::Luma([0]));
-        labels
-            .pixels()
-            .map(|label| label[0] as usize)
-            .max()
-            .unwrap()
-            - 1
+        let labels = imageproc::region_labelling::connected_components(&outside, four, image::Luma([0]));
+        labels.pixels().map(|label| label[0] as usize).max().unwrap() - 1
     }
 
     prop_compose! {
@@ -268,12 +231,6 @@ mod tests {
     fn empty_and_single() {
         assert_eq!(thin(Array2::from_elem((0, 0), false).view()).len(), 0);
         assert!(thin(Array2::from_elem((1, 1), true).view())[[0, 0]]);
-        assert_eq!(
-            thin(Array2::from_elem((2, 2), true).view())
-                .iter()
-                .filter(|on| **on)
-                .count(),
-            1
-        );
+        assert_eq!(thin(Array2::from_elem((2, 2), true).view()).iter().filter(|on| **on).count(), 1);
     }
 }

@@ -29,11 +29,7 @@ use super::thin::NEIGHBOURS;
 #[must_use]
 pub fn otsu(counts: &[u64]) -> Option<usize> {
     let total: f64 = counts.iter().map(|&n| n as f64).sum();
-    let moment: f64 = counts
-        .iter()
-        .enumerate()
-        .map(|(bin, &n)| bin as f64 * n as f64)
-        .sum();
+    let moment: f64 = counts.iter().enumerate().map(|(bin, &n)| bin as f64 * n as f64).sum();
     let (mut below, mut moment_below) = (0.0, 0.0);
     let mut best: Option<(usize, f64)> = None;
     for (bin, &n) in counts.iter().enumerate() {
@@ -63,11 +59,7 @@ pub fn triangle(counts: &[u64]) -> Option<usize> {
         return None;
     }
     let peak = (first..=last).rev().max_by_key(|&bin| counts[bin])?;
-    let end = if peak - first > last - peak {
-        first
-    } else {
-        last
-    };
+    let end = if peak - first > last - peak { first } else { last };
     let height = |bin: usize| counts[bin] as f64;
     let slope = (height(end) - height(peak)) / (end as f64 - peak as f64);
     // The distance to the line is this vertical gap times a constant, so that the larger gap is the larger distance.
@@ -129,10 +121,7 @@ pub fn for_each_component(mask: ArrayView2<'_, bool>, mut visit: impl FnMut(&[[u
         while let Some(&[row, column]) = pixels.get(next) {
             next += 1;
             for (down, right) in NEIGHBOURS {
-                let at = [
-                    row.wrapping_add_signed(down),
-                    column.wrapping_add_signed(right),
-                ];
+                let at = [row.wrapping_add_signed(down), column.wrapping_add_signed(right)];
                 if left.get(at) == Some(&true) {
                     left[at] = false;
                     pixels.push(at);
@@ -222,19 +211,13 @@ mod tests {
     #[test]
     fn not_a_number_is_never_foreground() {
         let plane = array![[f32::NAN, 9.0, f32::NAN], [f32::NAN, f32::NAN, 2.0]];
-        assert_eq!(
-            hysteresis(&plane, 1.0, 5.0),
-            array![[false, true, false], [false, false, true]]
-        );
+        assert_eq!(hysteresis(&plane, 1.0, 5.0), array![[false, true, false], [false, false, true]]);
     }
 
     #[test]
     fn clean_keeps_at_the_limit() {
         let mask = array![[true, false, false, true], [false, true, false, false]];
-        assert_eq!(
-            clean(&mask, 2),
-            array![[true, false, false, false], [false, true, false, false]]
-        );
+        assert_eq!(clean(&mask, 2), array![[true, false, false, false], [false, true, false, false]]);
         assert_eq!(clean(&mask, 0), mask);
         assert_eq!(clean(&Array2::from_elem((0, 3), true), 1).len(), 0);
     }
@@ -247,9 +230,6 @@ mod tests {
         }
         assert_eq!(histogram(&array![[1.0]], 1.0, 1.0, 4), None);
         assert_eq!(histogram(&array![[1.0]], 0.0, f32::NAN, 4), None);
-        assert_eq!(
-            histogram(&array![[-1.0, 0.0, 0.5, 9.0, f32::NAN]], 0.0, 1.0, 2),
-            Some(vec![2, 2])
-        );
+        assert_eq!(histogram(&array![[-1.0, 0.0, 0.5, 9.0, f32::NAN]], 0.0, 1.0, 2), Some(vec![2, 2]));
     }
 }

@@ -105,7 +105,8 @@ mod tests {
             }
             inside as f32 / (n * n) as f32
         });
-        let line: Vec<_> = (0..40).map(|k| (0.5 * f64::from(k), [30.0 - 0.5 * f64::from(k), 20.0], [0.0, 1.0])).collect();
+        let line: Vec<_> =
+            (0..40).map(|k| (0.5 * f64::from(k), [30.0 - 0.5 * f64::from(k), 20.0], [0.0, 1.0])).collect();
         let mut shape = TipShape::default();
         (0..20).for_each(|_| shape.add(&plane, &line, 8.0, 1.0));
         shape

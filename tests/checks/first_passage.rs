@@ -13,11 +13,7 @@ fn reference() -> Option<FirstPassage> {
 #[test]
 fn mean_and_variance_are_the_inverse_gaussian_ones() {
     assert_abs_diff_eq!(reference().unwrap().mean().unwrap(), 50.0, epsilon = 1e-6);
-    assert_abs_diff_eq!(
-        reference().unwrap().variance().unwrap(),
-        312.5,
-        epsilon = 1e-6
-    );
+    assert_abs_diff_eq!(reference().unwrap().variance().unwrap(), 312.5, epsilon = 1e-6);
     assert_abs_diff_eq!(reference().unwrap().mode(), 41.496_314, epsilon = 1e-6);
 }
 
@@ -26,18 +22,10 @@ fn quantiles_cdf_and_pdf_agree_with_scipy() {
     for (p, t) in [(0.1, 30.299_370), (0.5, 47.084_028), (0.9, 73.433_959)] {
         assert_abs_diff_eq!(reference().unwrap().quantile(p).unwrap(), t, epsilon = 1e-6);
     }
-    for (t, p) in [
-        (25.0, 0.031_517_058_8),
-        (50.0, 0.568_499_728_8),
-        (60.0, 0.756_926_040_6),
-    ] {
+    for (t, p) in [(25.0, 0.031_517_058_8), (50.0, 0.568_499_728_8), (60.0, 0.756_926_040_6)] {
         assert_abs_diff_eq!(reference().unwrap().cdf(t), p, epsilon = 1e-9);
     }
-    assert_abs_diff_eq!(
-        reference().unwrap().pdf(50.0),
-        0.022_567_583_3,
-        epsilon = 1e-9
-    );
+    assert_abs_diff_eq!(reference().unwrap().pdf(50.0), 0.022_567_583_3, epsilon = 1e-9);
 }
 
 #[test]
@@ -62,11 +50,7 @@ fn without_drift_it_comes_surely_but_without_a_mean() {
     assert_abs_diff_eq!(still.ever(), 1.0);
     assert_eq!(still.mean(), None);
     // median of the Lévy law: a²/(σ²·(Φ⁻¹(3/4))²)
-    assert_abs_diff_eq!(
-        still.quantile(0.5).unwrap(),
-        400.0 / (0.674_489_750_196_f64).powi(2),
-        epsilon = 1e-5
-    );
+    assert_abs_diff_eq!(still.quantile(0.5).unwrap(), 400.0 / (0.674_489_750_196_f64).powi(2), epsilon = 1e-5);
 }
 
 #[test]

@@ -4,9 +4,9 @@
 use std::collections::BTreeMap;
 use std::fs;
 use std::path::{Path, PathBuf};
+use std::process::Command;
 use std::sync::OnceLock;
 
-use assert_cmd::Command;
 use polars::prelude::{CsvReadOptions, DataFrame, SerReader};
 use tempfile::TempDir;
 use veerlog::synth::{Scenario, write_run};

@@ -21,30 +21,14 @@ impl<'a> ArrivalScale<'a> {
     /// Of a run; from its start when nothing arrived.
     pub(in crate::report) fn of(results: &'a Results) -> Self {
         let (run, unit) = run_time(results);
-        let frames = results
-            .trace
-            .paths
-            .iter()
-            .flat_map(|path| &path.points)
-            .map(|point| point.arrival);
-        let first = frames
-            .min()
-            .and_then(|frame| results.frames.get(frame))
-            .map_or(0.0, |row| row.time_s);
-        Self {
-            results,
-            time: Range::new(first.min(run.high), run.high),
-            unit,
-        }
+        let frames = results.trace.paths.iter().flat_map(|path| &path.points).map(|point| point.arrival);
+        let first = frames.min().and_then(|frame| results.frames.get(frame)).map_or(0.0, |row| row.time_s);
+        Self { results, time: Range::new(first.min(run.high), run.high), unit }
     }
 
     /// Colour of what arrived at a frame.
     pub(in crate::report) fn ink(&self, frame: usize) -> Ink {
-        let at = self
-            .results
-            .frames
-            .get(frame)
-            .map_or(self.time.low, |row| row.time_s);
+        let at = self.results.frames.get(frame).map_or(self.time.low, |row| row.time_s);
         let share = (at - self.time.low) / (self.time.high - self.time.low);
         colour((share.clamp(0.0, 1.0) * f64::from(COLOURS - 1)).round() as u8)
     }

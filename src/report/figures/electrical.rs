@@ -16,11 +16,7 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
     let known = load::samples(results);
     let rows = logged.len() + usize::from(known.is_some());
     let total = rows as f64 * (height + ABOVE) + BELOW;
-    let mut drawing = Drawing::new(
-        format.width(),
-        total,
-        "Voltage, current and load against time",
-    );
+    let mut drawing = Drawing::new(format.width(), total, "Voltage, current and load against time");
     let panel = |row: usize, y: Range| Panel {
         left: LEFT,
         top: ABOVE + row as f64 * (height + ABOVE),
@@ -33,9 +29,7 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
     for (row, (heading, samples, ink, range)) in logged.drain(..).enumerate() {
         let panel = panel(row, range);
         panel.draw_y(&mut drawing, heading, ink);
-        let inside = samples
-            .into_iter()
-            .filter(|(t, _)| (time.low..=time.high).contains(t));
+        let inside = samples.into_iter().filter(|(t, _)| (time.low..=time.high).contains(t));
         panel.line(&mut drawing, inside, ink, 1.8);
         short(&mut drawing, results, &panel);
         last = Some(panel);
@@ -54,25 +48,16 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
 /// What the cell log holds: heading, samples, colour and scale of each.
 fn cell(results: &Results) -> Vec<(&'static str, load::Samples, Ink, Range)> {
     let log = &results.cell;
-    [
-        ("voltage (V)", &log.voltage_v, Ink::Voltage),
-        ("current (mA)", &log.current_ma, Ink::Current),
-    ]
-    .into_iter()
-    .filter_map(|(heading, values, ink)| {
-        let range = Range::around(values.iter().flatten().copied())?;
-        Some((
-            heading,
-            log.time_s
-                .iter()
-                .copied()
-                .zip(values.iter().copied())
-                .collect(),
-            ink,
-            range,
-        ))
-    })
-    .collect()
+    [("voltage (V)", &log.voltage_v, Ink::Voltage), ("current (mA)", &log.current_ma, Ink::Current)]
+        .into_iter()
+        .filter_map(|(heading, values, ink)| {
+            values.iter().find(|value| value.is_some())?;
+            // A steady current has no span of its own: it is read from zero.
+            let zero = (ink == Ink::Current).then_some(0.0);
+            let range = Range::around(values.iter().flatten().copied().chain(zero))?;
+            Some((heading, log.time_s.iter().copied().zip(values.iter().copied()).collect(), ink, range))
+        })
+        .collect()
 }
 
 fn short(drawing: &mut Drawing, results: &Results, panel: &Panel) {

@@ -26,20 +26,11 @@ pub(super) enum Mark {
 /// Draws the entries in one row that ends at the panel's right side, at the height of its heading.
 pub(super) fn row(drawing: &mut Drawing, panel: &Panel, entries: &[(Mark, Ink, &str)]) {
     let width = |words: &str| words.chars().count() as f64 * SMALL * LETTER;
-    let total: f64 = entries
-        .iter()
-        .map(|(_, _, words)| width(words) + 38.0)
-        .sum();
+    let total: f64 = entries.iter().map(|(_, _, words)| width(words) + 38.0).sum();
     let mut x = panel.right() - total + 14.0;
     for (mark, ink, words) in entries {
         draw(drawing, *mark, *ink, x, panel.top - 20.0);
-        drawing.text(
-            [x + 24.0, panel.top - 16.0],
-            *words,
-            SMALL,
-            Ink::Quiet,
-            Anchor::Start,
-        );
+        drawing.text([x + 24.0, panel.top - 16.0], *words, SMALL, Ink::Quiet, Anchor::Start);
         x += width(words) + 38.0;
     }
 }
@@ -49,12 +40,7 @@ fn draw(drawing: &mut Drawing, mark: Mark, ink: Ink, x: f64, y: f64) {
         Mark::Line => drawing.line(vec![[x, y], [x + 18.0, y]], ink, 2.0),
         Mark::Dashed => drawing.dashed(vec![[x, y], [x + 18.0, y]], ink, 1.5),
         Mark::Band(opacity) => {
-            let corners = vec![
-                [x, y - 5.0],
-                [x + 18.0, y - 5.0],
-                [x + 18.0, y + 5.0],
-                [x, y + 5.0],
-            ];
+            let corners = vec![[x, y - 5.0], [x + 18.0, y - 5.0], [x + 18.0, y + 5.0], [x, y + 5.0]];
             drawing.area(corners, ink, opacity);
         }
         Mark::Disc => drawing.disc([x + 12.0, y], 3.0, ink, 0.75),

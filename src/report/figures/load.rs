@@ -16,31 +16,20 @@ pub(super) fn samples(results: &Results) -> Option<(&'static str, Samples)> {
         .or_else(|| measured(results, |row| row.stress_mpa))
         .map(|samples| ("stress (MPa)", samples))
         .or_else(|| {
-            let force =
-                logged(&log.time_s, &log.force_n).or_else(|| measured(results, |row| row.load_n));
+            let force = logged(&log.time_s, &log.force_n).or_else(|| measured(results, |row| row.load_n));
             force.map(|samples| ("force (N)", samples))
         })
 }
 
 /// The log's own samples, if it has any value.
 fn logged(time_s: &[f64], values: &[Option<f64>]) -> Option<Samples> {
-    values
-        .iter()
-        .any(Option::is_some)
-        .then(|| time_s.iter().copied().zip(values.iter().copied()).collect())
+    values.iter().any(Option::is_some).then(|| time_s.iter().copied().zip(values.iter().copied()).collect())
 }
 
 /// The value at each frame, if there is any.
 fn measured(results: &Results, value: fn(&FrameRow) -> Option<f64>) -> Option<Samples> {
-    let samples: Samples = results
-        .frames
-        .iter()
-        .map(|row| (row.time_s, value(row)))
-        .collect();
-    samples
-        .iter()
-        .any(|(_, value)| value.is_some())
-        .then_some(samples)
+    let samples: Samples = results.frames.iter().map(|row| (row.time_s, value(row))).collect();
+    samples.iter().any(|(_, value)| value.is_some()).then_some(samples)
 }
 
 /// Room above the highest load for the strokes, as a share of the scale.
@@ -49,14 +38,8 @@ const HEADROOM: f64 = 0.34;
 /// The scale of the load, zero included, with headroom.
 pub(super) fn range(samples: &[(f64, Option<f64>)]) -> Range {
     let values = samples.iter().filter_map(|(_, value)| *value).chain([0.0]);
-    let tight = Range::around(values).unwrap_or(Range {
-        low: 0.0,
-        high: 1.0,
-    });
-    Range {
-        high: tight.high + HEADROOM * (tight.high - tight.low),
-        ..tight
-    }
+    let tight = Range::around(values).unwrap_or(Range { low: 0.0, high: 1.0 });
+    Range { high: tight.high + HEADROOM * (tight.high - tight.low), ..tight }
 }
 
 /// The load in `panel`, or a line that says that there is none.
@@ -68,17 +51,8 @@ pub(super) fn draw(drawing: &mut Drawing, panel: &Panel, known: Option<&(&'stati
             panel.steps(drawing, before_end, Ink::Load, 2.0);
         }
         None => {
-            let middle = [
-                panel.left + panel.width / 2.0,
-                panel.top + panel.height / 2.0,
-            ];
-            drawing.text(
-                middle,
-                "neither force nor stress was logged",
-                NORMAL,
-                Ink::Quiet,
-                Anchor::Middle,
-            );
+            let middle = [panel.left + panel.width / 2.0, panel.top + panel.height / 2.0];
+            drawing.text(middle, "neither force nor stress was logged", NORMAL, Ink::Quiet, Anchor::Middle);
         }
     }
 }
@@ -93,16 +67,9 @@ pub(super) fn strokes(drawing: &mut Drawing, panel: &Panel, results: &Results) {
     for i in 0..count {
         let x = panel.left + pitch * (i as f64 + 0.5);
         let time = panel.x.low + (x - panel.left) / panel.width * (panel.x.high - panel.x.low);
-        let row = results
-            .frames
-            .iter()
-            .take_while(|row| row.time_s <= time)
-            .last();
+        let row = results.frames.iter().take_while(|row| row.time_s <= time).last();
         if let Some(angle) = row.and_then(|row| row.load_direction_deg) {
-            let (dx, dy) = (
-                HALF * angle.to_radians().cos(),
-                -HALF * angle.to_radians().sin(),
-            );
+            let (dx, dy) = (HALF * angle.to_radians().cos(), -HALF * angle.to_radians().sin());
             let y = panel.top + 8.0;
             drawing.line(vec![[x - dx, y - dy], [x + dx, y + dy]], Ink::Load, 2.4);
         }

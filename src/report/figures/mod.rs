@@ -3,13 +3,17 @@
 
 mod alignment;
 pub(in crate::report) mod arrival;
+mod charge;
 mod depth;
 mod electrical;
 mod key;
+mod kink;
 mod load;
 pub(in crate::report) mod overlay;
 mod record;
 mod rose;
+mod speed;
+mod steering;
 
 use super::axes::{Panel, Range, TimeUnit};
 use super::drawing::Drawing;
@@ -51,7 +55,7 @@ pub struct Figure {
 }
 
 /// All figures, in the order of the page.
-pub static FIGURES: [Figure; 6] = [
+pub static FIGURES: [Figure; 10] = [
     Figure {
         name: "overlay",
         title: "What grew, and when",
@@ -92,6 +96,38 @@ pub static FIGURES: [Figure; 6] = [
         caption: "Voltage, current and load on one clock. Current above zero plates at the plating edge.",
         draw: electrical::draw,
     },
+    Figure {
+        name: "steering",
+        title: "Direction of new growth under the load",
+        caption: "Each dot is a piece of new growth, as large as it is long, at its direction in the picture; the scale is half a \
+                  turn, so its top and bottom are one direction. The broad line is the load axis (where the load pulls, growth is \
+                  expected across it, along the dashed line); upright lines are steps of the load, a shaded band is the 95 % \
+                  interval of the time at which growth turned.",
+        draw: steering::draw,
+    },
+    Figure {
+        name: "kink",
+        title: "Turns, measured and by a model",
+        caption: "A model, not a measurement: the kink of a pressed crack by the maximum tangential stress (Erdogan & Sih 1963, \
+                  with the T-stress after Cotterell & Rice 1980). It takes the whole cell voltage for the overpotential, so the \
+                  pressure is the most the metal can exert; with less of it the model turns further. Bars: 95 % interval, \
+                  filaments as sampling units; pale dots rest on too few filaments for one.",
+        draw: kink::draw,
+    },
+    Figure {
+        name: "speed",
+        title: "Tip speed against stress and current",
+        caption: "Mean speed of a free end in each frame against the stress and the current then in force. What did not vary in \
+                  this run takes no panel. Bars: median and quartiles. Frames of one run are not independent.",
+        draw: speed::draw,
+    },
+    Figure {
+        name: "charge",
+        title: "Growth against charge",
+        caption: "Depth of the deepest filament against the net charge passed (thin: what is still visible), and the volume of the \
+                  visible track beside the metal that the charge deposits by Faraday's law.",
+        draw: charge::draw,
+    },
 ];
 
 /// Space left of panels, for tick labels.
@@ -104,23 +140,12 @@ const ABOVE: f64 = 42.0;
 const BELOW: f64 = 44.0;
 
 /// Panels of one width on one time axis, one below the other, and the height of the whole drawing.
-fn stack<const N: usize>(
-    format: Format,
-    time: Range,
-    sides: [(f64, Range); N],
-) -> ([Panel; N], f64) {
+fn stack<const N: usize>(format: Format, time: Range, sides: [(f64, Range); N]) -> ([Panel; N], f64) {
     let mut top = 0.0;
     let panels = sides.map(|(height, y)| {
         top += ABOVE;
         let width = format.width() - LEFT - RIGHT;
-        let panel = Panel {
-            left: LEFT,
-            top,
-            width,
-            height,
-            x: time,
-            y,
-        };
+        let panel = Panel { left: LEFT, top, width, height, x: time, y };
         top += height;
         panel
     });
@@ -129,15 +154,8 @@ fn stack<const N: usize>(
 
 /// From the first frame to the last, and the unit it is read in.
 fn run_time(results: &Results) -> (Range, TimeUnit) {
-    let last = results
-        .frames
-        .iter()
-        .map(|row| row.time_s)
-        .fold(0.0, f64::max);
-    (
-        Range::new(0.0, if last > 0.0 { last } else { 1.0 }),
-        TimeUnit::of(last),
-    )
+    let last = results.frames.iter().map(|row| row.time_s).fold(0.0, f64::max);
+    (Range::new(0.0, if last > 0.0 { last } else { 1.0 }), TimeUnit::of(last))
 }
 
 #[cfg(test)]
@@ -165,19 +183,13 @@ mod tests {
                     r.frames.iter_mut().for_each(|row| {
                         (row.load_n, row.stress_mpa, row.load_direction_deg) = (None, None, None);
                     });
-                    r.growth
-                        .iter_mut()
-                        .for_each(|row| row.load_direction_deg = None);
+                    r.growth.iter_mut().for_each(|row| row.load_direction_deg = None);
                 }),
             ),
             (
                 "pulled",
                 change(|r| {
-                    r.load
-                        .stress_mpa
-                        .iter_mut()
-                        .flatten()
-                        .for_each(|s| *s = -*s);
+                    r.load.stress_mpa.iter_mut().flatten().for_each(|s| *s = -*s);
                 }),
             ),
             (
@@ -191,18 +203,16 @@ mod tests {
             (
                 "no end in sight",
                 change(|r| {
-                    r.forecasts.iter_mut().for_each(|row| {
-                        (row.p50_s, row.p75_s, row.p90_s) = (Some(1e9), Some(1e12), None)
-                    });
+                    r.forecasts
+                        .iter_mut()
+                        .for_each(|row| (row.p50_s, row.p75_s, row.p90_s) = (Some(1e9), Some(1e12), None));
                     r.summary.forecast = r.forecasts.last().cloned();
                 }),
             ),
             (
                 "at rest",
                 change(|r| {
-                    r.frames
-                        .iter_mut()
-                        .for_each(|row| row.depth_um = row.depth_um.map(|_| 0.0));
+                    r.frames.iter_mut().for_each(|row| row.depth_um = row.depth_um.map(|_| 0.0));
                     r.facts.gap_um = None;
                     r.cell.current_ma.iter_mut().for_each(|i| *i = Some(0.0));
                 }),
@@ -229,8 +239,8 @@ mod tests {
                     };
                     for shape in &drawing.shapes {
                         for [x, y] in points(shape) {
-                            let inside = (-1.0..=drawing.width + 1.0).contains(&x)
-                                && (-1.0..=drawing.height + 1.0).contains(&y);
+                            let inside =
+                                (-1.0..=drawing.width + 1.0).contains(&x) && (-1.0..=drawing.height + 1.0).contains(&y);
                             assert!(inside, "{name}, {}, {format:?}: {shape:?}", figure.name);
                         }
                     }
@@ -242,10 +252,6 @@ mod tests {
     #[test]
     fn a_run_with_everything_shows_every_figure() {
         let results = example::growing();
-        assert!(
-            FIGURES
-                .iter()
-                .all(|figure| (figure.draw)(&results, Format::Wide).is_some())
-        );
+        assert!(FIGURES.iter().all(|figure| (figure.draw)(&results, Format::Wide).is_some()));
     }
 }

@@ -14,35 +14,20 @@ const PETALS: usize = 12;
 const RINGS: [f64; 7] = [2.0, 5.0, 10.0, 20.0, 40.0, 60.0, 100.0];
 
 pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
-    let about_load = results
-        .growth
-        .iter()
-        .any(|piece| piece.load_direction_deg.is_some());
+    let about_load = results.growth.iter().any(|piece| piece.load_direction_deg.is_some());
     let shares = shares(results, about_load)?;
     let width = format.width().min(460.0);
     let radius = width / 2.0 - 52.0;
     let centre = [width / 2.0, radius + 64.0];
-    let mut drawing = Drawing::new(
-        width,
-        2.0 * radius + 150.0,
-        "Directions of growth, by length",
-    );
-    let heading = if about_load {
-        "angle to the load axis (°)"
-    } else {
-        "direction in the picture (°)"
-    };
+    let mut drawing = Drawing::new(width, 2.0 * radius + 150.0, "Directions of growth, by length");
+    let heading = if about_load { "angle to the load axis (°)" } else { "direction in the picture (°)" };
     drawing.bold([0.0, 14.0], heading, NORMAL, Ink::Metal, Anchor::Start);
     let largest = shares.iter().copied().fold(0.0, f64::max);
     let reach = |share: f64| radius * (share / largest).min(1.0).sqrt();
     rings(&mut drawing, centre, radius, largest, reach);
     for (i, share) in shares.iter().enumerate().filter(|(_, share)| **share > 0.0) {
         for turn in [0.0, 180.0] {
-            drawing.area(
-                petal(centre, reach(*share), i, turn, about_load),
-                Ink::Metal,
-                0.72,
-            );
+            drawing.area(petal(centre, reach(*share), i, turn, about_load), Ink::Metal, 0.72);
         }
     }
     ring_names(&mut drawing, centre, &shares, about_load, reach);
@@ -50,13 +35,7 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
     if about_load {
         axis(&mut drawing, centre, radius, results);
     }
-    drawing.text(
-        [width / 2.0, 2.0 * radius + 138.0],
-        below(results, about_load),
-        NORMAL,
-        Ink::Text,
-        Anchor::Middle,
-    );
+    drawing.text([width / 2.0, 2.0 * radius + 138.0], below(results, about_load), NORMAL, Ink::Text, Anchor::Middle);
     Some(drawing)
 }
 
@@ -64,11 +43,7 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
 fn shares(results: &Results, about_load: bool) -> Option<[f64; PETALS]> {
     let mut sums = [0.0; PETALS];
     for piece in &results.growth {
-        let zero = if about_load {
-            piece.load_direction_deg
-        } else {
-            Some(0.0)
-        };
+        let zero = if about_load { piece.load_direction_deg } else { Some(0.0) };
         if let Some(zero) = zero {
             let half = 90.0 / PETALS as f64;
             let turned = (piece.angle_deg - zero + half).rem_euclid(180.0);
@@ -89,39 +64,21 @@ fn towards(centre: Point, radius: f64, degrees: f64, about_load: bool) -> Point 
 fn petal(centre: Point, radius: f64, i: usize, turn: f64, about_load: bool) -> Vec<Point> {
     let step = 180.0 / PETALS as f64;
     let from = step * (i as f64 - 0.5) + turn + 0.5;
-    let rim = (0..=8).map(|k| {
-        towards(
-            centre,
-            radius,
-            from + f64::from(k) / 8.0 * (step - 1.0),
-            about_load,
-        )
-    });
+    let rim = (0..=8).map(|k| towards(centre, radius, from + f64::from(k) / 8.0 * (step - 1.0), about_load));
     std::iter::once(centre).chain(rim).collect()
 }
 
 fn circle(centre: Point, radius: f64) -> Vec<Point> {
-    (0..=72)
-        .map(|k| towards(centre, radius, f64::from(k) * 5.0, true))
-        .collect()
+    (0..=72).map(|k| towards(centre, radius, f64::from(k) * 5.0, true)).collect()
 }
 
 /// The shares whose rings are drawn: round ones, apart from rim and centre.
 fn round_shares(largest: f64) -> impl Iterator<Item = f64> {
-    RINGS
-        .into_iter()
-        .map(|percent| percent / 100.0)
-        .filter(move |s| (0.15..0.85).contains(&(s / largest)))
+    RINGS.into_iter().map(|percent| percent / 100.0).filter(move |s| (0.15..0.85).contains(&(s / largest)))
 }
 
 /// Rings of equal share, and the ring of growth even in all directions.
-fn rings(
-    drawing: &mut Drawing,
-    centre: Point,
-    radius: f64,
-    largest: f64,
-    reach: impl Fn(f64) -> f64,
-) {
+fn rings(drawing: &mut Drawing, centre: Point, radius: f64, largest: f64, reach: impl Fn(f64) -> f64) {
     drawing.line(circle(centre, radius), Ink::Grid, 1.0);
     for share in round_shares(largest) {
         drawing.line(circle(centre, reach(share)), Ink::Grid, 1.0);
@@ -137,44 +94,25 @@ fn ring_names(
     about_load: bool,
     reach: impl Fn(f64) -> f64,
 ) {
-    let emptiest = (1..PETALS)
-        .filter(|i| *i != PETALS / 2)
-        .min_by(|a, b| shares[*a].total_cmp(&shares[*b]));
+    let emptiest = (1..PETALS).filter(|i| *i != PETALS / 2).min_by(|a, b| shares[*a].total_cmp(&shares[*b]));
     let degrees = emptiest.unwrap_or(1) as f64 * 180.0 / PETALS as f64;
     let largest = shares.iter().copied().fold(0.0, f64::max);
     for share in round_shares(largest).filter(|share| *share > shares[emptiest.unwrap_or(1)]) {
         let at = towards(centre, reach(share), degrees, about_load);
         let words = format!("{:.0} %", share * 100.0);
-        drawing.text(
-            [at[0], at[1] + 4.0],
-            words,
-            SMALL - 1.0,
-            Ink::Quiet,
-            Anchor::Middle,
-        );
+        drawing.text([at[0], at[1] + 4.0], words, SMALL - 1.0, Ink::Quiet, Anchor::Middle);
     }
 }
 
 fn spokes(drawing: &mut Drawing, centre: Point, radius: f64, about_load: bool) {
     for degrees in [0.0, 30.0, 60.0, 90.0, 120.0, 150.0] {
         for turn in [0.0, 180.0] {
-            let shown = if about_load {
-                90.0 - (degrees - 90.0_f64).abs()
-            } else {
-                degrees
-            };
-            let ends =
-                [radius, radius + 6.0].map(|r| towards(centre, r, degrees + turn, about_load));
+            let shown = if about_load { 90.0 - (degrees - 90.0_f64).abs() } else { degrees };
+            let ends = [radius, radius + 6.0].map(|r| towards(centre, r, degrees + turn, about_load));
             drawing.line(ends.to_vec(), Ink::Quiet, 1.0);
             if !about_load || degrees > 0.0 {
                 let at = towards(centre, radius + 18.0, degrees + turn, about_load);
-                drawing.text(
-                    [at[0], at[1] + 4.0],
-                    format!("{shown:.0}"),
-                    SMALL,
-                    Ink::Quiet,
-                    Anchor::Middle,
-                );
+                drawing.text([at[0], at[1] + 4.0], format!("{shown:.0}"), SMALL, Ink::Quiet, Anchor::Middle);
             }
         }
     }
@@ -187,27 +125,13 @@ fn axis(drawing: &mut Drawing, centre: Point, radius: f64, results: &Results) {
     for side in [-1.0, 1.0] {
         let (inner, outer) = (y + side * (radius + 8.0), y + side * (radius + 34.0));
         drawing.line(vec![[x, inner], [x, outer]], Ink::Load, 2.4);
-        let (tip, tail) = if median.is_some_and(|m| m < 0.0) {
-            (outer, inner)
-        } else {
-            (inner, outer)
-        };
+        let (tip, tail) = if median.is_some_and(|m| m < 0.0) { (outer, inner) } else { (inner, outer) };
         if median.is_some_and(|m| m.abs() > 0.0) {
             let back = tip + (tail - tip) * 0.4;
-            drawing.line(
-                vec![[x - 6.0, back], [x, tip], [x + 6.0, back]],
-                Ink::Load,
-                2.4,
-            );
+            drawing.line(vec![[x - 6.0, back], [x, tip], [x + 6.0, back]], Ink::Load, 2.4);
         }
     }
-    drawing.bold(
-        [x + 14.0, y - radius - 24.0],
-        "load axis",
-        SMALL,
-        Ink::Load,
-        Anchor::Start,
-    );
+    drawing.bold([x + 14.0, y - radius - 24.0], "load axis", SMALL, Ink::Load, Anchor::Start);
 }
 
 fn below(results: &Results, about_load: bool) -> String {
@@ -216,12 +140,7 @@ fn below(results: &Results, about_load: bool) -> String {
     match (growth.value, growth.ci95) {
         _ if !about_load => format!("{pieces}; no load axis was logged"),
         (Some(value), Some([low, high])) => {
-            format!(
-                "alignment {} (95 %: {} to {})",
-                signed(value, 2),
-                signed(low, 2),
-                signed(high, 2)
-            )
+            format!("alignment {} (95 %: {} to {})", signed(value, 2), signed(low, 2), signed(high, 2))
         }
         (Some(value), None) => format!("alignment {}, too few for an interval", signed(value, 2)),
         (None, _) => pieces,

@@ -32,9 +32,7 @@ pub(super) fn of(results: &Results) -> Option<Strip> {
     let depth_words = format!("{} µm", with_uncertainty(depth, summary.depth.u_final_um));
     Some(Strip {
         gradient: gradient(results, depth),
-        label: format!(
-            "Deepest filament {depth_words} from the plating edge, {percent} % of its way to the far edge."
-        ),
+        label: format!("Deepest filament {depth_words} from the plating edge, {percent} % of its way to the far edge."),
         percent,
         depth: depth_words,
         gap: format!("{} µm", trimmed(gap, 4)),
@@ -58,16 +56,8 @@ fn gradient(results: &Results, depth: f64) -> String {
     }
     let stop = |(ink, from, to): (Ink, f64, f64)| {
         let colour = ink.light().hex();
-        format!(
-            "{colour} {:.2}% {:.2}%",
-            100.0 * from / depth,
-            100.0 * to / depth
-        )
+        format!("{colour} {:.2}% {:.2}%", 100.0 * from / depth, 100.0 * to / depth)
     };
     let stops: Vec<String> = bands.into_iter().map(stop).collect();
-    if stops.is_empty() {
-        "none".into()
-    } else {
-        format!("linear-gradient(to right,{})", stops.join(","))
-    }
+    if stops.is_empty() { "none".into() } else { format!("linear-gradient(to right,{})", stops.join(",")) }
 }

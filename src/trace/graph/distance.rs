@@ -24,13 +24,10 @@ use ndarray::{Array2, ArrayView2};
 pub fn distance(mask: ArrayView2<'_, bool>) -> Array2<f32> {
     let (rows, columns) = mask.dim();
     let side = |length: usize| u32::try_from(length);
-    let (Ok(width), Ok(height), false) = (side(columns), side(rows), mask.iter().all(|&on| on))
-    else {
+    let (Ok(width), Ok(height), false) = (side(columns), side(rows), mask.iter().all(|&on| on)) else {
         return Array2::from_elem((rows, columns), f32::INFINITY);
     };
-    let background = GrayImage::from_fn(width, height, |x, y| {
-        Luma([u8::from(!mask[[y as usize, x as usize]])])
-    });
+    let background = GrayImage::from_fn(width, height, |x, y| Luma([u8::from(!mask[[y as usize, x as usize]])]));
     let squared = euclidean_squared_distance_transform(&background);
     Array2::from_shape_fn((rows, columns), |(row, column)| {
         squared.get_pixel(column as u32, row as u32)[0].sqrt() as f32

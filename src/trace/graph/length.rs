@@ -22,10 +22,7 @@ impl Chain {
     #[must_use]
     pub fn length(&self) -> f64 {
         let points = self.smoothed();
-        points
-            .windows(2)
-            .map(|pair| (pair[1][0] - pair[0][0]).hypot(pair[1][1] - pair[0][1]))
-            .sum()
+        points.windows(2).map(|pair| (pair[1][0] - pair[0][0]).hypot(pair[1][1] - pair[0][1])).sum()
     }
 
     /// Its pixel centres smoothed along the chain, [row, column], px. The ends stay where they are, except on a ring, which repeats its
@@ -35,15 +32,8 @@ impl Chain {
         let ring = self.start == self.end && self.pixels.first() == self.pixels.last();
         let points = without_corners(&self.pixels);
         let once = smooth(points.clone(), ring);
-        let left: Vec<[f64; 2]> = points
-            .iter()
-            .zip(&once)
-            .map(|(p, s)| [p[0] - s[0], p[1] - s[1]])
-            .collect();
-        once.iter()
-            .zip(smooth(left, ring))
-            .map(|(s, l)| [s[0] + l[0], s[1] + l[1]])
-            .collect()
+        let left: Vec<[f64; 2]> = points.iter().zip(&once).map(|(p, s)| [p[0] - s[0], p[1] - s[1]]).collect();
+        once.iter().zip(smooth(left, ring)).map(|(s, l)| [s[0] + l[0], s[1] + l[1]]).collect()
     }
 }
 
@@ -57,9 +47,7 @@ fn without_corners(pixels: &[Pixel]) -> Vec<[f64; 2]> {
         }
         kept.push(pixel);
     }
-    kept.into_iter()
-        .map(|[row, column]| [row as f64, column as f64])
-        .collect()
+    kept.into_iter().map(|[row, column]| [row as f64, column as f64]).collect()
 }
 
 fn smooth(mut points: Vec<[f64; 2]>, ring: bool) -> Vec<[f64; 2]> {
@@ -94,25 +82,11 @@ mod tests {
     fn line(angle: f64, length: f64, offset: f64) -> (Chain, f64) {
         let (dy, dx) = angle.sin_cos();
         let steps = (length * dx.abs().max(dy.abs())).round();
-        let end = |share: f64| {
-            [
-                1000.0 + offset + share * length * dy,
-                1000.0 + share * length * dx,
-            ]
-        };
+        let end = |share: f64| [1000.0 + offset + share * length * dy, 1000.0 + share * length * dx];
         let pixel = |share: f64| end(share).map(|place| place.round() as usize);
-        let mut pixels: Vec<Pixel> = (0..=steps as usize)
-            .map(|step| pixel(step as f64 / steps))
-            .collect();
+        let mut pixels: Vec<Pixel> = (0..=steps as usize).map(|step| pixel(step as f64 / steps)).collect();
         pixels.dedup();
-        (
-            Chain {
-                pixels,
-                start: 0,
-                end: 1,
-            },
-            length,
-        )
+        (Chain { pixels, start: 0, end: 1 }, length)
     }
 
     #[test]
@@ -138,10 +112,7 @@ mod tests {
         for step in 0..steps {
             let (y, x) = (TAU * step as f64 / steps as f64).sin_cos();
             let place = [y, x].map(|direction| radius * direction + radius + 2.0);
-            mask[[
-                (place[0] + middle[0]).round() as usize,
-                (place[1] + middle[1]).round() as usize,
-            ]] = true;
+            mask[[(place[0] + middle[0]).round() as usize, (place[1] + middle[1]).round() as usize]] = true;
         }
         let graph = SkeletonGraph::from_mask(thin(mask.view()).view());
         assert_eq!(graph.chains.len(), 1, "radius {radius}");
@@ -150,27 +121,11 @@ mod tests {
 
     #[test]
     fn digitised_circles_have_their_circumference() {
-        for (radius, tolerance) in [
-            (8.0, 0.03),
-            (12.0, 0.01),
-            (20.0, 0.01),
-            (40.0, 0.005),
-            (75.3, 0.005),
-            (150.0, 0.005),
-        ] {
-            let middles = [
-                [0.0, 0.0],
-                [0.5, 0.5],
-                [0.21, 0.68],
-                [0.93, 0.34],
-                [0.57, 0.11],
-                [0.39, 0.82],
-            ];
-            let mean = middles
-                .map(|middle| ring_length(radius, middle))
-                .iter()
-                .sum::<f64>()
-                / 6.0;
+        for (radius, tolerance) in
+            [(8.0, 0.03), (12.0, 0.01), (20.0, 0.01), (40.0, 0.005), (75.3, 0.005), (150.0, 0.005)]
+        {
+            let middles = [[0.0, 0.0], [0.5, 0.5], [0.21, 0.68], [0.93, 0.34], [0.57, 0.11], [0.39, 0.82]];
+            let mean = middles.map(|middle| ring_length(radius, middle)).iter().sum::<f64>() / 6.0;
             let error = mean / (TAU * radius) - 1.0;
             assert!(error.abs() < tolerance, "radius {radius}: {error}");
         }
@@ -178,18 +133,12 @@ mod tests {
 
     #[test]
     fn rows_columns_and_diagonals_are_exact() {
-        for (chain, truth) in [
-            line(0.0, 40.0, 0.0),
-            line(PI / 2.0, 40.0, 0.0),
-            line(PI / 4.0, 40.0 * 2_f64.sqrt(), 0.0),
-        ] {
+        for (chain, truth) in
+            [line(0.0, 40.0, 0.0), line(PI / 2.0, 40.0, 0.0), line(PI / 4.0, 40.0 * 2_f64.sqrt(), 0.0)]
+        {
             assert!((chain.length() - truth).abs() < 1e-9);
         }
-        let pair = Chain {
-            pixels: vec![[3, 3], [4, 4]],
-            start: 0,
-            end: 1,
-        };
+        let pair = Chain { pixels: vec![[3, 3], [4, 4]], start: 0, end: 1 };
         assert!((pair.length() - 2_f64.sqrt()).abs() < 1e-12);
     }
 }

@@ -15,10 +15,7 @@ impl SkeletonGraph {
     /// [`prune`](Self::prune).
     pub fn prune_short(&mut self, half_width: ArrayView2<'_, f32>, factor: f64) {
         self.prune(|spur, branching| {
-            let widths = branching
-                .pixels
-                .iter()
-                .filter_map(|&pixel| half_width.get(pixel));
+            let widths = branching.pixels.iter().filter_map(|&pixel| half_width.get(pixel));
             let widest = widths.copied().fold(0.0, f32::max);
             spur.length() < factor * f64::from(widest)
         });
@@ -63,14 +60,9 @@ impl SkeletonGraph {
     fn remove(&mut self, gone: &[bool]) {
         let before = self.degrees();
         let mut index = 0..;
-        self.chains
-            .retain(|_| index.next().is_some_and(|index: usize| !gone[index]));
+        self.chains.retain(|_| index.next().is_some_and(|index: usize| !gone[index]));
         let after = self.degrees();
-        let bare = before
-            .iter()
-            .zip(&after)
-            .map(|(&before, &after)| before > 0 && after == 0)
-            .collect();
+        let bare = before.iter().zip(&after).map(|(&before, &after)| before > 0 && after == 0).collect();
         self.drop_nodes(bare);
     }
 
@@ -81,10 +73,7 @@ impl SkeletonGraph {
             at_node[chain.start].push(index);
             at_node[chain.end].push(index);
         }
-        let mut chains: Vec<Option<Chain>> = std::mem::take(&mut self.chains)
-            .into_iter()
-            .map(Some)
-            .collect();
+        let mut chains: Vec<Option<Chain>> = std::mem::take(&mut self.chains).into_iter().map(Some).collect();
         let mut passed = vec![false; self.nodes.len()];
         for id in 0..self.nodes.len() {
             let &[first, second] = at_node[id].as_slice() else {
@@ -112,11 +101,7 @@ impl SkeletonGraph {
     /// Drops nodes that no chain uses any more, and brings nodes and chains into their fixed order.
     fn drop_nodes(&mut self, dropped: Vec<bool>) {
         let nodes = std::mem::take(&mut self.nodes);
-        let mut kept: Vec<(NodeId, Node)> = nodes
-            .into_iter()
-            .enumerate()
-            .filter(|(id, _)| !dropped[*id])
-            .collect();
+        let mut kept: Vec<(NodeId, Node)> = nodes.into_iter().enumerate().filter(|(id, _)| !dropped[*id]).collect();
         kept.sort_by(|a, b| a.1.pixels.cmp(&b.1.pixels));
         let mut renamed = vec![0; dropped.len()];
         for (new, (old, _)) in kept.iter().enumerate() {
@@ -137,11 +122,7 @@ impl SkeletonGraph {
 impl Chain {
     fn turned(mut self) -> Self {
         self.pixels.reverse();
-        Self {
-            pixels: self.pixels,
-            start: self.end,
-            end: self.start,
-        }
+        Self { pixels: self.pixels, start: self.end, end: self.start }
     }
 
     fn turned_to_end_at(self, id: NodeId) -> Self {
@@ -158,11 +139,7 @@ impl Node {
             pixels.extend(self.way(from, to));
         }
         pixels.extend(rest);
-        Chain {
-            pixels,
-            start: into.start,
-            end: out.end,
-        }
+        Chain { pixels, start: into.start, end: out.end }
     }
 
     /// The shortest way between two of its pixels, both included; `from` alone where they are the same.
@@ -211,17 +188,13 @@ mod tests {
         graph.prune_short(distance(mask.view()).view(), 2.0);
         assert_eq!((graph.nodes.len(), graph.chains.len()), (2, 1));
         let length = graph.chains[0].length();
-        assert!(
-            (length - 52.0).abs() <= 5.0,
-            "between the centres of the last discs, not {length}"
-        );
+        assert!((length - 52.0).abs() <= 5.0, "between the centres of the last discs, not {length}");
     }
 
     #[test]
     fn a_long_branch_stays() {
         let mask = Array2::from_shape_fn((60, 61), |(row, column)| {
-            (5..10).contains(&row) && (3..58).contains(&column)
-                || (10..55).contains(&row) && (28..33).contains(&column)
+            (5..10).contains(&row) && (3..58).contains(&column) || (10..55).contains(&row) && (28..33).contains(&column)
         });
         let mut graph = SkeletonGraph::from_mask(thin(mask.view()).view());
         graph.prune_short(distance(mask.view()).view(), 2.0);

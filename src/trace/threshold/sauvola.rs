@@ -48,11 +48,7 @@ impl Sauvola {
         for near in self.window(row, values.nrows()) {
             for (sum, &value) in sums.iter_mut().zip(values.row(near)) {
                 let value = f64::from(value);
-                *sum = sum.plus(Moments {
-                    count: 1.0,
-                    sum: value,
-                    squares: value * value,
-                });
+                *sum = sum.plus(Moments { count: 1.0, sum: value, squares: value * value });
             }
         }
         sums
@@ -63,9 +59,7 @@ impl Sauvola {
         let period = (2 * (length - 1)).max(1);
         let radius = self.radius.cast_signed();
         (-radius..=radius).map(move |step| {
-            let place = (middle.cast_signed() + step)
-                .rem_euclid(period.cast_signed())
-                .unsigned_abs();
+            let place = (middle.cast_signed() + step).rem_euclid(period.cast_signed()).unsigned_abs();
             place.min(period - place).min(length - 1)
         })
     }
@@ -91,11 +85,7 @@ impl Moments {
     }
 
     fn plus(self, other: Self) -> Self {
-        Self {
-            count: self.count + other.count,
-            sum: self.sum + other.sum,
-            squares: self.squares + other.squares,
-        }
+        Self { count: self.count + other.count, sum: self.sum + other.sum, squares: self.squares + other.squares }
     }
 }
 
@@ -105,35 +95,16 @@ mod tests {
 
     #[test]
     fn the_border_is_mirrored_without_its_pixel() {
-        let sauvola = Sauvola {
-            radius: 3,
-            k: 0.2,
-            range: 1.0,
-        };
-        assert_eq!(
-            sauvola.window(0, 5).collect::<Vec<_>>(),
-            [3, 2, 1, 0, 1, 2, 3]
-        );
-        assert_eq!(
-            sauvola.window(4, 5).collect::<Vec<_>>(),
-            [1, 2, 3, 4, 3, 2, 1]
-        );
+        let sauvola = Sauvola { radius: 3, k: 0.2, range: 1.0 };
+        assert_eq!(sauvola.window(0, 5).collect::<Vec<_>>(), [3, 2, 1, 0, 1, 2, 3]);
+        assert_eq!(sauvola.window(4, 5).collect::<Vec<_>>(), [1, 2, 3, 4, 3, 2, 1]);
         assert_eq!(sauvola.window(0, 1).collect::<Vec<_>>(), [0; 7]);
     }
 
     #[test]
     fn an_even_plane_is_above_its_threshold_and_an_empty_one_has_none() {
-        let sauvola = Sauvola {
-            radius: 2,
-            k: 0.2,
-            range: 1.0,
-        };
-        assert!(
-            sauvola
-                .above(&Array2::from_elem((4, 6), 0.5))
-                .iter()
-                .all(|&on| on)
-        );
+        let sauvola = Sauvola { radius: 2, k: 0.2, range: 1.0 };
+        assert!(sauvola.above(&Array2::from_elem((4, 6), 0.5)).iter().all(|&on| on));
         assert_eq!(sauvola.above(&Array2::zeros((0, 0))).len(), 0);
     }
 }
