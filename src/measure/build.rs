@@ -10,11 +10,11 @@ use super::uncertainty;
 use super::{FilamentRow, FrameRow, GrowthRow, PathRow};
 
 /// Least length of a growth piece, px (contract of the growth table).
-pub const LEAST_PIECE_PX: f64 = 3.0;
+pub(crate) const LEAST_PIECE_PX: f64 = 3.0;
 /// The length at a filament's end that tells whether it was turned aside, µm.
-pub const TURN_LENGTH_UM: f64 = 100.0;
+pub(crate) const TURN_LENGTH_UM: f64 = 100.0;
 /// The angle to the plating edge's normal beyond which it was, degrees.
-pub const TURN_DEG: f64 = 45.0;
+pub(crate) const TURN_DEG: f64 = 45.0;
 /// Pieces at a node that differ by less than this are one stretch, degrees.
 const ONE_STRETCH_DEG: f64 = 30.0;
 

@@ -26,21 +26,21 @@ pub fn tip_px(noise: f64) -> f64 {
 
 /// Of a depth whose deepest point is the last of `points`, px.
 #[must_use]
-pub fn depth_px(points: &[TracePoint], noise: f64) -> f64 {
+pub(crate) fn depth_px(points: &[TracePoint], noise: f64) -> f64 {
     let u_across = points.last().map_or(0.1, |p| p.u_across);
     libm::hypot(tip_px(noise), u_across)
 }
 
 /// Of an arc length, px: both ends and the wobble across.
 #[must_use]
-pub fn length_px(length: f64, points: &[TracePoint], noise: f64) -> f64 {
+pub(crate) fn length_px(length: f64, points: &[TracePoint], noise: f64) -> f64 {
     let wobble = across(points) * (length / CORRELATION_PX).max(1.0).sqrt();
     libm::hypot(tip_px(noise), wobble)
 }
 
 /// Of a mean width, px.
 #[must_use]
-pub fn width_px(points: &[TracePoint], noise: f64) -> f64 {
+pub(crate) fn width_px(points: &[TracePoint], noise: f64) -> f64 {
     let n = (points.len() as f64 * 0.5 / CORRELATION_PX).max(1.0);
     libm::hypot(0.3, (2.0 * across(points) + noise) / n.sqrt())
 }
@@ -48,7 +48,7 @@ pub fn width_px(points: &[TracePoint], noise: f64) -> f64 {
 /// Of a mean direction over `length` px, degrees: that of a straight line fitted to positions with the
 /// trace's uncertainty across, independent every correlation length: √12 u / (L √n).
 #[must_use]
-pub fn angle_deg(length: f64, points: &[TracePoint]) -> f64 {
+pub(crate) fn angle_deg(length: f64, points: &[TracePoint]) -> f64 {
     let n = (length / CORRELATION_PX).max(1.0);
     let reach = length.max(CORRELATION_PX);
     libm::atan2(12.0f64.sqrt() * across(points), reach * n.sqrt()).to_degrees()

@@ -236,7 +236,7 @@ impl<'a> Follower<'a> {
     /// Keeps what the eye wants to see of a corrected frame.
     fn picture(&mut self, i: usize, residual: &Array2<f32>) {
         let plane = super::pictures::shown(self.scene.reference(), residual, self.input.darker());
-        if i % self.film_step == 0 {
+        if i.is_multiple_of(self.film_step) {
             let time_s = self.input.sequence.entries[i].time_s;
             self.film.push(FilmFrame { frame: i, time_s, picture: self.tone.picture(&plane) });
         }

@@ -72,7 +72,7 @@ impl<'a> Forecasts<'a> {
             chance_by_horizon: told.chance_by_horizon,
             model: told.model,
         });
-        if self.rows.len() % self.keep_every == 0 {
+        if self.rows.len().is_multiple_of(self.keep_every) {
             self.records.push(record);
         }
     }

@@ -38,7 +38,7 @@ const MEETING_COSINE: f64 = 0.64;
 
 /// Adds lines to the forest as proposals.
 #[derive(Clone, Copy)]
-pub struct Attachment<'a> {
+pub(crate) struct Attachment<'a> {
     /// The plane the lines were found in.
     pub plane: &'a Array2<f32>,
     /// The electrodes.
@@ -47,7 +47,7 @@ pub struct Attachment<'a> {
 
 impl Attachment<'_> {
     /// Adds the lines of one component; gives the indices of the strands that changed.
-    pub fn attach(&self, lines: &[Line], forest: &mut Forest) -> Vec<usize> {
+    pub(crate) fn attach(&self, lines: &[Line], forest: &mut Forest) -> Vec<usize> {
         let mut made: Vec<Option<usize>> = Vec::new();
         for line in lines {
             let index = match line.start {
@@ -105,7 +105,7 @@ impl Attachment<'_> {
     }
 
     /// Ties the end of a strand to other metal ahead of it, where the plane shows ink all the way.
-    pub fn meet(&self, index: usize, forest: &mut Forest, owners: &Owners) {
+    pub(crate) fn meet(&self, index: usize, forest: &mut Forest, owners: &Owners) {
         let strand = &forest.strands[index];
         let (Some(end), Some(heading)) = (strand.vertices.last(), strand.heading(vertices_in(HEADING))) else { return };
         if strand.meets.is_some() || strand.reached_far.is_some() {
@@ -119,12 +119,15 @@ impl Attachment<'_> {
             .filter_map(|pixel| owners.at(pixel))
             .filter(|j| j.strand != index && !near_own_joint(*j))
             .filter_map(|j| forest.strands[j.strand].vertices.get(j.vertex).map(|v| (j, v.p, distance(v.p, p))))
+            .filter(|(_, target, _)| {
+                let toward = unit([target[0] - p[0], target[1] - p[1]]).unwrap_or(heading);
+                toward[0] * heading[0] + toward[1] * heading[1] > MEETING_COSINE
+            })
             .min_by(|a, b| a.2.total_cmp(&b.2));
         let Some((joint, target, gap)) = met else {
             return;
         };
-        let toward = unit([target[0] - p[0], target[1] - p[1]]).unwrap_or(heading);
-        if toward[0] * heading[0] + toward[1] * heading[1] < MEETING_COSINE {
+        if !self.inked(p, target, MEETING_INK * strand.contrast) {
             return;
         }
         let steps = vertices_in(gap);

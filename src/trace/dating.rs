@@ -27,7 +27,7 @@ const FAINT: f64 = 2.5;
 /// Half width of the core to be read for ink of full width `width` whose contrast is `clarity` times a pixel's noise:
 /// narrow where it is clear, all of it where it is faint.
 #[must_use]
-pub fn core_of(width: f64, clarity: f64) -> f64 {
+pub(crate) fn core_of(width: f64, clarity: f64) -> f64 {
     let narrow = (CORE * width).clamp(LEAST_CORE, MOST_CORE);
     let share = ((CLEAR - clarity) / (CLEAR - FAINT)).clamp(0.0, 1.0);
     narrow + share * (0.5 * width - narrow).max(0.0)
@@ -35,7 +35,7 @@ pub fn core_of(width: f64, clarity: f64) -> f64 {
 
 /// Contrast at one vertex in one frame and its standard deviation.
 #[derive(Debug, Clone, Copy, PartialEq)]
-pub struct Contrast {
+pub(crate) struct Contrast {
     /// Mean over the ink less the mean beside it.
     pub value: f64,
     /// Standard deviation from pixel noise.
@@ -45,7 +45,7 @@ pub struct Contrast {
 /// Contrast of a line of full width `width` at `p` with unit normal `n`: the mean across the core of the ink less
 /// the mean of strips on both sides. `None` where the frame does not cover both.
 #[must_use]
-pub fn contrast(
+pub(crate) fn contrast(
     frame: &Corrected,
     noise: &Array2<f32>,
     p: [f64; 2],
@@ -83,7 +83,7 @@ fn strip(plane: &Array2<f32>, p: [f64; 2], n: [f64; 2], a: f64, b: f64) -> Optio
 /// `rows[j][i]` is the contrast in frame j (oldest first) at vertex i, `None` where unknown; `height` is the
 /// contrast of the filament. Where two sequences are equally likely the shorter one is taken.
 #[must_use]
-pub fn positions(rows: &[Vec<Option<Contrast>>], height: f64) -> Vec<usize> {
+pub(crate) fn positions(rows: &[Vec<Option<Contrast>>], height: f64) -> Vec<usize> {
     let n = rows.first().map_or(0, Vec::len);
     let mut best = vec![0.0f64; n + 1];
     let mut came_from: Vec<Vec<usize>> = Vec::with_capacity(rows.len());
@@ -130,7 +130,7 @@ fn cumulative_gain(row: &[Option<Contrast>], height: f64) -> Vec<f64> {
 /// Evidence of a stretch of vertices in one frame, in standard deviations: the sum of contrasts over
 /// its own standard deviation, neighbours counted as sharing `share` px of noise.
 #[must_use]
-pub fn strength(row: &[Option<Contrast>], share: f64) -> f64 {
+pub(crate) fn strength(row: &[Option<Contrast>], share: f64) -> f64 {
     let known: Vec<&Contrast> = row.iter().flatten().collect();
     let sum: f64 = known.iter().map(|c| c.value).sum();
     let power: f64 = known.iter().map(|c| c.sd * c.sd).sum();

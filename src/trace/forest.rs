@@ -11,17 +11,17 @@ use super::edges::Edges;
 use super::tip::TipShape;
 
 /// Distance between neighbouring vertices of a strand, px: half a pixel, so that a tip is placed within a quarter.
-pub const SPACING: f64 = 0.5;
+pub(crate) const SPACING: f64 = 0.5;
 
 /// A length in pixels as a number of vertices.
 #[must_use]
-pub fn vertices_in(px: f64) -> usize {
+pub(crate) fn vertices_in(px: f64) -> usize {
     (px / SPACING).round() as usize
 }
 
 /// One vertex of a strand.
 #[derive(Debug, Clone)]
-pub struct Vertex {
+pub(crate) struct Vertex {
     /// Position, px.
     pub p: [f64; 2],
     /// Unit normal of the line here.
@@ -45,7 +45,7 @@ pub struct Vertex {
 impl Vertex {
     /// A vertex that has not arrived yet.
     #[must_use]
-    pub fn new(p: [f64; 2], n: [f64; 2], width: f64, edges: &Edges) -> Self {
+    pub(crate) fn new(p: [f64; 2], n: [f64; 2], width: f64, edges: &Edges) -> Self {
         Self {
             p,
             n,
@@ -62,7 +62,7 @@ impl Vertex {
 
 /// Where a strand's first vertex is tied to.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub struct Joint {
+pub(crate) struct Joint {
     /// Index of the parent strand.
     pub strand: usize,
     /// Vertex of the parent.
@@ -71,7 +71,7 @@ pub struct Joint {
 
 /// A line from its start to its tip.
 #[derive(Debug, Clone)]
-pub struct Strand {
+pub(crate) struct Strand {
     /// Index of its filament.
     pub filament: usize,
     /// Where it leaves its parent; `None` at a root.
@@ -96,7 +96,7 @@ pub struct Strand {
 
 /// A root and its strands.
 #[derive(Debug, Clone)]
-pub struct Filament {
+pub(crate) struct Filament {
     /// Where it starts.
     pub root: Root,
     /// Root position, px.
@@ -105,7 +105,7 @@ pub struct Filament {
 
 /// All strands.
 #[derive(Debug, Clone, Default)]
-pub struct Forest {
+pub(crate) struct Forest {
     /// In order of discovery.
     pub strands: Vec<Strand>,
     /// In order of discovery.
@@ -114,7 +114,7 @@ pub struct Forest {
 
 /// Which strand owns a pixel.
 #[derive(Debug, Clone)]
-pub struct Owners {
+pub(crate) struct Owners {
     /// Strand index + 1, 0 for bare ceramic.
     pub strand: Array2<u32>,
     /// Vertex of that strand.
@@ -124,19 +124,19 @@ pub struct Owners {
 impl Owners {
     /// Nobody owns anything.
     #[must_use]
-    pub fn new(shape: (usize, usize)) -> Self {
+    pub(crate) fn new(shape: (usize, usize)) -> Self {
         Self { strand: Array2::zeros(shape), vertex: Array2::zeros(shape) }
     }
 
     /// The owner of a pixel.
     #[must_use]
-    pub fn at(&self, pixel: [usize; 2]) -> Option<Joint> {
+    pub(crate) fn at(&self, pixel: [usize; 2]) -> Option<Joint> {
         let strand = self.strand[pixel];
         (strand > 0).then(|| Joint { strand: strand as usize - 1, vertex: self.vertex[pixel] as usize })
     }
 
     /// Gives a strand the pixels within `margin` px of its ink, from vertex `from` on.
-    pub fn claim(&mut self, index: usize, strand: &Strand, from: usize, margin: f64) {
+    pub(crate) fn claim(&mut self, index: usize, strand: &Strand, from: usize, margin: f64) {
         for (v, vertex) in strand.vertices.iter().enumerate().skip(from) {
             for pixel in disc(vertex.p, 0.5 * vertex.width + margin, self.strand.dim()) {
                 let mine = index as u32 + 1;
@@ -171,7 +171,7 @@ pub fn disc(p: [f64; 2], radius: f64, shape: (usize, usize)) -> impl Iterator<It
 
 impl Strand {
     /// Lets go of everything that is not decided.
-    pub fn truncate(&mut self) {
+    pub(crate) fn truncate(&mut self) {
         self.vertices.truncate(self.decided);
         self.provisional.clear();
         if self.reached_far.is_none() {
@@ -182,13 +182,13 @@ impl Strand {
 
     /// Whether the end is tied to other metal for good.
     #[must_use]
-    pub fn closed(&self) -> bool {
+    pub(crate) fn closed(&self) -> bool {
         self.meets.is_some() && self.vertices.last().is_some_and(|v| v.arrival.is_some())
     }
 
     /// Unit direction at its end, over its last `reach` vertices.
     #[must_use]
-    pub fn heading(&self, reach: usize) -> Option<[f64; 2]> {
+    pub(crate) fn heading(&self, reach: usize) -> Option<[f64; 2]> {
         let end = self.vertices.len().checked_sub(1)?;
         let start = end.checked_sub(reach.min(end))?;
         let (a, b) = (self.vertices[start].p, self.vertices[end].p);
@@ -197,21 +197,21 @@ impl Strand {
 
     /// Vertices by which the centre-line ends behind the ink: none where the end is tied to other metal or the far edge.
     #[must_use]
-    pub fn setback(&self, shape: &TipShape) -> usize {
+    pub(crate) fn setback(&self, shape: &TipShape) -> usize {
         let free = self.meets.is_none() && self.reached_far.is_none();
         if free { vertices_in(shape.setback() * 0.5 * self.width) } else { 0 }
     }
 
     /// Whether growth can go on from its end.
     #[must_use]
-    pub fn live(&self) -> bool {
+    pub(crate) fn live(&self) -> bool {
         !self.withdrawn && self.meets.is_none() && self.reached_far.is_none()
     }
 }
 
 impl Forest {
     /// Drops all proposals, and strands and filaments of which nothing is decided.
-    pub fn truncate(&mut self) {
+    pub(crate) fn truncate(&mut self) {
         self.strands.iter_mut().for_each(Strand::truncate);
         while self.strands.last().is_some_and(|s| s.vertices.is_empty()) {
             self.strands.pop();

@@ -16,7 +16,7 @@ use super::forest::{Forest, Joint, Owners, vertices_in};
 /// Room about a component in which it may be tied to older metal, px.
 const ROOM: usize = 18;
 /// A line that starts within this depth of an edge is rooted on it (the electrode's blur hides its start), px.
-pub const ROOT_REACH: f64 = 12.0;
+pub(crate) const ROOT_REACH: f64 = 12.0;
 /// Cost of starting a branch on the side of a strand rather than going on from its tip.
 const SIDE_COST: f32 = 6.0;
 /// Cost of starting a filament at an edge.
@@ -30,7 +30,7 @@ const TIP_GAP: usize = 9;
 
 /// Where a new line starts.
 #[derive(Debug, Clone, Copy, PartialEq)]
-pub enum Start {
+pub(crate) enum Start {
     /// It goes on from a strand's tip.
     Tip(usize),
     /// It leaves the side of a strand.
@@ -47,7 +47,7 @@ pub enum Start {
 
 /// A new line, pixels [row, col] from its start on.
 #[derive(Debug, Clone)]
-pub struct Line {
+pub(crate) struct Line {
     /// Where it starts.
     pub start: Start,
     /// At least one pixel.
@@ -74,7 +74,7 @@ impl PartialOrd for Item {
 
 /// What the linking reads.
 #[derive(Clone, Copy)]
-pub struct Ground<'a> {
+pub(crate) struct Ground<'a> {
     /// Line evidence.
     pub z: &'a Array2<f32>,
     /// Evidence above which a pixel is no longer bare.
@@ -87,7 +87,7 @@ pub struct Ground<'a> {
 
 /// A component to be linked: its pixels and the ends of its skeleton.
 #[derive(Debug, Clone)]
-pub struct Component {
+pub(crate) struct Component {
     /// Pixels [row, col].
     pub pixels: Vec<[usize; 2]>,
     /// Ends of the skeleton, or one pixel of a closed loop.
@@ -96,7 +96,7 @@ pub struct Component {
 
 /// The lines of a component; none where nothing ties it to older metal or an edge and `free` is false.
 #[must_use]
-pub fn lines(component: &Component, ground: Ground, forest: &Forest, owners: &Owners, free: bool) -> Vec<Line> {
+pub(crate) fn lines(component: &Component, ground: Ground, forest: &Forest, owners: &Owners, free: bool) -> Vec<Line> {
     let Some(field) = Field::new(component, ground, forest, owners, free) else {
         return Vec::new();
     };

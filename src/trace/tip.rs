@@ -22,7 +22,7 @@ const BOUNDARY: f32 = 0.5;
 
 /// Mean picture of the tips of a run.
 #[derive(Debug, Clone)]
-pub struct TipShape {
+pub(crate) struct TipShape {
     sum: Array2<f32>,
     seen: Array2<f32>,
 }
@@ -36,7 +36,7 @@ impl Default for TipShape {
 impl TipShape {
     /// Adds a tip: `line` holds positions and normals behind the end of its ink, nearest first, with their distance
     /// from it; `width` and `contrast` are the strand's.
-    pub fn add(&mut self, plane: &Array2<f32>, line: &[(f64, [f64; 2], [f64; 2])], width: f64, contrast: f64) {
+    pub(crate) fn add(&mut self, plane: &Array2<f32>, line: &[(f64, [f64; 2], [f64; 2])], width: f64, contrast: f64) {
         let half = 0.5 * width;
         for (distance, p, n) in line {
             let row = (distance / half / STEP).round() as usize;
@@ -57,7 +57,7 @@ impl TipShape {
 
     /// Distance of the centre-line's end behind that of the ink, in half widths of the strand.
     #[must_use]
-    pub fn setback(&self) -> f64 {
+    pub(crate) fn setback(&self) -> f64 {
         let mut setback = (STEPS - 1) as f64 * STEP;
         for row in (0..STEPS).rev() {
             let x = row as f64 * STEP;
