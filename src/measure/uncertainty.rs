@@ -7,9 +7,9 @@
 use crate::trace::TracePoint;
 
 /// Placing of a tip along a clear line, px: blur of the end and shape of the tip.
-const TIP_PX: f64 = 0.45;
-/// Growth of that placing with noise, px per unit of noise over contrast.
-const TIP_NOISE_PX: f64 = 0.5;
+const TIP_PX: f64 = 0.6;
+/// Growth of that placing with noise: px for a pixel noise of a tenth of the brightness.
+const TIP_NOISE_PX: f64 = 3.0;
 /// Length over which positions across the line are correlated, px.
 const CORRELATION_PX: f64 = 8.0;
 

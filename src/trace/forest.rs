@@ -13,6 +13,10 @@ use super::tip::TipShape;
 /// Distance between neighbouring vertices of a strand, px: half a pixel, so that a tip is placed within a quarter.
 pub(crate) const SPACING: f64 = 0.5;
 
+/// Standard deviation of a sharp microscope's blur, px (common practice). The half level of a blurred disc of radius r
+/// lies σ²/2r inside its rim.
+const BLUR_PX: f64 = 0.65;
+
 /// A length in pixels as a number of vertices.
 #[must_use]
 pub(crate) fn vertices_in(px: f64) -> usize {
@@ -198,8 +202,13 @@ impl Strand {
     /// Vertices by which the centre-line ends behind the ink: none where the end is tied to other metal or the far edge.
     #[must_use]
     pub(crate) fn setback(&self, shape: &TipShape) -> usize {
-        let free = self.meets.is_none() && self.reached_far.is_none();
-        if free { vertices_in(shape.setback() * 0.5 * self.width) } else { 0 }
+        if self.meets.is_some() || self.reached_far.is_some() {
+            return 0;
+        }
+        let radius = 0.5 * self.width;
+        // The change point lies half a spacing beyond the last vertex reached, and blur draws a convex end back.
+        let seen_short = 0.5 * SPACING + BLUR_PX * BLUR_PX / (2.0 * radius);
+        vertices_in((shape.setback() * radius - seen_short).max(0.0))
     }
 
     /// Whether growth can go on from its end.

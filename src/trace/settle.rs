@@ -7,28 +7,32 @@ use super::forest::{SPACING, Strand, vertices_in};
 use super::growth::Tracer;
 
 /// Evidence that the first stretch of a new filament must show in each of three frames, sd.
-const NEW_EACH: f64 = 3.0;
+const NEW_EACH: f64 = 4.5;
 /// And in all three together.
-const NEW_ALL: f64 = 7.5;
+const NEW_ALL: f64 = 11.0;
 /// Frames, from the deciding one on, that bear witness to a new line; at the end of a run its last ones.
 const WITNESSES: usize = 3;
 /// The same for a branch.
 const BRANCH_EACH: f64 = 2.0;
 /// And in all three together.
 const BRANCH_ALL: f64 = 6.0;
-/// Evidence that a filament on no edge must show in each frame and in all together, sd, and its least length, px.
-const INSIDE_EACH: f64 = 4.5;
+/// Evidence that a filament elsewhere than on the plating edge must show in each frame and in all together, sd, and its least length, px.
+const INSIDE_EACH: f64 = 6.0;
 /// In all together.
-const INSIDE_ALL: f64 = 11.0;
+const INSIDE_ALL: f64 = 18.0;
 /// Least length, px.
-const INSIDE_LENGTH: f64 = 14.0;
+const INSIDE_LENGTH: f64 = 20.0;
 /// And in widths: specks are round.
 const INSIDE_WIDTHS: f64 = 4.0;
 /// Frames for which it must have stood.
 const INSIDE_FRAMES: usize = 6;
 /// Distance from the edge that a filament on it must have reached before it is believed, px: the rough rim of the
 /// electrode stays below it.
-const ROOT_DEPTH: f64 = 8.0;
+const ROOT_DEPTH: f64 = 9.0;
+/// Length of a filament on the plating edge before it is believed, px, and the frames for which it must have stood.
+const NEW_LENGTH: f64 = 10.0;
+/// The frames.
+const NEW_FRAMES: usize = 4;
 /// Share of the usual contrast below which a new line is a shadow of old ones.
 const LEAST_CONTRAST: f64 = 0.3;
 /// Least first stretch, px.
@@ -233,10 +237,10 @@ fn demand_on(tracer: &Tracer, strand: &Strand) -> Demand {
         None => usual_contrast(&tracer.forest.strands),
     };
     let contrast = LEAST_CONTRAST * usual;
-    let inside = tracer.forest.filaments[strand.filament].root == Root::Inside;
+    let elsewhere = tracer.forest.filaments[strand.filament].root != Root::Plating;
     match strand.parent {
         Some(_) => Demand { length: LEAST_FIRST, depth: 0.0, contrast, frames: 1, each: BRANCH_EACH, all: BRANCH_ALL },
-        None if inside => Demand {
+        None if elsewhere => Demand {
             length: INSIDE_LENGTH.max(INSIDE_WIDTHS * strand.width),
             depth: 0.0,
             contrast,
@@ -244,7 +248,9 @@ fn demand_on(tracer: &Tracer, strand: &Strand) -> Demand {
             each: INSIDE_EACH,
             all: INSIDE_ALL,
         },
-        None => Demand { length: LEAST_FIRST, depth: ROOT_DEPTH, contrast, frames: 1, each: NEW_EACH, all: NEW_ALL },
+        None => {
+            Demand { length: NEW_LENGTH, depth: ROOT_DEPTH, contrast, frames: NEW_FRAMES, each: NEW_EACH, all: NEW_ALL }
+        }
     }
 }
 

@@ -15,6 +15,8 @@ const STEPS: usize = 17;
 const STEP: f64 = 0.125;
 /// Share of the half width for a round end, used until enough tips were seen.
 const ROUND: f64 = 1.0;
+/// Half widths from half of the full width to 85 % of it beyond which an end tapers.
+const TAPER: f64 = 0.8;
 /// Samples of a cell before the picture is trusted.
 const LEAST_SEEN: f32 = 10.0;
 /// Share of full contrast at the boundary of the ink.
@@ -58,6 +60,9 @@ impl TipShape {
     /// Distance of the centre-line's end behind that of the ink, in half widths of the strand.
     #[must_use]
     pub(crate) fn setback(&self) -> f64 {
+        if self.tapers() {
+            return 0.0;
+        }
         let mut setback = (STEPS - 1) as f64 * STEP;
         for row in (0..STEPS).rev() {
             let x = row as f64 * STEP;
@@ -68,6 +73,17 @@ impl TipShape {
             }
         }
         setback.min(ROUND)
+    }
+
+    /// Whether the ink gets to its full width much more slowly than behind a round end: there it takes 0.34 half widths
+    /// from half of it to 85 %. The tip of such a cone is its own last disc.
+    fn tapers(&self) -> bool {
+        let reaches = |share: f64| (0..STEPS).find(|&row| self.half_width(row).is_some_and(|h| h >= share));
+        match (reaches(0.5), reaches(0.85)) {
+            (Some(a), Some(b)) => (b as f64 - a as f64) * STEP > TAPER,
+            (Some(_), None) => self.half_width(STEPS - 1).is_some(),
+            _ => false,
+        }
     }
 
     /// Half width of the ink in half widths of the strand, `None` where too little was seen.
@@ -121,7 +137,7 @@ mod tests {
     #[test]
     fn a_tapered_end_sets_back_by_less() {
         let cone = drawn(|d| (d / 3.0).min(4.0));
-        assert!(cone.setback() < 0.4, "{}", cone.setback());
+        assert!(cone.setback() < 0.1, "{}", cone.setback());
     }
 
     #[test]
