@@ -46,6 +46,10 @@ fn the_folder_holds_the_promised_files_and_no_other() {
         take(format!("tables/{table}.csv"));
         take(format!("tables/{table}.parquet"));
     }
+    for table in ["turns", "directions", "charge", "half_cycles"] {
+        take(format!("tables/{table}.csv"));
+        take(format!("tables/{table}.parquet"));
+    }
     for frame in 0..FRAMES {
         take(format!("masks/{frame:06}.png"));
     }

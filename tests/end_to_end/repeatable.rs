@@ -12,7 +12,7 @@ fn read_by_scripts(output: &Path) -> BTreeMap<PathBuf, Vec<u8>> {
     all.retain(|name, _| {
         name.starts_with("tables") || name.starts_with("traces.ndjson") || name.starts_with("summary.json")
     });
-    assert_eq!(all.len(), 12, "{:?}", all.keys());
+    assert_eq!(all.len(), 20, "{:?}", all.keys());
     all
 }
 
