@@ -206,7 +206,7 @@ impl Attachment<'_> {
             return near.foot;
         }
         let run = -off / closing;
-        if run > 1.2 * near.distance {
+        if run > 1.6 * near.distance {
             return near.foot;
         }
         [first[0] + run * back[0], first[1] + run * back[1]]
