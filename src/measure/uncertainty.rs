@@ -6,7 +6,8 @@
 
 use crate::trace::TracePoint;
 
-/// Placing of a tip along a clear line, px: blur of the end and shape of the tip.
+/// Placing of a tip along a clear line, px: blur of the end and shape of the tip. This and the next were set so that
+/// ± 2 u held on fifteen synthetic runs that were looked at: no source, and not checked on others.
 const TIP_PX: f64 = 0.6;
 /// Growth of that placing with noise: px for a pixel noise of a tenth of the brightness.
 const TIP_NOISE_PX: f64 = 3.0;

@@ -1,9 +1,8 @@
-//! The output folder: built beside its place and swapped in whole, so that a reader sees the old one or
-//! the new one, never half of either.
+//! The output folder: built beside its place and swapped in whole, so that a reader never sees half of one.
 //!
 //! Order: write `.NAME.veerlog-new-XXXX`, move the old folder aside, move the new one in, remove the old
-//! one. A program that is killed meanwhile leaves that hidden folder beside the target, and the target
-//! whole. If the last move fails, the old folder is moved back. A folder without our mark is never touched
+//! one. A program that is killed meanwhile leaves hidden folders beside the target. Limit: killed between the
+//! two moves, it leaves no target, and the old output whole beside it under its hidden name. If the last move fails, the old folder is moved back. A folder without our mark is never touched
 //! unless it is empty.
 
 use std::fs::{self, File};
