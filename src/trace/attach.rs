@@ -7,6 +7,7 @@ use super::centreline::{distance, normal, onto_ridge, resample, sample, smooth, 
 use super::edges::Edges;
 use super::forest::{Filament, Forest, Joint, Owners, SPACING, Strand, Vertex, disc, vertices_in};
 use super::link::{Line, Start};
+use super::tip::TipShape;
 
 /// Width of a strand of which nothing is known yet, px.
 const FIRST_WIDTH: f64 = 3.5;
@@ -21,8 +22,6 @@ const AIM: usize = 8;
 
 /// Length over which a strand's heading is taken, px.
 const HEADING: f64 = 10.0;
-/// How far along the crossed strand, beyond its width, the two sides of a crossing may lie apart, px.
-const CROSSING_SLACK: f64 = 6.0;
 /// Cosine of the largest turn at a crossing: 35°.
 const CROSSING_COSINE: f64 = 0.82;
 /// How far ahead of its ink a strand is tied to other metal, px.
@@ -85,23 +84,24 @@ impl Attachment<'_> {
     }
 
     /// The strand that ran into this place from the other side and heads the way the line goes: a crossing, no branch.
-    fn crossing(&self, joint: Joint, line: &Line, forest: &mut Forest) -> Option<usize> {
+    fn crossing(&self, joint: Joint, line: &Line, forest: &Forest) -> Option<usize> {
         let host = &forest.strands[joint.strand];
-        let slack = vertices_in(host.width + CROSSING_SLACK);
         let first = point(*line.pixels.first()?);
         let aim = point(line.pixels[AIM.min(line.pixels.len() - 1)]);
         let goes = unit([aim[0] - first[0], aim[1] - first[1]])?;
-        let found = (0..forest.strands.len()).find(|&s| {
+        let reach = host.width + MEETING_REACH;
+        (0..forest.strands.len()).find(|&s| {
             let strand = &forest.strands[s];
-            let met =
-                strand.meets.is_some_and(|m| m.strand == joint.strand && m.vertex.abs_diff(joint.vertex) <= slack);
-            let straight = || {
-                strand.heading(vertices_in(HEADING)).is_some_and(|h| h[0] * goes[0] + h[1] * goes[1] > CROSSING_COSINE)
+            let Some(end) = strand.vertices.last().filter(|_| s != joint.strand && strand.live()) else { return false };
+            let straight = |way: [f64; 2]| {
+                strand.heading(vertices_in(HEADING)).is_some_and(|h| h[0] * way[0] + h[1] * way[1] > CROSSING_COSINE)
             };
-            met && strand.closed() && strand.reached_far.is_none() && straight()
-        })?;
-        forest.strands[found].meets = None;
-        Some(found)
+            let over = [first[0] - end.p[0], first[1] - end.p[1]];
+            distance(end.p, first) <= reach
+                && straight(goes)
+                && unit(over).is_some_and(straight)
+                && self.inked(end.p, first, MEETING_INK * strand.contrast)
+        })
     }
 
     /// Ties the end of a strand to other metal ahead of it, where the plane shows ink all the way.
@@ -131,12 +131,15 @@ impl Attachment<'_> {
             return;
         }
         let steps = vertices_in(gap);
+        let arrival = end.arrival;
         let bridge = (1..=steps).map(|k| {
             let t = k as f64 / steps as f64;
-            Vertex::new([p[0] + t * (target[0] - p[0]), p[1] + t * (target[1] - p[1])], n, width, self.edges)
+            let place = [p[0] + t * (target[0] - p[0]), p[1] + t * (target[1] - p[1])];
+            Vertex { arrival, ..Vertex::new(place, n, width, self.edges) }
         });
         let strand = &mut forest.strands[index];
         strand.vertices.extend(bridge);
+        strand.decided = strand.vertices.len();
         strand.meets = Some(joint);
     }
 
@@ -258,6 +261,7 @@ fn strand(filament: usize, parent: Option<Joint>, vertices: Vec<Vertex>, width: 
         reached_far: None,
         width,
         contrast,
+        tip_shape: TipShape::default(),
         withdrawn: false,
         provisional: Vec::new(),
     }

@@ -1,7 +1,7 @@
 //! The final trace: geometry refined from all frames, strands cut into paths at their branchings, numbered.
 
 use super::centreline::{Profile, distance, pooled, smooth};
-use super::forest::{Owners, SPACING, Strand, Vertex, vertices_in};
+use super::forest::{SPACING, Strand, Vertex, vertices_in};
 use super::growth::Tracer;
 use super::{EndsIn, Root, Trace, TracePath, TracePoint, TracedFilament};
 
@@ -9,12 +9,6 @@ use super::{EndsIn, Root, Trace, TracePath, TracePoint, TracedFilament};
 const POOL: f64 = 4.0;
 /// How far the final position may move, px.
 const SEARCH: f64 = 2.0;
-/// Branches shorter than this many widths (and `LEAST_BRANCH` px) beyond their parent's ink are spurs.
-const SPUR_WIDTHS: f64 = 1.0;
-/// Least length of a branch, px.
-const LEAST_BRANCH: f64 = 5.0;
-/// Margin about traced ink within which a branch has not left it, px.
-const INK_MARGIN: f64 = 1.0;
 /// Least length of a filament on an edge, px.
 const LEAST_ROOTED: f64 = 3.0;
 /// Least length of one that starts inside, px.
@@ -29,7 +23,7 @@ struct Refined {
 /// Builds the trace from what is decided.
 #[must_use]
 pub(super) fn finish(tracer: &Tracer) -> Trace {
-    let kept = kept_strands(tracer);
+    let kept: Vec<bool> = tracer.forest.strands.iter().map(|s| !s.withdrawn && s.decided > 1).collect();
     let refined: Vec<Refined> = tracer.forest.strands.iter().map(|s| refine(tracer, s)).collect();
     let mut order: Vec<(usize, usize)> = (0..tracer.forest.filaments.len())
         .filter_map(|f| {
@@ -64,47 +58,6 @@ fn root_strand(tracer: &Tracer, kept: &[bool], filament: usize) -> Option<usize>
     })
 }
 
-/// Strands that stay: decided, not withdrawn, and, where they branch off, long enough outside the ink of others or
-/// carrying others that are.
-fn kept_strands(tracer: &Tracer) -> Vec<bool> {
-    let strands = &tracer.forest.strands;
-    let outside = lengths_outside(tracer);
-    let mut kept = vec![false; strands.len()];
-    for (index, strand) in strands.iter().enumerate().rev() {
-        if strand.withdrawn || strand.decided < 2 {
-            continue;
-        }
-        let carries =
-            (index + 1..strands.len()).any(|c| kept[c] && strands[c].parent.is_some_and(|j| j.strand == index));
-        let long = outside[index] >= LEAST_BRANCH.max(SPUR_WIDTHS * strand.width);
-        kept[index] = carries || strand.parent.is_none() || long;
-    }
-    for index in 0..strands.len() {
-        if let Some(joint) = strands[index].parent {
-            kept[index] &= kept[joint.strand];
-        }
-    }
-    kept
-}
-
-/// For each strand the length that lies outside the ink of those before it, px.
-fn lengths_outside(tracer: &Tracer) -> Vec<f64> {
-    let mut ink = Owners::new(tracer.noise.dim());
-    let mut out = Vec::new();
-    for (index, strand) in tracer.forest.strands.iter().enumerate() {
-        let decided = &strand.vertices[..strand.decided];
-        let free = decided.iter().filter(|v| {
-            let pixel = [v.p[1].round().max(0.0) as usize, v.p[0].round().max(0.0) as usize];
-            ink.strand.get(pixel).is_none_or(|&s| s == 0)
-        });
-        out.push(free.count() as f64 * SPACING);
-        if !strand.withdrawn {
-            ink.claim(index, strand, 0, INK_MARGIN);
-        }
-    }
-    out
-}
-
 /// Moves the decided vertices of a strand onto the ridge of their profiles.
 fn refine(tracer: &Tracer, strand: &Strand) -> Refined {
     let vertices = &strand.vertices[..strand.decided];
@@ -125,9 +78,11 @@ fn refine(tracer: &Tracer, strand: &Strand) -> Refined {
     straighten(&mut positions, lead);
     let positions = smooth(&positions, vertices_in(POOL));
     let setback = strand.setback(&tracer.tip_shape).min(vertices.len() - 2);
-    let shown = vertices.len() - setback;
+    let last = vertices.len() - 1;
+    let shown = if strand.tied() { vertices.len() } else { vertices.len() - setback };
+    let arrival = |i: usize| vertices[(i + setback).min(last)].arrival;
     let points = (0..shown)
-        .map(|i| trace_point(tracer, &vertices[i], vertices[i + setback].arrival, positions[i], widths[i]))
+        .map(|i| trace_point(tracer, &vertices[i], arrival(i), positions[i], widths[i]))
         .collect();
     Refined { points }
 }

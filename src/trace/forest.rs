@@ -8,7 +8,7 @@ use ndarray::Array2;
 use super::Root;
 use super::centreline::{Profile, distance};
 use super::edges::Edges;
-use super::tip::TipShape;
+use super::tip::{ROUND, TipShape};
 
 /// Distance between neighbouring vertices of a strand, px: half a pixel, so that a tip is placed within a quarter.
 pub(crate) const SPACING: f64 = 0.5;
@@ -92,6 +92,8 @@ pub(crate) struct Strand {
     pub width: f64,
     /// Contrast.
     pub contrast: f64,
+    /// Mean picture of its own tip.
+    pub tip_shape: TipShape,
     /// Withdrawn: it gained no evidence later.
     pub withdrawn: bool,
     /// Vertices reached in the frames after the last decided one, oldest first.
@@ -178,16 +180,6 @@ impl Strand {
     pub(crate) fn truncate(&mut self) {
         self.vertices.truncate(self.decided);
         self.provisional.clear();
-        if self.reached_far.is_none() {
-            self.meets =
-                self.meets.filter(|_| self.decided > 0 && self.vertices.len() == self.decided && self.closed());
-        }
-    }
-
-    /// Whether the end is tied to other metal for good.
-    #[must_use]
-    pub(crate) fn closed(&self) -> bool {
-        self.meets.is_some() && self.vertices.last().is_some_and(|v| v.arrival.is_some())
     }
 
     /// Unit direction at its end, over its last `reach` vertices.
@@ -199,16 +191,20 @@ impl Strand {
         super::centreline::unit([b[0] - a[0], b[1] - a[1]])
     }
 
-    /// Vertices by which the centre-line ends behind the ink: none where the end is tied to other metal or the far edge.
+    /// Whether its end is tied to other metal or the far edge.
     #[must_use]
-    pub(crate) fn setback(&self, shape: &TipShape) -> usize {
-        if self.meets.is_some() || self.reached_far.is_some() {
-            return 0;
-        }
+    pub(crate) fn tied(&self) -> bool {
+        self.meets.is_some() || self.reached_far.is_some()
+    }
+
+    /// Vertices by which the centre-line ends behind the ink while the end is free.
+    #[must_use]
+    pub(crate) fn setback(&self, usual: &TipShape) -> usize {
+        let shape = self.tip_shape.setback().or_else(|| usual.setback()).unwrap_or(ROUND);
         let radius = 0.5 * self.width;
         // The change point lies half a spacing beyond the last vertex reached, and blur draws a convex end back.
         let seen_short = 0.5 * SPACING + BLUR_PX * BLUR_PX / (2.0 * radius);
-        vertices_in((shape.setback() * radius - seen_short).max(0.0))
+        vertices_in((shape * radius - seen_short).max(0.0))
     }
 
     /// Whether growth can go on from its end.

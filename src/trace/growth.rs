@@ -16,7 +16,7 @@ use super::recent::{Corrected, Recent};
 use super::ridge::line_evidence;
 use super::settle::{self, EDGE_SHADE};
 use super::tip::TipShape;
-use super::{thin, threshold};
+use super::{prune, shoulders, thin, threshold};
 
 /// Corrected frames held at once: how far back a line that is found late can be dated.
 pub const WINDOW: usize = 8;
@@ -116,6 +116,12 @@ impl Tracer {
         settle::date(self, self.settings.confirm_frames);
         settle::observe(self);
         settle::withdraw(self);
+        if std::env::var("DBG").is_ok() {
+            eprintln!("frame {}", self.frames.last().unwrap());
+            for (i, s) in self.forest.strands.iter().enumerate().filter(|(_, s)| !s.withdrawn) {
+                eprintln!("  {i} fil {} par {:?} n {} dec {} w {:.1} c {:.3} start {:.0?} end {:.0?} dec_end {:.0?} prov {:?}", s.filament, s.parent.map(|j| (j.strand, j.vertex)), s.vertices.len(), s.decided, s.width, s.contrast, s.vertices.first().map(|v| v.p), s.vertices.last().map(|v| v.p), s.decided.checked_sub(1).map(|d| s.vertices[d].p), s.provisional);
+            }
+        }
     }
 
     /// Pixels known to be filament (with a margin), for the next frame's correction.
@@ -161,9 +167,15 @@ impl Tracer {
             }
             waiting = left;
         }
-        let attachment = Attachment { plane, edges: &self.edges };
+    }
+
+    /// Ties free ends to other metal ahead of them, where the latest frames show ink all the way.
+    fn meet(&mut self) {
+        let Some((plane, _)) = self.recent.median() else { return };
+        self.claim_all();
+        let attachment = Attachment { plane: &plane, edges: &self.edges };
         for index in 0..self.forest.strands.len() {
-            if self.forest.strands[index].live() {
+            if self.forest.strands[index].live() && self.forest.strands[index].decided > 1 {
                 attachment.meet(index, &mut self.forest, &self.owners);
             }
         }
@@ -188,7 +200,9 @@ impl Tracer {
             if inside && u.is_finite() { u.clamp(-30.0, 30.0) } else { 0.0 }
         });
         let wanted = Zip::from(&self.inside).and(&self.owners.strand).par_map_collect(|&i, &o| i && o == 0);
-        line_evidence(&whitened, &wanted).z
+        let mut z = line_evidence(&whitened, &wanted).z;
+        shoulders::clear(&mut z, &whitened, LOW_Z);
+        z
     }
 
     /// Connected new pixels that hold at least one sure pixel; ahead of a live tip less is asked for.
@@ -294,8 +308,10 @@ impl Tracer {
             for strand in self.forest.strands.iter().filter(|s| s.filament == filament && !s.withdrawn) {
                 let setback = strand.setback(&self.tip_shape);
                 bridged |= strand.reached_far.is_some();
-                let decided = strand.vertices[..strand.decided].iter().skip(setback).zip(&strand.vertices);
-                let decided = decided.filter_map(|(ink, centre)| ink.arrival.map(|a| (a, centre)));
+                let decided = &strand.vertices[..strand.decided];
+                let free = if strand.tied() { decided.len() } else { decided.len().saturating_sub(setback) };
+                let ink = |i: usize| decided[(i + setback).min(decided.len() - 1)].arrival;
+                let decided = (0..free).filter_map(|i| ink(i).map(|a| (a, &strand.vertices[i])));
                 let later = strand.provisional.iter().enumerate().flat_map(|(k, &n)| {
                     let reached = strand.decided.saturating_sub(setback)..n.saturating_sub(setback);
                     strand.vertices[reached.start.min(reached.end)..reached.end].iter().map(move |v| (sure + k, v))
@@ -340,6 +356,15 @@ impl Tracer {
             settle::date(&mut self, 0);
         }
         settle::observe_new(&mut self);
+        if std::env::var("DBG").is_ok() {
+            eprintln!("TIP setback {:.2?} {}", self.tip_shape.setback(), self.tip_shape.dbg());
+            for s in self.forest.strands.iter().filter(|s| !s.withdrawn) {
+                eprintln!("  S w {:.1} setback {:.2?} {}", s.width, s.tip_shape.setback(), s.tip_shape.dbg());
+            }
+        }
+        prune::prune(&mut self.forest.strands);
+        self.forest.truncate();
+        self.meet();
         super::finish::finish(&self)
     }
 }

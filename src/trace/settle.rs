@@ -117,10 +117,11 @@ fn picture_tip(tracer: &mut Tracer, index: usize, ordinal: usize) {
     }
     let end = strand.decided - 1;
     let line: Vec<_> = (0..=end.min(vertices_in(1.2 * strand.width)))
-        .map(|back| (back as f64 * SPACING, strand.vertices[end - back].p, strand.vertices[end - back].n))
+        .map(|back| (strand.vertices[end - back].p, strand.vertices[end - back].n))
         .collect();
     let (width, contrast) = (strand.width, strand.contrast);
-    tracer.tip_shape.add(&frame.residual, &line, width, contrast);
+    tracer.tip_shape.add(&frame.residual, &line, SPACING, width, contrast);
+    tracer.forest.strands[index].tip_shape.add(&frame.residual, &line, SPACING, width, contrast);
 }
 
 /// The ordinal before which nothing of this strand's proposal can have arrived; `None` while its parent

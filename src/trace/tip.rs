@@ -2,8 +2,8 @@
 //!
 //! The centre-line ends at the centre of the last disc of full local width (contract of the depth). With h(x) the
 //! half width of the ink at distance x behind its end, that centre lies at the x beyond which h(x) ≤ x: half a width for
-//! a round end, less for one that tapers. h is read off the mean of all tips seen so far, laid on each other by the
-//! end of their ink and scaled by the half width of their strand: growing tips of one run are alike.
+//! a round end, less for one that tapers. h is read off the mean of a strand's tips so far, laid on each other by the
+//! end of their ink and scaled by its half width; a strand of which too little was seen takes the mean of all tips of the run.
 
 use ndarray::Array2;
 
@@ -14,10 +14,13 @@ const STEPS: usize = 17;
 /// Step, half widths.
 const STEP: f64 = 0.125;
 /// Share of the half width for a round end, used until enough tips were seen.
-const ROUND: f64 = 1.0;
-/// Half widths from half of the full width to 85 % of it beyond which an end tapers; chosen by hand between a round end
-/// (0.34) and the long cones of synthetic runs, no source.
-const TAPER: f64 = 0.8;
+pub(crate) const ROUND: f64 = 1.0;
+/// Half widths from half of the full width to 85 % of it up to which an end is round, blur and noise included, and
+const ROUND_RISE: f64 = 0.45;
+/// from which on it is a cone; both chosen by hand between round ends (0.34) and cones of synthetic runs, no source.
+const CONE: f64 = 0.8;
+/// Rows of the picture that must be known.
+const LEAST_ROWS: usize = 12;
 /// Samples of a cell before the picture is trusted.
 const LEAST_SEEN: f32 = 10.0;
 /// Share of full contrast at the boundary of the ink.
@@ -37,15 +40,22 @@ impl Default for TipShape {
 }
 
 impl TipShape {
-    /// Adds a tip: `line` holds positions and normals behind the end of its ink, nearest first, with their distance
-    /// from it; `width` and `contrast` are the strand's.
-    pub(crate) fn add(&mut self, plane: &Array2<f32>, line: &[(f64, [f64; 2], [f64; 2])], width: f64, contrast: f64) {
+    /// Adds a tip: `line` holds positions and normals behind the end of its ink, nearest first, `spacing` px apart;
+    /// `width` and `contrast` are the strand's.
+    pub(crate) fn add(
+        &mut self,
+        plane: &Array2<f32>,
+        line: &[([f64; 2], [f64; 2])],
+        spacing: f64,
+        width: f64,
+        contrast: f64,
+    ) {
         let half = 0.5 * width;
-        for (distance, p, n) in line {
-            let row = (distance / half / STEP).round() as usize;
-            if row >= STEPS {
-                break;
-            }
+        for row in 0..STEPS {
+            let at = row as f64 * STEP * half / spacing;
+            let (i, t) = (at.floor() as usize, at.fract());
+            let (Some((p, n)), Some((q, _))) = (line.get(i), line.get(i + 1)) else { break };
+            let p = [p[0] + t * (q[0] - p[0]), p[1] + t * (q[1] - p[1])];
             for col in 0..STEPS {
                 let o = col as f64 * STEP * half;
                 for side in [-o, o] {
@@ -58,33 +68,33 @@ impl TipShape {
         }
     }
 
-    /// Distance of the centre-line's end behind that of the ink, in half widths of the strand.
+    /// Distance of the centre-line's end behind that of the ink, in half widths of the strand; `None` where too little
+    /// was seen.
     #[must_use]
-    pub(crate) fn setback(&self) -> f64 {
-        if self.tapers() {
-            return 0.0;
+    pub(crate) fn setback(&self) -> Option<f64> {
+        let known: Vec<(f64, f64)> =
+            (0..STEPS).filter_map(|row| self.half_width(row).map(|h| (row as f64 * STEP, h))).collect();
+        if known.len() < LEAST_ROWS {
+            return None;
         }
-        let mut setback = (STEPS - 1) as f64 * STEP;
-        for row in (0..STEPS).rev() {
-            let x = row as f64 * STEP;
-            match self.half_width(row) {
-                None => return ROUND,
-                Some(h) if h > x => break,
-                Some(_) => setback = x,
-            }
-        }
-        setback.min(ROUND)
+        let beyond = known.iter().rev().take_while(|(x, h)| h <= x).last();
+        let round = beyond.map_or(ROUND, |(x, _)| x.min(ROUND));
+        Some(round * self.roundness())
     }
 
-    /// Whether the ink gets to its full width much more slowly than behind a round end: there it takes 0.34 half widths
-    /// from half of it to 85 %. The tip of such a cone is its own last disc.
-    fn tapers(&self) -> bool {
+    /// 1 for an end that gets to its full width as fast as a round one, 0 for a cone, whose tip is its own last disc. Behind a
+    /// round end it takes 0.34 half widths from half of the full width to 85 %.
+    fn roundness(&self) -> f64 {
         let reaches = |share: f64| (0..STEPS).find(|&row| self.half_width(row).is_some_and(|h| h >= share));
         match (reaches(0.5), reaches(0.85)) {
-            (Some(a), Some(b)) => (b as f64 - a as f64) * STEP > TAPER,
-            (Some(_), None) => self.half_width(STEPS - 1).is_some(),
-            _ => false,
+            (Some(a), Some(b)) => ((CONE - (b as f64 - a as f64) * STEP) / (CONE - ROUND_RISE)).clamp(0.0, 1.0),
+            (Some(_), None) => 0.0,
+            _ => 1.0,
         }
+    }
+
+    pub(crate) fn dbg(&self) -> String {
+        (0..STEPS).map(|r| format!("{:.2}", self.half_width(r).unwrap_or(-1.0))).collect::<Vec<_>>().join(" ")
     }
 
     /// Half width of the ink in half widths of the strand, `None` where too little was seen.
@@ -123,26 +133,27 @@ mod tests {
             inside as f32 / (n * n) as f32
         });
         let line: Vec<_> =
-            (0..40).map(|k| (0.5 * f64::from(k), [30.0 - 0.5 * f64::from(k), 20.0], [0.0, 1.0])).collect();
+            (0..40).map(|k| ([30.0 - 0.5 * f64::from(k), 20.0], [0.0, 1.0])).collect();
         let mut shape = TipShape::default();
-        (0..20).for_each(|_| shape.add(&plane, &line, 8.0, 1.0));
+        (0..20).for_each(|_| shape.add(&plane, &line, 0.5, 8.0, 1.0));
         shape
     }
 
     #[test]
     fn a_round_end_sets_back_by_half_a_width() {
         let round = drawn(|d| if d < 4.0 { (16.0 - (4.0 - d).powi(2)).max(0.0).sqrt() } else { 4.0 });
-        assert!((round.setback() - 1.0).abs() <= 0.13, "{}", round.setback());
+        let setback = round.setback().unwrap();
+        assert!((setback - 1.0).abs() <= 0.13, "{setback}");
     }
 
     #[test]
     fn a_tapered_end_sets_back_by_less() {
         let cone = drawn(|d| (d / 3.0).min(4.0));
-        assert!(cone.setback() < 0.1, "{}", cone.setback());
+        assert!(cone.setback().unwrap() < 0.1);
     }
 
     #[test]
-    fn nothing_seen_is_taken_for_round() {
-        assert!((TipShape::default().setback() - ROUND).abs() < 1e-12);
+    fn nothing_seen_says_nothing() {
+        assert_eq!(TipShape::default().setback(), None);
     }
 }
