@@ -17,6 +17,9 @@ pub(crate) const SPACING: f64 = 0.5;
 /// lies σ²/2r inside its rim.
 const BLUR_PX: f64 = 0.65;
 
+/// Margin ahead of a free end, px.
+const AHEAD_MARGIN: f64 = 1.0;
+
 /// A length in pixels as a number of vertices.
 #[must_use]
 pub(crate) fn vertices_in(px: f64) -> usize {
@@ -141,10 +144,20 @@ impl Owners {
         (strand > 0).then(|| Joint { strand: strand as usize - 1, vertex: self.vertex[pixel] as usize })
     }
 
-    /// Gives a strand the pixels within `margin` px of its ink, from vertex `from` on.
+    /// Gives a strand the pixels within `margin` px of its ink, from vertex `from` on. A free end is taken for round, with little
+    /// margin ahead of it: what grows next starts there.
     pub(crate) fn claim(&mut self, index: usize, strand: &Strand, from: usize, margin: f64) {
+        let open = strand.live();
         for (v, vertex) in strand.vertices.iter().enumerate().skip(from) {
-            for pixel in disc(vertex.p, 0.5 * vertex.width + margin, self.strand.dim()) {
+            let half = 0.5 * vertex.width;
+            let behind = (strand.vertices.len() - 1 - v) as f64 * SPACING;
+            let reach = if open && behind < half {
+                let cap = (half * half - (half - behind).powi(2)).max(0.0).sqrt();
+                cap + AHEAD_MARGIN + (margin - AHEAD_MARGIN).max(0.0) * behind / half
+            } else {
+                half + margin
+            };
+            for pixel in disc(vertex.p, reach, self.strand.dim()) {
                 let mine = index as u32 + 1;
                 let nearer = match self.at(pixel) {
                     None => true,

@@ -21,6 +21,9 @@ pub(crate) const ROOT_REACH: f64 = 12.0;
 const SIDE_COST: f32 = 6.0;
 /// Cost of starting a filament at an edge.
 const EDGE_COST: f32 = 8.0;
+/// Cost of each px between an edge and the first pixel of a line rooted on it: dear beside ink, so that a root follows its ink as
+/// far as it is seen, and cheaper than bare ceramic.
+const EDGE_WAY: f32 = 12.0;
 /// Cost of a pixel of bare ceramic; with evidence z it is 1 / (1/BARE_COST + (z/(z+6))²).
 const BARE_COST: f32 = 33.0;
 /// Bare pixels that a path may cross from the side of a strand.
@@ -172,9 +175,9 @@ impl<'a> Field<'a> {
             let (depth, remaining) = (self.ground.edges.depth(p), self.ground.edges.remaining(p));
             let at = self.index(pixel);
             if depth <= ROOT_REACH {
-                self.offer(at, Start::Plating, EDGE_COST + depth.max(0.0) as f32);
+                self.offer(at, Start::Plating, EDGE_COST + EDGE_WAY * depth.max(0.0) as f32);
             } else if remaining <= ROOT_REACH {
-                self.offer(at, Start::Far, EDGE_COST + 20.0 + remaining.max(0.0) as f32);
+                self.offer(at, Start::Far, EDGE_COST + 20.0 + EDGE_WAY * remaining.max(0.0) as f32);
             }
         }
     }
