@@ -108,14 +108,18 @@ impl Campaign {
         let slowed = if self.threshold_mpa.is_some() { 1.0 - 0.6 * chance } else { 1.0 };
         let rate = 0.4 * slowed * libm::exp(own.speed + 0.15 * normal(rng));
         let short_s = 180.0 + GAP_UM / rate;
-        let (ended, followed_s) = if short_s < STOPPED_S { (Ended::Short, short_s) } else { (Ended::Stopped, STOPPED_S) };
+        let (ended, followed_s) =
+            if short_s < STOPPED_S { (Ended::Short, short_s) } else { (Ended::Stopped, STOPPED_S) };
         let sample = LoadSample { stress_mpa: (dose > 0.0).then_some(dose), axis_to_edge_deg: expected };
         RunRecord {
             run,
             specimen: Some(specimen),
             load: LoadRecord { samples: vec![sample; 4] },
             filaments,
-            depths: (0..=40).map(|i| f64::from(i) * followed_s / 40.0).map(|t| (t, (rate * (t - 180.0)).max(0.0))).collect(),
+            depths: (0..=40)
+                .map(|i| f64::from(i) * followed_s / 40.0)
+                .map(|t| (t, (rate * (t - 180.0)).max(0.0)))
+                .collect(),
             rate_um_per_s: Some(rate),
             followed_s,
             charge_mah_per_cm2: Some(0.6 * followed_s / 3600.0),
@@ -156,7 +160,12 @@ fn filament(chance: f64, expected: Option<f64>, rng: &mut ChaCha8Rng) -> Filamen
 }
 
 fn piece(length_um: f64, to_edge_deg: f64, expected: Option<f64>) -> PieceRecord {
-    PieceRecord { length_um, to_edge_deg, expected_deg: expected, to_load_deg: expected.map(|axis| acute(to_edge_deg, axis)) }
+    PieceRecord {
+        length_um,
+        to_edge_deg,
+        expected_deg: expected,
+        to_load_deg: expected.map(|axis| acute(to_edge_deg, axis)),
+    }
 }
 
 /// What tracing makes of a run: 8 % of the filaments missed, one false short filament in every fourth run, directions off by
@@ -323,7 +332,8 @@ mod tests {
     #[test]
     fn half_of_the_filaments_turn_at_the_threshold() {
         let campaign = Campaign { doses_mpa: vec![95.0], specimens: 2000, ..Campaign::default() };
-        let (tried, yes) = campaign.draw(1, 0).truth.iter().map(RunRecord::turned).fold((0, 0), |s, t| (s.0 + t.0, s.1 + t.1));
+        let (tried, yes) =
+            campaign.draw(1, 0).truth.iter().map(RunRecord::turned).fold((0, 0), |s, t| (s.0 + t.0, s.1 + t.1));
         assert!((yes as f64 / tried as f64 - 0.5).abs() < 0.02, "{yes} of {tried}");
     }
 }

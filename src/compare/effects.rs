@@ -215,7 +215,8 @@ pub(super) fn difference([control, treated]: &[Vec<Unit>; 2], [least, most]: [f6
         let half = t_critical(CONFIDENCE, dof) * se;
         [(pair.value - half).max(-span), (pair.value + half).min(span)]
     });
-    let smallest = pair.spread().map(|(se, dof)| (t_critical(CONFIDENCE, dof) + t_critical(2.0 * POWER - 1.0, dof)) * se);
+    let smallest =
+        pair.spread().map(|(se, dof)| (t_critical(CONFIDENCE, dof) + t_critical(2.0 * POWER - 1.0, dof)) * se);
     let all: Vec<Unit> = control.iter().chain(treated).copied().collect();
     let labels: Vec<usize> = (0..all.len()).map(|i| usize::from(i >= control.len())).collect();
     let own: Vec<usize> = all.iter().map(|(specimen, _)| *specimen).collect();
@@ -300,7 +301,8 @@ impl Pair {
         match (variance(a).filter(|_| a.len() > 1), variance(b).filter(|_| b.len() > 1)) {
             (Some(va), Some(vb)) => {
                 let (p, q) = (va / n, vb / m);
-                let dof = if p + q > 0.0 { (p + q) * (p + q) / (p * p / (n - 1.0) + q * q / (m - 1.0)) } else { n + m - 2.0 };
+                let dof =
+                    if p + q > 0.0 { (p + q) * (p + q) / (p * p / (n - 1.0) + q * q / (m - 1.0)) } else { n + m - 2.0 };
                 Some((libm::sqrt(p + q), dof))
             }
             (Some(v), None) => Some((libm::sqrt(v * (1.0 + 1.0 / n)), n - 1.0)),
@@ -347,10 +349,9 @@ mod tests {
     #[test]
     fn the_statistic_tested_is_the_difference_shown() {
         let units: Vec<Unit> = (0..14).map(|i| (i / 3, ((i * 37) % 11) as f64)).collect();
-        for (labels, within) in [
-            ([0, 1, 1, 0, 0, 1, 1, 0, 1, 0, 1, 0, 1, 0], true),
-            ([0, 0, 0, 1, 1, 1, 0, 0, 0, 1, 1, 1, 1, 1], false),
-        ] {
+        for (labels, within) in
+            [([0, 1, 1, 0, 0, 1, 1, 0, 1, 0, 1, 0, 1, 0], true), ([0, 0, 0, 1, 1, 1, 0, 0, 0, 1, 1, 1, 1, 1], false)]
+        {
             let part = |g| units.iter().zip(labels).filter(|(_, l)| *l == g).map(|(u, _)| *u).collect::<Vec<Unit>>();
             let pair = Pair::of(&part(0), &part(1)).unwrap();
             assert_eq!(pair.within, within);

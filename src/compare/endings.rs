@@ -187,8 +187,7 @@ pub fn endings(
         let follow = Follow { time, event: run.ended == Ended::Short };
         Some(Followed { specimen: specimens.of(i), follow, ended: run.ended })
     };
-    let sets: Vec<Vec<Followed>> =
-        groups.iter().map(|g| g.members.iter().filter_map(|&i| one(i)).collect()).collect();
+    let sets: Vec<Vec<Followed>> = groups.iter().map(|g| g.members.iter().filter_map(|&i| one(i)).collect()).collect();
     if sets.iter().all(Vec::is_empty) {
         return None;
     }
@@ -226,6 +225,7 @@ fn group_ends(set: &[Followed], until: Option<f64>) -> GroupEnds {
     let count = |ended: Ended| set.iter().filter(|f| f.ended == ended).count();
     let curve = Curve::of(&follows(set));
     let apart = specimens_of(set).len() == set.len();
+    let left_out = if apart { Vec::new() } else { left_out(set) };
     let points: Vec<Point> = curve
         .steps
         .iter()
@@ -234,12 +234,11 @@ fn group_ends(set: &[Followed], until: Option<f64>) -> GroupEnds {
             at_risk: s.at_risk,
             shorts: s.events,
             without: s.survival,
-            ci95: if apart { s.interval(CONFIDENCE) } else { jackknifed(set, s.time, s.survival) },
+            ci95: if apart { s.interval(CONFIDENCE) } else { jackknifed(&left_out, s.time, s.survival) },
         })
         .collect();
-    let limit = |end: usize| {
-        points.iter().find(|p| p.ci95.map_or(p.without, |ci| ci[end]) <= 0.5 + 1e-12).map(|p| p.at)
-    };
+    let limit =
+        |end: usize| points.iter().find(|p| p.ci95.map_or(p.without, |ci| ci[end]) <= 0.5 + 1e-12).map(|p| p.at);
     let mut ends: Vec<f64> = set.iter().map(|f| f.follow.time).collect();
     ends.sort_by(f64::total_cmp);
     let mut censored: Vec<f64> = set.iter().filter(|f| !f.follow.event).map(|f| f.follow.time).collect();
@@ -270,15 +269,18 @@ fn shares(set: &[Followed]) -> Vec<Shares> {
     incidence(&units, 2).into_iter().map(|i| Shares { at: i.time, short: i.ended[0], broke: i.ended[1] }).collect()
 }
 
-/// Interval of the share without a short by leaving out specimens in turn, on the log-minus-log scale; `None` at 0 and 1 and
-/// where leaving one out leads there.
-fn jackknifed(set: &[Followed], time: f64, share: f64) -> Option<[f64; 2]> {
+/// The curve without each specimen in turn.
+fn left_out(set: &[Followed]) -> Vec<Curve> {
+    specimens_of(set).iter().map(|&specimen| Curve::of(&follows(&without(set, specimen)))).collect()
+}
+
+/// Interval of the share without a short from the curves without each specimen, on the log-minus-log scale; `None` at 0 and 1
+/// and where leaving one out leads there.
+fn jackknifed(curves: &[Curve], time: f64, share: f64) -> Option<[f64; 2]> {
     let scale = |s: f64| (s > 0.0 && s < 1.0).then(|| libm::log(-libm::log(s)));
     let centre = scale(share)?;
-    let specimens = specimens_of(set);
-    let left_out: Option<Vec<f64>> =
-        specimens.iter().map(|&s| scale(Curve::of(&follows(&without(set, s))).survival_at(time))).collect();
-    let half = t_critical(CONFIDENCE, specimens.len() as f64 - 1.0) * jackknife_se(&left_out?)?;
+    let left_out: Option<Vec<f64>> = curves.iter().map(|curve| scale(curve.survival_at(time))).collect();
+    let half = t_critical(CONFIDENCE, curves.len() as f64 - 1.0) * jackknife_se(&left_out?)?;
     let back = |y: f64| libm::exp(-libm::exp(y));
     half.is_finite().then(|| [back(centre + half), back(centre - half)])
 }
@@ -311,11 +313,8 @@ fn contrasted(control: &[Followed], treated: &[Followed], until: f64, seed: u64)
     let units = |from: usize, set: &[Followed]| -> Vec<Unit> {
         set.iter().enumerate().map(|(i, f)| (f.specimen, scores[from + i])).collect()
     };
-    let tested = difference(
-        &[units(0, control), units(control.len(), treated)],
-        [f64::NEG_INFINITY, f64::INFINITY],
-        seed,
-    )?;
+    let tested =
+        difference(&[units(0, control), units(control.len(), treated)], [f64::NEG_INFINITY, f64::INFINITY], seed)?;
     let smallest_seen = se.filter(|_| dof >= 1.0).map(|se| (t_critical(CONFIDENCE, dof) + t_critical(0.6, dof)) * se);
     Some(Gap { value, ci95, specimens: specimens.len(), smallest_seen, ..tested })
 }

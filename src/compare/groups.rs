@@ -263,9 +263,15 @@ mod tests {
     use super::*;
 
     fn run(name: &str, specimen: &str, samples: &[(f64, Option<f64>)]) -> RunRecord {
-        let sample = |(stress, axis): &(f64, Option<f64>)| LoadSample { stress_mpa: Some(*stress), axis_to_edge_deg: *axis };
+        let sample =
+            |(stress, axis): &(f64, Option<f64>)| LoadSample { stress_mpa: Some(*stress), axis_to_edge_deg: *axis };
         let samples = samples.iter().map(sample).collect();
-        RunRecord { run: name.into(), specimen: Some(specimen.into()), load: LoadRecord { samples }, ..Default::default() }
+        RunRecord {
+            run: name.into(),
+            specimen: Some(specimen.into()),
+            load: LoadRecord { samples },
+            ..Default::default()
+        }
     }
 
     fn kind(samples: &[(f64, Option<f64>)]) -> (Kind, Option<f64>) {

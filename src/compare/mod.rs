@@ -49,7 +49,10 @@ pub enum Fault {
     },
     /// Two runs have one name.
     #[error("two runs are called {run:?}")]
-    #[diagnostic(code(compare::names), help("give each its own `run = \"…\"` in run.toml and type `veerlog report RUN` again"))]
+    #[diagnostic(
+        code(compare::names),
+        help("give each its own `run = \"…\"` in run.toml and type `veerlog report RUN` again")
+    )]
     Names {
         /// The name.
         run: String,
@@ -92,6 +95,10 @@ pub enum Fault {
         /// What differs.
         what: String,
     },
+    /// The reference band has no width.
+    #[error("the reference band ends where it begins, or before")]
+    #[diagnostic(code(compare::reference), help("type two doses in MPa, the lower first, say --reference-mpa 150 200"))]
+    Reference,
     /// An output folder cannot be read.
     #[error("{path}: {what}")]
     #[diagnostic(code(compare::output), help("type `veerlog report` on that run again"))]

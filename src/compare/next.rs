@@ -16,11 +16,11 @@ use crate::stats::dose::{DoseFit, Link, Trials, fit};
 use crate::stats::order::{mean, median};
 
 /// Simulated campaigns a proposal.
-pub const DRAWS: u64 = 60;
+pub const DRAWS: u64 = 40;
 /// Numbers of further specimens.
 const MORE: [u32; 3] = [2, 4, 8];
 /// Doses tried, evenly from the lowest to the highest tested.
-const DOSES: u32 = 9;
+const DOSES: u32 = 7;
 
 /// A proposal and what it would give.
 #[derive(Debug, Clone, Copy, PartialEq, Serialize)]
@@ -69,7 +69,12 @@ pub fn next(response: &DoseResponse, seed: u64) -> Next {
         let own = tried.iter().filter(|p| p.specimens == *m && p.half_width_mpa.is_some());
         own.min_by(|a, b| width(a).total_cmp(&width(b))).copied()
     });
-    Next { now_mpa: Some(world.half_width(&[], &[])).filter(|w| w.is_finite()), best: best.collect(), tried, highest_mpa }
+    Next {
+        now_mpa: Some(world.half_width(&[], &[])).filter(|w| w.is_finite()),
+        best: best.collect(),
+        tried,
+        highest_mpa,
+    }
 }
 
 /// What is simulated from.

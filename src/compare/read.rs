@@ -60,7 +60,11 @@ pub fn read(output: &Path, run: Option<&Path>) -> Result<Read, Fault> {
         specimen: summary.specimen.clone().filter(|s| !s.trim().is_empty()),
         load: load(&frames, &manifest, followed_s),
         filaments: filaments(&tables, &manifest)?,
-        depths: frames.iter().filter(|f| f.time_s <= followed_s).filter_map(|f| Some((f.time_s, f.depth_um?))).collect(),
+        depths: frames
+            .iter()
+            .filter(|f| f.time_s <= followed_s)
+            .filter_map(|f| Some((f.time_s, f.depth_um?)))
+            .collect(),
         rate_um_per_s: summary.depth.rate_um_per_s,
         followed_s,
         charge_mah_per_cm2: charge_at(&frames, followed_s).zip(area_cm2).map(|(charge, area)| charge / area),
@@ -78,7 +82,9 @@ fn fault(path: &Path, what: String) -> Fault {
 
 /// Whether `run.toml` is another than the one the output was made from.
 fn changed(folder: &Path, summary: &Summary) -> bool {
-    let (Ok(bytes), Some(known)) = (fs::read(folder.join(FILE_NAME)), summary.inputs.get(FILE_NAME)) else { return false };
+    let (Ok(bytes), Some(known)) = (fs::read(folder.join(FILE_NAME)), summary.inputs.get(FILE_NAME)) else {
+        return false;
+    };
     let now: String = Sha256::digest(&bytes).iter().map(|b| format!("{b:02x}")).collect();
     now != *known
 }
@@ -152,7 +158,10 @@ fn end(summary: &Summary, manifest: &Manifest, frames: &[Frame], warnings: &mut 
             (Ended::Stopped, last)
         }
         (false, _, Ended::Short) => {
-            warnings.push("it is said to have shorted, but neither log nor picture shows when: its last frame stands for it".to_owned());
+            warnings.push(
+                "it is said to have shorted, but neither log nor picture shows when: its last frame stands for it"
+                    .to_owned(),
+            );
             (Ended::Short, last)
         }
         (false, _, other) => (other, last),
@@ -306,9 +315,10 @@ impl Table {
             None | Some("") => Ok(None),
             Some("true") => Ok(Some(1.0)),
             Some("false") => Ok(Some(0.0)),
-            Some(text) => text.parse().map(Some).map_err(|_| {
-                fault(&self.path, format!("line {}: {name} is {text:?}, a number was expected", i + 2))
-            }),
+            Some(text) => text
+                .parse()
+                .map(Some)
+                .map_err(|_| fault(&self.path, format!("line {}: {name} is {text:?}, a number was expected", i + 2))),
         };
         self.column(name)?.into_iter().enumerate().map(parse).collect()
     }

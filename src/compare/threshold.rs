@@ -177,8 +177,8 @@ pub(super) fn trials(seen: &[Seen]) -> (Vec<Trials>, Vec<u32>) {
 
 fn judge(response: Response, seen: Vec<Seen>, seed: u64) -> DoseResponse {
     let doses = || seen.iter().map(|s| s.dose_mpa);
-    let tested = (!seen.is_empty())
-        .then(|| [doses().fold(f64::INFINITY, f64::min), doses().fold(f64::NEG_INFINITY, f64::max)]);
+    let tested =
+        (!seen.is_empty()).then(|| [doses().fold(f64::INFINITY, f64::min), doses().fold(f64::NEG_INFINITY, f64::max)]);
     let mut out = DoseResponse {
         response,
         answer: Answer::TooFew,

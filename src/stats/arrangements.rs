@@ -141,24 +141,34 @@ impl Arrangements {
     }
 
     fn drawn(&self, seed: u64, statistic: &(impl Fn(&[usize]) -> Option<f64> + Sync)) -> Vec<f64> {
+        let longest = self.blocks.iter().map(|block| block.labels.len()).max().unwrap_or(0);
         (0..DRAWN)
             .into_par_iter()
-            .map(|i| {
-                let (mut rng, mut labels) = (stream(seed, i), self.observed.clone());
-                for block in &self.blocks {
-                    let mut mixed = block.clone();
-                    mixed.labels.shuffle(&mut rng);
-                    mixed.write(&mut labels);
-                }
-                statistic(&labels).unwrap_or(f64::NEG_INFINITY)
-            })
+            .map_init(
+                || (self.observed.clone(), Vec::with_capacity(longest)),
+                |(labels, mixed), i| {
+                    let mut rng = stream(seed, i);
+                    for block in &self.blocks {
+                        mixed.clone_from(&block.labels);
+                        mixed.shuffle(&mut rng);
+                        block.place(mixed, labels);
+                    }
+                    statistic(labels).unwrap_or(f64::NEG_INFINITY)
+                },
+            )
             .collect()
     }
 }
 
 impl Block {
+    /// Writes its own labels onto its targets.
     fn write(&self, labels: &mut [usize]) {
-        for (target, label) in self.targets.iter().zip(&self.labels) {
+        self.place(&self.labels, labels);
+    }
+
+    /// Writes a label a target.
+    fn place(&self, own: &[usize], labels: &mut [usize]) {
+        for (target, label) in self.targets.iter().zip(own) {
             for unit in target {
                 labels[*unit] = *label;
             }

@@ -1,4 +1,4 @@
-//! Which curve foretells a specimen it has not seen: the logarithmic score (Good 1952, J. R. Stat. Soc. B 14, 107–114) of each
+//! Which curve foretells specimens it has not seen: the logarithmic score (Good 1952, J. R. Stat. Soc. B 14, 107–114) of each
 //! specimen under the curves fitted to the others.
 //!
 //! A fit here has one trial more at the lowest and one at the highest dose, half of each a yes, so that it stays finite where
@@ -7,7 +7,10 @@
 use super::rising::fit_rising;
 use super::{Link, SHARE_FLOOR, Trials, fit};
 
-/// Log score a trial of one cluster under each curve, 0 at best.
+/// Most parts into which clusters are put: with more clusters, several are left out at once.
+const PARTS: usize = 12;
+
+/// Log score a trial of the clusters left out under each curve, 0 at best.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Scores {
     /// The share is the same at every dose.
@@ -18,16 +21,21 @@ pub struct Scores {
     pub rising: f64,
 }
 
-/// Scores of every cluster left out in turn; clusters whose others have no fit are left out.
+/// Scores of every cluster (of every twelfth part of them, where there are more) left out in turn; those whose others have
+/// no fit are left out.
 #[must_use]
 pub fn scores(trials: &[Trials], clusters: &[u32]) -> Vec<Scores> {
     let mut names: Vec<u32> = clusters.to_vec();
     names.sort_unstable();
     names.dedup();
-    let part = |keep: &dyn Fn(u32) -> bool| -> Vec<Trials> {
-        trials.iter().zip(clusters).filter(|(_, c)| keep(**c)).map(|(t, _)| *t).collect()
+    let part_of = |cluster: u32| names.partition_point(|name| *name < cluster) % PARTS;
+    let split = |part: usize| -> (Vec<Trials>, Vec<Trials>) {
+        let (own, others): (Vec<_>, Vec<_>) = trials.iter().zip(clusters).partition(|(_, c)| part_of(**c) == part);
+        let plain = |list: Vec<(&Trials, &u32)>| list.into_iter().map(|(t, _)| *t).collect();
+        (plain(own), plain(others))
     };
-    names.iter().filter_map(|&name| left_out(&part(&|c| c == name), part(&|c| c != name), trials)).collect()
+    let parts = (0..names.len().min(PARTS)).map(split);
+    parts.filter_map(|(own, others)| left_out(&own, others, trials)).collect()
 }
 
 fn left_out(own: &[Trials], mut others: Vec<Trials>, all: &[Trials]) -> Option<Scores> {

@@ -22,8 +22,7 @@ fn beyond(trials: &[Trials], onset: f64) -> Vec<Trials> {
 
 /// Onsets to try, rising, the highest dose left out.
 fn onsets(trials: &[Trials]) -> Vec<f64> {
-    let (low, high) =
-        trials.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |r, t| (r.0.min(t.dose), r.1.max(t.dose)));
+    let (low, high) = trials.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |r, t| (r.0.min(t.dose), r.1.max(t.dose)));
     (0..ONSETS).map(|i| low + (high - low) * i as f64 / ONSETS as f64).collect()
 }
 
