@@ -30,6 +30,8 @@ pub const MANY: usize = 10;
 pub const STEP_MPA: f64 = 50.0;
 /// Confidence of the intervals.
 const CONFIDENCE: f64 = 0.95;
+/// A share within rounding of one half is one half.
+const HALF: f64 = 0.5 + 1e-12;
 
 /// The clock on which runs are followed.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize)]
@@ -191,8 +193,7 @@ pub fn endings(
     if sets.iter().all(Vec::is_empty) {
         return None;
     }
-    let longest = |set: &[Followed]| set.iter().map(|f| f.follow.time).fold(0.0, f64::max);
-    let until = contrast.map(|c| longest(&sets[c.control]).min(longest(&sets[c.treated]))).filter(|u| *u > 0.0);
+    let until = contrast.and_then(|c| known_until([&sets[c.control], &sets[c.treated]]));
     let (hazard, no_hazard) = match hazard(groups, &sets, seed) {
         Ok(hazard) => (Some(hazard), None),
         Err(why) => (None, Some(why)),
@@ -207,6 +208,19 @@ pub fn endings(
         hazard,
         no_hazard,
     })
+}
+
+/// The last time at which both curves are known: a curve whose last run shorted stays at 0 for ever.
+fn known_until(sets: [&[Followed]; 2]) -> Option<f64> {
+    let longest = |set: &[Followed]| set.iter().map(|f| f.follow.time).fold(0.0, f64::max);
+    let known = |set: &[Followed]| {
+        let last = longest(set);
+        let gone = set.iter().all(|f| f.follow.time < last || f.follow.event);
+        if gone && !set.is_empty() { f64::INFINITY } else { last }
+    };
+    let [a, b] = sets.map(known);
+    let until = if a.min(b).is_finite() { a.min(b) } else { longest(sets[0]).max(longest(sets[1])) };
+    Some(until).filter(|u| *u > 0.0)
 }
 
 fn follows(set: &[Followed]) -> Vec<Follow> {
@@ -237,8 +251,13 @@ fn group_ends(set: &[Followed], until: Option<f64>) -> GroupEnds {
             ci95: if apart { s.interval(CONFIDENCE) } else { jackknifed(&left_out, s.time, s.survival) },
         })
         .collect();
+    // The lower limit reaches half at the latest when the curve is 0; the upper one has to be known there.
+    let reaches = |p: &Point, end: usize| match p.ci95 {
+        Some(ci) => ci[end] <= HALF,
+        None => end == 0 && p.without <= HALF,
+    };
     let limit =
-        |end: usize| points.iter().find(|p| p.ci95.map_or(p.without, |ci| ci[end]) <= 0.5 + 1e-12).map(|p| p.at);
+        |end: usize| points.iter().find(|p| reaches(p, end)).map(|p| p.at).filter(|_| specimens_of(set).len() > 1);
     let mut ends: Vec<f64> = set.iter().map(|f| f.follow.time).collect();
     ends.sort_by(f64::total_cmp);
     let mut censored: Vec<f64> = set.iter().filter(|f| !f.follow.event).map(|f| f.follow.time).collect();
@@ -396,5 +415,111 @@ impl GroupEnds {
     #[must_use]
     pub fn at_risk(&self, time: f64) -> usize {
         self.ends.len() - self.ends.partition_point(|end| *end < time)
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use approx::assert_abs_diff_eq;
+
+    fn run(specimen: &str, time: f64, ended: Ended) -> RunRecord {
+        let run = format!("{specimen}-{time}");
+        RunRecord { run, specimen: Some(specimen.into()), followed_s: time, ended, ..RunRecord::default() }
+    }
+
+    fn group(name: &str, dose: f64, members: std::ops::Range<usize>) -> Group {
+        let specimens = members.len();
+        Group { name: name.into(), kind: None, dose_mpa: Some(dose), members: members.collect(), specimens }
+    }
+
+    fn judged(records: &[RunRecord], split: usize) -> Endings {
+        let groups = [group("a", 0.0, 0..split), group("b", 100.0, split..records.len())];
+        let contrast = Some(Contrast { control: 0, treated: 1 });
+        endings(records, &Specimens::new(records), &groups, contrast, Clock::Time, 1).unwrap()
+    }
+
+    /// The trial of Freireich et al. (1963), every patient a specimen: medians, limits and χ² as R survival 3.5-3 and lifelines
+    /// 0.30.3 give them (they are checked one by one in tests/checks/survival.rs).
+    #[test]
+    fn a_published_trial_comes_out() {
+        let text = include_str!("../../fixtures/stats/freireich.csv");
+        let rows = text.lines().filter(|l| l.starts_with(|c: char| c.is_ascii_digit()));
+        let mut records: Vec<(bool, RunRecord)> = rows
+            .enumerate()
+            .map(|(i, line)| {
+                let cells: Vec<&str> = line.split(',').collect();
+                let ended = if cells[1] == "1" { Ended::Short } else { Ended::Stopped };
+                (cells[2] != "control", run(&format!("p{i}"), cells[0].parse().unwrap(), ended))
+            })
+            .collect();
+        records.sort_by_key(|(treated, _)| *treated);
+        let records: Vec<RunRecord> = records.into_iter().map(|(_, run)| run).collect();
+        let found = judged(&records, 21);
+        assert_eq!((found.groups[0].median, found.groups[1].median), (Some(8.0), Some(23.0)));
+        assert_eq!(found.groups[1].median_ci95, [Some(13.0), None]);
+        let ranks = found.ranks.unwrap();
+        assert_abs_diff_eq!(ranks.chi_squared, 16.792_941, epsilon = 1e-6);
+        assert!(!ranks.stratified);
+        // The hazard of the treated: −1.572125 by Efron for the step of 100 MPa here, half of it for 50.
+        assert_abs_diff_eq!(found.hazard.unwrap().ratio, (-0.5 * 1.572_125_149_f64).exp(), epsilon = 1e-5);
+        assert!(found.difference.unwrap().test.unwrap().p < 0.001);
+    }
+
+    #[test]
+    fn stopped_and_broken_runs_are_no_shorts() {
+        use Ended::{Broke, Short, Stopped};
+        let records = [
+            run("A", 10.0, Short),
+            run("B", 20.0, Broke),
+            run("C", 30.0, Short),
+            run("A", 40.0, Stopped),
+            run("B", 40.0, Stopped),
+            run("C", 35.0, Short),
+        ];
+        let found = judged(&records, 3);
+        let control = &found.groups[0];
+        assert_eq!((control.short, control.broke, control.stopped), (2, 1, 0));
+        let last = control.incidence.last().unwrap();
+        assert_abs_diff_eq!(last.short + last.broke, 1.0, epsilon = 1e-12);
+        assert!(found.groups[1].incidence.is_empty());
+        assert!(found.ranks.unwrap().stratified);
+        // All of the control have ended, the treated are known to 40 s.
+        assert_eq!(found.until, Some(40.0));
+        // Within three specimens that saw both, no test goes below 2/8.
+        assert_abs_diff_eq!(found.difference.unwrap().test.unwrap().smallest_p, 0.25, epsilon = 1e-12);
+        assert_eq!(control.at_risk(20.0), 2);
+    }
+
+    #[test]
+    fn doses_that_order_all_shorts_have_no_ratio() {
+        let records = [
+            run("A", 10.0, Ended::Short),
+            run("B", 12.0, Ended::Short),
+            run("C", 30.0, Ended::Stopped),
+            run("D", 30.0, Ended::Stopped),
+        ];
+        let found = judged(&records, 2);
+        assert!(found.hazard.is_none() && found.no_hazard.unwrap().contains("no finite ratio"));
+    }
+
+    #[test]
+    fn several_runs_of_a_specimen_widen_the_limits() {
+        let time = |i: u32| f64::from(10 + (i * 7) % 12);
+        let ended = |i: u32| if i % 4 == 3 { Ended::Stopped } else { Ended::Short };
+        let single: Vec<RunRecord> = (0..12).map(|i| run(&format!("s{i}"), time(i), ended(i))).collect();
+        let mut shared = single.clone();
+        shared.sort_by(|a, b| a.followed_s.total_cmp(&b.followed_s));
+        for (i, run) in shared.iter_mut().enumerate() {
+            run.specimen = Some(format!("s{}", i / 3));
+        }
+        let width = |records: &[RunRecord]| {
+            let all = Specimens::new(records);
+            let groups = [group("a", 0.0, 0..12)];
+            let found = endings(records, &all, &groups, None, Clock::Time, 1).unwrap();
+            let middle = found.groups[0].curve.iter().find(|p| p.without < 0.6).unwrap().ci95.unwrap();
+            middle[1] - middle[0]
+        };
+        assert!(width(&shared) > 1.2 * width(&single), "{} {}", width(&shared), width(&single));
     }
 }

@@ -19,7 +19,7 @@ use crate::stats::order::{mean, median};
 pub const DRAWS: u64 = 40;
 /// Numbers of further specimens.
 const MORE: [u32; 3] = [2, 4, 8];
-/// Doses tried, evenly from the lowest to the highest tested.
+/// Doses tried, evenly from no load (from the lowest tested, where that is above) to the highest tested.
 const DOSES: u32 = 7;
 
 /// A proposal and what it would give.
@@ -55,7 +55,9 @@ pub fn next(response: &DoseResponse, seed: u64) -> Next {
     let (Some([low, high]), true) = (response.tested_mpa, known) else { return none };
     let (now, clusters) = trials(&response.runs);
     let Some(world) = World::of(now, clusters, [low, high], response.response.floor()) else { return none };
-    let dose = |i: u32| low + (high - low) * f64::from(i) / f64::from(DOSES - 1);
+    // Doses below 0 drive growth across: where some lie above, only those are proposed.
+    let from = if high > 0.0 { low.max(0.0) } else { low };
+    let dose = |i: u32| from + (high - from) * f64::from(i) / f64::from(DOSES - 1);
     let plans: Vec<(f64, u32)> = MORE.iter().flat_map(|&m| (0..DOSES).map(move |i| (dose(i), m))).collect();
     let tried: Vec<Proposal> = plans
         .par_iter()

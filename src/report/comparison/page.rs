@@ -166,7 +166,7 @@ fn tests(shown: Shown<'_>) -> Vec<[String; 6]> {
         let p = gap.test.map_or_else(String::new, |t| trimmed(t.p, 2));
         let p = gap.p_holm.map_or(p.clone(), |holm| format!("{p} (adjusted {})", trimmed(holm, 2)));
         let within = if gap.within_specimens { "within" } else { "between" };
-        let on = format!("{} {within}", gap.specimens);
+        let on = format!("{}, {within}", gap.specimens);
         let unit = if unit == "1" { String::new() } else { format!(" {unit}") };
         let name = format!("{quantity}: {group} less {control}");
         [

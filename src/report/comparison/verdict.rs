@@ -69,14 +69,6 @@ fn steered(found: &Comparison) -> String {
         return "No growth was traced on one side of the comparison, so directions cannot be compared.".to_owned();
     };
     let way = if gap.value > 0.0 { "more along the plates" } else { "more straight across" };
-    let size = format!(
-        "{} growth ran {way} than {}: alignment with the plates {} against {}, a difference of {}",
-        sentence(&under(sides.treated.1)),
-        under(sides.control.1),
-        signed(b.value, 2),
-        signed(a.value, 2),
-        sized(&gap, |v| signed(v, 2)),
-    );
     let aside = sides.told(found, Quantity::Turned).map_or_else(String::new, |(a, b, _)| {
         format!(
             " {} % of the filaments turned aside, against {} %.",
@@ -84,8 +76,17 @@ fn steered(found: &Comparison) -> String {
             fixed(100.0 * a.value, 0)
         )
     });
-    let claim = claim(&gap, &a, &b, "that the load steered growth");
-    format!("{size}.{aside} {claim}")
+    let claim = Claim::of(&gap, &a, &b);
+    format!(
+        "{} {} growth ran {way} than {}: alignment with the plates {} against {}, a difference of {}.{aside} {}",
+        claim.answer,
+        sentence(&under(sides.treated.1)),
+        under(sides.control.1),
+        signed(b.value, 2),
+        signed(a.value, 2),
+        sized(&gap, |v| signed(v, 2)),
+        claim.basis
+    )
 }
 
 fn slowed(found: &Comparison) -> String {
@@ -93,20 +94,17 @@ fn slowed(found: &Comparison) -> String {
     let Some(((a, b, gap), sides)) = told else {
         return "There is no rate of depth on both sides, so speeds cannot be compared.".to_owned();
     };
+    let claim = Claim::of(&gap, &a, &b);
     let way = if gap.value < 0.0 { "slower" } else { "faster" };
     format!(
-        "{} depth grew {way}: {} µm/min against {} µm/min {}, a difference of {} µm/min. {}",
+        "{} {} depth grew {way}: {} µm/min against {} µm/min {}, a difference of {}. {}",
+        if claim.answer == Claim::YES && gap.value > 0.0 { "No, it grew faster." } else { claim.answer },
         sentence(&under(sides.treated.1)),
         figures(b.value, 3),
         figures(a.value, 3),
         under(sides.control.1),
-        sized(&gap, |v| with_sign(v)),
-        claim(
-            &gap,
-            &a,
-            &b,
-            if gap.value < 0.0 { "that the load slowed the filaments" } else { "that the load sped the filaments" }
-        ),
+        sized(&gap, |v| format!("{} µm/min", with_sign(v))),
+        claim.basis
     )
 }
 
@@ -125,35 +123,48 @@ fn sized(gap: &Gap, show: impl Fn(f64) -> String) -> String {
     }
 }
 
-/// What may be claimed from a test.
-fn claim(gap: &Gap, control: &Mean, treated: &Mean, what: &str) -> String {
-    if control.specimens < 2 && treated.specimens < 2 {
-        return "One specimen under each load is not enough to compare.".to_owned();
-    }
-    let Some(test) = gap.test else {
-        return "No label can change places between these specimens, so nothing can be tested: not enough to compare."
-            .to_owned();
-    };
-    let adjusted = gap.p_holm.unwrap_or(test.p);
-    let basis = format!(
-        "p = {}, {} after adjustment for all effects tested, {} {} arrangements",
-        chance(test.p),
-        chance(adjusted),
-        if test.all { "from all" } else { "from" },
-        test.arrangements
-    );
-    if test.smallest_p >= SHOWN {
-        return format!(
-            "It cannot be shown with these specimens {what}: the smallest p that their arrangements can give is {}.",
-            chance(test.smallest_p)
+/// What may be claimed from a test: the answer in short, and what it rests on.
+struct Claim {
+    answer: &'static str,
+    basis: String,
+}
+
+impl Claim {
+    /// The answer where an effect is shown.
+    const YES: &str = "Yes.";
+
+    fn of(gap: &Gap, control: &Mean, treated: &Mean) -> Self {
+        let few = |basis: &str| Self { answer: "Not enough to compare.", basis: basis.to_owned() };
+        if control.specimens < 2 && treated.specimens < 2 {
+            return few("One specimen under each load cannot tell the load from the specimen.");
+        }
+        let Some(test) = gap.test else {
+            return few("No label can change places between these specimens, so nothing is tested.");
+        };
+        let adjusted = gap.p_holm.unwrap_or(test.p);
+        if test.smallest_p >= SHOWN {
+            let apart = gap.ci95.is_some_and(|[low, high]| low > 0.0 || high < 0.0);
+            let normal = if apart {
+                "; the interval takes specimens to scatter normally, which so few cannot bear out"
+            } else {
+                ""
+            };
+            let basis = format!("A test on these specimens cannot go below p = {}{normal}.", chance(test.smallest_p));
+            return Self { answer: "Cannot be shown with these specimens.", basis };
+        }
+        let (answer, caveat) = match () {
+            () if adjusted < SHOWN => (Self::YES, ""),
+            () if test.p < SHOWN => ("Perhaps.", ""),
+            () => ("Not shown.", " Not shown is not shown absent."),
+        };
+        let basis = format!(
+            "p = {} ({} adjusted for all effects tested; {}{} arrangements of the labels).{caveat}",
+            chance(test.p),
+            chance(adjusted),
+            if test.all { "all " } else { "" },
+            test.arrangements
         );
-    }
-    if adjusted < SHOWN {
-        format!("This shows {what} ({basis}).")
-    } else if test.p < SHOWN {
-        format!("This suggests, but after adjustment for all effects tested does not show, {what} ({basis}).")
-    } else {
-        format!("This does not show {what} ({basis}); that does not show that it did not.")
+        Self { answer, basis }
     }
 }
 
@@ -235,7 +246,7 @@ fn dose(turned: &DoseResponse, along: &DoseResponse) -> String {
         [Some(low), Some(high)] => format!("95 % interval {} to {} MPa", mpa(low), mpa(high)),
         [Some(low), None] => format!("95 % interval from {} MPa, with no upper end", mpa(low)),
         [None, Some(high)] => format!("95 % interval up to {} MPa, with no lower end", mpa(high)),
-        [None, None] => "the interval has no end on either side".to_owned(),
+        [None, None] => "the 95 % interval has no end on either side".to_owned(),
     };
     let curve = |r: &DoseResponse| match r.curve {
         Some(Curve::FlatThenRising) => ", by a curve that is flat first",
@@ -265,8 +276,8 @@ fn dose(turned: &DoseResponse, along: &DoseResponse) -> String {
             mpa(half)
         ),
         (Answer::Separated, Some(_), _) => format!(
-            "The doses divide straight from turned filaments completely, so the curve has no finite slope and the dose for half no \
-             standard error; with every run as one trial, {}.",
+            "A single dose parts straight from turned filaments, so the curve has no finite slope and the dose for half no standard \
+             error; with every run as one trial, {}.",
             ends(turned)
         ),
         (Answer::NoResponse, ..) => {
@@ -355,10 +366,10 @@ fn power(found: &Comparison) -> Option<String> {
             Quantity::Turned => 1.0,
             _ => f64::INFINITY,
         };
-        Some(if seen > most { None } else { Some(format!("{} of {}{unit}", figures(seen, 2), quantity.words())) })
+        Some(if seen > most { None } else { Some(format!("{}{unit} in {}", figures(seen, 2), quantity.words())) })
     };
     let all: Vec<Option<String>> =
-        [of(Quantity::AlongPlates, ""), of(Quantity::Turned, ""), of(Quantity::Rate, " (µm/min)")]
+        [of(Quantity::AlongPlates, ""), of(Quantity::Turned, ""), of(Quantity::Rate, " µm/min")]
             .into_iter()
             .flatten()
             .collect();
@@ -371,5 +382,53 @@ fn power(found: &Comparison) -> Option<String> {
             "With these specimens not even the largest effect there can be would be seen with 80 % power.".to_owned(),
         );
     }
-    Some(format!("With 80 % power these specimens show differences from {} on.", seen.join(", ")))
+    Some(format!("The smallest differences that these specimens would show with 80 % power: {}.", seen.join(", ")))
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::compare::campaign::Campaign;
+    use crate::compare::{Plan, RunRecord, compare};
+
+    fn said(records: &[RunRecord]) -> Vec<[String; 2]> {
+        verdict(&compare(records, &Plan::default()).unwrap())
+    }
+
+    #[test]
+    fn a_clear_effect_is_claimed_with_its_size_first() {
+        let campaign = Campaign { specimens: 10, specimen_logit: 0.3, ..Campaign::default() };
+        let all = said(&campaign.draw(3, 0).measured);
+        let steered = &all[0][1];
+        assert!(
+            steered.starts_with("Yes. Under “along the plates, 180 MPa” growth ran more along the plates"),
+            "{steered}"
+        );
+        assert!(steered.find("95 % interval").unwrap() < steered.find("p = ").unwrap(), "{steered}");
+        assert!(all[3][1].starts_with("Half of the filaments turn aside at a dose of"), "{}", all[3][1]);
+        assert!(all[4][1].contains("No load above the highest tested (180 MPa)"), "{}", all[4][1]);
+    }
+
+    #[test]
+    fn one_specimen_each_is_plainly_not_enough() {
+        let doses_mpa = vec![0.0, 180.0];
+        let campaign = Campaign { specimens: 2, one_dose_each: true, repeats: 3, doses_mpa, ..Campaign::default() };
+        let all = said(&campaign.draw(3, 0).measured);
+        assert!(all[0][1].starts_with("Not enough to compare."), "{}", all[0][1]);
+    }
+
+    #[test]
+    fn three_specimens_cannot_show_it() {
+        let campaign = Campaign { specimens: 3, doses_mpa: vec![0.0, 180.0], ..Campaign::default() };
+        let all = said(&campaign.draw(3, 0).measured);
+        assert!(all[0][1].starts_with("Cannot be shown with these specimens."), "{}", all[0][1]);
+        assert!(all[4][1].starts_with("Six specimens that each see both loads"), "{}", all[4][1]);
+    }
+
+    #[test]
+    fn nothing_is_claimed_where_there_is_nothing() {
+        let all = said(&Campaign { threshold_mpa: None, ..Campaign::default() }.draw(5, 1).measured);
+        assert!(all[3][1].starts_with("No dose–response is seen"), "{}", all[3][1]);
+        assert!(!all[0][1].starts_with("Yes."), "{}", all[0][1]);
+    }
 }
