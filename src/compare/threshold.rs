@@ -54,7 +54,7 @@ pub enum Curve {
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize)]
 #[serde(rename_all = "kebab-case")]
 pub enum Answer {
-    /// It lies within the doses tested, and so does its interval's either end or it is at least there.
+    /// It lies within the doses tested, and its interval has two ends.
     Found,
     /// It lies within the doses tested; its interval has no end on one side or both.
     Open,

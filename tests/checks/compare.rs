@@ -82,7 +82,7 @@ fn full_compare_no_effect() {
 }
 
 #[test]
-fn many_runs_are_compared_in_seconds() {
+fn full_compare_many_runs_in_seconds() {
     let campaign = Campaign { specimens: 50, ..Campaign::default() };
     let records = campaign.draw(31, 0).measured;
     assert_eq!(records.len(), 200);
@@ -90,5 +90,7 @@ fn many_runs_are_compared_in_seconds() {
     let found = compare(&records, &Plan::default()).unwrap();
     let seconds = start.elapsed().as_secs_f64();
     println!("200 runs compared in {seconds:.1} s");
-    assert!(found.turned.half_mpa.is_some() && seconds < 10.0, "{seconds} s");
+    // Ten seconds on a machine that does nothing else, which only the full set may take for granted.
+    let most = if full() { 10.0 } else { 60.0 };
+    assert!(found.turned.half_mpa.is_some() && seconds < most, "{seconds} s");
 }

@@ -9,6 +9,7 @@ use super::rows;
 use super::verdict::{CAUTION, verdict};
 use crate::compare::RunRow;
 use crate::compare::effects::{Gap, Mean};
+use crate::compare::threshold::DoseResponse;
 use crate::report::figures::Format;
 use crate::report::words::{bind, counted, duration, figures, fixed, signed, trimmed};
 use crate::report::{Error, page as run_page, svg};
@@ -30,7 +31,7 @@ struct Page {
     group_heads: Vec<String>,
     effects: Vec<Vec<String>>,
     tests: Vec<[String; 6]>,
-    ends: Vec<[String; 8]>,
+    ends: Vec<[String; 9]>,
     fairness: Vec<[String; 4]>,
     runs: Vec<Row>,
     proposals: Vec<[String; 3]>,
@@ -199,8 +200,8 @@ fn tests(shown: Shown<'_>) -> Vec<[String; 6]> {
     rows.into_iter().map(|(_, row)| row).collect()
 }
 
-/// A row a group: runs, ends by kind, median with interval.
-fn ends(shown: Shown<'_>) -> Vec<[String; 8]> {
+/// A row a group: runs, ends by kind, median with interval, shares shorted and broken.
+fn ends(shown: Shown<'_>) -> Vec<[String; 9]> {
     let row = |g: rows::GroupRow| {
         let [short, stopped, broke, unknown] = g.ends.map(|n| n.to_string());
         let median = g.median_s.map_or_else(|| "not reached".to_owned(), duration);
@@ -209,7 +210,11 @@ fn ends(shown: Shown<'_>) -> Vec<[String; 8]> {
             [Some(low), None] => format!("from {}", duration(low)),
             _ => String::new(),
         };
-        [g.group, g.runs.to_string(), short, stopped, broke, unknown, median, interval]
+        let shares = g.shares.map_or_else(
+            || "none broke".to_owned(),
+            |[short, broke]| format!("{} % shorted, {} % broke", fixed(100.0 * short, 0), fixed(100.0 * broke, 0)),
+        );
+        [g.group, g.runs.to_string(), short, stopped, broke, unknown, median, interval, shares]
     };
     rows::groups(shown.found).into_iter().map(row).collect()
 }
@@ -294,7 +299,36 @@ fn method(shown: Shown<'_>) -> Vec<[String; 2]> {
     });
     let told = told.as_deref().unwrap_or("No log-rank test: no two groups were followed side by side.");
     all.push(["Log-rank", told]);
+    let dosed = dosed(&found.turned);
+    all.push(["Turned aside against dose", &dosed]);
+    let no_hazard = found.time.as_ref().and_then(|t| t.no_hazard).map(|why| format!("No hazard ratio: {why}."));
+    all.extend(no_hazard.as_deref().map(|why| ["Hazard", why]));
     all.into_iter().map(|pair| pair.map(str::to_owned)).collect()
+}
+
+/// How the curves foretold specimens left out, and the test of no response.
+fn dosed(response: &DoseResponse) -> String {
+    let foretold = response.foretold.map_or_else(
+        || "The curves are not compared: there is no finite logistic line that rises.".to_owned(),
+        |f| {
+            format!(
+                "Log score a filament on specimens left out, nearer to 0 is better: the same at every dose {}, logistic {}, flat then \
+                 rising {}.",
+                fixed(f.constant, 3),
+                fixed(f.logistic, 3),
+                fixed(f.flat_then_rising, 3)
+            )
+        },
+    );
+    let test = response.test.map_or_else(String::new, |t| {
+        format!(
+            " No response to the dose: p {} over {} arrangements (the smallest that could be: {}).",
+            trimmed(t.p, 2),
+            t.arrangements,
+            trimmed(t.smallest_p, 2)
+        )
+    });
+    format!("{foretold}{test}")
 }
 
 #[cfg(test)]

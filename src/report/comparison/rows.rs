@@ -20,6 +20,8 @@ pub struct GroupRow {
     pub specimens: usize,
     /// Runs by end: short, stopped, broke, unknown.
     pub ends: [usize; 4],
+    /// Shares shorted and broken by the end, breaking being another end; only where a specimen broke.
+    pub shares: Option<[f64; 2]>,
     /// Time by which half had shorted, s.
     pub median_s: Option<f64>,
     /// Its interval.
@@ -89,6 +91,7 @@ pub fn groups(found: &Comparison) -> Vec<GroupRow> {
             runs: group.members.len(),
             specimens: group.specimens,
             ends: [ends.short, ends.stopped, ends.broke, ends.unknown],
+            shares: ends.incidence.last().map(|last| [last.short, last.broke]),
             median_s: ends.median,
             median_ci95_s: ends.median_ci95,
             restricted_mean_s: ends.restricted_mean,

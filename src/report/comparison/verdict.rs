@@ -149,7 +149,7 @@ impl Claim {
             } else {
                 ""
             };
-            let basis = format!("A test on these specimens cannot go below p = {}{normal}.", chance(test.smallest_p));
+            let basis = format!("A test on these specimens cannot go below {}{normal}.", chance(test.smallest_p));
             return Self { answer: "Cannot be shown with these specimens.", basis };
         }
         let (answer, caveat) = match () {
@@ -158,7 +158,7 @@ impl Claim {
             () => ("Not shown.", " Not shown is not shown absent."),
         };
         let basis = format!(
-            "p = {} ({} adjusted for all effects tested; {}{} arrangements of the labels).{caveat}",
+            "{} ({} adjusted for all effects tested; {}{} arrangements of the labels).{caveat}",
             chance(test.p),
             chance(adjusted),
             if test.all { "all " } else { "" },
@@ -169,7 +169,7 @@ impl Claim {
 }
 
 fn chance(p: f64) -> String {
-    if p < 0.001 { "below 0.001".to_owned() } else { trimmed(p, 2) }
+    if p < 0.001 { "p < 0.001".to_owned() } else { format!("p = {}", trimmed(p, 2)) }
 }
 
 fn shorts(found: &Comparison) -> String {
@@ -182,7 +182,7 @@ fn shorts(found: &Comparison) -> String {
             (0, _) => {
                 ends.ends.last().map_or_else(String::new, |last| format!(", followed for up to {}", duration(*last)))
             }
-            (_, Some(median)) => format!(", half of them by {}", duration(median)),
+            (_, Some(median)) => format!(", half of the runs by {}", duration(median)),
             (_, None) => ", fewer than half".to_owned(),
         };
         let broke = if ends.broke > 0 { format!("; {} broke", ends.broke) } else { String::new() };
@@ -210,14 +210,14 @@ fn shorts(found: &Comparison) -> String {
             let adjusted = gap.p_holm.unwrap_or(test.p);
             match () {
                 () if test.smallest_p >= SHOWN => {
-                    format!(" No test of this can go below p = {} with these specimens.", chance(test.smallest_p))
+                    format!(" No test of this can go below {} with these specimens.", chance(test.smallest_p))
                 }
                 () if adjusted < SHOWN => format!(
-                    " The load is shown to change the time to short (log-rank scores, p = {} after adjustment).",
+                    " The load is shown to change the time to short (log-rank scores, {} after adjustment).",
                     chance(adjusted)
                 ),
                 () => format!(
-                    " That the load changes the time to short is not shown (log-rank scores, p = {}).",
+                    " That the load changes the time to short is not shown (log-rank scores, {}).",
                     chance(test.p)
                 ),
             }
@@ -230,7 +230,7 @@ fn hazard(time: &Endings) -> String {
     let interval = hazard
         .ci95
         .map_or_else(String::new, |[low, high]| format!(", 95 % interval {} to {}", figures(low, 2), figures(high, 2)));
-    let p = hazard.p.map_or_else(String::new, |p| format!("; p = {}", chance(p)));
+    let p = hazard.p.map_or_else(String::new, |p| format!("; {}", chance(p)));
     format!(
         " Over all doses, {} MPa more go with {} times the hazard of a short{interval}{p} ({}, {}).",
         fixed(STEP_MPA, 0),
@@ -404,7 +404,7 @@ mod tests {
             steered.starts_with("Yes. Under “along the plates, 180 MPa” growth ran more along the plates"),
             "{steered}"
         );
-        assert!(steered.find("95 % interval").unwrap() < steered.find("p = ").unwrap(), "{steered}");
+        assert!(steered.find("95 % interval").unwrap() < steered.find("arrangements").unwrap(), "{steered}");
         assert!(all[3][1].starts_with("Half of the filaments turn aside at a dose of"), "{}", all[3][1]);
         assert!(all[4][1].contains("No load above the highest tested (180 MPa)"), "{}", all[4][1]);
     }

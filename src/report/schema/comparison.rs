@@ -58,6 +58,14 @@ pub static GROUPS: Table<GroupRow> = Table {
         number("restricted_mean_s", "s", 1, "mean time without a short, up to the end of the contrast", |r| {
             r.restricted_mean_s
         }),
+        number(
+            "share_short",
+            "1",
+            4,
+            "share shorted by the end, breaking being another end; only where one broke",
+            |r| r.shares.map(|s| s[0]),
+        ),
+        number("share_broke", "1", 4, "share broken by the end, likewise", |r| r.shares.map(|s| s[1])),
         number("along_plates", "1", 4, "alignment with the plates", |r| r.along_plates),
         number("to_load", "1", 4, "alignment with the load axis", |r| r.to_load),
         number("near_expected", "1", 4, "share of growth within 15° of the expected axis", |r| r.near_expected),
