@@ -1,9 +1,9 @@
 //! What the load did to direction, speed and branching: values of groups, differences, tests. The specimen is the unit.
 //!
-//! A run has one value; a specimen's value in a group is the mean of its runs there. Where two specimens or more saw both
-//! loads, the difference is the mean of theirs within each (paired t); else it is the difference of the specimens' means
-//! (Welch 1947, Biometrika 34, 28–35; one specimen against several takes the scatter of the several). Tests by
-//! [`Arrangements`] of the same difference.
+//! A run has one value; a specimen's value in a group is the mean of its runs there. Where two specimens or more, and at
+//! least half of them, saw both loads, the difference is the mean of theirs within each (paired t); else it is the difference
+//! of the specimens' means (Welch 1947, Biometrika 34, 28–35; one specimen against several takes the scatter of the several).
+//! Tests by [`Arrangements`] of the same difference.
 //! Limit: t intervals take specimens' means as near normal; with two or three they are wide, and should be.
 
 use std::collections::BTreeMap;
@@ -279,7 +279,8 @@ struct Pair {
 impl Pair {
     fn of(control: &[Unit], treated: &[Unit]) -> Option<Self> {
         let [a, b] = [control, treated].map(by_specimen);
-        let within = a.keys().filter(|s| b.contains_key(s)).count() >= 2;
+        let shared = a.keys().filter(|s| b.contains_key(s)).count();
+        let within = shared >= 2 && 2 * shared >= a.len() + b.len() - shared;
         if within {
             let differences: Vec<f64> = a.iter().filter_map(|(s, v)| Some(b.get(s)? - v)).collect();
             let value = mean(&differences)?;
@@ -331,6 +332,16 @@ mod tests {
         // 3 ways to place one control among three runs of specimen 0, 2 in each of the others.
         assert_eq!(gap.test.unwrap().arrangements, 12);
         assert!(gap.test.unwrap().smallest_p > 0.05);
+    }
+
+    #[test]
+    fn two_that_saw_both_do_not_speak_for_many_that_saw_one() {
+        let control: Vec<Unit> = (0..6).map(|i| (i, i as f64)).collect();
+        let treated: Vec<Unit> = (4..10).map(|i| (i, 3.0 + i as f64)).collect();
+        let gap = difference(&[control, treated], FREE, 1).unwrap();
+        assert_eq!((gap.within_specimens, gap.specimens), (false, 10));
+        // The two change labels within, the eight others as wholes: 2 · 2 · (8 choose 4).
+        assert_eq!(gap.test.unwrap().arrangements, 280);
     }
 
     #[test]

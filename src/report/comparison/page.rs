@@ -274,7 +274,8 @@ fn method(shown: Shown<'_>) -> Vec<[String; 2]> {
         ],
         [
             "Intervals",
-            "Student’s t over specimens; paired where two specimens or more saw both loads. For times: jackknife over specimens.",
+            "Student’s t over specimens; paired where at least half of the specimens, and two or more, saw both loads. For times: \
+             jackknife over specimens.",
         ],
         [
             "Time to short",
