@@ -91,6 +91,10 @@ pub enum Error {
     #[error(transparent)]
     #[diagnostic(transparent)]
     Synth(#[from] crate::synth::SynthError),
+    /// Runs cannot be compared.
+    #[error(transparent)]
+    #[diagnostic(transparent)]
+    Compare(#[from] crate::compare::Fault),
     /// The worker threads could not be started.
     #[error("cannot start worker threads: {what}")]
     #[diagnostic(code(threads), help("type a smaller --threads"))]
@@ -130,6 +134,7 @@ impl Error {
             | Self::DraftExists { .. }
             | Self::NothingToDraft { .. }
             | Self::Until { .. }
+            | Self::Compare(_)
             | Self::Synth(_) => EXIT_INPUT,
         }
     }

@@ -12,7 +12,8 @@
 //!              └ stats     axial statistics, intervals, regression (pure functions on slices)
 //!                 └ forecast  first passage of the gap, its own record, short detection
 //!                    └ results   the one struct that every output receives
-//!                       └ report    tables, figures, page
+//!                       └ compare   finished runs → groups → effect of the load
+//!                          └ report    tables, figures, page
 //! pipeline     calls the stages in order
 //! synth        frames with known truth, and a run scored against it
 //! cli          the commands
@@ -33,6 +34,7 @@
 //! with water; follow the lab's own rules, local codes and qualified people.
 
 pub mod cli;
+pub mod compare;
 pub mod error;
 pub mod forecast;
 pub mod load;

@@ -2,6 +2,7 @@
 //! say and what needs a look; printing and exit codes are here alone.
 
 mod check;
+mod compare;
 mod draft;
 mod progress;
 mod report;
@@ -53,6 +54,7 @@ enum Command {
     Draft(draft::DraftArgs),
     Check(check::CheckArgs),
     Report(report::ReportArgs),
+    Compare(compare::CompareArgs),
     Synth(synth::SynthArgs),
     Score(score::ScoreArgs),
 }
@@ -98,6 +100,7 @@ fn run(cli: &Cli) -> Result<Outcome, Error> {
         Command::Check(args) => check::run(args),
         Command::Draft(args) => draft::run(args),
         Command::Report(args) => report::run(args, cli.globals),
+        Command::Compare(args) => compare::run(args, cli.globals),
         Command::Synth(args) => Ok(Outcome { text: synth::run(args)?, warnings: Vec::new() }),
         Command::Score(args) => Ok(Outcome { text: score::run(args)?, warnings: Vec::new() }),
     }

@@ -8,9 +8,11 @@
 //! verdict    the run in four sentences              page       report.html
 //! effect     what load and charge did, in words
 //! write      the output folder, swapped in whole
+//! comparison/  runs under different loads: verdict, figures, tables, page
 //! ```
 
 pub mod axes;
+pub mod comparison;
 pub mod drawing;
 pub mod effect;
 pub mod figures;

@@ -111,7 +111,7 @@ fn page(results: &Results) -> Result<Page<'_>, Error> {
 }
 
 /// The themed colours as CSS variables, light then dark, and the classes of the figures that use them.
-fn colours() -> String {
+pub(super) fn colours() -> String {
     let light: String = THEMED.iter().map(|(ink, name)| format!("--{name}:{};", ink.light().hex())).collect();
     let dark: String = THEMED.iter().map(|(ink, name)| format!("--{name}:{};", ink.dark().hex())).collect();
     let classes: String = THEMED

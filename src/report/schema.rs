@@ -8,8 +8,10 @@ use serde::Serialize;
 
 use crate::measure::{FilamentRow, ForecastRow, FrameRow, GrowthRow, PathRow};
 
+mod comparison;
 mod effects;
 
+pub use comparison::{EFFECTS, GROUPS, RUNS};
 pub use effects::{CHARGE, DIRECTIONS, HALF_CYCLES, TURNS};
 
 /// A table: what a row is, and its columns.

@@ -164,7 +164,7 @@ fn fill(results: &Results, folder: &Path, save: Save) -> Result<(), Error> {
     put(&folder.join("report.html"), page::render(results)?.as_bytes())
 }
 
-fn table<R>(folder: &Path, schema: &Table<R>, rows: &[R]) -> Result<(), Error> {
+pub(super) fn table<R>(folder: &Path, schema: &Table<R>, rows: &[R]) -> Result<(), Error> {
     let path = |extension: &str| folder.join("tables").join(format!("{}.{extension}", schema.name));
     stream(&path("csv"), |out| tables::write_csv(schema, rows, out))?;
     stream(&path("parquet"), |out| tables::write_parquet(schema, rows, out))
@@ -202,15 +202,15 @@ fn mask(arrivals: &Array2<u32>, frame: usize) -> GrayImage {
     })
 }
 
-fn make(folder: &Path) -> Result<(), Error> {
+pub(super) fn make(folder: &Path) -> Result<(), Error> {
     fs::create_dir(folder).map_err(|source| Error::io(folder, source))
 }
 
-fn put(path: &Path, bytes: &[u8]) -> Result<(), Error> {
+pub(super) fn put(path: &Path, bytes: &[u8]) -> Result<(), Error> {
     fs::write(path, bytes).map_err(|source| Error::io(path, source))
 }
 
-fn stream(path: &Path, fill: impl FnOnce(&mut BufWriter<File>) -> Result<(), Error>) -> Result<(), Error> {
+pub(super) fn stream(path: &Path, fill: impl FnOnce(&mut BufWriter<File>) -> Result<(), Error>) -> Result<(), Error> {
     let mut out = BufWriter::new(File::create(path).map_err(|source| Error::io(path, source))?);
     fill(&mut out)?;
     out.flush().map_err(|source| Error::io(path, source))

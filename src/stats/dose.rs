@@ -1,9 +1,13 @@
 //! Share of a yes against dose: binomial regression on a straight line, and the dose for a given share.
 //! Sources: Fisher scoring as in McCullagh & Nelder (1989), Generalized Linear Models, section 2.5; dose and its limits by the
 //! delta method, Fieller (Finney 1971, Probit Analysis, section 4.7) and the profile of the deviance.
-//! Limits: independent trials; specimens that share a fate need wider limits. Complete separation has no finite fit.
+//! Limits: independent trials; where specimens share a fate, take [`clustered`]. Complete separation has no finite fit.
 
 use super::distributions::{normal_cdf, normal_pdf, normal_quantile};
+
+pub mod clustered;
+pub mod predict;
+pub mod rising;
 
 /// Trials at one dose.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -199,6 +203,12 @@ impl DoseFit {
         [libm::sqrt(self.covariance[0]), libm::sqrt(self.covariance[2])]
     }
 
+    /// Fitted share at a dose.
+    #[must_use]
+    pub fn share(&self, dose: f64) -> f64 {
+        self.link.share(self.intercept + self.slope * dose).0
+    }
+
     /// Dose at which the fitted share is `share`; infinite on a flat line.
     #[must_use]
     pub fn dose_for(&self, share: f64) -> f64 {
@@ -247,72 +257,81 @@ impl DoseFit {
     #[must_use]
     pub fn profile(&self, trials: &[Trials], share: f64, confidence: f64) -> [Option<f64>; 2] {
         let z = normal_quantile(0.5 + 0.5 * confidence);
-        let limit = self.deviance + z * z;
+        self.profile_to(trials, share, |_| z * z)
+    }
+
+    /// As [`DoseFit::profile`], to where the deviance has risen by `rise(dose)`, which may differ from dose to dose.
+    #[must_use]
+    pub fn profile_to(&self, trials: &[Trials], share: f64, rise: impl Fn(f64) -> f64) -> [Option<f64>; 2] {
         let level = self.link.eta(share);
         let best = self.dose_for(share);
-        // Walks out in growing steps until the deviance passes the limit, then halves the last step.
-        let end = |direction: f64| {
-            let mut reach = 0.5 * self.se_dose(share);
-            let mut inside = best;
-            for _ in 0..WALK_STEPS {
-                let outside = best + direction * reach;
-                if self.profiled(trials, outside, level) > limit {
-                    return Some(self.cross(trials, inside, outside, level, limit));
-                }
-                inside = outside;
-                reach *= 1.5;
-            }
-            None
-        };
-        if best.is_finite() { [end(-1.0), end(1.0)] } else { [None, None] }
+        let beyond = |x: f64| profiled(trials, self.link, level, x) > self.deviance + rise(x);
+        let step = 0.5 * self.se_dose(share);
+        if best.is_finite() { walk_out([best, best], step, beyond) } else { [None, None] }
     }
+}
 
-    fn cross(&self, trials: &[Trials], mut inside: f64, mut outside: f64, level: f64, limit: f64) -> f64 {
-        for _ in 0..60 {
-            let middle = 0.5 * (inside + outside);
-            if self.profiled(trials, middle, level) > limit {
-                outside = middle;
-            } else {
-                inside = middle;
-            }
-        }
-        0.5 * (inside + outside)
-    }
-
-    /// Least deviance of lines that pass η = `level` at dose `at`. The likelihood of each link is log-concave in the slope,
-    /// so that halving the bracket of its score finds the minimum.
-    fn profiled(&self, trials: &[Trials], at: f64, level: f64) -> f64 {
-        let moved: Vec<Trials> = trials.iter().map(|t| Trials { dose: t.dose - at, ..*t }).collect();
-        let pull = |b: f64| score(&moved, self.link, |x| level + b * x)[1];
-        let (mut low, mut high) = (0.0, 0.0);
-        let mut width = self.slope.abs();
-        let uphill = pull(0.0) > 0.0;
+/// Walks out from either end of `inside` in steps that grow by half, until `beyond` holds, then halves the last step: the two
+/// ends of the set around it. An end that is not met within a factor of 10⁷ of `step` is `None`.
+pub(crate) fn walk_out(inside: [f64; 2], step: f64, beyond: impl Fn(f64) -> bool) -> [Option<f64>; 2] {
+    let end = |start: f64, direction: f64| {
+        let (mut reach, mut last) = (step, start);
         for _ in 0..WALK_STEPS {
-            if uphill {
-                high += width;
-                if pull(high) <= 0.0 {
-                    break;
-                }
-                low = high;
-            } else {
-                low -= width;
-                if pull(low) >= 0.0 {
-                    break;
-                }
-                high = low;
+            let next = start + direction * reach;
+            if beyond(next) {
+                return Some(cross(last, next, &beyond));
             }
-            width *= 1.5;
+            last = next;
+            reach *= 1.5;
         }
-        for _ in 0..80 {
-            let middle = 0.5 * (low + high);
-            if pull(middle) > 0.0 {
-                low = middle;
-            } else {
-                high = middle;
-            }
+        None
+    };
+    [end(inside[0], -1.0), end(inside[1], 1.0)]
+}
+
+/// Halvings of a last step: a part in 10¹² of it.
+const HALVINGS: usize = 40;
+
+fn cross(mut inside: f64, mut outside: f64, beyond: impl Fn(f64) -> bool) -> f64 {
+    for _ in 0..HALVINGS {
+        let middle = 0.5 * (inside + outside);
+        if beyond(middle) {
+            outside = middle;
+        } else {
+            inside = middle;
         }
-        deviance(&moved, self.link, |x| level + 0.5 * (low + high) * x)
     }
+    0.5 * (inside + outside)
+}
+
+/// Least deviance of lines that pass η = `level` at dose `at`. The likelihood of each link is log-concave in the slope, so that
+/// halving the bracket of its score finds the minimum.
+pub(crate) fn profiled(trials: &[Trials], link: Link, level: f64, at: f64) -> f64 {
+    let moved: Vec<Trials> = trials.iter().map(|t| Trials { dose: t.dose - at, ..*t }).collect();
+    let reach = moved.iter().map(|t| t.dose.abs()).fold(0.0, f64::max);
+    if reach <= 0.0 {
+        return deviance(&moved, link, |_| level);
+    }
+    let pull = |b: f64| score(&moved, link, |x| level + b * x)[1];
+    let uphill = if pull(0.0) > 0.0 { 1.0 } else { -1.0 };
+    // Slopes from a hundredth of a unit of η over the doses to one where every share is 0 or 1.
+    let (mut inside, mut outside) = (0.0, uphill * 0.01 / reach);
+    for _ in 0..WALK_STEPS {
+        if pull(outside) * uphill <= 0.0 {
+            break;
+        }
+        inside = outside;
+        outside *= 1.6;
+    }
+    for _ in 0..HALVINGS {
+        let middle = 0.5 * (inside + outside);
+        if pull(middle) * uphill > 0.0 {
+            inside = middle;
+        } else {
+            outside = middle;
+        }
+    }
+    deviance(&moved, link, |x| level + 0.5 * (inside + outside) * x)
 }
 
 /// Steps of a search outwards, each half as long again: a factor of 10⁷ in reach.

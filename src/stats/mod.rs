@@ -4,10 +4,11 @@
 //!   sampling unit: [`filaments`] on [`clusters`].
 //! - The load within a run: [`turns`]; what mechanics predicts: [`kink`].
 //! - Lines and trends: [`regress`], [`theil_sen`], [`trend`], [`isotonic`]; forecasts judged: [`scoring`].
-//! - Between runs: [`survival`], [`dose`].
+//! - Between runs: [`survival`], [`dose`], exact tests by [`arrangements`].
 //! - Shared: [`bootstrap`], [`distributions`], [`linear`], [`order`]. Whether all this keeps its word: [`calibration`].
 
 pub mod angles;
+pub mod arrangements;
 pub mod axial;
 pub mod bootstrap;
 pub mod calibration;

@@ -2,6 +2,7 @@
 //! Each check names its source; expected values come from `fixtures/`, with their provenance.
 
 mod axial;
+mod compare;
 mod distance;
 mod electro;
 mod first_passage;

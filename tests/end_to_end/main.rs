@@ -4,6 +4,7 @@
 
 mod bad_input;
 mod campaign;
+mod compare;
 mod hostile;
 mod kit;
 mod output;
