@@ -172,10 +172,11 @@ impl Attachment<'_> {
     fn root(&self, root: Root, line: &Line, forest: &mut Forest) -> Option<usize> {
         let pixels: Vec<[f64; 2]> = line.pixels.iter().map(|&p| point(p)).collect();
         let first = *pixels.first()?;
+        let aim = pixels[AIM.min(pixels.len() - 1)];
         let foot = match root {
             Root::Inside => first,
-            Root::Plating => self.foot(&self.edges.plating, &pixels),
-            Root::Far => self.foot(&self.edges.far, &pixels),
+            Root::Plating => self.edges.plating.carried_back(first, aim),
+            Root::Far => self.edges.far.carried_back(first, aim),
         };
         let vertices = match root {
             Root::Inside => self.drawn(&[], &line.pixels, FIRST_WIDTH),
@@ -191,28 +192,6 @@ impl Attachment<'_> {
         forest.filaments.push(Filament { root, root_px: foot });
         forest.strands.push(strand(forest.filaments.len() - 1, None, vertices, FIRST_WIDTH, 0.0));
         Some(forest.strands.len() - 1)
-    }
-
-    /// Where a line's first stretch, carried on backwards, meets the edge; the nearest point of the edge
-    /// where that would lead far aside.
-    fn foot(&self, edge: &super::edges::Polyline, pixels: &[[f64; 2]]) -> [f64; 2] {
-        let first = pixels[0];
-        let near = edge.nearest(first);
-        let aim = pixels[AIM.min(pixels.len() - 1)];
-        let Some(back) = unit([first[0] - aim[0], first[1] - aim[1]]) else {
-            return near.foot;
-        };
-        let across = [near.direction[1], -near.direction[0]];
-        let off = (first[0] - near.foot[0]) * across[0] + (first[1] - near.foot[1]) * across[1];
-        let closing = back[0] * across[0] + back[1] * across[1];
-        if off.abs() < 1e-9 || off * closing >= 0.0 {
-            return near.foot;
-        }
-        let run = -off / closing;
-        if run > 1.6 * near.distance {
-            return near.foot;
-        }
-        [first[0] + run * back[0], first[1] + run * back[1]]
     }
 
     /// New vertices along `pixels`, led in by the points of `guide`.

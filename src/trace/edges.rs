@@ -4,6 +4,12 @@
 //! edge on which the other edge lies, decided at the nearest segment.
 //! Limit: an edge that folds back on itself has no clear side there.
 
+use super::centreline::unit;
+
+/// Longest way to the edge along a line's own direction, in nearest distances, before the nearest point is taken instead: a
+/// slant of 51° off the edge's normal.
+const MOST_ASIDE: f64 = 1.6;
+
 /// A polyline in pixels (x right, y down), at least two points.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Polyline {
@@ -65,6 +71,24 @@ impl Polyline {
             direction: [1.0, 0.0],
             side: 0.0,
         })
+    }
+
+    /// Where a line that runs from `first` to `aim`, carried on backwards, meets the polyline; the nearest point of the
+    /// polyline where that would lead far aside.
+    #[must_use]
+    pub(crate) fn carried_back(&self, first: [f64; 2], aim: [f64; 2]) -> [f64; 2] {
+        let near = self.nearest(first);
+        let Some(back) = unit([first[0] - aim[0], first[1] - aim[1]]) else {
+            return near.foot;
+        };
+        let across = [near.direction[1], -near.direction[0]];
+        let off = (first[0] - near.foot[0]) * across[0] + (first[1] - near.foot[1]) * across[1];
+        let closing = back[0] * across[0] + back[1] * across[1];
+        if off.abs() < 1e-9 || off * closing >= 0.0 || -off / closing > MOST_ASIDE * near.distance {
+            return near.foot;
+        }
+        let run = -off / closing;
+        [first[0] + run * back[0], first[1] + run * back[1]]
     }
 
     /// The middle of the polyline by arc length.

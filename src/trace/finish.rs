@@ -9,6 +9,8 @@ use super::{EndsIn, Root, Trace, TracePath, TracePoint, TracedFilament};
 const POOL: f64 = 4.0;
 /// How far the final position may move, px.
 const SEARCH: f64 = 2.0;
+/// Length of a first clear stretch whose direction carries back to the edge, px.
+const AIM: f64 = 8.0;
 /// Least length of a filament on an edge, px.
 const LEAST_ROOTED: f64 = 3.0;
 /// Least length of one that starts inside, px.
@@ -75,15 +77,14 @@ fn refine(tracer: &Tracer, strand: &Strand) -> Refined {
         positions.push([vertex.p[0] + shift * vertex.n[0], vertex.p[1] + shift * vertex.n[1]]);
         widths.push(section.map_or(strand.width, |s| s.width));
     }
+    plant(tracer, strand, &mut positions, lead);
     straighten(&mut positions, lead);
     let positions = smooth(&positions, vertices_in(POOL));
     let setback = strand.setback(&tracer.tip_shape).min(vertices.len() - 2);
     let last = vertices.len() - 1;
     let shown = if strand.tied() { vertices.len() } else { vertices.len() - setback };
     let arrival = |i: usize| vertices[(i + setback).min(last)].arrival;
-    let points = (0..shown)
-        .map(|i| trace_point(tracer, &vertices[i], arrival(i), positions[i], widths[i]))
-        .collect();
+    let points = (0..shown).map(|i| trace_point(tracer, &vertices[i], arrival(i), positions[i], widths[i])).collect();
     Refined { points }
 }
 
@@ -108,6 +109,19 @@ fn lead_in(tracer: &Tracer, strand: &Strand) -> usize {
         None => strand.vertices.iter().take_while(|v| v.depth < 4.0 || v.remaining < 4.0).count(),
     }
     .min(strand.decided / 2)
+}
+
+/// Puts the first point of a rooted strand where its first clear stretch, carried back, meets its edge.
+fn plant(tracer: &Tracer, strand: &Strand, points: &mut [[f64; 2]], lead: usize) {
+    let edge = match tracer.forest.filaments[strand.filament].root {
+        Root::Plating => &tracer.edges.plating,
+        Root::Far => &tracer.edges.far,
+        Root::Inside => return,
+    };
+    let aim = lead + vertices_in(AIM);
+    if strand.parent.is_none() && lead > 0 && aim < points.len() {
+        points[0] = edge.carried_back(points[lead], points[aim]);
+    }
 }
 
 /// Puts the first `lead` points on the straight line from the first to number `lead`.

@@ -116,12 +116,6 @@ impl Tracer {
         settle::date(self, self.settings.confirm_frames);
         settle::observe(self);
         settle::withdraw(self);
-        if std::env::var("DBG").is_ok() {
-            eprintln!("frame {}", self.frames.last().unwrap());
-            for (i, s) in self.forest.strands.iter().enumerate().filter(|(_, s)| !s.withdrawn) {
-                eprintln!("  {i} fil {} par {:?} n {} dec {} w {:.1} c {:.3} start {:.0?} end {:.0?} dec_end {:.0?} prov {:?}", s.filament, s.parent.map(|j| (j.strand, j.vertex)), s.vertices.len(), s.decided, s.width, s.contrast, s.vertices.first().map(|v| v.p), s.vertices.last().map(|v| v.p), s.decided.checked_sub(1).map(|d| s.vertices[d].p), s.provisional);
-            }
-        }
     }
 
     /// Pixels known to be filament (with a margin), for the next frame's correction.
@@ -356,12 +350,6 @@ impl Tracer {
             settle::date(&mut self, 0);
         }
         settle::observe_new(&mut self);
-        if std::env::var("DBG").is_ok() {
-            eprintln!("TIP setback {:.2?} {}", self.tip_shape.setback(), self.tip_shape.dbg());
-            for s in self.forest.strands.iter().filter(|s| !s.withdrawn) {
-                eprintln!("  S w {:.1} setback {:.2?} {}", s.width, s.tip_shape.setback(), s.tip_shape.dbg());
-            }
-        }
         prune::prune(&mut self.forest.strands);
         self.forest.truncate();
         self.meet();

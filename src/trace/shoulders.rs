@@ -81,7 +81,15 @@ mod tests {
 
     #[test]
     fn the_side_of_a_strong_line_is_no_ink_and_a_faint_line_further_off_is() {
-        let line = |col: usize| if (20..24).contains(&col) { 30.0 } else if col == 40 { 3.0 } else { 0.0 };
+        let line = |col: usize| {
+            if (20..24).contains(&col) {
+                30.0
+            } else if col == 40 {
+                3.0
+            } else {
+                0.0
+            }
+        };
         let plane = Array2::from_shape_fn((40, 60), |(_, col)| line(col));
         let mut z = Array2::from_elem(plane.dim(), 5.0f32);
         clear(&mut z, &plane, 3.0);

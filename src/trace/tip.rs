@@ -93,10 +93,6 @@ impl TipShape {
         }
     }
 
-    pub(crate) fn dbg(&self) -> String {
-        (0..STEPS).map(|r| format!("{:.2}", self.half_width(r).unwrap_or(-1.0))).collect::<Vec<_>>().join(" ")
-    }
-
     /// Half width of the ink in half widths of the strand, `None` where too little was seen.
     fn half_width(&self, row: usize) -> Option<f64> {
         let mut before = 1.0f32;
@@ -132,8 +128,7 @@ mod tests {
             }
             inside as f32 / (n * n) as f32
         });
-        let line: Vec<_> =
-            (0..40).map(|k| ([30.0 - 0.5 * f64::from(k), 20.0], [0.0, 1.0])).collect();
+        let line: Vec<_> = (0..40).map(|k| ([30.0 - 0.5 * f64::from(k), 20.0], [0.0, 1.0])).collect();
         let mut shape = TipShape::default();
         (0..20).for_each(|_| shape.add(&plane, &line, 0.5, 8.0, 1.0));
         shape
