@@ -13,6 +13,7 @@ mod link;
 pub mod recent;
 pub mod ridge;
 mod settle;
+mod still;
 pub mod thin;
 pub mod threshold;
 mod tip;

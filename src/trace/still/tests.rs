@@ -1,0 +1,1 @@
+//! Synthetic pictures with known lines.
