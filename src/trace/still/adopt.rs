@@ -16,6 +16,8 @@ use super::tree::{From, Way, ways};
 const TIP_SALIENCE: f32 = 3.0;
 /// Distance from the end of a strand within which a line goes on from it, beyond half its width, px.
 const END: f64 = 3.0;
+/// First vertex of a strand that a branch may leave: paths are cut behind their first points.
+const FIRST_JOINT: usize = 2;
 /// Length along which centres are smoothed to either side, px, and scales of the line.
 const SMOOTH: f64 = 3.0;
 /// In scales.
@@ -63,7 +65,7 @@ fn start_of(tracer: &Tracer, way: &Way) -> Start {
         From::Way(line, pixel) => Start::Line(line, pixel),
         From::Traced(pixel) => match tracer.owners.at(pixel) {
             Some(joint) if at_tip(tracer, joint) => Start::Tip(joint.strand),
-            Some(joint) => Start::Side(joint),
+            Some(joint) => Start::Side(Joint { vertex: joint.vertex.max(FIRST_JOINT), ..joint }),
             None => Start::Inside,
         },
         From::Nothing => {
@@ -86,7 +88,13 @@ fn turn_to_root(tracer: &Tracer, way: &mut Way) {
     let rank = |[row, column]: Pixel| {
         let p = [column as f64, row as f64];
         let (depth, remaining) = (tracer.edges.depth(p), tracer.edges.remaining(p));
-        let class = if depth <= ROOT_REACH { 0 } else if remaining <= ROOT_REACH { 1 } else { 2 };
+        let class = if depth <= ROOT_REACH {
+            0
+        } else if remaining <= ROOT_REACH {
+            1
+        } else {
+            2
+        };
         (class, depth)
     };
     let (a, b) = (rank(a), rank(b));

@@ -56,7 +56,8 @@ fn relative(rows: &[Vec<Option<Contrast>>]) -> Vec<Vec<Option<Contrast>>> {
     let own: Vec<f64> = (0..count)
         .map(|i| {
             let near = i.saturating_sub(pool)..(i + pool + 1).min(count);
-            let known: Vec<f64> = latest.iter().flat_map(|r| r[near.clone()].iter().flatten()).map(|c| c.value).collect();
+            let known: Vec<f64> =
+                latest.iter().flat_map(|r| r[near.clone()].iter().flatten()).map(|c| c.value).collect();
             known.iter().sum::<f64>() / (known.len() as f64).max(1.0)
         })
         .collect();

@@ -84,7 +84,8 @@ impl Candidates {
         let standing = standing_out(&evidence.z, &crest);
         let weights = Weights { standing: &standing, sigma: &evidence.sigma };
         let groups = crest::groups(&standing, evidence, LOW);
-        let groups = groups.into_iter().filter_map(|pixels| Some(Group { longest: longest(&pixels, weights)?, pixels }));
+        let groups =
+            groups.into_iter().filter_map(|pixels| Some(Group { longest: longest(&pixels, weights)?, pixels }));
         Self { groups: groups.collect(), standing }
     }
 

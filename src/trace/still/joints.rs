@@ -80,11 +80,8 @@ impl Family {
             let at = [row, column];
             let angle = f64::from(evidence.angle[at]) * step();
             let (s, c) = (libm::sin(angle), libm::cos(angle));
-            let (t, u, slope) = if self.across {
-                (column as f64, row as f64, s / c)
-            } else {
-                (row as f64, column as f64, c / s)
-            };
+            let (t, u, slope) =
+                if self.across { (column as f64, row as f64, s / c) } else { (row as f64, column as f64, c / s) };
             let sigma = f64::from(evidence.sigma[at]);
             (slope.abs() <= STEEPEST + step()).then_some(Pixel { at, t, u, slope, sigma, firm: evidence.z[at] >= FIRM })
         })
@@ -111,11 +108,8 @@ impl Family {
             }
         }
         let wanted = COVERED * length / 2.0;
-        let mut best: Vec<(u16, usize, usize)> = votes
-            .indexed_iter()
-            .filter(|(_, v)| f64::from(**v) >= wanted)
-            .map(|((k, bin), v)| (*v, k, bin))
-            .collect();
+        let mut best: Vec<(u16, usize, usize)> =
+            votes.indexed_iter().filter(|(_, v)| f64::from(**v) >= wanted).map(|((k, bin), v)| (*v, k, bin)).collect();
         best.sort_unstable_by(|a, b| b.cmp(a));
         best.truncate(200);
         let joints = best.iter().map(|&(_, k, bin)| Joint { u0: bin as f64 * BIN - room, slope: slope_of(k) });

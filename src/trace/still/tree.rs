@@ -112,20 +112,32 @@ pub(crate) fn ways(
     loop {
         let mut drawn: Vec<Pixel> = place.keys().copied().collect();
         drawn.sort_unstable();
-        let Some(tip) = net.farthest(&drawn) else { return ways };
-        let mut pixels = net.way_to(tip);
-        let start = pixels.remove(0);
-        let clear = (CLEAR_SCALES * f64::from(weights.sigma[start])).round() as usize;
-        let score = weights.score(&pixels[clear.min(pixels.len())..]);
-        if score < least(start) {
-            net.drop(&pixels);
-            continue;
-        }
+        net.spread(&drawn);
+        let Some((start, pixels, score)) = next(&mut net, weights, &least) else { return ways };
         let Some(&from) = place.get(&start) else { return ways };
         let way = Way { pixels, from, score };
         mark(&mut place, ways.len(), &way);
         ways.push(way);
     }
+}
+
+/// The longest way from what is drawn that is salient enough, after the pixel it starts from; shorter ones than it that are not
+/// will not be asked again.
+fn next(net: &mut Net, weights: Weights, least: &impl Fn(Pixel) -> f32) -> Option<(Pixel, Vec<Pixel>, f32)> {
+    for tip in net.by_distance() {
+        if net.is_dropped(tip) {
+            continue;
+        }
+        let mut pixels = net.way_to(tip);
+        let start = pixels.remove(0);
+        let clear = (CLEAR_SCALES * f64::from(weights.sigma[start])).round() as usize;
+        let score = weights.score(&pixels[clear.min(pixels.len())..]);
+        if score >= least(start) {
+            return Some((start, pixels, score));
+        }
+        net.drop(&pixels);
+    }
+    None
 }
 
 /// The pixels of a group with distances.
@@ -146,8 +158,14 @@ impl Net {
         Self { index, pixels: group.to_vec(), distance: vec![FAR; n], before: vec![n; n], dropped: vec![false; n] }
     }
 
-    /// Distances from the sources; the farthest pixel that is no source and not dropped, the first in order among equals.
+    /// The farthest pixel from the sources, the first in order among equals.
     fn farthest(&mut self, sources: &[Pixel]) -> Option<Pixel> {
+        self.spread(sources);
+        self.by_distance().first().copied()
+    }
+
+    /// Distances from the sources.
+    fn spread(&mut self, sources: &[Pixel]) {
         self.distance.fill(FAR);
         self.before.fill(self.pixels.len());
         let mut heap = BinaryHeap::new();
@@ -170,8 +188,18 @@ impl Net {
                 }
             }
         }
-        let candidates = (0..self.pixels.len()).filter(|&k| !self.dropped[k] && self.distance[k] > 0 && self.distance[k] < FAR);
-        candidates.max_by_key(|&k| (self.distance[k], Reverse(k))).map(|k| self.pixels[k])
+    }
+
+    /// Pixels that were reached and are no source, the farthest first.
+    fn by_distance(&self) -> Vec<Pixel> {
+        let mut reached: Vec<usize> =
+            (0..self.pixels.len()).filter(|&k| self.distance[k] > 0 && self.distance[k] < FAR).collect();
+        reached.sort_by_key(|&k| (Reverse(self.distance[k]), k));
+        reached.into_iter().map(|k| self.pixels[k]).collect()
+    }
+
+    fn is_dropped(&self, pixel: Pixel) -> bool {
+        self.index.get(&pixel).is_none_or(|&k| self.dropped[k])
     }
 
     /// The way from the nearest source, which comes first, to a pixel.
