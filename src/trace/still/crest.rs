@@ -2,7 +2,7 @@
 //!
 //! Method: a pixel is on the crest where the evidence across the line is nowhere greater (Steger 1998, IEEE Trans. Pattern
 //! Anal. Mach. Intell. 20, 113–125, in whole pixels). Fragments are tied where one lies straight ahead of another's end
-//! (good continuation: Wertheimer 1923; Sha'ashua & Ullman 1988, Proc. ICCV, 321–327).
+//! (good continuation; Sha'ashua & Ullman 1988, Proc. ICCV, 321–327, from memory).
 
 use ndarray::Array2;
 
@@ -21,7 +21,8 @@ const GAP: f64 = 8.0;
 const GAP_SCALES: f64 = 3.0;
 /// Cosine of the greatest turn into and out of a gap: 40°.
 const STRAIGHT: f64 = 0.77;
-/// And in lengths of the shorter fragment, up to `MOST_GAP`: the longer two lines are, the farther they are seen to continue each other.
+/// And in lengths of the shorter fragment, up to `MOST_GAP`: the longer two lines are, the farther apart they are still
+/// seen as one.
 const GAP_LENGTHS: f64 = 0.3;
 /// Longest gap, px.
 const MOST_GAP: f64 = 32.0;

@@ -1,5 +1,5 @@
-//! When did each vertex arrive, judged against its own contrast: without a bare reference a line's contrast differs from place to place,
-//! so that each vertex is compared with what the latest frames show of it.
+//! When did each vertex arrive, judged against its own contrast: without a bare reference a line's contrast differs from
+//! place to place, so that each vertex is compared with what the latest frames show of it.
 //!
 //! Method: contrasts over the local final contrast, then the change point along the strand of [`super::super::dating`].
 //! Limit: what was there in the first frame of the window arrives with it.

@@ -5,7 +5,7 @@
 //! of its flanks; the *lesser* of the two differences counts, so that a step edge, whose crest has only one flank, gives
 //! nothing, and the median over three pieces in a row counts, so that a speck gives nothing. Scales from a pyramid of
 //! halved planes (Burt & Adelson 1983, IEEE Trans. Commun. 31, 532–540), the Gaussian scale matched to the half width
-//! (Lindeberg 1998, Int. J. Comput. Vis. 30, 117–154). The difference is divided by what the *opposite* polarity shows
+//! (Lindeberg 1998, Int. J. Comput. Vis. 30, 117–154; both from memory). The difference is divided by what the *opposite* polarity shows
 //! round about: texture has no preferred sign, filaments do.
 //! Limit: texture whose own lines have the filaments' sign is not told from filaments.
 

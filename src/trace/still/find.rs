@@ -3,7 +3,7 @@
 //! Method: saliences of the longest ways of all groups are mostly texture's; an exponential law is fitted to their middle
 //! (median to upper quartile, so that up to a quarter may be filaments) in the filaments' polarity and in the opposite one,
 //! and the salience that texture reaches with probability `CHANCE` a picture is the greater of both.
-//! Exponential tails of the greatest clutter scores: Karlin & Altschul 1990, Proc. Natl Acad. Sci. 87, 2264–2268 (for another field).
+//! An exponential law for the tail of chance maxima is common practice.
 //! Limits: a picture with few groups tells little of its texture; then [`LEAST_SALIENCE`] rules.
 
 use ndarray::Array2;
