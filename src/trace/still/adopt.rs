@@ -25,10 +25,13 @@ const SMOOTH_SCALES: f64 = 2.0;
 /// Blur of the lens, pixels and profile that widens a line, added in quadrature, px: that of `centreline`.
 const INSTRUMENT_PX: f64 = 1.5;
 
-/// Adds what was found to the forest as proposals.
-pub(super) fn adopt(tracer: &mut Tracer, plane: &Array2<f32>, found: &Found) {
+/// Adds what was found to the forest as proposals; `ahead`: only what goes on from a tip.
+pub(super) fn adopt(tracer: &mut Tracer, plane: &Array2<f32>, found: &Found, ahead: bool) {
     for group in &found.groups {
-        let lines = lines_of(tracer, found, group);
+        let mut lines = lines_of(tracer, found, group);
+        if ahead {
+            lines.retain(|line| matches!(line.start, Start::Tip(_)));
+        }
         let before: Vec<usize> = tracer.forest.strands.iter().map(|s| s.vertices.len()).collect();
         let attachment = Attachment { plane: &found.evidence.z, edges: &tracer.edges };
         for index in attachment.attach(&lines, &mut tracer.forest) {

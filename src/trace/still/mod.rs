@@ -27,12 +27,20 @@ pub(super) fn push(tracer: &mut Tracer) {
     tracer.claim_all();
     if let Some((median, _)) = tracer.recent.median() {
         let found = find::find(&median, &tracer.inside);
-        adopt::adopt(tracer, &median, &found);
+        adopt::adopt(tracer, &median, &found, false);
     }
     date::date(tracer, tracer.settings.confirm_frames);
 }
 
-/// Decides what the last frames show, with the witnesses they have.
+/// Decides what the last frames show, with the witnesses they have; the very last one tells how far the tips had come, which
+/// the median over three does not.
 pub(super) fn finish(tracer: &mut Tracer) {
     date::date(tracer, 0);
+    if let Some(last) = tracer.recent.frames().back().cloned().filter(|_| tracer.frames.len() > 2) {
+        tracer.forest.truncate();
+        tracer.claim_all();
+        let found = find::find(&last.residual, &tracer.inside);
+        adopt::adopt(tracer, &last.residual, &found, true);
+        date::date(tracer, 0);
+    }
 }
