@@ -161,6 +161,7 @@ impl<'a> Follower<'a> {
         let settings = TraceSettings {
             confirm_frames: input.manifest.trace.confirm_frames,
             bare: usable_bare,
+            bare_reference: usable_bare > 0,
             ..TraceSettings::default()
         };
         let tracer = Tracer::new(settings, input.edges.clone(), opening.scene.noise().clone());

@@ -19,8 +19,8 @@ pub(crate) struct Window {
 
 /// Light that changes over about a hundred px: wider than any filament or bundle of them.
 pub(crate) const UNEVEN_LIGHT: Window = Window { block: 8, reach: 6 };
-/// A frame's own background: 44 px wide, so that a line of 12 px covers little more than a quarter of it.
-pub(crate) const OWN_BACKGROUND: Window = Window { block: 4, reach: 5 };
+/// A frame's own background: 104 px wide, so that a line of 25 px covers a quarter of it.
+pub(crate) const OWN_BACKGROUND: Window = Window { block: 8, reach: 6 };
 /// Least reach to which a window shrinks at the picture's border to stay centred, blocks.
 const LEAST_REACH: usize = 2;
 /// Share of a block's pixels that must be left for its mean to count.

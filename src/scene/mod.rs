@@ -95,7 +95,7 @@ pub struct Corrected {
 }
 
 impl Scene {
-    /// A scene without bare frames: residuals are taken against each frame's own smooth background (44 px wide), drift
+    /// A scene without bare frames: residuals are taken against each frame's own smooth background (104 px wide), drift
     /// against `first` (grey levels).
     pub fn without_bare(first: &Array2<f32>, settings: SceneSettings) -> Self {
         let first = first.as_standard_layout().to_owned();

@@ -75,7 +75,9 @@ fn refine(tracer: &Tracer, strand: &Strand) -> Refined {
         let shift = section.map_or(0.0, |s| s.offset.clamp(-SEARCH, SEARCH));
         let shift = if i < lead { 0.0 } else { shift };
         positions.push([vertex.p[0] + shift * vertex.n[0], vertex.p[1] + shift * vertex.n[1]]);
-        widths.push(section.map_or(strand.width, |s| s.width));
+        // Without a bare reference no profile is kept: the vertices have their places and widths already.
+        let width = if tracer.settings.bare_reference { strand.width } else { vertex.width };
+        widths.push(section.map_or(width, |s| s.width));
     }
     plant(tracer, strand, &mut positions, lead);
     straighten(&mut positions, lead);

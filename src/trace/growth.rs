@@ -15,6 +15,7 @@ use super::link::{self, Component, Ground, Start};
 use super::recent::{Corrected, Recent};
 use super::ridge::line_evidence;
 use super::settle::{self, EDGE_SHADE};
+use super::still;
 use super::tip::TipShape;
 use super::{prune, shoulders, thin, threshold};
 
@@ -46,13 +47,15 @@ pub struct TraceSettings {
     pub confirm_frames: usize,
     /// Leading usable frames in which nothing is looked for.
     pub bare: usize,
+    /// Whether frames are compared with bare ones; else each is searched against its own background.
+    pub bare_reference: bool,
     /// Expected number of false components per frame over the whole cell.
     pub false_alarms_per_frame: f64,
 }
 
 impl Default for TraceSettings {
     fn default() -> Self {
-        Self { confirm_frames: 2, bare: 0, false_alarms_per_frame: 1e-4 }
+        Self { confirm_frames: 2, bare: 0, bare_reference: true, false_alarms_per_frame: 1e-4 }
     }
 }
 
@@ -68,8 +71,8 @@ pub struct Tracer {
     pub(super) frames: Vec<usize>,
     pub(super) withdrawn: usize,
     pub(super) tip_shape: TipShape,
-    inside: Array2<bool>,
-    owners: Owners,
+    pub(super) inside: Array2<bool>,
+    pub(super) owners: Owners,
     high_z: f32,
 }
 
@@ -108,6 +111,10 @@ impl Tracer {
         if self.frames.len() <= self.settings.bare {
             return;
         }
+        if !self.settings.bare_reference {
+            still::push(self);
+            return;
+        }
         self.forest.truncate();
         self.claim_all();
         if let Some((median, sd)) = self.recent.median() {
@@ -124,11 +131,16 @@ impl Tracer {
         self.owners.strand.mapv(|s| s > 0)
     }
 
-    fn claim_all(&mut self) {
+    pub(super) fn claim_all(&mut self) {
         self.owners = Owners::new(self.noise.dim());
         for (index, strand) in self.forest.strands.iter().enumerate().filter(|(_, s)| !s.withdrawn) {
             self.owners.claim(index, strand, 0, CLAIM_MARGIN);
         }
+    }
+
+    /// Marks a strand's surroundings as its own.
+    pub(super) fn claim(&mut self, index: usize) {
+        self.owners.claim(index, &self.forest.strands[index], 0, CLAIM_MARGIN);
     }
 
     /// Finds what is new in `plane` and adds it to the forest as proposals; `ahead`: only what goes on from a tip.
@@ -177,7 +189,7 @@ impl Tracer {
 
     /// Whether a proposal leaves the ink that is traced already: its end does, and enough of its way. Lines found on the
     /// shoulder of a strong one slide onto its ridge and do not.
-    fn breaks_new_ground(&self, index: usize) -> bool {
+    pub(super) fn breaks_new_ground(&self, index: usize) -> bool {
         let strand = &self.forest.strands[index];
         let bare = |v: &Vertex| {
             let pixel = [v.p[1].round().max(0.0) as usize, v.p[0].round().max(0.0) as usize];
@@ -342,6 +354,10 @@ impl Tracer {
     /// The final trace from all frames taken in: the last frames are decided with the witnesses they have.
     #[must_use]
     pub fn finish(mut self) -> super::Trace {
+        if !self.settings.bare_reference {
+            still::finish(&mut self);
+            return super::finish::finish(&self);
+        }
         settle::date(&mut self, 0);
         if let Some(last) = self.recent.frames().back().cloned().filter(|_| self.frames.len() > 2) {
             self.forest.truncate();

@@ -15,6 +15,7 @@ pub mod recent;
 pub mod ridge;
 mod settle;
 mod shoulders;
+mod still;
 pub mod thin;
 pub mod threshold;
 mod tip;

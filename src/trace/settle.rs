@@ -126,7 +126,7 @@ fn picture_tip(tracer: &mut Tracer, index: usize, ordinal: usize) {
 
 /// The ordinal before which nothing of this strand's proposal can have arrived; `None` while its parent
 /// has not come that far.
-fn earliest_arrival(tracer: &Tracer, index: usize) -> Option<usize> {
+pub(super) fn earliest_arrival(tracer: &Tracer, index: usize) -> Option<usize> {
     let strand = &tracer.forest.strands[index];
     let floor = tracer.settings.bare;
     if let Some(last) = strand.decided.checked_sub(1) {
@@ -139,7 +139,7 @@ fn earliest_arrival(tracer: &Tracer, index: usize) -> Option<usize> {
 }
 
 /// Contrast of each proposed vertex in each frame of the window from ordinal `first` on.
-fn contrast_rows(tracer: &Tracer, strand: &Strand, first: usize) -> Vec<Vec<Option<Contrast>>> {
+pub(super) fn contrast_rows(tracer: &Tracer, strand: &Strand, first: usize) -> Vec<Vec<Option<Contrast>>> {
     let now = tracer.frames.len() - 1;
     let oldest = now + 1 - tracer.recent.frames().len();
     let core = core_of(strand.width, clarity(tracer, strand));
