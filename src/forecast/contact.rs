@@ -18,6 +18,8 @@ const FARTHEST: f64 = 2e3;
 const CHANGE_SHARE: f64 = 0.10;
 /// SD of the log of that rate against the old one: a factor of 1.8 either way.
 const CHANGE_SD: f64 = 0.6;
+/// Mean of that log: what changes a course for good (turns, blunting, a meeting) slows it more often than it speeds it up.
+const CHANGE_MEAN: f64 = 0.0;
 /// Relative SD of the rate that no record can exclude.
 const LEAST_SPREAD: f64 = 0.03;
 
@@ -147,7 +149,8 @@ impl Outlook {
         let spread = libm::log(1.0 + self.variance(ahead) / (travelled * travelled) + LEAST_SPREAD * LEAST_SPREAD);
         let lead = libm::log(travelled / self.remaining) - 0.5 * spread;
         let wide = spread + CHANGE_SD * CHANGE_SD;
-        (1.0 - CHANGE_SHARE) * normal_cdf(lead / spread.sqrt()) + CHANGE_SHARE * normal_cdf(lead / wide.sqrt())
+        (1.0 - CHANGE_SHARE) * normal_cdf(lead / spread.sqrt())
+            + CHANGE_SHARE * normal_cdf((lead + CHANGE_MEAN) / wide.sqrt())
     }
 }
 
