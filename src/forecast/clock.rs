@@ -74,10 +74,10 @@ impl Drive {
     }
 }
 
-/// Every drive the record has evidence about; time always comes first.
+/// Every drive that the record has evidence about or the plan changes; time always comes first.
 pub(crate) fn drives(record: &Record) -> Vec<Drive> {
     let mut drives = vec![Drive::new("time", record, 1.0, &|_| 1.0, &|_| None)];
-    if let Some(charge) = record.charge_mah.as_ref().filter(|charge| bends(&record.times_s, charge)) {
+    if let Some(charge) = record.charge_mah.as_ref().filter(|charge| told_apart(record, charge)) {
         let span = record.times_s[record.times_s.len() - 1] - record.times_s[0];
         // readings in seconds of mean current, so that drives are comparable; stripping does not turn the clock back
         let mean = charge.windows(2).map(|pair| (pair[1] - pair[0]).max(0.0)).sum::<f64>() / span;
@@ -86,7 +86,10 @@ pub(crate) fn drives(record: &Record) -> Vec<Drive> {
         let planned = |step: &super::PlanStep| step.current_ma.map(|current| current.max(0.0) / 3600.0 / mean);
         drives.push(Drive::new("charge passed", record, 1.0, &pace, &planned));
     }
-    if let Some(dose) = record.dose_mpa.as_ref().filter(|dose| range(dose) >= LEAST_DOSE_RANGE) {
+    let planned_doses: Vec<f64> = record.plan.iter().filter_map(|step| step.dose_mpa).collect();
+    if let Some(dose) =
+        record.dose_mpa.as_ref().filter(|dose| range(dose.iter().chain(&planned_doses)) >= LEAST_DOSE_RANGE)
+    {
         for strength in DOSE_STRENGTHS {
             let pace = |k: usize| libm::exp(-strength * dose[k]);
             let planned = |step: &super::PlanStep| step.dose_mpa.map(|dose| libm::exp(-strength * dose));
@@ -102,20 +105,21 @@ pub(crate) fn drives(record: &Record) -> Vec<Drive> {
     drives
 }
 
-/// Whether charge and time are far enough from proportional to be told apart.
-fn bends(times: &[f64], charge: &[f64]) -> bool {
+/// Whether charge and time say different things: in the past, or because the plan changes the current.
+fn told_apart(record: &Record, charge: &[f64]) -> bool {
+    let times = &record.times_s;
     let (Some(&t0), Some(&t1), Some(&q0), Some(&q1)) = (times.first(), times.last(), charge.first(), charge.last())
     else {
         return false;
     };
     let straight = |t: f64| q0 + (q1 - q0) * (t - t0) / (t1 - t0);
     let off = times.iter().zip(charge).map(|(&t, &q)| (q - straight(t)).abs()).fold(0.0, f64::max);
-    q1 > q0 && off > LEAST_CHARGE_BEND * (q1 - q0)
+    let planned = record.plan.iter().any(|step| step.current_ma.is_some());
+    q1 > q0 && (planned || off > LEAST_CHARGE_BEND * (q1 - q0))
 }
 
-fn range(values: &[f64]) -> f64 {
-    let (low, high) =
-        values.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), &v| (low.min(v), high.max(v)));
+fn range<'a>(values: impl Iterator<Item = &'a f64>) -> f64 {
+    let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), &v| (low.min(v), high.max(v)));
     high - low
 }
 

@@ -2,15 +2,18 @@
 
 use super::Input;
 use crate::forecast::short::{self, Grade};
-use crate::forecast::{Record, Settings, Silence, TipSeries, forecast, record};
+use crate::forecast::{PlanStep, Record, Settings, Silence, TipSeries, forecast, record};
 use crate::load::dose_mpa;
 use crate::measure::{ForecastRow, tip_uncertainty_px};
+use crate::run::PlannedStep;
 use crate::trace::Tracer;
 
 /// How much surer a decided depth is than one still provisional.
 const PROVISIONAL: f64 = 3.0;
 /// Samples of the cell log before an issue that are searched for a short.
 const SEARCHED: usize = 4000;
+/// What the model's name is followed by where the plan goes beyond the record.
+const EXTRAPOLATES: &str = ", extrapolated to a planned load or current that the run has not seen";
 /// Records kept to judge the forecasts by what came.
 const KEPT: usize = 60;
 
@@ -70,7 +73,7 @@ impl<'a> Forecasts<'a> {
             p975_s: q(6),
             horizon_s: told.horizon_s,
             chance_by_horizon: told.chance_by_horizon,
-            model: told.model,
+            model: if told.extrapolates { format!("{}{EXTRAPOLATES}", told.model) } else { told.model },
         });
         if self.rows.len().is_multiple_of(self.keep_every) {
             self.records.push(record);
@@ -115,8 +118,21 @@ impl<'a> Forecasts<'a> {
             charge_mah: self.times_s.iter().map(|&t| self.input.charge_mah(t)).collect(),
             dose_mpa: self.times_s.iter().map(|&t| self.dose(t)).collect(),
             issued_at_s,
-            plan: Vec::new(),
+            plan: self.plan(issued_at_s),
         }
+    }
+
+    /// The steps still to come. What a step leaves out of the load goes on as it is now.
+    fn plan(&self, issued_at_s: f64) -> Vec<PlanStep> {
+        let ahead = self.input.manifest.plan.steps.iter().filter(|step| step.time_s > issued_at_s);
+        let dose = |step: &PlannedStep| {
+            let root = self.input.edges.plating.middle();
+            let now = self.input.load.at(issued_at_s, Some(root));
+            let turned = step.direction_deg.and_then(|rig| self.input.load.axis.axis_deg(Some(rig), Some(root)));
+            step.stress_mpa.or(step.direction_deg)?;
+            Some(dose_of(self.input, step.stress_mpa.or(now.stress_mpa)?, turned.or(now.direction_deg)?))
+        };
+        ahead.map(|s| PlanStep { time_s: s.time_s, current_ma: s.current_ma, dose_mpa: dose(s) }).collect()
     }
 
     /// Dose at the middle of the plating edge.
@@ -137,9 +153,14 @@ impl<'a> Forecasts<'a> {
 pub(super) fn dose_at(input: &Input, time_s: f64) -> Option<f64> {
     let root = input.edges.plating.middle();
     let state = input.load.at(time_s, Some(root));
-    let direction = input.edges.plating.nearest(root).direction;
+    Some(dose_of(input, state.stress_mpa?, state.direction_deg?))
+}
+
+/// Dose of a stress along a load axis, at the middle of the plating edge, MPa.
+fn dose_of(input: &Input, stress_mpa: f64, axis_deg: f64) -> f64 {
+    let direction = input.edges.plating.nearest(input.edges.plating.middle()).direction;
     let edge = crate::measure::geometry::axial_deg(direction[0], direction[1]);
-    Some(dose_mpa(state.stress_mpa?, state.direction_deg?, edge))
+    dose_mpa(stress_mpa, axis_deg, edge)
 }
 
 /// Shorts in the last `most` samples of the cell log up to a time.
