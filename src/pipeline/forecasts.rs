@@ -17,6 +17,15 @@ const EXTRAPOLATES: &str = ", extrapolated to a planned load or current that the
 /// Records kept to judge the forecasts by what came.
 const KEPT: usize = 60;
 
+/// The run's own record of forecasts, in words.
+#[derive(Debug, Clone, Default)]
+pub(super) struct Calibration {
+    /// What is off; `None` where chance explains it.
+    pub(super) off: Option<String>,
+    /// The coverages.
+    pub(super) shown: Option<String>,
+}
+
 /// Issues forecasts while the run is followed.
 pub(super) struct Forecasts<'a> {
     input: &'a Input,
@@ -80,10 +89,11 @@ impl<'a> Forecasts<'a> {
         }
     }
 
-    /// What the forecasts' own record says, where its calibration is off.
-    pub(super) fn calibration(&self) -> Option<String> {
-        let outcome = self.records.last()?;
-        record::verdict(&record::score(&self.records, outcome))
+    /// How depths predicted 1, 3 and 10 frames ahead compared with those then measured.
+    pub(super) fn calibration(&self) -> Calibration {
+        let Some(outcome) = self.records.last() else { return Calibration::default() };
+        let scores = record::score(&self.records, outcome);
+        Calibration { off: record::verdict(&scores), shown: record::shown(&scores) }
     }
 
     fn tips(&self, tracer: &Tracer) -> Vec<TipSeries> {
