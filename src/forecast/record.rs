@@ -47,7 +47,9 @@ pub fn score(records: &[Record], outcome: &Record) -> [Ahead; 3] {
 
 /// Chance the record gave to depths up to the one measured `steps` frames after its last.
 fn transform(record: &Record, outcome: &Record, steps: usize) -> Option<f64> {
-    let at = record.times_s.len() - 1 + steps;
+    // ahead of the issue, not of the last depth known by then
+    let issued = outcome.times_s.partition_point(|&t| t <= record.issued_at_s).checked_sub(1)?;
+    let at = issued.max(record.times_s.len() - 1) + steps;
     let time = *outcome.times_s.get(at)?;
     let tips = outcome.tips.iter().filter_map(|tip| {
         let k = at.checked_sub(tip.first)?;

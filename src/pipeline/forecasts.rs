@@ -10,6 +10,9 @@ use crate::trace::Tracer;
 
 /// How much surer a decided depth is than one still provisional.
 const PROVISIONAL: f64 = 3.0;
+/// Newest frames whose depth is not used: what a frame shows is the median of the last three, so that a moving tip stands up to
+/// a frame's growth behind there and would be taken for a slower one.
+const LAGGING: usize = 1;
 /// Samples of the cell log before an issue that are searched for a short.
 const SEARCHED: usize = 4000;
 /// What the model's name is followed by where the plan goes beyond the record.
@@ -121,12 +124,13 @@ impl<'a> Forecasts<'a> {
     }
 
     fn record(&self, tips: Vec<TipSeries>, issued_at_s: f64) -> Record {
+        let times_s = self.times_s[..self.times_s.len().saturating_sub(LAGGING)].to_vec();
         Record {
-            times_s: self.times_s.clone(),
-            tips,
+            tips: tips.into_iter().filter_map(|tip| upto(tip, times_s.len())).collect(),
             gap_um: self.input.gap_um(),
-            charge_mah: self.times_s.iter().map(|&t| self.input.charge_mah(t)).collect(),
-            dose_mpa: self.times_s.iter().map(|&t| self.dose(t)).collect(),
+            charge_mah: times_s.iter().map(|&t| self.input.charge_mah(t)).collect(),
+            dose_mpa: times_s.iter().map(|&t| self.dose(t)).collect(),
+            times_s,
             issued_at_s,
             plan: self.plan(issued_at_s),
         }
@@ -157,6 +161,19 @@ impl<'a> Forecasts<'a> {
         }
         electrical_shorts(self.input, time_s, SEARCHED).iter().any(|e| e.grade == Grade::Full)
     }
+}
+
+/// A filament as known before the newest frames; contact is known at once.
+fn upto(mut tip: TipSeries, frames: usize) -> Option<TipSeries> {
+    let touches = tip.remaining_um.last().is_some_and(|&left| left <= 0.0);
+    let known = frames.checked_sub(tip.first).filter(|&n| n > 0)?;
+    for series in [&mut tip.depth_um, &mut tip.u_depth_um, &mut tip.remaining_um] {
+        series.truncate(known);
+    }
+    if let Some(last) = tip.remaining_um.last_mut().filter(|_| touches) {
+        *last = 0.0;
+    }
+    Some(tip)
 }
 
 /// Dose at the middle of the plating edge, MPa.
