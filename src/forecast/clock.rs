@@ -21,7 +21,7 @@ const STEEPS: [f64; 3] = [3.0, 5.0, 8.0];
 /// When their pace is greatest, in the same parts: behind or still ahead.
 const MIDDLES: [f64; 4] = [0.4, 0.6, 0.8, 1.1];
 /// Prior weight of all of them, where that of a steady course of one onset is 1.
-const SIGMOIDS: f64 = 4.0;
+const SIGMOIDS: f64 = 2.0;
 /// Strengths β of the dose, 1/MPa: at 100 MPa the pace falls to 78, 61 and 37 %.
 const DOSE_STRENGTHS: [f64; 3] = [0.0025, 0.005, 0.01];
 /// Least range of the dose, MPa, from which its effect can be told.

@@ -14,7 +14,7 @@ const RESOLVED: f64 = 1.5;
 /// Frames that any filament may stand before it is in doubt.
 const ALLOWED_FRAMES: f64 = 6.0;
 /// The same in parts of the longest earlier pause.
-const ALLOWED_PARTS: f64 = 1.5;
+const ALLOWED_PARTS: f64 = 1.7;
 /// How steeply doubt becomes near certainty: chance = 1/(1 + (stood/allowed)^STEEPNESS).
 const STEEPNESS: f64 = 6.0;
 
