@@ -301,7 +301,7 @@ mod tests {
     use super::*;
 
     fn table(laws: &[Law], frames: usize, roughness: f64, runs: u64) -> Table {
-        let table = run(laws, &Fleet { frames, roughness, seed: 2026 }, runs);
+        let table = run(laws, &Fleet { frames, roughness, seed: 4242 }, runs);
         println!("{table}");
         table
     }
