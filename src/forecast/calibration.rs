@@ -326,7 +326,7 @@ mod tests {
         let sizes: &[(usize, f64, u64)] = if std::env::var_os("VEERLOG_FULL").is_some() {
             &[(40, 0.4, 120), (40, 1.0, 120), (300, 0.4, 40), (300, 1.0, 40)]
         } else {
-            &[(40, 0.7, 14)]
+            &[(40, 0.7, 40)]
         };
         let tables = |laws| sizes.iter().map(|&(frames, rough, runs)| table(laws, frames, rough, runs)).collect();
         let own: Vec<Table> = tables(&LAWS);

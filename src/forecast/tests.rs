@@ -149,6 +149,22 @@ fn growth_that_follows_charge_is_forecast_by_charge() {
 }
 
 #[test]
+fn a_planned_current_counts_even_where_charge_and_time_ran_together() {
+    // 1 mA throughout; 3 mA planned
+    let steady =
+        Record { charge_mah: Some((0..=20).map(|k| f64::from(k) / 60.0).collect()), ..record(20, |k| 10.0 * k) };
+    let planned = |current| Record {
+        plan: vec![PlanStep { time_s: 1200.0, current_ma: Some(current), dose_mpa: None }],
+        ..steady.clone()
+    };
+    let (before, three) = (median_of(&steady), forecast(&planned(3.0), &Settings::default()));
+    assert!(three.extrapolates && !forecast(&planned(1.0), &Settings::default()).extrapolates);
+    // by charge alone a third of 20 frames, by time alone all of them: nothing in the record tells which
+    let after = three.quantiles_s.unwrap();
+    assert!(after[3] < before - 120.0 && after[1] < 1200.0 + 10.0 * 60.0, "{before} {after:?}");
+}
+
+#[test]
 fn growth_that_follows_the_dose_slows_when_a_higher_one_is_planned() {
     let dose: Vec<f64> = (0..=30).map(|k| if (k / 6) % 2 == 0 { 0.0 } else { 100.0 }).collect();
     let mut depth = vec![0.0];

@@ -202,3 +202,22 @@ pub(super) fn electrical_shorts(input: &Input, until_s: f64, most: usize) -> Vec
     let column = |pick: fn(&(f64, f64, f64)) -> f64| samples.iter().map(pick).collect::<Vec<f64>>();
     short::find(&column(|s| s.0), &column(|s| s.1), &column(|s| s.2), &short::Settings::default())
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn the_newest_depth_is_left_out_but_contact_is_not() {
+        let tip = |left: f64| TipSeries {
+            filament: 1,
+            first: 3,
+            depth_um: vec![4.0, 6.0, 9.0],
+            u_depth_um: vec![1.0; 3],
+            remaining_um: vec![6.0, 4.0, left],
+        };
+        assert_eq!(upto(tip(1.0), 5).unwrap().remaining_um, [6.0, 4.0]);
+        assert_eq!(upto(tip(0.0), 5).unwrap().remaining_um, [6.0, 0.0]);
+        assert_eq!(upto(tip(1.0), 3), None);
+    }
+}
