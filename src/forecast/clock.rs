@@ -16,6 +16,12 @@ const BEND_SD: f64 = 0.45;
 const ONSETS: [f64; 4] = [0.0, 0.05, 0.25, 1.5];
 /// Least power of time: below it growth has practically a limit, and "when, given that contact comes" no answer.
 const LEAST_POWER: f64 = 0.3;
+/// Steepness of logistic courses, in parts of the time seen.
+const STEEPS: [f64; 3] = [3.0, 5.0, 8.0];
+/// When their pace is greatest, in the same parts: behind or still ahead.
+const MIDDLES: [f64; 4] = [0.4, 0.6, 0.8, 1.1];
+/// Prior weight of all of them, where that of a steady course of one onset is 1.
+const SIGMOIDS: f64 = 2.0;
 /// Strengths β of the dose, 1/MPa: at 100 MPa the pace falls to 78, 61 and 37 %.
 const DOSE_STRENGTHS: [f64; 3] = [0.0025, 0.005, 0.01];
 /// Least range of the dose, MPa, from which its effect can be told.
@@ -68,10 +74,10 @@ impl Drive {
     }
 }
 
-/// Every drive the record has evidence about; time always comes first.
+/// Every drive that the record has evidence about or the plan changes; time always comes first.
 pub(crate) fn drives(record: &Record) -> Vec<Drive> {
     let mut drives = vec![Drive::new("time", record, 1.0, &|_| 1.0, &|_| None)];
-    if let Some(charge) = record.charge_mah.as_ref().filter(|charge| bends(&record.times_s, charge)) {
+    if let Some(charge) = record.charge_mah.as_ref().filter(|charge| told_apart(record, charge)) {
         let span = record.times_s[record.times_s.len() - 1] - record.times_s[0];
         // readings in seconds of mean current, so that drives are comparable; stripping does not turn the clock back
         let mean = charge.windows(2).map(|pair| (pair[1] - pair[0]).max(0.0)).sum::<f64>() / span;
@@ -80,7 +86,10 @@ pub(crate) fn drives(record: &Record) -> Vec<Drive> {
         let planned = |step: &super::PlanStep| step.current_ma.map(|current| current.max(0.0) / 3600.0 / mean);
         drives.push(Drive::new("charge passed", record, 1.0, &pace, &planned));
     }
-    if let Some(dose) = record.dose_mpa.as_ref().filter(|dose| range(dose) >= LEAST_DOSE_RANGE) {
+    let planned_doses: Vec<f64> = record.plan.iter().filter_map(|step| step.dose_mpa).collect();
+    if let Some(dose) =
+        record.dose_mpa.as_ref().filter(|dose| range(dose.iter().chain(&planned_doses)) >= LEAST_DOSE_RANGE)
+    {
         for strength in DOSE_STRENGTHS {
             let pace = |k: usize| libm::exp(-strength * dose[k]);
             let planned = |step: &super::PlanStep| step.dose_mpa.map(|dose| libm::exp(-strength * dose));
@@ -96,20 +105,21 @@ pub(crate) fn drives(record: &Record) -> Vec<Drive> {
     drives
 }
 
-/// Whether charge and time are far enough from proportional to be told apart.
-fn bends(times: &[f64], charge: &[f64]) -> bool {
+/// Whether charge and time say different things: in the past, or because the plan changes the current.
+fn told_apart(record: &Record, charge: &[f64]) -> bool {
+    let times = &record.times_s;
     let (Some(&t0), Some(&t1), Some(&q0), Some(&q1)) = (times.first(), times.last(), charge.first(), charge.last())
     else {
         return false;
     };
     let straight = |t: f64| q0 + (q1 - q0) * (t - t0) / (t1 - t0);
     let off = times.iter().zip(charge).map(|(&t, &q)| (q - straight(t)).abs()).fold(0.0, f64::max);
-    q1 > q0 && off > LEAST_CHARGE_BEND * (q1 - q0)
+    let planned = record.plan.iter().any(|step| step.current_ma.is_some());
+    q1 > q0 && (planned || off > LEAST_CHARGE_BEND * (q1 - q0))
 }
 
-fn range(values: &[f64]) -> f64 {
-    let (low, high) =
-        values.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), &v| (low.min(v), high.max(v)));
+fn range<'a>(values: impl Iterator<Item = &'a f64>) -> f64 {
+    let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), &v| (low.min(v), high.max(v)));
     high - low
 }
 
@@ -147,37 +157,69 @@ pub(crate) struct Clock {
     name: &'static str,
     onset: f64,
     span: f64,
-    bend: f64,
-    power: f64,
-    /// Integral of the pace from first sight to the end of the record.
+    course: Course,
+    /// Integral of the pace from onset to first sight, and from there to the end of the record.
+    unseen: f64,
     whole: f64,
+    /// Log of the pace now against the pace half-way through the time seen.
+    bend: f64,
     /// Log of its prior weight, up to a constant.
     pub(crate) log_prior: f64,
 }
 
+/// How the pace goes with the part of the span passed.
+#[derive(Debug, Clone, Copy)]
+enum Course {
+    /// part^(power − 1).
+    Power(f64),
+    /// Logistic: steepness, and the part at which the pace is greatest.
+    Sigmoid(f64, f64),
+}
+
+impl Course {
+    /// Integral of the pace up to `part`, up to a constant.
+    fn integral(self, part: f64) -> f64 {
+        match self {
+            Self::Power(power) if power.abs() < 1e-6 => libm::log(part),
+            Self::Power(power) => libm::pow(part, power) / power,
+            Self::Sigmoid(steep, middle) => 1.0 / (1.0 + libm::exp(-steep * (part - middle))),
+        }
+    }
+
+    fn pace(self, part: f64) -> f64 {
+        match self {
+            Self::Power(power) => libm::pow(part, power - 1.0),
+            Self::Sigmoid(..) => {
+                let passed = self.integral(part);
+                passed * (1.0 - passed)
+            }
+        }
+    }
+}
+
 impl Clock {
     /// `seen`: reading half a frame before first sight; `now`: at the end of the record; `before`: from onset to `seen`.
-    fn new(drive: usize, source: &Drive, seen: f64, now: f64, before: f64, bend: f64) -> Self {
+    fn new(drive: usize, source: &Drive, seen: f64, now: f64, before: f64, course: Course, log_prior: f64) -> Self {
         let span = now - seen + before;
-        let power = 1.0 + bend / libm::log(span / (0.5 * (now - seen) + before));
-        let off = bend / BEND_SD;
-        let log_prior = libm::log(source.prior) - 0.5 * off * off;
+        let (first, half) = (before / span, (before + 0.5 * (now - seen)) / span);
+        let unseen = course.integral(first);
         Self {
             drive,
             name: source.name,
             onset: seen - before,
             span,
-            bend,
-            power,
-            whole: -integral(before / span, power),
-            log_prior,
+            course,
+            unseen,
+            whole: course.integral(1.0) - unseen,
+            bend: libm::log(course.pace(1.0) / course.pace(half)),
+            log_prior: log_prior + libm::log(source.prior),
         }
     }
 
     /// Progress at a reading of the drive: 0 at first sight (or earlier), 1 at the end of the record.
     pub(crate) fn progress(&self, tick: f64) -> f64 {
         let part = (tick - self.onset) / self.span;
-        if part <= 0.0 { 0.0 } else { (1.0 + integral(part, self.power) / self.whole).max(0.0) }
+        if part <= 0.0 { 0.0 } else { ((self.course.integral(part) - self.unseen) / self.whole).max(0.0) }
     }
 
     /// The law in words, for a table.
@@ -191,14 +233,9 @@ impl Clock {
     }
 }
 
-/// ∫ u^(power − 1) du from 1 to `part`.
-fn integral(part: f64, power: f64) -> f64 {
-    if power.abs() < 1e-6 { libm::log(part) } else { (libm::pow(part, power) - 1.0) / power }
-}
-
 /// All hypotheses over the given drives. `first`: index of the first depth of any filament.
 pub(crate) fn clocks(drives: &[Drive], first: usize) -> Vec<Clock> {
-    let mut all = Vec::with_capacity(drives.len() * BENDS.len() * ONSETS.len());
+    let mut all = Vec::with_capacity(drives.len() * (BENDS.len() * ONSETS.len() + STEEPS.len() * MIDDLES.len()));
     for (index, drive) in drives.iter().enumerate() {
         let now = drive.ticks[drive.ticks.len() - 1];
         let sight = drive.ticks[first];
@@ -208,10 +245,22 @@ pub(crate) fn clocks(drives: &[Drive], first: usize) -> Vec<Clock> {
         }
         let frame = if first > 0 { sight - drive.ticks[first - 1] } else { drive.ticks[first + 1] - sight };
         let half = 0.5 * frame.max(1e-3 * elapsed);
+        let seen = sight - half;
         for part in ONSETS {
-            let seen = sight - half;
-            let laws = BENDS.iter().map(|&bend| Clock::new(index, drive, seen, now, 0.2 * half + part * elapsed, bend));
-            all.extend(laws.filter(|clock| clock.power >= LEAST_POWER));
+            let before = 0.2 * half + part * elapsed;
+            let halfway = libm::log((now - seen + before) / (0.5 * (now - seen) + before));
+            for bend in BENDS {
+                let (power, off) = (1.0 + bend / halfway, bend / BEND_SD);
+                if power >= LEAST_POWER {
+                    let course = Course::Power(power);
+                    all.push(Clock::new(index, drive, seen, now, before, course, -0.5 * off * off));
+                }
+            }
+        }
+        let share = libm::log(SIGMOIDS / (STEEPS.len() * MIDDLES.len()) as f64);
+        for steep in STEEPS {
+            let sigmoids = MIDDLES.map(|middle| Course::Sigmoid(steep, middle));
+            all.extend(sigmoids.map(|course| Clock::new(index, drive, seen, now, 0.2 * half, course, share)));
         }
     }
     all

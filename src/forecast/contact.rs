@@ -9,18 +9,19 @@ use super::growth::{Fits, Outlook};
 use super::{LEVELS, Record};
 
 /// Times at which the law is held.
-const TIMES: usize = 72;
+const TIMES: usize = 60;
 /// First and last of them, in parts of the plain expectation of the time left; evenly spaced in the log.
-const NEAREST: f64 = 2e-3;
+const NEAREST: f64 = 4e-3;
 /// See [`NEAREST`].
-const FARTHEST: f64 = 2e3;
+const FARTHEST: f64 = 4e2;
 /// Chance that the rest of the way is run at a lastingly different rate (turn, new branch, fault).
 const CHANGE_SHARE: f64 = 0.10;
 /// SD of the log of that rate against the old one: a factor of 1.8 either way.
 const CHANGE_SD: f64 = 0.6;
 /// Relative SD of the rate that no record can exclude.
 const LEAST_SPREAD: f64 = 0.03;
-
+/// Standard deviations beyond which arrival is certain, or out of the question.
+const CERTAIN: f64 = 6.0;
 /// Least rate a standing filament is given, in parts of the one that would just arrive; only keeps the logarithm finite.
 const LEAST_RATE: f64 = 0.05;
 
@@ -147,6 +148,9 @@ impl Outlook {
         let spread = libm::log(1.0 + self.variance(ahead) / (travelled * travelled) + LEAST_SPREAD * LEAST_SPREAD);
         let lead = libm::log(travelled / self.remaining) - 0.5 * spread;
         let wide = spread + CHANGE_SD * CHANGE_SD;
+        if lead * lead > CERTAIN * CERTAIN * wide {
+            return if lead > 0.0 { 1.0 } else { 0.0 };
+        }
         (1.0 - CHANGE_SHARE) * normal_cdf(lead / spread.sqrt()) + CHANGE_SHARE * normal_cdf(lead / wide.sqrt())
     }
 }

@@ -28,9 +28,21 @@ pub enum Law {
     Deflected,
     /// Any course, ended by a lasting standstill or a turn along the plates.
     Stalled,
+    /// Second family: a power of time between one half and two.
+    TimePower,
+    /// Second family: Weibull's course towards a plateau beyond the gap.
+    Weibull,
+    /// Second family: logistic in time.
+    Sigmoid,
+    /// Second family: stretches of constant rate.
+    Stretches,
+    /// Second family: the log of the rate wanders and returns (Ornstein–Uhlenbeck).
+    LogRate,
+    /// Second family: gamma increments.
+    GammaSteps,
 }
 
-/// Every law, in the order in which fleets draw them.
+/// The first family, in the order in which fleets draw it.
 pub const LAWS: [Law; 9] = [
     Law::Steady,
     Law::Power,
@@ -42,6 +54,10 @@ pub const LAWS: [Law; 9] = [
     Law::Deflected,
     Law::Stalled,
 ];
+
+/// The second family (`strangers`): growth that shares nothing with the first.
+pub const STRANGERS: [Law; 6] =
+    [Law::TimePower, Law::Weibull, Law::Sigmoid, Law::Stretches, Law::LogRate, Law::GammaSteps];
 
 /// Steps of the simulation a frame.
 pub(crate) const FINE: usize = 6;

@@ -24,8 +24,12 @@ const WANDERS: [f64; 3] = [0.05, 0.2, 0.5];
 const WANDER_WEIGHTS: [f64; 3] = [0.5, 0.35, 0.15];
 /// Share of progress below which the wander no longer speeds up (the log would run away at the onset).
 const WANDER_FLOOR: f64 = 0.1;
-/// Hypotheses lighter than this, against the heaviest, are dropped.
-const LIGHTEST: f64 = 1e-3;
+/// The heaviest hypotheses that together hold this share of the weight are kept.
+const KEPT: f64 = 0.995;
+/// Slots of the noise grid that scout a hypothesis, and how far below the best, as a log, it is not worth the whole grid.
+const SCOUTS: [usize; 3] = [0, 4, 8];
+/// See [`SCOUTS`].
+const HOPELESS: f64 = 9.0;
 
 /// What one filament is expected to do under one hypothesis about the clock. Progress counts from 1 at the end of the record.
 #[derive(Debug, Clone, Copy)]
@@ -66,21 +70,33 @@ pub(crate) fn fit(record: &Record) -> Fits {
     };
     let knots = knots(first.saturating_sub(1), record.times_s.len() - 1);
     let drives = drives(record);
-    let mut hypotheses: Vec<Hypothesis> = clocks(&drives, first)
-        .into_iter()
-        .map(|clock| weigh(record, &tips, &knots, &drives[clock.drive], clock))
-        .collect();
-    let heaviest = hypotheses.iter().map(|h| h.weight).fold(f64::NEG_INFINITY, f64::max);
-    for hypothesis in &mut hypotheses {
+    let paths: Vec<Path> =
+        clocks(&drives, first).into_iter().map(|clock| Path::new(clock, &drives[clock.drive], &knots)).collect();
+    let scouted: Vec<f64> = paths.iter().map(|path| path.scout(record, &tips, &knots)).collect();
+    let best = scouted.iter().copied().fold(f64::NEG_INFINITY, f64::max);
+    let hopeful = paths.iter().zip(scouted).filter(|(_, weight)| *weight >= best - HOPELESS);
+    let mut hypotheses: Vec<Hypothesis> = hopeful.map(|(path, _)| path.weigh(record, &tips, &knots)).collect();
+    settle(&mut hypotheses);
+    Fits { tips, hypotheses, drives }
+}
+
+/// From log weights to shares, heaviest first, without the lightest.
+fn settle(hypotheses: &mut Vec<Hypothesis>) {
+    hypotheses.sort_by(|a, b| b.weight.total_cmp(&a.weight));
+    let heaviest = hypotheses.first().map_or(0.0, |h| h.weight);
+    for hypothesis in hypotheses.iter_mut() {
         hypothesis.weight = libm::exp(hypothesis.weight - heaviest);
     }
-    hypotheses.retain(|h| h.weight >= LIGHTEST);
-    let total: f64 = hypotheses.iter().map(|h| h.weight).sum();
-    for hypothesis in &mut hypotheses {
-        hypothesis.weight /= total;
+    let enough = KEPT * hypotheses.iter().map(|h| h.weight).sum::<f64>();
+    let mut kept = 0.0;
+    hypotheses.retain(|h| {
+        let wanted = kept < enough;
+        kept += if wanted { h.weight } else { 0.0 };
+        wanted
+    });
+    for hypothesis in hypotheses {
+        hypothesis.weight /= kept;
     }
-    hypotheses.sort_by(|a, b| b.weight.total_cmp(&a.weight));
-    Fits { tips, hypotheses, drives }
 }
 
 /// The filaments nearest to contact by remaining distance over mean pace.
@@ -109,26 +125,53 @@ fn knots(from: usize, to: usize) -> Vec<usize> {
     all
 }
 
-/// Sums over the noise grid; the weight of the result is still a log.
-fn weigh(record: &Record, tips: &[usize], knots: &[usize], drive: &Drive, clock: Clock) -> Hypothesis {
-    let progress: Vec<f64> = knots.iter().map(|&k| clock.progress(drive.ticks[k])).collect();
-    let logs: Vec<f64> = progress.iter().map(|&s| libm::log(s + WANDER_FLOOR)).collect();
-    let mut candidates = [(f64::NEG_INFINITY, [State::default(); TIPS]); GRAINS.len() * WANDERS.len()];
-    for (slot, candidate) in candidates.iter_mut().enumerate() {
-        let (grain, wander) = (GRAINS[slot / WANDERS.len()], WANDERS[slot % WANDERS.len()]);
-        candidate.0 = libm::log(WANDER_WEIGHTS[slot % WANDERS.len()]);
-        for (state, &tip) in candidate.1.iter_mut().zip(tips) {
-            *state = filter(&record.tips[tip], knots, &progress, &logs, grain, wander);
-            candidate.0 += state.log_likelihood;
-        }
+/// A clock read at the knots.
+struct Path {
+    clock: Clock,
+    progress: Vec<f64>,
+    /// Log of the progress, held back near the onset.
+    logs: Vec<f64>,
+}
+
+impl Path {
+    fn new(clock: Clock, drive: &Drive, knots: &[usize]) -> Self {
+        let progress: Vec<f64> = knots.iter().map(|&k| clock.progress(drive.ticks[k])).collect();
+        let logs = progress.iter().map(|&s| libm::log(s + WANDER_FLOOR)).collect();
+        Self { clock, progress, logs }
     }
-    let best = candidates.iter().map(|c| c.0).fold(f64::NEG_INFINITY, f64::max);
-    let weights = candidates.map(|c| libm::exp(c.0 - best));
-    let total: f64 = weights.iter().sum();
-    let outlooks = (0..tips.len())
-        .map(|t| merge(&record.tips[tips[t]], &weights.map(|w| w / total), &candidates.map(|c| c.1[t])))
-        .collect();
-    Hypothesis { clock, weight: clock.log_prior + best + libm::log(total), outlooks }
+
+    /// States of the filaments under one slot of the noise grid, and the log of the slot's weight.
+    fn under(&self, slot: usize, record: &Record, tips: &[usize], knots: &[usize]) -> (f64, [State; TIPS]) {
+        let (grain, wander) = (GRAINS[slot / WANDERS.len()], WANDERS[slot % WANDERS.len()]);
+        let mut states = [State::default(); TIPS];
+        let mut weight = libm::log(WANDER_WEIGHTS[slot % WANDERS.len()]);
+        for (state, &tip) in states.iter_mut().zip(tips) {
+            *state = filter(&record.tips[tip], knots, &self.progress, &self.logs, grain, wander);
+            weight += state.log_likelihood;
+        }
+        (weight, states)
+    }
+
+    /// About the log weight of the hypothesis, from a few slots.
+    fn scout(&self, record: &Record, tips: &[usize], knots: &[usize]) -> f64 {
+        let weights = SCOUTS.map(|slot| self.under(slot, record, tips, knots).0);
+        self.clock.log_prior + weights.into_iter().fold(f64::NEG_INFINITY, f64::max)
+    }
+
+    /// Sums over the noise grid; the weight of the result is still a log.
+    fn weigh(&self, record: &Record, tips: &[usize], knots: &[usize]) -> Hypothesis {
+        let mut candidates = [(f64::NEG_INFINITY, [State::default(); TIPS]); GRAINS.len() * WANDERS.len()];
+        for (slot, candidate) in candidates.iter_mut().enumerate() {
+            *candidate = self.under(slot, record, tips, knots);
+        }
+        let best = candidates.iter().map(|c| c.0).fold(f64::NEG_INFINITY, f64::max);
+        let weights = candidates.map(|c| libm::exp(c.0 - best));
+        let total: f64 = weights.iter().sum();
+        let outlooks = (0..tips.len())
+            .map(|t| merge(&record.tips[tips[t]], &weights.map(|w| w / total), &candidates.map(|c| c.1[t])))
+            .collect();
+        Hypothesis { clock: self.clock, weight: self.clock.log_prior + best + libm::log(total), outlooks }
+    }
 }
 
 #[derive(Debug, Clone, Copy, Default)]
@@ -158,6 +201,7 @@ fn filter(tip: &TipSeries, knots: &[usize], progress: &[f64], logs: &[f64], grai
     let mut state = State { depth: base, rate: pace, dd: blur * blur, rr: 4.0 * pace * pace, ..State::default() };
     state.grain = grain * grain * top * pace;
     state.wander = wander * wander * pace * pace;
+    let (mut misfit, mut volume) = (0.0, 1.0);
     for k in start + 1..knots.len() {
         let step = progress[k] - progress[k - 1];
         let drift = state.wander * (logs[k] - logs[k - 1]);
@@ -169,7 +213,9 @@ fn filter(tip: &TipSeries, knots: &[usize], progress: &[f64], logs: &[f64], grai
         let u = tip.u_depth_um[at].max(1e-3 * top);
         let spread = state.dd + u * u;
         let miss = tip.depth_um[at] - state.depth;
-        state.log_likelihood -= 0.5 * (miss * miss / spread + libm::log(spread));
+        misfit += miss * miss / spread;
+        // one logarithm for all knots: in parts of the depth, the product of ten variances stays far from the limits of f64
+        volume *= spread / (top * top);
         let (gain, turn) = (state.dd / spread, state.dr / spread);
         state.depth += gain * miss;
         state.rate += turn * miss;
@@ -177,6 +223,7 @@ fn filter(tip: &TipSeries, knots: &[usize], progress: &[f64], logs: &[f64], grai
         state.dr -= gain * state.dr;
         state.dd -= gain * state.dd;
     }
+    state.log_likelihood = -0.5 * (misfit + libm::log(volume));
     state
 }
 

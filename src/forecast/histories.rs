@@ -8,7 +8,7 @@ use rand::{RngExt, SeedableRng};
 use rand_chacha::ChaCha8Rng;
 
 use super::courses::{Course, FINE, exponential, normal};
-pub use super::courses::{LAWS, Law};
+pub use super::courses::{LAWS, Law, STRANGERS};
 use super::{Record, TipSeries};
 
 /// Leading frames before any growth.
@@ -85,6 +85,9 @@ pub struct Fleet {
 /// assert_eq!(run.times_s, draw(Law::Deflected, &fleet, 3).times_s);
 /// ```
 pub fn draw(law: Law, fleet: &Fleet, index: u64) -> History {
+    if STRANGERS.contains(&law) {
+        return super::strangers::draw(law, fleet, index);
+    }
     let Fleet { frames, roughness, seed } = *fleet;
     let mut rng = ChaCha8Rng::seed_from_u64(seed);
     rng.set_stream(index);
@@ -125,14 +128,14 @@ pub fn draw(law: Law, fleet: &Fleet, index: u64) -> History {
 }
 
 /// Step (with its fraction) at which the depth first reaches the gap.
-fn crossing(depth: &[f64], gap: f64) -> Option<f64> {
+pub(super) fn crossing(depth: &[f64], gap: f64) -> Option<f64> {
     let at = depth.iter().position(|&d| d >= gap)?;
     let before = if at > 0 { depth[at - 1] } else { 0.0 };
     Some(at as f64 - 1.0 + (gap - before) / (depth[at] - before))
 }
 
 /// The measured series of one filament: noise, never falling, from the first frame at which it stands out.
-fn seen(
+pub(super) fn seen(
     number: usize,
     truth: &[f64],
     offset: usize,

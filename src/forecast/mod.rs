@@ -16,6 +16,7 @@ pub mod histories;
 mod pauses;
 pub mod record;
 pub mod short;
+mod strangers;
 
 pub use ahead::depth_ahead;
 pub use first_passage::FirstPassage;

@@ -9,10 +9,12 @@ use super::{Record, TipSeries};
 const INVENTED: f64 = 2.5;
 /// Share of the earlier pace below which growth counts as standing (growth along the plates still creeps).
 const CREEP: f64 = 0.15;
+/// Usual gain, in parts of what measurement can invent, from which a smaller one tells of a pause.
+const RESOLVED: f64 = 1.5;
 /// Frames that any filament may stand before it is in doubt.
 const ALLOWED_FRAMES: f64 = 6.0;
 /// The same in parts of the longest earlier pause.
-const ALLOWED_PARTS: f64 = 1.9;
+const ALLOWED_PARTS: f64 = 1.7;
 /// How steeply doubt becomes near certainty: chance = 1/(1 + (stood/allowed)^STEEPNESS).
 const STEEPNESS: f64 = 6.0;
 
@@ -36,16 +38,18 @@ pub(crate) fn growing(record: &Record, tip: &TipSeries) -> f64 {
 fn standing(times: &[f64], tip: &TipSeries, at: usize, onset: f64) -> f64 {
     let depth = &tip.depth_um;
     let mut from = at;
-    while from > 0 {
-        let earlier = from - 1;
+    for earlier in (0..at).rev() {
         let stood = times[at] - times[earlier];
-        let pace = depth[earlier] / (times[earlier] - onset);
+        let usual = stood * depth[earlier] / (times[earlier] - onset);
         let invented = INVENTED * tip.u_depth_um[at].max(tip.u_depth_um[earlier]);
         let gained = depth[at] - depth[earlier];
-        if gained > invented.max(CREEP * pace * stood) || pace * stood < 1.5 * invented && gained > 0.0 {
+        if gained > invented.max(CREEP * usual) {
             break;
         }
-        from = earlier;
+        // a small gain over a time too short to tell neither ends a pause nor makes one
+        if gained <= 0.0 || usual > RESOLVED * invented {
+            from = earlier;
+        }
     }
     times[at] - times[from]
 }

@@ -47,7 +47,9 @@ pub fn score(records: &[Record], outcome: &Record) -> [Ahead; 3] {
 
 /// Chance the record gave to depths up to the one measured `steps` frames after its last.
 fn transform(record: &Record, outcome: &Record, steps: usize) -> Option<f64> {
-    let at = record.times_s.len() - 1 + steps;
+    // ahead of the issue, not of the last depth known by then
+    let issued = outcome.times_s.partition_point(|&t| t <= record.issued_at_s).checked_sub(1)?;
+    let at = issued.max(record.times_s.len() - 1) + steps;
     let time = *outcome.times_s.get(at)?;
     let tips = outcome.tips.iter().filter_map(|tip| {
         let k = at.checked_sub(tip.first)?;
@@ -56,6 +58,20 @@ fn transform(record: &Record, outcome: &Record, steps: usize) -> Option<f64> {
     let (depth, u, left) = tips.max_by(|a, b| a.0.total_cmp(&b.0))?;
     // a depth stopped by the far edge says nothing about growth
     if left > 0.0 { depth_ahead(record, time, depth, u) } else { None }
+}
+
+/// The coverage of the central 80 % in one sentence; `None` where nothing could be predicted and compared.
+pub fn shown(scores: &[Ahead]) -> Option<String> {
+    let parts: Vec<String> = scores
+        .iter()
+        .filter_map(|a| Some(format!("{} ahead {:.0} % of {}", a.steps, 100.0 * a.coverage80?, a.pit.len())))
+        .collect();
+    let list = parts.join(", ");
+    (!parts.is_empty()).then(|| {
+        format!(
+            "Depths predicted in this run and then measured that fell into the 80 % interval, by frames ahead: {list}."
+        )
+    })
 }
 
 /// What the record says about the forecast, worst first: one sentence where the coverage of the central 80 % falls out of the
@@ -127,7 +143,9 @@ mod tests {
         let ahead = Ahead { steps: 1, pit, coverage80: Some(0.5), coverage50: Some(0.5) };
         assert!(verdict(&[ahead]).unwrap().contains("surer"));
         let fine = Ahead { steps: 1, pit: vec![0.5; 40], coverage80: Some(0.8), coverage50: Some(0.5) };
-        assert_eq!(verdict(&[fine]), None);
+        assert_eq!(verdict(std::slice::from_ref(&fine)), None);
         assert_eq!(verdict(&[]), None);
+        assert!(shown(&[fine]).unwrap().ends_with("1 ahead 80 % of 40."));
+        assert_eq!(shown(&[]), None);
     }
 }

@@ -6,7 +6,7 @@
 use ndarray::Array2;
 use rayon::prelude::*;
 
-use super::forecasts::Forecasts;
+use super::forecasts::{Calibration, Forecasts};
 use super::pictures::Tone;
 use super::{Input, Progress};
 use crate::Error;
@@ -51,8 +51,8 @@ pub(super) struct Filmed {
     pub(super) trace: Trace,
     /// The forecasts as issued.
     pub(super) forecasts: Vec<ForecastRow>,
-    /// What the forecasts' own record says, where it says something is off.
-    pub(super) calibration: Option<String>,
+    /// What the forecasts' own record says.
+    pub(super) calibration: Calibration,
     /// Typical noise of a pixel, fraction of local brightness.
     pub(super) noise: f64,
     /// Picture tones and pictures.

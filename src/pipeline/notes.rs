@@ -30,7 +30,7 @@ impl Notes {
         let broke = input.manifest.cell.ended == Ended::Broke;
         let short = short::verdict(&events, bridged_s, broke);
         let mut warnings = Vec::new();
-        warnings.extend(filmed.calibration.clone().map(|c| format!("the run's own record of forecasts: {c}")));
+        warnings.extend(filmed.calibration.off.clone().map(|c| format!("the run's own record of forecasts: {c}")));
         warnings.extend(short_warnings(&events, short, broke));
         warnings.extend(aside(frames));
         warnings.extend(scene_warnings(filmed));
@@ -44,7 +44,7 @@ impl Notes {
         warnings.extend(input.cell.coverage(&times));
         let mut seen = std::collections::HashSet::new();
         warnings.retain(|w| seen.insert(w.clone()));
-        Self { warnings, cautions: Vec::new(), short }
+        Self { warnings, cautions: filmed.calibration.shown.iter().cloned().collect(), short }
     }
 }
 

@@ -98,12 +98,13 @@ pub static KEYS: &[Key] = &[
     key("load", "u_strip_modulus_gpa", "5.0"),
     key("load", "u_expansion_difference_per_k", "2e-7"),
     key("load", "u_temperature_change_k", "1.0"),
+    key("plan", "steps", "[{ time_s = 600.0, current_ma = 0.5, stress_mpa = 150.0, direction_deg = 90.0 }]"),
     key("trace", "confirm_frames", "2"),
     key("settings", "seed", "1"),
 ];
 
 /// Names of the tables.
-pub(super) const SECTIONS: [&str; 5] = ["frames", "cell", "load", "trace", "settings"];
+pub(super) const SECTIONS: [&str; 6] = ["frames", "cell", "load", "plan", "trace", "settings"];
 
 /// Keys that a slip is still taken to mean: at most this share of its letters wrong (Jaro–Winkler
 /// similarity at least this; common practice for command names).

@@ -13,6 +13,7 @@ use toml::de::{DeTable, DeValue};
 
 use super::keys::{self, SECTIONS};
 use super::load_section::{FixtureName, Hold, LoadSection};
+use super::plan_section::PlanSection;
 
 /// Name of the manifest in a run folder.
 pub const FILE_NAME: &str = "run.toml";
@@ -149,6 +150,9 @@ pub struct Manifest {
     /// `[load]`; absent means no load.
     #[serde(default)]
     pub load: LoadSection,
+    /// `[plan]`; absent means that all goes on as it was.
+    #[serde(default, skip_serializing_if = "PlanSection::is_empty")]
+    pub plan: PlanSection,
     /// `[trace]`.
     #[serde(default)]
     pub trace: TraceSection,
@@ -313,6 +317,7 @@ impl Manifest {
         self.check_edge("far_edge", &self.cell.far_edge)?;
         self.check_positive()?;
         self.check_logs()?;
+        self.plan.check(self)?;
         self.check_load()
     }
 
