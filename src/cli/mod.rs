@@ -3,6 +3,7 @@
 
 mod check;
 mod draft;
+mod keeper;
 mod progress;
 mod report;
 mod score;

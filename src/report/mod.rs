@@ -7,6 +7,7 @@
 //! words      numbers and times for the eye          figures/   one file a figure
 //! verdict    the run in four sentences              page       report.html
 //! effect     what load and charge did, in words
+//! stale      hidden folders beside it, swept
 //! write      the output folder, swapped in whole
 //! ```
 
@@ -19,13 +20,14 @@ pub mod palette;
 pub mod raster;
 pub mod records;
 pub mod schema;
+pub mod stale;
 pub mod svg;
 pub mod tables;
 pub mod verdict;
 pub mod words;
 pub mod write;
 
-mod data_uri;
+pub(crate) mod data_uri;
 mod error;
 #[cfg(test)]
 mod example;
