@@ -63,7 +63,8 @@ impl Progress for Keeper<'_> {
 
     fn corrected(&self, frame: usize, draw: &dyn Fn() -> GrayImage) {
         let path = self.folder.path().join(name(frame));
-        if let (Err(fault), Ok(mut first)) = (data_uri::write_jpeg(&draw(), data_uri::LARGE, &path), self.fault.lock()) {
+        if let (Err(fault), Ok(mut first)) = (data_uri::write_jpeg(&draw(), data_uri::LARGE, &path), self.fault.lock())
+        {
             first.get_or_insert(fault);
         }
     }

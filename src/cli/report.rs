@@ -95,7 +95,7 @@ pub(super) fn run(args: &ReportArgs, globals: Globals) -> Result<Outcome, Error>
     };
     drop(bar);
     let text = if args.json { summary_json(&results.summary)? } else { text(&results, &target) };
-    Ok(Outcome { text, warnings: results.summary.warnings.clone() })
+    Ok(Outcome { text, plain: args.json, warnings: results.summary.warnings.clone() })
 }
 
 /// The run in ten lines.

@@ -257,8 +257,7 @@ impl<'a> Follower<'a> {
         let tone = *self.recorded_tone.get_or_insert_with(|| Tone::of(recorded));
         if i.is_multiple_of(self.film_step) {
             let time_s = self.input.sequence.entries[i].time_s;
-            let [picture, recorded] =
-                [self.tone.picture(&plane), tone.picture(recorded)].map(super::pictures::small);
+            let [picture, recorded] = [self.tone.picture(&plane), tone.picture(recorded)].map(super::pictures::small);
             self.film.push(FilmFrame { frame: i, time_s, picture, recorded: Some(recorded) });
         }
         self.recorded = Some(recorded.clone());

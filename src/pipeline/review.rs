@@ -170,7 +170,8 @@ mod tests {
     fn a_region_takes_its_corners_in_any_order() {
         let mut plane = Array2::from_elem((4, 5), false);
         hide(&mut plane, [[3.2, 2.0], [1.0, 0.5]]);
-        let hidden: Vec<(usize, usize)> = plane.indexed_iter().filter(|(_, hidden)| **hidden).map(|(at, _)| at).collect();
+        let hidden: Vec<(usize, usize)> =
+            plane.indexed_iter().filter(|(_, hidden)| **hidden).map(|(at, _)| at).collect();
         assert_eq!(hidden, [(1, 1), (1, 2), (1, 3), (2, 1), (2, 2), (2, 3)]);
     }
 }

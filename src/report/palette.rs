@@ -176,8 +176,16 @@ pub const KINDS: usize = 8;
 
 /// One of [`KINDS`] colours for things without order, on pictures in both themes; neighbours differ in lightness too.
 pub fn kind(i: usize) -> Rgb {
-    const STEPS: [(f64, f64); KINDS] =
-        [(0.86, 95.0), (0.70, 245.0), (0.90, 150.0), (0.66, 15.0), (0.84, 200.0), (0.72, 310.0), (0.92, 60.0), (0.68, 135.0)];
+    const STEPS: [(f64, f64); KINDS] = [
+        (0.86, 95.0),
+        (0.70, 245.0),
+        (0.90, 150.0),
+        (0.66, 15.0),
+        (0.84, 200.0),
+        (0.72, 310.0),
+        (0.92, 60.0),
+        (0.68, 135.0),
+    ];
     let (lightness, hue) = STEPS[i % KINDS];
     oklch(lightness, 0.16, hue)
 }

@@ -5,7 +5,8 @@
 //! behind once it was not touched for a day.
 
 use std::fs;
-use std::path::Path;
+use std::path::{Path, PathBuf};
+use std::sync::Mutex;
 use std::time::Duration;
 
 use tempfile::TempDir;
@@ -18,12 +19,18 @@ const INFIX: &str = ".veerlog-new-";
 /// Age from which a folder counts as left behind where processes cannot be asked after.
 const LEFT: Duration = Duration::from_secs(86_400);
 
+/// Outputs that this process builds, for [`abandon`].
+static BUILDING: Mutex<Vec<PathBuf>> = Mutex::new(Vec::new());
+
 /// An empty hidden folder beside `target`, which goes when dropped; `target`'s parents are made where missing.
 ///
 /// # Errors
 /// [`Error::Io`] when the disc refuses.
 pub fn beside(target: &Path) -> Result<TempDir, Error> {
     let target = std::path::absolute(target).map_err(|source| Error::io(target, source))?;
+    if let Ok(mut building) = BUILDING.lock() {
+        building.push(target.clone());
+    }
     let parent = target.parent().unwrap_or(&target);
     fs::create_dir_all(parent).map_err(|source| Error::io(parent, source))?;
     let prefix = format!("{}{}-", start(&target), std::process::id());
@@ -38,6 +45,19 @@ fn start(target: &Path) -> String {
 /// Removes what killed runs left beside `target`, as far as that can be done: it is in nobody's way. A whole output that
 /// was moved aside while no other stands in its place is moved back.
 pub fn sweep(target: &Path) {
+    clear(target, alive);
+}
+
+/// Removes what this process has half-built, when it is about to end; a whole output that it moved aside goes back.
+pub fn abandon() {
+    let targets = BUILDING.lock().map(|building| building.clone()).unwrap_or_default();
+    for target in targets {
+        let own = format!("{}-", std::process::id());
+        clear(&target, |rest, folder| !rest.starts_with(&own) && alive(rest, folder));
+    }
+}
+
+fn clear(target: &Path, alive: impl Fn(&str, &Path) -> bool) {
     let Ok(target) = std::path::absolute(target) else { return };
     let (Some(parent), start) = (target.parent(), start(&target)) else { return };
     let Ok(entries) = fs::read_dir(parent) else { return };

@@ -12,11 +12,9 @@ use std::path::{Path, PathBuf};
 
 use image::GrayImage;
 use ndarray::Array2;
-use rayon::prelude::*;
 
-use super::figures::{FIGURES, Format};
 use super::schema::{CHARGE, DIRECTIONS, FILAMENTS, FORECASTS, FRAMES, GROWTH, HALF_CYCLES, PATHS, TURNS, Table};
-use super::{Error, page, raster, records, stale, svg, tables};
+use super::{Error, animation, page, paper, records, stale, tables};
 use crate::results::{NEVER, Results};
 
 /// The file that marks a folder as ours.
@@ -25,9 +23,6 @@ pub const MARK: &str = ".veerlog-output";
 /// What the mark says to someone who opens it.
 const MARK_TEXT: &str =
     "Written by veerlog, which replaces this whole folder when it runs again: keep nothing of your own here.\n";
-
-/// Paper around a figure that stands alone, in its units.
-const MARGIN: f64 = 14.0;
 
 /// What is written beyond the standing files.
 #[derive(Debug, Clone, Copy, Default, PartialEq, Eq)]
@@ -167,6 +162,7 @@ fn fill(results: &Results, folder: &Path, save: Save<'_>) -> Result<(), Error> {
     if let Some(made) = save.frames {
         let place = folder.join(FRAMES_FOLDER);
         fs::rename(made, &place).map_err(|source| Error::io(&place, source))?;
+        open_to_readers(&place)?;
     }
     put(&folder.join("report.html"), page::render(results, save.frames.map(|_| FRAMES_FOLDER))?.as_bytes())
 }
@@ -179,13 +175,11 @@ fn table<R>(folder: &Path, schema: &Table<R>, rows: &[R]) -> Result<(), Error> {
 
 fn figures(results: &Results, folder: &Path) -> Result<(), Error> {
     make(folder)?;
-    FIGURES.par_iter().try_for_each(|figure| {
-        let Some(drawing) = (figure.draw)(results, Format::Wide) else {
-            return Ok(());
-        };
-        put(&folder.join(format!("{}.svg", figure.name)), svg::write(&drawing, MARGIN)?.as_bytes())?;
-        put(&folder.join(format!("{}.png", figure.name)), &raster::png(&drawing, MARGIN)?)
-    })
+    paper::write(results, folder)?;
+    match animation::growth(results)? {
+        Some(file) => put(&folder.join("growth.gif"), &file),
+        None => Ok(()),
+    }
 }
 
 fn masks(results: &Results, folder: &Path) -> Result<(), Error> {
@@ -213,7 +207,7 @@ fn make(folder: &Path) -> Result<(), Error> {
     fs::create_dir(folder).map_err(|source| Error::io(folder, source))
 }
 
-fn put(path: &Path, bytes: &[u8]) -> Result<(), Error> {
+pub(super) fn put(path: &Path, bytes: &[u8]) -> Result<(), Error> {
     fs::write(path, bytes).map_err(|source| Error::io(path, source))
 }
 

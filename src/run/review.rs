@@ -158,7 +158,8 @@ fn explain(error: &toml::de::Error, path: &Path, text: &str) -> ManifestError {
     let (what, help) = if let Some(typed) = quoted_after(&message, "unknown field ") {
         let likeness = |name: &str| strsim::jaro_winkler(&typed, name);
         let names = KEYS.iter().copied().chain([("[[reject]]", "")]);
-        let nearest = names.max_by(|a, b| likeness(a.0).total_cmp(&likeness(b.0))).filter(|key| likeness(key.0) >= NEAR);
+        let nearest =
+            names.max_by(|a, b| likeness(a.0).total_cmp(&likeness(b.0))).filter(|key| likeness(key.0) >= NEAR);
         let help = match nearest {
             Some((name, "")) => format!("each mark starts with a line {name}"),
             Some((name, example)) => format!("the nearest known key is `{name}`: type {name} = {example}"),

@@ -4,10 +4,10 @@
 use super::run_time;
 use crate::measure::geometry::local_directions;
 use crate::report::axes::{Range, TimeUnit};
-use crate::report::words::trimmed;
-use crate::trace::TracePath;
 use crate::report::palette::Ink;
+use crate::report::words::trimmed;
 use crate::results::Results;
+use crate::trace::TracePath;
 
 /// Colours told apart on the ramp: more than an eye can.
 pub(in crate::report) const COLOURS: u8 = 32;
@@ -54,7 +54,8 @@ impl<'a> ArrivalScale<'a> {
             all.extend(self.results.trace.paths.iter().filter_map(|path| self.crossing(path, time * unit)));
             let depth = |mark: &Isochrone| self.depth(mark.at);
             let deepest = all[from..].iter_mut().max_by(|a, b| depth(a).total_cmp(&depth(b)));
-            if let Some(mark) = deepest {
+            // A name that has no room beside its stroke is left out.
+            if let Some(mark) = deepest.filter(|mark| mark.beside[0] < (1.0 - NAME_ROOM) * self.width()) {
                 mark.words = Some(format!("{} {}", trimmed(time, 4), self.unit.name));
             }
         }
@@ -63,7 +64,7 @@ impl<'a> ArrivalScale<'a> {
 
     /// The stroke across a path where it stood at a time; `None` where it was not under way then.
     fn crossing(&self, path: &TracePath, time_s: f64) -> Option<Isochrone> {
-        let width = f64::from(self.results.facts.frame_size[0].max(1));
+        let width = self.width();
         let at_s = |arrival: usize| self.results.frames.get(arrival).map_or(f64::INFINITY, |row| row.time_s);
         let reached = path.points.partition_point(|point| at_s(point.arrival) <= time_s);
         if reached == 0 || reached == path.points.len() {
@@ -77,9 +78,15 @@ impl<'a> ArrivalScale<'a> {
             at: [point.x, point.y],
             stroke: [[point.x - across_x, point.y - across_y], [point.x + across_x, point.y + across_y]],
             beside: [point.x + across_x.abs() + 0.006 * width, point.y + 0.006 * width],
+            arrival: point.arrival,
             size: LETTER_SIZE * width,
             words: None,
         })
+    }
+
+    /// Width of the frame, px.
+    fn width(&self) -> f64 {
+        f64::from(self.results.facts.frame_size[0].max(1))
     }
 
     /// Distance from the plating edge, px, for comparing.
@@ -93,12 +100,17 @@ impl<'a> ArrivalScale<'a> {
 const HALF_STROKE: f64 = 0.009;
 const LETTER_SIZE: f64 = 0.019;
 
+/// Room that a name takes, in widths of the picture.
+const NAME_ROOM: f64 = 0.1;
+
 /// Where a filament stood at a round time, px.
 pub(in crate::report) struct Isochrone {
     /// On its centre-line.
     pub(in crate::report) at: [f64; 2],
     /// Across it.
     pub(in crate::report) stroke: [[f64; 2]; 2],
+    /// The frame of that point.
+    pub(in crate::report) arrival: usize,
     /// Where its name stands.
     pub(in crate::report) beside: [f64; 2],
     /// Height of the name.

@@ -78,10 +78,14 @@ pub(super) fn of(results: &Results, beside: Option<&str>) -> Result<Option<Playe
         height,
         last: data_uri::jpeg(last, data_uri::LARGE)?,
         traces: traces::draw(results, &clock),
-        isochrones: traces::isochrones(results),
+        isochrones: traces::isochrones(results, &clock),
         plating: corners(&results.facts.plating_edge),
         far: corners(&results.facts.far_edge),
-        bar: [format!("{} µm", fixed(um, usize::from(um < 1.0) * 2)), fixed(100.0 * px / f64::from(width), 2), um.to_string()],
+        bar: [
+            format!("{} µm", fixed(um, usize::from(um < 1.0) * 2)),
+            fixed(100.0 * px / f64::from(width), 2),
+            um.to_string(),
+        ],
         ramp_from: trimmed(arrivals.time.low / unit.seconds, 3),
         ramp_to: trimmed(arrivals.time.high / unit.seconds, 3),
         unit: unit.name,
@@ -141,9 +145,9 @@ mod tests {
     /// Noise does not compress: 60 frames of it must be made smaller to fit.
     #[test]
     fn frames_are_made_smaller_until_they_fit() {
-        let noise = |seed: u32| GrayImage::from_fn(400, 300, |x, y| {
-            image::Luma([((x * 7919 + y * 104_729 + seed) ^ (x * y)) as u8])
-        });
+        let noise = |seed: u32| {
+            GrayImage::from_fn(400, 300, |x, y| image::Luma([((x * 7919 + y * 104_729 + seed) ^ (x * y)) as u8]))
+        };
         let frames: Vec<FilmFrame> = (0..6)
             .map(|i| FilmFrame { frame: i, time_s: 0.0, picture: noise(i as u32), recorded: Some(noise(9)) })
             .collect();

@@ -59,7 +59,8 @@ struct Log {
 
 pub(super) fn of(results: &Results) -> Record {
     let used: Vec<&FrameRow> = results.frames.iter().filter(|row| row.usable).collect();
-    let column = |pick: fn(&FrameRow) -> Option<f64>, decimals| used.iter().map(|row| short(pick(row), decimals)).collect();
+    let column =
+        |pick: fn(&FrameRow) -> Option<f64>, decimals| used.iter().map(|row| short(pick(row), decimals)).collect();
     let last = used.last().map_or(0.0, |row| row.time_s);
     let unit = TimeUnit::of(last);
     Record {

@@ -18,7 +18,8 @@ pub(super) struct Shown {
 pub(super) fn of(results: &Results) -> Option<Shown> {
     let review = results.summary.review.as_ref()?;
     let marks = review.marks.iter().map(|mark| {
-        let became = mark.not_applied.as_ref().map_or_else(|| "left out".to_owned(), |why| format!("not applied: {why}"));
+        let became =
+            mark.not_applied.as_ref().map_or_else(|| "left out".to_owned(), |why| format!("not applied: {why}"));
         [sentence(&mark.what()), mark.reason.clone(), became]
     });
     let row = |name: &str, say: fn(&ReviewNumbers) -> Option<String>| {
@@ -34,7 +35,9 @@ pub(super) fn of(results: &Results) -> Option<Shown> {
             row("Rate", |n| n.rate_um_per_s.map(|rate| format!("{} µm/s", figures(rate, 3)))),
             row("Alignment of growth", |n| n.growth_alignment.map(|value| signed(value, 2))),
             row("Median of contact", |n| n.contact_p50_s.map(duration)),
-            row("Chance by the horizon", |n| n.chance_by_horizon.map(|chance| format!("{} %", fixed(100.0 * chance, 0)))),
+            row("Chance by the horizon", |n| {
+                n.chance_by_horizon.map(|chance| format!("{} %", fixed(100.0 * chance, 0)))
+            }),
         ],
     })
 }

@@ -53,10 +53,8 @@ pub(super) fn draw(results: &Results, clock: &Clock) -> String {
         let paths: Vec<&TracePath> = results.trace.paths.iter().filter(|path| path.filament == number).collect();
         let stretches: Vec<Stretch> = paths.iter().flat_map(|path| stretches(&arrivals, clock, path)).collect();
         let class = (number as usize).wrapping_sub(1) % KINDS;
-        let _infallible = write!(
-            out,
-            "<g class=\"filament k{class}\" data-filament=\"{number}\"><title>filament {number}</title>"
-        );
+        let _infallible =
+            write!(out, "<g class=\"filament k{class}\" data-filament=\"{number}\"><title>filament {number}</title>");
         for Stretch { from, points, .. } in &stretches {
             let _infallible = write!(out, "<polyline class=\"casing\" data-from=\"{from}\" points=\"{points}\"/>");
         }
@@ -64,7 +62,8 @@ pub(super) fn draw(results: &Results, clock: &Clock) -> String {
             let _infallible = write!(out, "<polyline class=\"{look}\" data-from=\"{from}\" points=\"{points}\"/>");
         }
         for path in paths {
-            let points: Vec<[f64; 2]> = path.points.iter().step_by(8).chain(path.points.last()).map(|p| [p.x, p.y]).collect();
+            let points: Vec<[f64; 2]> =
+                path.points.iter().step_by(8).chain(path.points.last()).map(|p| [p.x, p.y]).collect();
             let _infallible = write!(out, "<polyline class=\"hit\" points=\"{}\"/>", corners(&points));
         }
         out.push_str("</g>\n");
@@ -123,16 +122,21 @@ pub(super) fn colours() -> String {
 }
 
 /// Where each filament stood at round times: a short stroke across it, named at the deepest.
-pub(super) fn isochrones(results: &Results) -> String {
+pub(super) fn isochrones(results: &Results, clock: &Clock) -> String {
     let arrivals = ArrivalScale::of(results);
     let mut out = String::new();
     for mark in arrivals.isochrones() {
-        let _infallible = write!(out, "<polyline class=\"casing\" points=\"{0}\"/><polyline points=\"{0}\"/>", corners(&mark.stroke));
+        let (from, stroke) = (clock.shown_from(mark.arrival), corners(&mark.stroke));
+        let _infallible = write!(
+            out,
+            "<g data-from=\"{from}\"><polyline class=\"casing\" points=\"{stroke}\"/><polyline points=\"{stroke}\"/>"
+        );
         if let Some(words) = mark.words {
             let size = crate::report::words::fixed(mark.size, 1);
             let [x, y] = mark.beside;
             let _infallible = write!(out, "<text x=\"{x:.1}\" y=\"{y:.1}\" font-size=\"{size}\">{words}</text>");
         }
+        out.push_str("</g>");
     }
     out
 }

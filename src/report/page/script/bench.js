@@ -3,7 +3,7 @@
 // who wants to hear when these change. A step is one usable frame.
 const bench = (() => {
   const read = (id) => JSON.parse(document.getElementById(id)?.textContent || "null");
-  const record = read("record");
+  const record = read("run-record");
   const film = read("film") || [];
   const hearers = { step: [], pick: [] };
   const end = Math.max(0, record.time_s.length - 1);

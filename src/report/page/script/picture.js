@@ -5,7 +5,7 @@
   if (!shot) return;
   const last = shot.getAttribute("href");
   const [over, traces, blank, readout, scrub, play] = ["over", "traces", "blank", "readout", "scrub", "play"].map(byId);
-  const stretches = [...traces.querySelectorAll("[data-from]")]
+  const stretches = [...over.querySelectorAll("[data-from]")]
     .map((line) => ({ line, from: Number(line.dataset.from) })).sort((a, b) => a.from - b.from);
   const froms = stretches.map((stretch) => stretch.from);
   const frames = film.map((held) => held.frame);

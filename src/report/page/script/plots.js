@@ -34,7 +34,7 @@
     across = (seconds) => LEFT + inner * seconds / until;
     back = (px) => (px - LEFT) / inner * until;
     let top = 0;
-    const layer = make("g", { id: "plot-marks" }), base = make("g", {}), front = make("g", {});
+    const layer = make("g", {}), base = make("g", {}), front = make("g", {});
     parts = { values: [] };
     for (const panel of panels) {
       top += HEAD;
@@ -59,9 +59,11 @@
     parts.past = past;
     parts.fan = make("g", { "clip-path": "url(#plot-field)" });
     parts.cursor = make("g", { class: "cursor" }, make("path", { d: `M0 6V${bottom}` }), make("path", { class: "grip", d: "M-6 0H6L0 9Z" }));
+    const sooner = layer.cloneNode(true);
     layer.setAttribute("class", "later");
+    sooner.setAttribute("clip-path", "url(#plot-past)");
     svg = make("svg", { viewBox: `0 0 ${width} ${total}`, width, height: total, role: "img", "aria-label": "Plots of the run under one time cursor: " + panels.map((panel) => `${panel.name} (${panel.unit})`).join(", ") },
-      defs, base, layer, make("use", { href: "#plot-marks", class: "sooner", "clip-path": "url(#plot-past)" }), parts.fan, front, parts.cursor);
+      defs, base, layer, sooner, parts.fan, parts.cursor, front);
     place.replaceChildren(svg);
     move();
     mark();
@@ -74,7 +76,7 @@
       const y = panel.up(value);
       base.append(make("path", { d: `M${LEFT} ${y}H${width - RIGHT}`, class: "s-grid" }), make("text", { x: LEFT - 6, y: y + 4, class: "f-quiet", "text-anchor": "end" }, words));
     }
-    const now = make("text", { x: width - RIGHT, y: panel.top - 11, class: "f-text", "text-anchor": "end" });
+    const now = make("text", { x: width - RIGHT, y: panel.top - 11, class: "f-text now", "text-anchor": "end" });
     parts.values.push([panel, now]);
     front.append(now);
   }
@@ -90,7 +92,9 @@
 
   function growth(panel, layer, base) {
     const axis = record.time_s.map((time, i) => [across(time), record.axis_deg[i] === null ? null : panel.up(record.axis_deg[i])]);
-    base.append(make("path", { d: path([...axis, [across(last), axis.at(-1)[1]]], true), class: "s-load axis-line" }));
+    const held = [...axis, [across(last), axis.at(-1)[1]]].map(([x, y], i, all) => (i ? [x, all[i - 1][1]] : [x, y]));
+    const level = held.slice(1).map(([x, y], i) => (y === null ? "" : `M${scales.short(held[i][0])} ${scales.short(y)}H${scales.short(x)}`)).join("");
+    base.append(make("path", { d: level, class: "s-load axis-line" }));
     for (const [time, filament, angle, length] of record.growth) {
       const r = clamp(Math.sqrt(length) * 0.8, 1.6, 6);
       layer.append(make("circle", { cx: scales.short(across(time)), cy: scales.short(panel.up(angle)), r: scales.short(r), class: "f-metal dot", "data-filament": filament }));
