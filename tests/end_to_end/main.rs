@@ -7,6 +7,7 @@ mod campaign;
 mod hostile;
 mod kit;
 mod output;
+mod page;
 mod repeatable;
 mod report_input;
 mod synth;
