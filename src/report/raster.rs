@@ -58,7 +58,7 @@ pub fn paint(drawing: &Drawing, margin: f64, scale: f64) -> Result<RgbImage, Err
 pub fn png(drawing: &Drawing, margin: f64, scale: f64, dots_per_metre: f64) -> Result<Vec<u8>, Error> {
     let picture = paint(drawing, margin, scale)?;
     let mut file = Vec::new();
-    PngEncoder::new_with_quality(&mut file, CompressionType::Best, PngFilter::Adaptive)
+    PngEncoder::new_with_quality(&mut file, CompressionType::Default, PngFilter::Adaptive)
         .write_image(&picture, picture.width(), picture.height(), ExtendedColorType::Rgb8)
         .map_err(|why| Error::made("a figure", why))?;
     file.splice(HEAD..HEAD, size_chunk(dots_per_metre.round() as u32));
