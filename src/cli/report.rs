@@ -110,7 +110,10 @@ fn text(results: &Results, target: &Path) -> String {
     )];
     if let Some(review) = &summary.review {
         let count = review.marks.iter().filter(|mark| mark.not_applied.is_none()).count();
-        lines.push(format!("what {count} of {} marks of review.toml reject is left out of all that follows", review.marks.len()));
+        lines.push(format!(
+            "what {count} of {} marks of review.toml reject is left out of all that follows",
+            review.marks.len()
+        ));
     }
     lines.extend(Verdict::of(results).sentences().iter().map(|s| (*s).to_owned()));
     let forecast = summary.forecast.as_ref();

@@ -40,11 +40,14 @@ pub(super) struct Record {
     forecasts: Vec<[Option<f64>; 8]>,
     load: Option<Log>,
     cell: Vec<Log>,
-    /// Number, first time, root, final depth, final length, bridged.
-    filaments: Vec<(u32, f64, [f64; 2], Option<f64>, f64, bool)>,
+    filaments: Vec<Filament>,
     short_s: Option<f64>,
     reviewed: Vec<ReviewMark>,
 }
+
+/// Number, first time, root, final depth, final length, bridged.
+#[derive(Serialize)]
+struct Filament(u32, f64, [f64; 2], Option<f64>, f64, bool);
 
 /// A logged quantity against time.
 #[derive(Serialize)]
@@ -88,7 +91,7 @@ pub(super) fn of(results: &Results) -> Record {
             .map(|row| {
                 let root = [row.root_x_px, row.root_y_px].map(|v| round(v, 2).unwrap_or(v));
                 let length = round(row.final_length_um, 2).unwrap_or(row.final_length_um);
-                (row.filament, row.first_time_s, root, short(row.final_depth_um, 2), length, row.bridged)
+                Filament(row.filament, row.first_time_s, root, short(row.final_depth_um, 2), length, row.bridged)
             })
             .collect(),
         short_s: results.summary.short.time_s.filter(|_| results.summary.short.observed),
