@@ -38,17 +38,24 @@ fn one(figure: &Figure, results: &Results, folder: &Path) -> Result<(), Error> {
         let Some(drawing) = (figure.draw)(results, format) else {
             return Ok(());
         };
-        let path = |ending: &str| folder.join(format!("{}{suffix}.{ending}", figure.name));
-        put(&path("svg"), svg::write_for_print(&drawing, MARGIN, width_mm)?.as_bytes())?;
-        let dpi = dpi(&drawing, width_mm);
-        let across = (width_mm / INCH_MM * dpi).round();
-        let scale = across / (drawing.width + 2.0 * MARGIN);
-        put(&path("png"), &raster::png(&drawing, MARGIN, scale, dpi / INCH_MM * 1000.0)?)?;
+        put_drawing(&drawing, width_mm, folder, &format!("{}{suffix}", figure.name))?;
     }
     match data::of(figure.name, results)? {
         Some(csv) => put(&folder.join(format!("{}.csv", figure.name)), &csv),
         None => Ok(()),
     }
+}
+
+/// Writes a drawing as `NAME.svg` and `NAME.png`, so many mm wide.
+///
+/// # Errors
+/// As [`write`].
+pub fn put_drawing(drawing: &Drawing, width_mm: f64, folder: &Path, name: &str) -> Result<(), Error> {
+    put(&folder.join(format!("{name}.svg")), svg::write_for_print(drawing, MARGIN, width_mm)?.as_bytes())?;
+    let dpi = dpi(drawing, width_mm);
+    let across = (width_mm / INCH_MM * dpi).round();
+    let scale = across / (drawing.width + 2.0 * MARGIN);
+    put(&folder.join(format!("{name}.png")), &raster::png(drawing, MARGIN, scale, dpi / INCH_MM * 1000.0)?)
 }
 
 /// 300, or as many as the frame shown has pixels for.
