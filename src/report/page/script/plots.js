@@ -108,7 +108,8 @@
   }
 
   // What each panel reads at the cursor.
-  const forecast = () => record.forecasts[bench.upTo(record.forecasts.map((row) => row[0]), bench.time)];
+  const issued = record.forecasts.map((row) => row[0]);
+  const forecast = () => record.forecasts[bench.upTo(issued, bench.time)];
   function depthNow() {
     const depth = record.depth_um[bench.step], row = forecast();
     const words = depth === null ? "none yet" : bench.fixed(depth, 1) + " µm";
