@@ -13,8 +13,8 @@ use crate::trace::TracePath;
 /// Bins of the angle to the load, of 10° each.
 const ANGLES: usize = 9;
 
-/// Steps of time at which stretches may appear: more than a scrubber's pixels, few enough for the longest run.
-const STEPS: usize = 400;
+/// Steps of time at which stretches may appear, at most: few enough that a long run is painted as fast as a short one.
+const STEPS: usize = 150;
 
 /// The times at which the player stands: every usable frame.
 pub(super) struct Clock<'a> {
@@ -32,7 +32,7 @@ impl<'a> Clock<'a> {
     fn shown_from(&self, frame: usize) -> usize {
         let ordinal = self.used.partition_point(|&used| used < frame);
         let step = self.used.len().div_ceil(STEPS).max(1);
-        ordinal.div_ceil(step) * step
+        (ordinal.div_ceil(step) * step).min(self.used.len().saturating_sub(1))
     }
 
     /// Bin of the angle to the load in force when a point arrived.
