@@ -7,7 +7,7 @@ use std::path::PathBuf;
 #[derive(Debug, thiserror::Error, miette::Diagnostic)]
 pub enum Error {
     /// Reading or writing failed.
-    #[error("{path}: {source}")]
+    #[error("{path} cannot be read or written")]
     #[diagnostic(
         code(io),
         help("see that the place exists, that you may read and write there, and that the disk is not full")

@@ -14,9 +14,11 @@ use crate::measure::{FilamentRow, ForecastRow, FrameRow, GrowthRow, PathRow};
 use crate::trace::Trace;
 
 mod charge;
+mod review;
 mod steering;
 
 pub use charge::{ChargeRow, ChargeSummary, Flow, HalfCycleRow};
+pub use review::{ReviewMark, ReviewNumbers, ReviewSummary};
 pub use steering::{DirectionRow, KinkBin, KinkInputs, KinkModel, LoadKnown, TurnRow, TurnVerdict, TurnsSummary};
 
 /// A finished run.
@@ -88,9 +90,10 @@ pub struct Pictures {
     pub first: GrayImage,
     /// The last usable frame.
     pub last: GrayImage,
-    /// A choice of frames for the player, in time order, in the view of `last` (they may be smaller).
-    /// The page embeds each at up to 800 px, some 50 to 100 kB: 60 of them keep it well under 15 MB.
-    /// May be empty; frames from the last usable one on are left out, for `last` shows it.
+    /// The same as it was recorded, drift and light left in.
+    pub recorded: Option<GrayImage>,
+    /// A choice of frames for the player, in time order, in the view of `last` (they may be smaller). May be empty;
+    /// frames from the last usable one on are left out, for `last` shows it.
     pub film: Vec<FilmFrame>,
     /// Frame at which each pixel \[row, col\] became filament; [`NEVER`] where it did not.
     pub arrivals: Option<Array2<u32>>,
@@ -108,6 +111,8 @@ pub struct FilmFrame {
     pub time_s: f64,
     /// The picture; it may be smaller than the recorded frame.
     pub picture: GrayImage,
+    /// The same as it was recorded, drift and light left in.
+    pub recorded: Option<GrayImage>,
 }
 
 /// The load log's samples; all columns are as long as `time_s`.
@@ -171,6 +176,9 @@ pub struct Summary {
     /// Growth against charge.
     #[serde(default)]
     pub charge: ChargeSummary,
+    /// What a reader rejected; absent without a `review.toml`.
+    #[serde(default)]
+    pub review: Option<ReviewSummary>,
     /// Whether and when the cell shorted.
     pub short: ShortSummary,
     /// The last forecast issued.

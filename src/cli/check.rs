@@ -45,7 +45,7 @@ pub(super) fn run(args: &CheckArgs) -> Result<Outcome, Error> {
         draw(path, &manifest, &look.first)?;
     }
     let screen = Screen { manifest: &manifest, sequence: &sequence, load: &load, cell: &cell, look: &look };
-    Ok(Outcome { text: screen.text(), warnings: screen.warnings() })
+    Ok(Outcome { text: screen.text(), warnings: screen.warnings(), ..Outcome::default() })
 }
 
 /// What decoding every frame showed.

@@ -68,7 +68,7 @@ pub(super) fn run(args: &CompareArgs, globals: Globals) -> Result<Outcome, Error
     let found = compare(&records, &plan)?;
     write(&records, &found, &args.out)?;
     drop(bar);
-    Ok(Outcome { text: text(&found, &args.out), warnings: looks(&found) })
+    Ok(Outcome { text: text(&found, &args.out), warnings: looks(&found), ..Outcome::default() })
 }
 
 fn plan(args: &CompareArgs) -> Result<Plan, Error> {

@@ -45,5 +45,5 @@ pub(super) fn run(args: &DraftArgs) -> Result<Outcome, Error> {
         draft::MARK,
         args.folder.display()
     );
-    Ok(Outcome { text, warnings: Vec::new() })
+    Ok(Outcome { text, ..Outcome::default() })
 }

@@ -4,6 +4,9 @@
 mod check;
 mod compare;
 mod draft;
+mod handout;
+mod inert;
+mod keeper;
 mod progress;
 mod report;
 mod score;
@@ -17,11 +20,15 @@ use clap::{Args, Parser, Subcommand};
 
 use crate::Error;
 use crate::error::{EXIT_DONE, EXIT_INPUT, EXIT_LOOK};
+use crate::report::stale;
+
+/// Exit code of a command that was stopped by the user: 128 and the number of the signal, as shells have it.
+const EXIT_STOPPED: u8 = 130;
 
 /// The caution that every page of help carries.
 const CAUTION: &str = "A forecast is no interlock. A cell on test can vent, burn or shatter, and lithium reacts with water: \
 follow the lab's own rules, local codes and qualified people.\n\n\
-Exit codes: 0 done; 1 done, but something needs a look (with --strict); 2 bad input or usage; 3 I/O failure.";
+Exit codes: 0 done; 1 done, but something needs a look (with --strict); 2 bad input or usage; 3 I/O failure; 130 stopped.";
 
 /// Traces metal filaments in films of ceramic electrolyte cells, measures their angle to the logged
 /// load and forecasts the short.
@@ -57,6 +64,7 @@ enum Command {
     Compare(compare::CompareArgs),
     Synth(synth::SynthArgs),
     Score(score::ScoreArgs),
+    Handout(handout::HandoutArgs),
 }
 
 /// What a command that did its work has to say.
@@ -64,6 +72,8 @@ enum Command {
 pub struct Outcome {
     /// For standard output; left out with `--quiet`.
     pub text: String,
+    /// Whether the text is for another program: printed as it is, since nothing in it comes from a run folder unescaped.
+    pub plain: bool,
     /// What needs a look, a sentence each; for standard error.
     pub warnings: Vec<String>,
 }
@@ -81,11 +91,12 @@ pub fn main() -> ExitCode {
         }
     };
     plain_messages_off_terminal();
+    mind_interrupts();
     ExitCode::from(match run(&cli) {
         Ok(outcome) => tell(&outcome, cli.globals),
         Err(error) => {
             let code = error.exit_code();
-            say(&mut std::io::stderr(), &format!("{:?}", miette::Report::new(error)));
+            say(&mut std::io::stderr(), &inert::coloured(&format!("{:?}", miette::Report::new(error))));
             code
         }
     })
@@ -101,17 +112,19 @@ fn run(cli: &Cli) -> Result<Outcome, Error> {
         Command::Draft(args) => draft::run(args),
         Command::Report(args) => report::run(args, cli.globals),
         Command::Compare(args) => compare::run(args, cli.globals),
-        Command::Synth(args) => Ok(Outcome { text: synth::run(args)?, warnings: Vec::new() }),
-        Command::Score(args) => Ok(Outcome { text: score::run(args)?, warnings: Vec::new() }),
+        Command::Synth(args) => Ok(Outcome { text: synth::run(args)?, ..Outcome::default() }),
+        Command::Handout(args) => handout::run(args),
+        Command::Score(args) => Ok(Outcome { text: score::run(args)?, ..Outcome::default() }),
     }
 }
 
 fn tell(outcome: &Outcome, globals: Globals) -> u8 {
-    if !globals.quiet {
-        say(&mut std::io::stdout(), outcome.text.trim_end());
+    if !globals.quiet || outcome.plain {
+        let text = outcome.text.trim_end();
+        say(&mut std::io::stdout(), &if outcome.plain { text.to_owned() } else { inert::words(text) });
     }
     for warning in &outcome.warnings {
-        say(&mut std::io::stderr(), &format!("look at: {warning}"));
+        say(&mut std::io::stderr(), &inert::words(&format!("look at: {warning}")));
     }
     if globals.strict && !outcome.warnings.is_empty() { EXIT_LOOK } else { EXIT_DONE }
 }
@@ -119,6 +132,19 @@ fn tell(outcome: &Outcome, globals: Globals) -> u8 {
 /// Prints a line; a reader that has gone away is no failure of the command.
 fn say(to: &mut impl Write, text: &str) {
     let _ = writeln!(to, "{text}");
+}
+
+/// On Ctrl-C nothing half-written stays, and the user is told how to go on.
+fn mind_interrupts() {
+    // It fails only where a handler is set already: then the system's own way of ending stays.
+    let _ = ctrlc::set_handler(|| {
+        stale::abandon();
+        say(
+            &mut std::io::stderr(),
+            "\nStopped: nothing was changed, and what was half-written is gone. Type the same command to start again.",
+        );
+        std::process::exit(i32::from(EXIT_STOPPED));
+    });
 }
 
 /// In a file or a pipe, messages are neither coloured nor broken into lines.

@@ -3,11 +3,13 @@
 //! Streaming: a batch of at most [`BATCH`] decoded frames is held beside the tracer's window; leading bare frames are
 //! held until the reference is made, at most [`MOST_BARE`] of them.
 
+use image::GrayImage;
 use ndarray::Array2;
 use rayon::prelude::*;
 
 use super::forecasts::{Calibration, Forecasts};
 use super::pictures::Tone;
+use super::review::Marks;
 use super::{Input, Progress};
 use crate::Error;
 use crate::measure::{ForecastRow, UsedFrame};
@@ -20,7 +22,7 @@ use crate::trace::{Trace, TraceSettings, Tracer};
 /// Frames decoded at a time.
 const BATCH: usize = 8;
 /// Frames of the page's player.
-const FILM_FRAMES: usize = 40;
+const FILM_FRAMES: usize = 60;
 
 /// What became of a frame.
 #[derive(Debug, Clone, Default)]
@@ -61,6 +63,8 @@ pub(super) struct Filmed {
     pub(super) first: Array2<f32>,
     /// Last usable frame for the eye.
     pub(super) last: Array2<f32>,
+    /// Last usable frame as it was recorded.
+    pub(super) recorded: Option<GrayImage>,
     /// Frames of the player.
     pub(super) film: Vec<FilmFrame>,
 }
@@ -79,11 +83,11 @@ impl Filmed {
 }
 
 /// Follows the run from its first frame to its last.
-pub(super) fn follow(input: &Input, progress: &dyn Progress) -> Result<Filmed, Error> {
+pub(super) fn follow(input: &Input, marks: &Marks, progress: &dyn Progress) -> Result<Filmed, Error> {
     let count = input.sequence.entries.len();
     progress.stage("reading bare frames", None);
-    let opening = Opening::read(input)?;
-    let mut follower = Follower::new(input, opening, count);
+    let opening = Opening::read(input, marks)?;
+    let mut follower = Follower::new(input, marks, opening, count, progress);
     progress.stage("tracing", Some(count));
     let starts: Vec<usize> = (0..count).step_by(BATCH).collect();
     for start in starts {
@@ -106,12 +110,12 @@ struct Opening {
 }
 
 impl Opening {
-    fn read(input: &Input) -> Result<Self, Error> {
+    fn read(input: &Input, marks: &Marks) -> Result<Self, Error> {
         let settings = SceneSettings { darker: input.darker() };
         let bare = input.manifest.frames.bare.min(input.sequence.entries.len());
         let mut builder = SceneBuilder::new(settings);
         let mut held: Vec<(usize, Decoded)> = Vec::new();
-        for i in 0..bare {
+        for i in (0..bare).filter(|&i| marks.frame(i).is_none()) {
             let Ok(decoded) = input.sequence.decode(i) else { continue };
             if held.last().is_some_and(|(_, before)| before.sha256 == decoded.sha256) {
                 continue;
@@ -125,7 +129,7 @@ impl Opening {
             return Ok(Self { scene, held });
         }
         let mut first_fault = None;
-        for i in 0..input.sequence.entries.len() {
+        for i in (0..input.sequence.entries.len()).filter(|&i| marks.frame(i).is_none()) {
             match input.sequence.decode(i) {
                 Ok(decoded) => {
                     let scene = Scene::without_bare(&decoded.plane, settings);
@@ -140,6 +144,7 @@ impl Opening {
 
 struct Follower<'a> {
     input: &'a Input,
+    marks: &'a Marks,
     scene: Scene,
     held: Vec<(usize, Decoded)>,
     tracer: Tracer,
@@ -150,12 +155,16 @@ struct Follower<'a> {
     tone: Tone,
     first: Option<Array2<f32>>,
     last: Option<Array2<f32>>,
+    /// Tones of the recorded frames, chosen on the first used one, and the last of them.
+    recorded_tone: Option<Tone>,
+    recorded: Option<Array2<f32>>,
     film: Vec<FilmFrame>,
     film_step: usize,
+    progress: &'a dyn Progress,
 }
 
 impl<'a> Follower<'a> {
-    fn new(input: &'a Input, opening: Opening, count: usize) -> Self {
+    fn new(input: &'a Input, marks: &'a Marks, opening: Opening, count: usize, progress: &'a dyn Progress) -> Self {
         let noise = typical(opening.scene.noise());
         let usable_bare = opening.held.iter().filter(|(i, _)| *i < input.manifest.frames.bare).count();
         let settings = TraceSettings {
@@ -167,6 +176,7 @@ impl<'a> Follower<'a> {
         let tracer = Tracer::new(settings, input.edges.clone(), opening.scene.noise().clone());
         Self {
             input,
+            marks,
             tracer,
             forecasts: Forecasts::new(input, noise),
             fates: Vec::with_capacity(count),
@@ -175,8 +185,11 @@ impl<'a> Follower<'a> {
             tone: Tone::of(opening.scene.reference()),
             first: None,
             last: None,
+            recorded_tone: None,
+            recorded: None,
             film: Vec::new(),
             film_step: count.div_ceil(FILM_FRAMES).max(1),
+            progress,
             scene: opening.scene,
             held: opening.held,
         }
@@ -201,13 +214,17 @@ impl<'a> Follower<'a> {
         if let Some(of) = before {
             return Fate { reason: FrameFault::Repeat { of }.to_string(), sha256, ..Fate::default() };
         }
+        if let Some(reason) = self.marks.frame(i) {
+            return Fate { reason: reason.to_owned(), sha256, ..Fate::default() };
+        }
         let metal = self.tracer.metal();
-        let seen = self.scene.correct(&decoded.plane, Some(&metal), self.guess);
+        let mut seen = self.scene.correct(&decoded.plane, Some(&metal), self.guess);
         if let Some(reason) = seen.verdict {
             return Fate { reason, sha256, ..Fate::default() };
         }
         self.guess = seen.drift_px;
-        self.picture(i, &seen.residual);
+        self.picture(i, &decoded.plane, &seen.residual);
+        self.marks.hide(&mut seen.residual);
         let fate = Fate {
             reason: String::new(),
             drift_px: Some(seen.drift_px),
@@ -235,12 +252,16 @@ impl<'a> Follower<'a> {
     }
 
     /// Keeps what the eye wants to see of a corrected frame.
-    fn picture(&mut self, i: usize, residual: &Array2<f32>) {
+    fn picture(&mut self, i: usize, recorded: &Array2<f32>, residual: &Array2<f32>) {
         let plane = super::pictures::shown(self.scene.reference(), residual, self.input.darker());
+        self.progress.corrected(i, &|| self.tone.picture(&plane));
+        let tone = *self.recorded_tone.get_or_insert_with(|| Tone::of(recorded));
         if i.is_multiple_of(self.film_step) {
             let time_s = self.input.sequence.entries[i].time_s;
-            self.film.push(FilmFrame { frame: i, time_s, picture: self.tone.picture(&plane) });
+            let [picture, recorded] = [self.tone.picture(&plane), tone.picture(recorded)].map(super::pictures::small);
+            self.film.push(FilmFrame { frame: i, time_s, picture, recorded: Some(recorded) });
         }
+        self.recorded = Some(recorded.clone());
         if self.first.is_none() {
             self.first = Some(plane.clone());
         }
@@ -259,6 +280,7 @@ impl<'a> Follower<'a> {
             tone: self.tone,
             first: self.first.unwrap_or_else(empty),
             last: self.last.unwrap_or_else(empty),
+            recorded: self.recorded_tone.zip(self.recorded).map(|(tone, plane)| tone.picture(&plane)),
             film: self.film,
             fates: self.fates,
         }

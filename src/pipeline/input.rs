@@ -7,7 +7,7 @@ use crate::Error;
 use crate::load::Load;
 use crate::results::{CellSamples, LoadSamples, RunFacts};
 use crate::run::manifest::Filament;
-use crate::run::{CellLog, FrameSequence, LoadLog, Manifest, Series};
+use crate::run::{CellLog, FrameSequence, LoadLog, Manifest, Review, Series};
 use crate::trace::edges::Edges;
 
 /// A run as recorded.
@@ -23,6 +23,8 @@ pub struct Input {
     pub cell: CellLog,
     /// The electrodes.
     pub edges: Edges,
+    /// What a reader rejected.
+    pub review: Option<Review>,
     /// Where the run was cut, s.
     pub until_s: Option<f64>,
 }
@@ -36,6 +38,7 @@ impl Input {
         let manifest = Manifest::load(run)?;
         let mut sequence = FrameSequence::open(run, &manifest)?;
         large_enough(&manifest, &sequence)?;
+        let review = Review::load(run, sequence.entries.len())?;
         let mut load_log = LoadLog::open(&manifest, &sequence.clock)?;
         let mut cell = CellLog::open(&manifest, &sequence.clock)?;
         if let Some(until) = choices.until_s {
@@ -49,7 +52,7 @@ impl Input {
         }
         let edges = super::edges::edges_of(&manifest)?;
         let load = Load::new(&manifest, load_log)?;
-        Ok(Self { manifest, sequence, load, cell, edges, until_s: choices.until_s })
+        Ok(Self { manifest, sequence, load, cell, edges, review, until_s: choices.until_s })
     }
 
     /// Scale.

@@ -8,17 +8,21 @@ mod input;
 mod kinks;
 mod notes;
 mod pictures;
+mod review;
 mod rows;
 mod steering;
 mod summary;
 
 use std::path::Path;
 
+use image::GrayImage;
+
 use crate::Error;
 use crate::measure::{Scale, measure};
 use crate::results::{Results, Summary};
 
 pub use input::Input;
+use review::Marks;
 
 /// What the analysis tells while it works.
 pub trait Progress: Sync {
@@ -26,6 +30,8 @@ pub trait Progress: Sync {
     fn stage(&self, name: &str, frames: Option<usize>);
     /// One more frame is done.
     fn frame(&self);
+    /// A used frame with drift and light taken out, for whoever keeps pictures; `draw` makes it. Nothing is kept here.
+    fn corrected(&self, _frame: usize, _draw: &dyn Fn() -> GrayImage) {}
 }
 
 /// Tells nobody.
@@ -44,30 +50,44 @@ pub struct Choices {
     pub until_s: Option<f64>,
 }
 
-/// Analyses a run folder. Memory: a bounded window of frames, whatever their number.
+/// Analyses a run folder, and once more with what its `review.toml` rejects, where there is one. Memory: a bounded window
+/// of frames, whatever their number.
 ///
 /// # Errors
 /// What stops the reading of the run ([`Error`]); a frame that cannot be used stops nothing.
 pub fn analyse(run: &Path, choices: Choices, progress: &dyn Progress) -> Result<Results, Error> {
     let input = Input::open(run, choices)?;
-    let filmed = film::follow(&input, progress)?;
+    let plain = follow(&input, &Marks::default(), progress)?;
+    let Some(review) = input.review.as_ref().filter(|review| !review.reject.is_empty()) else {
+        return Ok(plain);
+    };
+    progress.stage("again, with the review", None);
+    let (marks, told) = Marks::of(review, &input, &plain.trace);
+    let mut results = follow(&input, &marks, progress)?;
+    review::tell(&mut results, &plain, told);
+    Ok(results)
+}
+
+/// The stages after the input, once.
+fn follow(input: &Input, marks: &Marks, progress: &dyn Progress) -> Result<Results, Error> {
+    let filmed = film::follow(input, marks, progress)?;
     progress.stage("measuring", None);
     let load = |time_s: f64, px: [f64; 2]| input.load.at(time_s, Some(px));
     let used = filmed.used();
     let scale =
         Scale { um_per_px: input.um_per_px(), edges: &input.edges, used: &used, load: &load, noise: filmed.noise };
     let measured = measure(&filmed.trace, &scale);
-    let frames = rows::frame_rows(&input, &filmed, &measured);
-    let pictures = pictures::finished(&filmed, &input);
-    let notes = notes::Notes::of(&input, &filmed, &frames);
-    let steered = steering::Steered::of(&input, &measured.growth);
-    let charged = charge::Charged::of(&input, &frames);
+    let frames = rows::frame_rows(input, &filmed, &measured);
+    let pictures = pictures::finished(&filmed, input);
+    let notes = notes::Notes::of(input, &filmed, &frames);
+    let steered = steering::Steered::of(input, &measured.growth);
+    let charged = charge::Charged::of(input, &frames);
     let summary = Summary {
         turns: steered.summary,
         directions: steering::directions(&measured.growth, input.manifest.settings.seed),
-        kink_model: kinks::kink_model(&input, &measured.growth),
+        kink_model: kinks::kink_model(input, &measured.growth),
         charge: charged.summary,
-        ..summary::summary(&input, &filmed, &measured, &frames, &notes)
+        ..summary::summary(input, &filmed, &measured, &frames, &notes)
     };
     Ok(Results {
         facts: input.facts(),

@@ -39,6 +39,20 @@ impl Tone {
     }
 }
 
+/// Longest side of a picture of the player, px: what a page's column shows (common practice).
+const FILM_SIDE_PX: u32 = 800;
+
+/// A picture no larger than the player shows, so that memory holds few pixels of many frames.
+pub(super) fn small(picture: GrayImage) -> GrayImage {
+    let (w, h) = picture.dimensions();
+    let largest = w.max(h);
+    if largest <= FILM_SIDE_PX {
+        return picture;
+    }
+    let side = |s: u32| (u64::from(s) * u64::from(FILM_SIDE_PX) / u64::from(largest)).max(1) as u32;
+    image::imageops::resize(&picture, side(w), side(h), image::imageops::FilterType::Triangle)
+}
+
 /// The frame as it would look without drift, flicker and uneven light: the reference with what differs put back.
 pub(super) fn shown(reference: &Array2<f32>, residual: &Array2<f32>, darker: bool) -> Array2<f32> {
     let sign = if darker { -1.0 } else { 1.0 };
@@ -53,6 +67,7 @@ pub(super) fn finished(filmed: &Filmed, input: &Input) -> Pictures {
     Pictures {
         first: filmed.tone.picture(&filmed.first),
         last: filmed.tone.picture(&filmed.last),
+        recorded: filmed.recorded.clone(),
         film: filmed.film.iter().filter(|f| f.frame < last_used).cloned().collect(),
         arrivals: Some(arrivals(&filmed.trace, (input.sequence.height as usize, input.sequence.width as usize))),
     }

@@ -142,6 +142,7 @@ fn inputs(input: &Input, filmed: &Filmed) -> BTreeMap<String, String> {
     let folder = &input.manifest.origin.folder;
     let named = [
         Some(crate::run::manifest::FILE_NAME),
+        Some(crate::run::review::FILE_NAME),
         input.manifest.frames.times.as_deref(),
         input.manifest.cell.log.as_deref(),
         input.manifest.load.log.as_deref(),

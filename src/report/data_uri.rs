@@ -1,5 +1,7 @@
 //! A grey picture as a `data:` address: JPEG inside base64 (RFC 4648, section 4).
 
+use std::path::Path;
+
 use image::GrayImage;
 use image::codecs::jpeg::JpegEncoder;
 
@@ -16,6 +18,15 @@ pub(crate) const SMALL: u32 = 800;
 
 /// `data:image/jpeg;base64,…` of the picture, made smaller where a side is longer than `longest`.
 pub(crate) fn jpeg(picture: &GrayImage, longest: u32) -> Result<String, Error> {
+    Ok(format!("data:image/jpeg;base64,{}", base64(&encoded(picture, longest)?)))
+}
+
+/// The same as a file.
+pub(crate) fn write_jpeg(picture: &GrayImage, longest: u32, path: &Path) -> Result<(), Error> {
+    std::fs::write(path, encoded(picture, longest)?).map_err(|source| Error::io(path, source))
+}
+
+fn encoded(picture: &GrayImage, longest: u32) -> Result<Vec<u8>, Error> {
     let (w, h) = picture.dimensions();
     let largest = w.max(h);
     let small;
@@ -30,7 +41,7 @@ pub(crate) fn jpeg(picture: &GrayImage, longest: u32) -> Result<String, Error> {
     JpegEncoder::new_with_quality(&mut bytes, QUALITY)
         .encode_image(shown)
         .map_err(|why| Error::made("an embedded picture", why))?;
-    Ok(format!("data:image/jpeg;base64,{}", base64(&bytes)))
+    Ok(bytes)
 }
 
 fn base64(bytes: &[u8]) -> String {

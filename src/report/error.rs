@@ -22,7 +22,7 @@ pub enum Error {
         path: PathBuf,
     },
     /// Reading or writing failed.
-    #[error("{path}: {source}")]
+    #[error("{path} cannot be read or written")]
     #[diagnostic(
         code(output::io),
         help("check that the folder can be written and the disc has room, or name another with --out DIR")

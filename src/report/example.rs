@@ -31,7 +31,13 @@ pub(crate) fn growing() -> Results {
         growth: growth(&trace),
         paths: paths(&trace),
         filaments: filaments(&trace, &frames),
-        pictures: Pictures { first: bare_picture(), last, film, arrivals: Some(arrivals(&trace)) },
+        pictures: Pictures {
+            first: bare_picture(),
+            recorded: Some(last.clone()),
+            last,
+            film,
+            arrivals: Some(arrivals(&trace)),
+        },
         load: load(),
         cell: cell(),
         trace,
@@ -272,7 +278,7 @@ fn film_frame(trace: &Trace, frame: usize) -> FilmFrame {
             }
         }
     }
-    FilmFrame { frame, time_s: frame as f64 * STEP_S, picture }
+    FilmFrame { frame, time_s: frame as f64 * STEP_S, recorded: Some(picture.clone()), picture }
 }
 
 fn arrivals(trace: &Trace) -> Array2<u32> {
@@ -513,6 +519,7 @@ fn summary(results: &Results) -> Summary {
         } else {
             ChargeSummary::default()
         },
+        review: None,
         short: ShortSummary::default(),
         forecast: results.forecasts.last().cloned(),
         settings: serde_json::json!({ "confirm_frames": 2, "trace": { "false_alarms": 0.01 }, "seed": 20_260_305 }),

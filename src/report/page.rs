@@ -19,7 +19,14 @@ mod effects;
 mod grid;
 mod lists;
 mod player;
+mod record;
+mod review;
 mod strip;
+mod traces;
+
+/// What the page may show: nothing but what it holds, or pictures from its own folder as well.
+const ALONE: &str = "img-src data:";
+const BESIDE: &str = "img-src data: 'self' file:";
 
 /// Name of the template; the ending switches escaping on.
 const TEMPLATE: &str = "page.html";
@@ -28,7 +35,8 @@ const TEMPLATE: &str = "page.html";
 struct Page<'a> {
     colours: String,
     css: &'static str,
-    script: &'static str,
+    script: String,
+    policy: &'static str,
     name: &'a str,
     specimen: Option<&'a str>,
     note: Option<&'a str>,
@@ -38,6 +46,8 @@ struct Page<'a> {
     warnings: &'a [String],
     cautions: Vec<&'a str>,
     player: Option<player::Player>,
+    record: record::Record,
+    review: Option<review::Shown>,
     figures: Vec<Shown>,
     not_drawn: String,
     load: effects::LoadPart,
@@ -60,12 +70,22 @@ struct Shown {
     narrow: String,
 }
 
-/// The page as HTML.
+/// The scripts, in the order in which they run.
+const SCRIPTS: [&str; 6] = [
+    include_str!("page/script/bench.js"),
+    include_str!("page/script/picture.js"),
+    include_str!("page/script/view.js"),
+    include_str!("page/script/scales.js"),
+    include_str!("page/script/plots.js"),
+    include_str!("page/script/marks.js"),
+];
+
+/// The page as HTML. `beside`: the folder next to the page that holds every usable frame, where there is one.
 ///
 /// # Errors
 /// [`Error::Made`] when a figure or the template fails.
-pub fn render(results: &Results) -> Result<String, Error> {
-    let page = page(results)?;
+pub fn render(results: &Results, beside: Option<&str>) -> Result<String, Error> {
+    let page = page(results, beside)?;
     let mut environment = Environment::new();
     environment
         .add_template(TEMPLATE, include_str!("page.html"))
@@ -73,14 +93,15 @@ pub fn render(results: &Results) -> Result<String, Error> {
         .map_err(|why| Error::made("report.html", why))
 }
 
-fn page(results: &Results) -> Result<Page<'_>, Error> {
+fn page<'a>(results: &'a Results, beside: Option<&str>) -> Result<Page<'a>, Error> {
     let verdict = Verdict::of(results);
     let summary = &results.summary;
     let (figures, not_drawn) = evidence(results)?;
     Ok(Page {
         colours: colours(),
         css: include_str!("page.css"),
-        script: include_str!("page.js"),
+        script: SCRIPTS.concat(),
+        policy: if beside.is_some() { BESIDE } else { ALONE },
         name: &results.facts.run,
         specimen: results.facts.specimen.as_deref(),
         note: results.facts.note.as_deref(),
@@ -94,7 +115,9 @@ fn page(results: &Results) -> Result<Page<'_>, Error> {
         ],
         warnings: &summary.warnings,
         cautions: std::iter::once(SAFETY).chain(results.cautions.iter().map(String::as_str)).collect(),
-        player: player::of(results)?,
+        player: player::of(results, beside)?,
+        record: record::of(results),
+        review: review::of(results),
         figures,
         not_drawn,
         load: effects::load(results)?,
@@ -120,10 +143,11 @@ pub(super) fn colours() -> String {
         .collect();
     let ramp: Vec<String> = (0..=12).map(|i| super::palette::arrival(f64::from(i) / 12.0).hex()).collect();
     format!(
-        ":root{{{light}--casing:{};--load-mark:{};--ramp:linear-gradient(to right,{})}}@media screen and (prefers-color-scheme:dark){{:root{{{dark}}}}}{classes}",
+        ":root{{{light}--casing:{};--load-mark:{};--ramp:linear-gradient(to right,{})}}@media screen and (prefers-color-scheme:dark){{:root{{{dark}}}}}{classes}{}",
         Ink::Black.light().hex(),
         Ink::LoadMark.light().hex(),
-        ramp.join(",")
+        ramp.join(","),
+        traces::colours()
     )
 }
 
@@ -164,7 +188,7 @@ mod tests {
 
     #[test]
     fn the_page_loads_nothing() {
-        let html = render(&example::growing()).unwrap();
+        let html = render(&example::growing(), None).unwrap();
         for forbidden in [
             "src=\"http",
             "href=\"http",
@@ -182,7 +206,7 @@ mod tests {
         }
         assert!(html.contains("default-src 'none'"));
         let addresses = html.matches("http://").count() + html.matches("https://").count();
-        assert_eq!(addresses, html.matches("xmlns=\"http://www.w3.org/2000/svg\"").count());
+        assert_eq!(addresses, html.matches("http://www.w3.org/2000/svg").count());
     }
 
     #[test]
@@ -199,8 +223,8 @@ mod tests {
         results.summary.frames.set_aside[0].reason = hostile.into();
         results.forecasts[0].model = hostile.into();
         results.frames.iter_mut().for_each(|row| row.file = hostile.into());
-        let plain = render(&example::growing()).unwrap();
-        let html = render(&results).unwrap();
+        let plain = render(&example::growing(), None).unwrap();
+        let html = render(&results, None).unwrap();
         assert_eq!(html.matches("<script").count(), plain.matches("<script").count());
         assert_eq!(html.matches("</script").count(), plain.matches("</script").count());
         assert!(!html.contains("\" onmouseover"));
@@ -210,7 +234,7 @@ mod tests {
     #[test]
     fn a_run_with_nothing_in_it_still_has_a_page() {
         for results in [Results::default(), example::still()] {
-            let html = render(&results).unwrap();
+            let html = render(&results, None).unwrap();
             assert!(html.contains("A cell on test can vent"));
         }
     }

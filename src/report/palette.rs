@@ -163,6 +163,33 @@ pub fn arrival(t: f64) -> Rgb {
     oklch(0.37 + 0.56 * t, chroma, 225.0 + 205.0 * t)
 }
 
+/// Angle to the load from 0 (along it) to 1 (across it), on pictures in both themes: from sea blue through near white to
+/// orange, so that which side of 45° a line runs reads with any colour vision.
+pub fn angle(t: f64) -> Rgb {
+    let side = 2.0 * t.clamp(0.0, 1.0) - 1.0;
+    let far = side.abs();
+    oklch(0.95 - 0.22 * far, 0.17 * far, if side < 0.0 { 235.0 } else { 50.0 })
+}
+
+/// Colours told apart by [`kind`].
+pub const KINDS: usize = 8;
+
+/// One of [`KINDS`] colours for things without order, on pictures in both themes; neighbours differ in lightness too.
+pub fn kind(i: usize) -> Rgb {
+    const STEPS: [(f64, f64); KINDS] = [
+        (0.86, 95.0),
+        (0.70, 245.0),
+        (0.90, 150.0),
+        (0.66, 15.0),
+        (0.84, 200.0),
+        (0.72, 310.0),
+        (0.92, 60.0),
+        (0.68, 135.0),
+    ];
+    let (lightness, hue) = STEPS[i % KINDS];
+    oklch(lightness, 0.16, hue)
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -183,6 +210,21 @@ mod tests {
         for (ink, name) in words {
             assert!(ink.light().contrast(Ink::Paper.light()) >= 4.5, "{name} on light paper");
             assert!(ink.dark().contrast(Ink::Paper.dark()) >= 4.5, "{name} on dark paper");
+        }
+    }
+
+    /// Along and across stay apart for readers without red or green cones: blue and orange differ in their blue part.
+    #[test]
+    fn along_and_across_stay_apart_without_red_or_green() {
+        let (along, across) = (angle(0.0), angle(1.0));
+        assert!(along.2.abs_diff(across.2) > 90, "{along:?} {across:?}");
+        assert!(angle(0.5).luminance() > along.luminance().max(across.luminance()));
+    }
+
+    #[test]
+    fn kinds_that_follow_each_other_differ_in_lightness() {
+        for i in 0..KINDS {
+            assert!(kind(i).contrast(kind(i + 1)) > 1.15, "{i}");
         }
     }
 

@@ -1,11 +1,11 @@
 //! A drawing as pixels and as PNG, through plotters' bitmap backend and the typeface in the crate.
 //! It is painted at twice the wanted size and averaged down: smooth edges for lines of any slope.
 
-use std::io::Cursor;
 use std::sync::OnceLock;
 
+use image::codecs::png::{CompressionType, FilterType as PngFilter, PngEncoder};
 use image::imageops::{FilterType, replace, resize, thumbnail};
-use image::{ImageFormat, RgbImage};
+use image::{ExtendedColorType, ImageEncoder, RgbImage};
 use plotters::prelude::{BitMapBackend, DrawingBackend, FontStyle, RGBColor, TextStyle};
 use plotters::style::text_anchor::{HPos, Pos, VPos};
 use plotters::style::{Color, IntoFont, register_font};
@@ -20,8 +20,9 @@ const FACE: &str = "veerlog-sans";
 /// How much larger than wanted it is painted.
 const OVERSAMPLING: f64 = 2.0;
 
-/// Pixels of a PNG for one unit of the drawing: 3.125 gives 300 dots per inch.
-pub const PRINT_SCALE: f64 = 3.125;
+/// The typeface.
+pub(super) const REGULAR: &[u8] = include_bytes!("fonts/NotoSans-Regular.ttf");
+pub(super) const BOLD: &[u8] = include_bytes!("fonts/NotoSans-Bold.ttf");
 
 /// The drawing in pixels, `scale` pixels for each of its units, with `margin` units of paper around it.
 ///
@@ -50,25 +51,49 @@ pub fn paint(drawing: &Drawing, margin: f64, scale: f64) -> Result<RgbImage, Err
     Ok(thumbnail(&picture, side(w, scale), side(h, scale)))
 }
 
-/// The drawing as a PNG file for print.
+/// The drawing as a PNG file for print, `scale` pixels for each of its units, that says how many dots make a metre.
 ///
 /// # Errors
 /// As [`paint`].
-pub fn png(drawing: &Drawing, margin: f64) -> Result<Vec<u8>, Error> {
-    let mut file = Cursor::new(Vec::new());
-    paint(drawing, margin, PRINT_SCALE)?
-        .write_to(&mut file, ImageFormat::Png)
+pub fn png(drawing: &Drawing, margin: f64, scale: f64, dots_per_metre: f64) -> Result<Vec<u8>, Error> {
+    let picture = paint(drawing, margin, scale)?;
+    let mut file = Vec::new();
+    PngEncoder::new_with_quality(&mut file, CompressionType::Default, PngFilter::Adaptive)
+        .write_image(&picture, picture.width(), picture.height(), ExtendedColorType::Rgb8)
         .map_err(|why| Error::made("a figure", why))?;
-    Ok(file.into_inner())
+    file.splice(HEAD..HEAD, size_chunk(dots_per_metre.round() as u32));
+    Ok(file)
+}
+
+/// Bytes of a PNG up to the end of its first chunk: signature and IHDR (PNG specification, third edition, section 5).
+const HEAD: usize = 33;
+
+/// The chunk `pHYs`: dots a metre across and down (PNG specification, section 11.3.4.3).
+fn size_chunk(dots: u32) -> Vec<u8> {
+    let mut body = b"pHYs".to_vec();
+    body.extend(dots.to_be_bytes());
+    body.extend(dots.to_be_bytes());
+    body.push(1);
+    let mut chunk = 9_u32.to_be_bytes().to_vec();
+    chunk.extend(&body);
+    chunk.extend(crc(&body).to_be_bytes());
+    chunk
+}
+
+/// Cyclic redundancy check of a chunk (PNG specification, annex D).
+fn crc(bytes: &[u8]) -> u32 {
+    const POLYNOMIAL: u32 = 0xedb8_8320;
+    let step = |crc: u32, byte: &u8| {
+        (0..8).fold(crc ^ u32::from(*byte), |c, _| if c & 1 == 1 { POLYNOMIAL ^ (c >> 1) } else { c >> 1 })
+    };
+    !bytes.iter().fold(u32::MAX, step)
 }
 
 /// Makes the typeface known to the library, once.
 fn register() -> Result<(), Error> {
     static DONE: OnceLock<bool> = OnceLock::new();
     let known = *DONE.get_or_init(|| {
-        let regular = include_bytes!("fonts/NotoSans-Regular.ttf");
-        let bold = include_bytes!("fonts/NotoSans-Bold.ttf");
-        register_font(FACE, FontStyle::Normal, regular).is_ok() && register_font(FACE, FontStyle::Bold, bold).is_ok()
+        register_font(FACE, FontStyle::Normal, REGULAR).is_ok() && register_font(FACE, FontStyle::Bold, BOLD).is_ok()
     });
     if known { Ok(()) } else { Err(Error::made("a figure", "the typeface cannot be read")) }
 }
@@ -114,8 +139,8 @@ fn element<B: DrawingBackend>(
 }
 
 /// The typeface holds no minus sign; its en dash is as wide and as high.
-const MINUS: char = '\u{2212}';
-const DASH: &str = "\u{2013}";
+pub(super) const MINUS: char = '\u{2212}';
+pub(super) const DASH: &str = "\u{2013}";
 
 /// Part of the type's height that hangs below its base line (from the typeface's own metrics).
 const DESCENT: f64 = 0.24;
@@ -159,6 +184,12 @@ mod tests {
         let pieces = dashes(&[[0.0, 0.0], [40.0, 0.0]], 5.0);
         assert_eq!(pieces.len(), 4);
         assert_eq!(pieces[1], [[10.0, 0.0], [15.0, 0.0]]);
+    }
+
+    /// Check value of CRC-32 (ISO-HDLC) for the nine digits, as published in the RevEng catalogue (from memory).
+    #[test]
+    fn the_check_of_a_chunk() {
+        assert_eq!(crc(b"123456789"), 0xcbf4_3926);
     }
 
     #[test]

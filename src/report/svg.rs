@@ -6,34 +6,50 @@ use std::fmt::Write;
 use super::Error;
 use super::data_uri;
 use super::drawing::{Anchor, Drawing, Point, Shape};
+use super::outline;
 use super::palette::Ink;
 
 /// Typefaces in order of preference; the first is the one the PNG uses.
 const FONTS: &str = "Noto Sans, system-ui, Segoe UI, Helvetica, Arial, sans-serif";
 
-/// The drawing as an SVG document with `margin` of paper around it.
+/// The drawing as an SVG document with `margin` of paper around it, its words as text: for the page.
 ///
 /// # Errors
 /// [`Error::Made`] when an embedded picture cannot be encoded.
 pub fn write(drawing: &Drawing, margin: f64) -> Result<String, Error> {
+    let size = [drawing.width, drawing.height].map(|side| (side + 2.0 * margin).to_string());
+    document(drawing, margin, &size, false)
+}
+
+/// The drawing as an SVG document of a width in mm, its words as outlines: for a paper.
+///
+/// # Errors
+/// As [`write`], and when the typeface cannot be read.
+pub fn write_for_print(drawing: &Drawing, margin: f64, width_mm: f64) -> Result<String, Error> {
+    let [w, h] = [drawing.width, drawing.height].map(|side| side + 2.0 * margin);
+    let size = [format!("{width_mm}mm"), format!("{}mm", short(width_mm * h / w))];
+    document(drawing, margin, &size, true)
+}
+
+fn document(drawing: &Drawing, margin: f64, [width, height]: &[String; 2], outlined: bool) -> Result<String, Error> {
     let (w, h) = (drawing.width + 2.0 * margin, drawing.height + 2.0 * margin);
     let corner = 0.0 - margin;
     let mut out = format!(
-        "<svg xmlns=\"http://www.w3.org/2000/svg\" viewBox=\"{corner} {corner} {w} {h}\" width=\"{w}\" height=\"{h}\" \
+        "<svg xmlns=\"http://www.w3.org/2000/svg\" viewBox=\"{corner} {corner} {w} {h}\" width=\"{width}\" height=\"{height}\" \
          role=\"img\" font-family=\"{FONTS}\">\n<title>{}</title>\n\
          <rect x=\"{corner}\" y=\"{corner}\" width=\"{w}\" height=\"{h}\"{}/>\n",
         escape(&drawing.title),
         paint("fill", Ink::Paper, 1.0),
     );
     for shape in &drawing.shapes {
-        out.push_str(&element(shape)?);
+        out.push_str(&element(shape, outlined)?);
         out.push('\n');
     }
     out.push_str("</svg>\n");
     Ok(out)
 }
 
-fn element(shape: &Shape) -> Result<String, Error> {
+fn element(shape: &Shape, outlined: bool) -> Result<String, Error> {
     Ok(match shape {
         Shape::Line { points, ink, width, dash, opacity } => {
             let dashes = if *dash > 0.0 { format!(" stroke-dasharray=\"{dash}\"") } else { String::new() };
@@ -54,6 +70,9 @@ fn element(shape: &Shape) -> Result<String, Error> {
                 short(*y),
                 paint("fill", *ink, *opacity)
             )
+        }
+        Shape::Text { at, words, size, ink, anchor, bold } if outlined => {
+            format!("<path d=\"{}\"{}/>", outline::path(words, *at, *size, *anchor, *bold)?, paint("fill", *ink, 1.0))
         }
         Shape::Text { at: [x, y], words, size, ink, anchor, bold } => {
             let anchor = match anchor {

@@ -20,6 +20,17 @@ pub fn write_csv<R>(table: &Table<R>, rows: &[R], out: impl Write) -> Result<(),
     CsvWriter::new(out).n_threads(1).finish(&mut frame).map_err(|why| Error::made(table.name, why))
 }
 
+/// The named columns of the rows as CSV, in the order named; a name that is no column is left out.
+///
+/// # Errors
+/// As [`write_csv`].
+pub fn write_some<R>(table: &Table<R>, rows: &[R], names: &[&str], out: impl Write) -> Result<(), Error> {
+    let named = names.iter().filter_map(|name| table.columns.iter().find(|column| column.name == *name));
+    let columns = named.map(|c| series(c.name, &c.values, rows)).collect();
+    let mut frame = DataFrame::new(rows.len(), columns).map_err(|why| Error::made(table.name, why))?;
+    CsvWriter::new(out).n_threads(1).finish(&mut frame).map_err(|why| Error::made(table.name, why))
+}
+
 /// The rows as Parquet: one row group, not compressed beyond its own encodings.
 ///
 /// # Errors

@@ -1,9 +1,10 @@
 //! The output folder: built beside its place and swapped in whole, so that a reader never sees half of one.
 //!
-//! Order: write `.NAME.veerlog-new-XXXX`, move the old folder aside, move the new one in, remove the old
-//! one. A program that is killed meanwhile leaves hidden folders beside the target. Limit: killed between the
-//! two moves, it leaves no target, and the old output whole beside it under its hidden name. If the last move fails, the old folder is moved back. A folder without our mark is never touched
-//! unless it is empty.
+//! Order: write `.NAME.veerlog-new-PID-XXXX`, move the old folder aside, move the new one in, remove the old one. A
+//! program that is killed meanwhile leaves hidden folders beside the target, which the next run sweeps away
+//! ([`stale`]); killed between the two moves, it leaves the old output whole under its hidden name, and the next run
+//! moves it back first. If the last move fails, the old folder is moved back. A folder without our mark is never
+//! touched unless it is empty.
 
 use std::fs::{self, File};
 use std::io::{BufWriter, Write};
@@ -11,11 +12,9 @@ use std::path::{Path, PathBuf};
 
 use image::GrayImage;
 use ndarray::Array2;
-use rayon::prelude::*;
 
-use super::figures::{FIGURES, Format};
 use super::schema::{CHARGE, DIRECTIONS, FILAMENTS, FORECASTS, FRAMES, GROWTH, HALF_CYCLES, PATHS, TURNS, Table};
-use super::{Error, page, raster, records, svg, tables};
+use super::{Error, animation, page, paper, records, stale, tables};
 use crate::results::{NEVER, Results};
 
 /// The file that marks a folder as ours.
@@ -25,21 +24,24 @@ pub const MARK: &str = ".veerlog-output";
 const MARK_TEXT: &str =
     "Written by veerlog, which replaces this whole folder when it runs again: keep nothing of your own here.\n";
 
-/// Paper around a figure that stands alone, in its units.
-const MARGIN: f64 = 14.0;
-
 /// What is written beyond the standing files.
 #[derive(Debug, Clone, Copy, Default, PartialEq, Eq)]
-pub struct Save {
+pub struct Save<'a> {
     /// `masks/000000.png …`, one a usable frame.
     pub masks: bool,
+    /// A folder of pictures `000000.jpg …`, one a usable frame, drift and light removed: moved to `frames/`, and
+    /// shown by the page.
+    pub frames: Option<&'a Path>,
 }
+
+/// The folder of [`Save::frames`] in the output folder.
+const FRAMES_FOLDER: &str = "frames";
 
 /// Writes the whole output folder of a run to `target`; its parents are made where missing.
 ///
 /// # Errors
 /// As [`replace_folder`].
-pub fn write(results: &Results, target: &Path, save: Save) -> Result<(), Error> {
+pub fn write(results: &Results, target: &Path, save: Save<'_>) -> Result<(), Error> {
     replace_folder(target, &OURS, |folder| fill(results, folder, save))
 }
 
@@ -57,13 +59,8 @@ pub fn replace_folder(
 ) -> Result<(), Error> {
     refuse_foreign(target, ours)?;
     let target = &std::path::absolute(target).map_err(|source| Error::io(target, source))?;
-    let parent = target.parent().unwrap_or(target).to_owned();
-    fs::create_dir_all(&parent).map_err(|source| Error::io(&parent, source))?;
-    let name = target.file_name().unwrap_or_default().to_string_lossy();
-    let built = tempfile::Builder::new()
-        .prefix(&format!(".{name}.veerlog-new-"))
-        .tempdir_in(&parent)
-        .map_err(|source| Error::io(&parent, source))?;
+    stale::sweep(target);
+    let built = stale::beside(target)?;
     put(&built.path().join(MARK), MARK_TEXT.as_bytes())?;
     fill(built.path())?;
     open_to_readers(built.path())?;
@@ -114,7 +111,8 @@ pub fn refuse_foreign(target: &Path, ours: &[&str]) -> Result<(), Error> {
 }
 
 /// All that stands at the top of a run's output folder, beside the mark.
-pub const OURS: [&str; 6] = ["report.html", "summary.json", "tables", "traces.ndjson", "figures", "masks"];
+pub const OURS: [&str; 7] =
+    ["report.html", "summary.json", "tables", "traces.ndjson", "figures", "masks", FRAMES_FOLDER];
 
 /// Puts `built` in the place of `target`.
 fn swap(built: PathBuf, target: &Path) -> Result<(), Error> {
@@ -142,7 +140,7 @@ fn clean(built: &Path, error: Error) -> Error {
 }
 
 /// Writes every file into an empty folder.
-fn fill(results: &Results, folder: &Path, save: Save) -> Result<(), Error> {
+fn fill(results: &Results, folder: &Path, save: Save<'_>) -> Result<(), Error> {
     put(&folder.join(MARK), MARK_TEXT.as_bytes())?;
     put(&folder.join("summary.json"), records::summary_json(&results.summary)?.as_bytes())?;
     let traces = folder.join("traces.ndjson");
@@ -161,7 +159,12 @@ fn fill(results: &Results, folder: &Path, save: Save) -> Result<(), Error> {
     if save.masks {
         masks(results, &folder.join("masks"))?;
     }
-    put(&folder.join("report.html"), page::render(results)?.as_bytes())
+    if let Some(made) = save.frames {
+        let place = folder.join(FRAMES_FOLDER);
+        fs::rename(made, &place).map_err(|source| Error::io(&place, source))?;
+        open_to_readers(&place)?;
+    }
+    put(&folder.join("report.html"), page::render(results, save.frames.map(|_| FRAMES_FOLDER))?.as_bytes())
 }
 
 pub(super) fn table<R>(folder: &Path, schema: &Table<R>, rows: &[R]) -> Result<(), Error> {
@@ -172,13 +175,11 @@ pub(super) fn table<R>(folder: &Path, schema: &Table<R>, rows: &[R]) -> Result<(
 
 fn figures(results: &Results, folder: &Path) -> Result<(), Error> {
     make(folder)?;
-    FIGURES.par_iter().try_for_each(|figure| {
-        let Some(drawing) = (figure.draw)(results, Format::Wide) else {
-            return Ok(());
-        };
-        put(&folder.join(format!("{}.svg", figure.name)), svg::write(&drawing, MARGIN)?.as_bytes())?;
-        put(&folder.join(format!("{}.png", figure.name)), &raster::png(&drawing, MARGIN)?)
-    })
+    paper::write(results, folder)?;
+    match animation::growth(results)? {
+        Some(file) => put(&folder.join("growth.gif"), &file),
+        None => Ok(()),
+    }
 }
 
 fn masks(results: &Results, folder: &Path) -> Result<(), Error> {
@@ -242,7 +243,7 @@ mod tests {
     fn writing_again_on_one_thread_gives_the_same_bytes_and_leaves_nothing_beside() {
         let home = tempfile::tempdir().unwrap();
         let out = home.path().join("deep/out");
-        write(&example::growing(), &out, Save { masks: true }).unwrap();
+        write(&example::growing(), &out, Save { masks: true, ..Save::default() }).unwrap();
         let first = contents(&out);
         for name in [
             "report.html",
@@ -258,7 +259,7 @@ mod tests {
         }
         fs::write(out.join("figures/stale.png"), "old").unwrap();
         let alone = rayon::ThreadPoolBuilder::new().num_threads(1).build().unwrap();
-        alone.install(|| write(&example::growing(), &out, Save { masks: true })).unwrap();
+        alone.install(|| write(&example::growing(), &out, Save { masks: true, ..Save::default() })).unwrap();
         assert_eq!(contents(&out), first);
         assert_eq!(fs::read_dir(home.path().join("deep")).unwrap().count(), 1);
     }

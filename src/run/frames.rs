@@ -53,7 +53,7 @@ pub struct FrameSequence {
 #[derive(Debug, thiserror::Error, miette::Diagnostic)]
 pub enum FramesError {
     /// Reading failed.
-    #[error("{path}: {source}")]
+    #[error("{path} cannot be read or written")]
     #[diagnostic(code(frames::io), help("see that the file exists and may be read"))]
     Io {
         /// The file or folder.

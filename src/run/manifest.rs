@@ -173,7 +173,7 @@ pub struct Origin {
     pub text: String,
 }
 
-/// A fault in `run.toml`, with the line it is on.
+/// A fault in `run.toml` or `review.toml`, with the line it is on.
 #[derive(Debug, thiserror::Error, miette::Diagnostic)]
 #[error("{path}, line {line}: {what}")]
 #[diagnostic(code(run::manifest))]
@@ -543,19 +543,26 @@ impl Manifest {
     }
 }
 
-impl Origin {
-    fn error(&self, span: Range<usize>, what: String, help: String) -> ManifestError {
-        let path = self.folder.join(FILE_NAME).display().to_string();
-        let start = span.start.min(self.text.len());
-        let line = self.text.as_bytes()[..start].iter().filter(|byte| **byte == b'\n').count() + 1;
-        ManifestError {
-            text: Arc::new(NamedSource::new(&path, self.text.clone()).with_language("toml")),
-            span: SourceSpan::from(start..span.end.clamp(start, self.text.len())),
+impl ManifestError {
+    /// The fault at some bytes of the text of a file.
+    pub(super) fn at(path: &Path, text: &str, span: Range<usize>, what: String, help: String) -> Self {
+        let path = path.display().to_string();
+        let start = span.start.min(text.len());
+        let line = text.as_bytes()[..start].iter().filter(|byte| **byte == b'\n').count() + 1;
+        Self {
+            text: Arc::new(NamedSource::new(&path, text.to_owned()).with_language("toml")),
+            span: SourceSpan::from(start..span.end.clamp(start, text.len())),
             path,
             line,
             what,
             help,
         }
+    }
+}
+
+impl Origin {
+    fn error(&self, span: Range<usize>, what: String, help: String) -> ManifestError {
+        ManifestError::at(&self.folder.join(FILE_NAME), &self.text, span, what, help)
     }
 
     /// What the TOML reader found, in words that say what to type.
@@ -644,7 +651,7 @@ fn known(section: &str) -> String {
 }
 
 /// The name in backquotes after a lead: "unknown field `x`, expected …" → `x`.
-fn quoted_after(message: &str, lead: &str) -> Option<String> {
+pub(super) fn quoted_after(message: &str, lead: &str) -> Option<String> {
     let rest = message.strip_prefix(lead)?.strip_prefix('`')?;
     rest.split_once('`').map(|(name, _)| name.to_owned())
 }

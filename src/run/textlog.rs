@@ -23,7 +23,7 @@ const SEPARATORS: [char; 3] = [',', ';', '\t'];
 #[derive(Debug, thiserror::Error, miette::Diagnostic)]
 pub enum LogError {
     /// Reading failed.
-    #[error("{path}: {source}")]
+    #[error("{path} cannot be read or written")]
     #[diagnostic(code(log::io), help("see that the log named in run.toml exists in the run folder and may be read"))]
     Io {
         /// The file.

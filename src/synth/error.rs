@@ -6,7 +6,7 @@ use std::path::{Path, PathBuf};
 #[derive(Debug, thiserror::Error, miette::Diagnostic)]
 pub enum SynthError {
     /// Reading or writing failed.
-    #[error("{path}: {source}")]
+    #[error("{path} cannot be read or written")]
     #[diagnostic(code(synth::io), help("check that the path exists and may be read or written"))]
     Io {
         /// The file or folder.

@@ -8,6 +8,7 @@ mod compare;
 mod hostile;
 mod kit;
 mod output;
+mod page;
 mod repeatable;
 mod report_input;
 mod synth;

@@ -53,7 +53,9 @@ fn the_folder_holds_the_promised_files_and_no_other() {
     for frame in 0..FRAMES {
         take(format!("masks/{frame:06}.png"));
     }
-    let figure = |name: &String| name.starts_with("figures/") && (name.ends_with(".svg") || name.ends_with(".png"));
+    let figure = |name: &String| {
+        name.starts_with("figures/") && [".svg", ".png", ".csv", ".gif"].iter().any(|ending| name.ends_with(ending))
+    };
     assert!(found.iter().all(figure) && !found.is_empty(), "{found:?}");
     // Without being asked for, no masks; and those of before are gone.
     report(folder.path(), &[]).with(0, &[]);

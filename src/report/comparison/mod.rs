@@ -5,10 +5,11 @@ use std::path::{Component, Path, PathBuf};
 
 use rayon::prelude::*;
 
+use super::Error;
 use super::figures::Format;
+use super::paper::put_drawing;
 use super::schema::{EFFECTS, GROUPS, RUNS};
 use super::write::{make, put, replace_folder, table};
-use super::{Error, raster, svg};
 use crate::compare::{Comparison, RunRecord};
 use figures::{FIGURES, Shown};
 
@@ -20,8 +21,8 @@ pub mod verdict;
 /// All that stands at the top of a comparison's folder, beside the mark.
 pub const OURS: [&str; 4] = ["comparison.html", "comparison.json", "tables", "figures"];
 
-/// Paper around a figure that stands alone, in its units.
-const MARGIN: f64 = 14.0;
+/// Width of a figure for print, mm: two columns.
+const WIDTH_MM: f64 = 170.0;
 
 /// Writes the whole folder of a comparison to `target`; `records` are those it was made from. Links to the runs' reports are
 /// relative to `target`.
@@ -50,8 +51,7 @@ fn fill(shown: Shown<'_>, folder: &Path) -> Result<(), Error> {
     make(&pictures)?;
     FIGURES.par_iter().try_for_each(|figure| {
         let Some(drawing) = (figure.draw)(shown, Format::Wide) else { return Ok(()) };
-        put(&pictures.join(format!("{}.svg", figure.name)), svg::write(&drawing, MARGIN)?.as_bytes())?;
-        put(&pictures.join(format!("{}.png", figure.name)), &raster::png(&drawing, MARGIN)?)
+        put_drawing(&drawing, WIDTH_MM, &pictures, figure.name)
     })?;
     put(&folder.join("comparison.html"), page::render(shown)?.as_bytes())
 }

@@ -4,6 +4,7 @@
 mod alignment;
 pub(in crate::report) mod arrival;
 mod charge;
+pub mod data;
 mod depth;
 mod electrical;
 mod key;

@@ -1,8 +1,11 @@
 //! The last usable frame with every centre-line, coloured by arrival; edges, scale bar, load axis.
 
+use image::GrayImage;
+
 use super::Format;
 use super::arrival::{ArrivalScale, COLOURS, colour};
 use super::key::LETTER;
+use crate::measure::FrameRow;
 use crate::report::axes::{Range, SMALL};
 use crate::report::drawing::{Anchor, Drawing, Point, Shape};
 use crate::report::palette::Ink;
@@ -15,20 +18,50 @@ pub(super) fn draw(results: &Results, format: Format) -> Option<Drawing> {
     if image.width() == 0 || image.height() == 0 {
         return None;
     }
-    let scale = format.width() / f64::from(image.width());
-    let height = f64::from(image.height()) * scale;
+    let [w, h] = [image.width(), image.height()].map(f64::from);
+    let scale = (format.width() / w).min(TALLEST * format.width() / h);
+    let size = [w * scale, h * scale];
     let mut drawing =
-        Drawing::new(format.width(), height + 92.0, "Last frame with traced filaments, coloured by arrival");
-    drawing.shapes.push(Shape::Picture { at: [0.0, 0.0], size: [format.width(), height], image: image.clone() });
-    let place = move |p: &Point| [(p[0] + 0.5) * scale, (p[1] + 0.5) * scale];
-    edges(&mut drawing, results, place);
-    let arrivals = ArrivalScale::of(results);
-    for path in &results.trace.paths {
-        centre_line(&mut drawing, &arrivals, path, place);
-    }
-    load_axis(&mut drawing, results, height);
-    foot(&mut drawing, results, &arrivals, scale, height);
+        Drawing::new(format.width(), size[1] + 92.0, "Last frame with traced filaments, coloured by arrival");
+    drawing.shapes.push(Shape::Picture { at: [0.0, 0.0], size, image: image.clone() });
+    on_picture(&mut drawing, results, size, results.frames.iter().rev().find(|row| row.usable));
+    foot(&mut drawing, results, &ArrivalScale::of(results), size[0] / w, size[1]);
     Some(drawing)
+}
+
+/// Greatest height of the picture, in widths of the drawing: what is taller is made narrower.
+const TALLEST: f64 = 1.25;
+
+/// A frame alone, with what had arrived by it: a scene of the animation, as wide as the widest layout. `picture` may be
+/// smaller than the recorded frame.
+pub(in crate::report) fn scene(results: &Results, picture: &GrayImage, frame: usize) -> Drawing {
+    let [w, h] = [picture.width(), picture.height()].map(|side| f64::from(side.max(1)));
+    let scale = SCENE / w.max(h);
+    let size = [w * scale, h * scale];
+    let mut drawing = Drawing::new(size[0], size[1], "Frame with what had grown by it");
+    drawing.shapes.push(Shape::Picture { at: [0.0, 0.0], size, image: picture.clone() });
+    on_picture(&mut drawing, results, size, results.frames.get(frame));
+    drawing
+}
+
+/// Longer side of a scene.
+const SCENE: f64 = 560.0;
+
+/// Edges, what had arrived by a frame, and the load then in force, on a picture of this size at the origin.
+fn on_picture(drawing: &mut Drawing, results: &Results, size: Point, at: Option<&FrameRow>) {
+    let [w, _] = results.facts.frame_size.map(f64::from);
+    let w = if w > 0.0 { w } else { f64::from(results.pictures.last.width()) };
+    let scale = size[0] / w;
+    let place = move |p: &Point| [(p[0] + 0.5) * scale, (p[1] + 0.5) * scale];
+    edges(drawing, results, place);
+    let arrivals = ArrivalScale::of(results);
+    let frame = at.map_or(usize::MAX, |row| row.frame);
+    for path in &results.trace.paths {
+        centre_line(drawing, &arrivals, path, frame, place);
+    }
+    if let Some(row) = at {
+        load_axis(drawing, row, size);
+    }
 }
 
 /// 1 where a stress presses, −1 where it pulls, 0 where there is none.
@@ -41,15 +74,13 @@ pub(in crate::report) fn push(stress_mpa: f64) -> i8 {
 }
 
 /// The load axis on the picture, in its lower right corner: arrows inwards where it presses, outwards where it pulls.
-fn load_axis(drawing: &mut Drawing, results: &Results, height: f64) {
-    /// Half the length of the mark, as a share of the picture's width.
-    const HALF: f64 = 0.055;
-    let last = results.frames.iter().rev().find(|row| row.usable);
-    let Some(row) = last else { return };
+fn load_axis(drawing: &mut Drawing, row: &FrameRow, [width, height]: Point) {
+    /// Half the length of the mark, as a share of the picture's shorter side.
+    const HALF: f64 = 0.07;
     let Some(angle) = row.load_direction_deg else { return };
-    let half = HALF * drawing.width;
-    let inset = half + 0.02 * drawing.width;
-    let centre = [drawing.width - inset, height - inset];
+    let half = HALF * width.min(height);
+    let inset = half + 0.02 * width;
+    let centre = [width - inset, height - inset];
     let (sin, cos) = (angle.to_radians().sin(), angle.to_radians().cos());
     let place = |along: f64, off: f64| [centre[0] + along * cos + off * sin, centre[1] - along * sin + off * cos];
     let mut lines = vec![vec![place(-half, 0.0), place(half, 0.0)]];
@@ -80,8 +111,15 @@ fn edges(drawing: &mut Drawing, results: &Results, place: impl Fn(&Point) -> Poi
 }
 
 /// A dark casing, then a stretch in each colour; stretches overlap by one point, so no gap shows.
-fn centre_line(drawing: &mut Drawing, scale: &ArrivalScale, path: &TracePath, place: impl Fn(&Point) -> Point) {
-    let points: Vec<Point> = path.points.iter().map(|p| place(&[p.x, p.y])).collect();
+fn centre_line(
+    drawing: &mut Drawing,
+    scale: &ArrivalScale,
+    path: &TracePath,
+    frame: usize,
+    place: impl Fn(&Point) -> Point,
+) {
+    let points: Vec<Point> =
+        path.points.iter().take_while(|p| p.arrival <= frame).map(|p| place(&[p.x, p.y])).collect();
     let ink = |i: usize| scale.ink(path.points[i].arrival);
     drawing.stroke(points.clone(), Ink::Black, 3.8, 0.0, 0.55);
     let mut from = 0;
@@ -97,7 +135,8 @@ fn centre_line(drawing: &mut Drawing, scale: &ArrivalScale, path: &TracePath, pl
 fn foot(drawing: &mut Drawing, results: &Results, arrivals: &ArrivalScale, scale: f64, top: f64) {
     let width = drawing.width;
     colour_bar(drawing, arrivals, [0.0, top + 22.0], (width * 0.46).min(300.0));
-    let (um, px) = scale_bar(results.facts.um_per_px, width * 0.30 / scale);
+    let room = (width * 0.30).min(f64::from(results.pictures.last.width()) * scale);
+    let (um, px) = scale_bar(results.facts.um_per_px, room / scale);
     let right = width - 2.0;
     let y = top + 27.0;
     drawing.line(vec![[right - px * scale, y], [right, y]], Ink::Text, 3.0);
