@@ -74,6 +74,14 @@ pub fn round(x: f64, decimals: u8) -> Option<f64> {
     }
 }
 
+/// Decimals of a direction.
+const DIRECTION_DECIMALS: u8 = 2;
+
+/// An axial direction that stays below 180° when it is rounded.
+fn axial(deg: f64) -> f64 {
+    if round(deg, DIRECTION_DECIMALS).is_some_and(|rounded| rounded >= 180.0) { 0.0 } else { deg }
+}
+
 /// The lowercase name under which an enum is written.
 fn word(value: impl Serialize + Debug) -> Option<String> {
     match serde_json::to_value(&value) {
@@ -117,7 +125,7 @@ pub static FRAMES: Table<FrameRow> = Table {
         number("drift_x_px", "px", 3, "drift of the scene, to the right", |r| r.drift_x_px),
         number("drift_y_px", "px", 3, "drift of the scene, downwards", |r| r.drift_y_px),
         number("load_n", "N", 4, "force in force", |r| r.load_n),
-        number("load_direction_deg", "°", 2, "load axis, anticlockwise from +x", |r| r.load_direction_deg),
+        number("load_direction_deg", "°", 2, "load axis, anticlockwise from +x", |r| r.load_direction_deg.map(axial)),
         number("stress_mpa", "MPa", 3, "stress along the load axis, compression positive", |r| r.stress_mpa),
         number("depth_um", "µm", 3, "deepest point of any filament rooted on the plating edge", |r| r.depth_um),
         number("depth_fraction", "1", 5, "depth over depth plus what is left to the far edge", |r| r.depth_fraction),
@@ -156,7 +164,7 @@ pub static PATHS: Table<PathRow> = Table {
         number("length_um", "µm", 2, "arc length", |r| Some(r.length_um)),
         number("chord_um", "µm", 2, "straight distance between its ends", |r| Some(r.chord_um)),
         number("width_um", "µm", 3, "mean width", |r| r.width_um),
-        number("angle_deg", "°", 2, "mean direction, anticlockwise from +x", |r| r.angle_deg),
+        number("angle_deg", "°", 2, "mean direction, anticlockwise from +x", |r| r.angle_deg.map(axial)),
         number("angle_to_load_deg", "°", 2, "acute angle to the load axis then in force", |r| r.angle_to_load_deg),
         number("x0_px", "px", 2, "rootward end", |r| Some(r.x0_px)),
         number("y0_px", "px", 2, "rootward end", |r| Some(r.y0_px)),
@@ -181,8 +189,8 @@ pub static GROWTH: Table<GrowthRow> = Table {
         number("x_px", "px", 2, "its middle", |r| Some(r.x_px)),
         number("y_px", "px", 2, "its middle", |r| Some(r.y_px)),
         number("length_um", "µm", 2, "arc length", |r| Some(r.length_um)),
-        number("angle_deg", "°", 2, "mean direction, anticlockwise from +x", |r| Some(r.angle_deg)),
-        number("load_direction_deg", "°", 2, "load axis while it grew", |r| r.load_direction_deg),
+        number("angle_deg", "°", 2, "mean direction, anticlockwise from +x", |r| Some(axial(r.angle_deg))),
+        number("load_direction_deg", "°", 2, "load axis while it grew", |r| r.load_direction_deg.map(axial)),
         number("angle_to_load_deg", "°", 2, "acute angle to it", |r| r.angle_to_load_deg),
         number("stress_mpa", "MPa", 3, "stress while it grew, compression positive", |r| r.stress_mpa),
         number("u_angle_deg", "°", 2, "standard uncertainty of angle_deg", |r| r.u_angle_deg),
@@ -230,6 +238,11 @@ pub static FORECASTS: Table<ForecastRow> = Table {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn a_direction_stays_below_a_half_turn() {
+        assert!(axial(179.996).abs() < 1e-12 && axial(179.99) > 179.98 && axial(0.0).abs() < 1e-12);
+    }
 
     #[test]
     fn rounding_keeps_the_sign_of_nothing() {

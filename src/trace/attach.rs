@@ -34,6 +34,10 @@ const SEAM: f64 = 5.0;
 const BRANCH_CLEAR: f64 = 4.5;
 /// Cosine of the largest angle between a strand's heading and what it runs into: 50°.
 const MEETING_COSINE: f64 = 0.64;
+/// How far ahead other metal is looked for that lies straight ahead, px: strands graze each other.
+const STRAIGHT_REACH: f64 = 20.0;
+/// Cosine of the largest angle that is straight ahead: 20°.
+const STRAIGHT_COSINE: f64 = 0.94;
 
 /// Adds lines to the forest as proposals.
 #[derive(Clone, Copy)]
@@ -115,13 +119,15 @@ impl Attachment<'_> {
         let near_own_joint = |j: Joint| {
             strand.parent.is_some_and(|own| own.strand == j.strand && own.vertex.abs_diff(j.vertex) < vertices_in(12.0))
         };
-        let met = disc(p, 0.5 * strand.width + MEETING_REACH, owners.strand.dim())
+        let met = disc(p, 0.5 * strand.width + STRAIGHT_REACH, owners.strand.dim())
             .filter_map(|pixel| owners.at(pixel))
             .filter(|j| j.strand != index && !near_own_joint(*j))
             .filter_map(|j| forest.strands[j.strand].vertices.get(j.vertex).map(|v| (j, v.p, distance(v.p, p))))
-            .filter(|(_, target, _)| {
+            .filter(|(_, target, gap)| {
                 let toward = unit([target[0] - p[0], target[1] - p[1]]).unwrap_or(heading);
-                toward[0] * heading[0] + toward[1] * heading[1] > MEETING_COSINE
+                let ahead = toward[0] * heading[0] + toward[1] * heading[1];
+                let near = *gap <= 0.5 * strand.width + MEETING_REACH;
+                ahead > if near { MEETING_COSINE } else { STRAIGHT_COSINE }
             })
             .min_by(|a, b| a.2.total_cmp(&b.2));
         let Some((joint, target, gap)) = met else {

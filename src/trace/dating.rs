@@ -10,6 +10,7 @@
 use ndarray::Array2;
 
 use super::centreline::sample;
+use super::forest::Owners;
 use super::recent::Corrected;
 
 /// Half width of the core of clear ink that is read, in widths: narrow, so that the end of a round or tapered tip is
@@ -43,7 +44,7 @@ pub(crate) struct Contrast {
 }
 
 /// Contrast of a line of full width `width` at `p` with unit normal `n`: the mean across the core of the ink less
-/// the mean of strips on both sides. `None` where the frame does not cover both.
+/// the mean of strips on those of both sides that are `free` of other ink. `None` where the frame does not cover them.
 #[must_use]
 pub(crate) fn contrast(
     frame: &Corrected,
@@ -52,12 +53,13 @@ pub(crate) fn contrast(
     n: [f64; 2],
     width: f64,
     core: f64,
+    free: [bool; 2],
 ) -> Option<Contrast> {
     let half = core.min(0.5 * width - 0.25).max(0.5);
     let inside = strip(&frame.residual, p, n, -half, half)?;
-    let (near, far) = (0.5 * width + 2.0, 0.5 * width + 5.5);
+    let (near, far) = strips(width);
     let sides = [strip(&frame.residual, p, n, near, far), strip(&frame.residual, p, n, -far, -near)];
-    let known: Vec<(f64, f64)> = sides.into_iter().flatten().collect();
+    let known: Vec<(f64, f64)> = sides.into_iter().zip(free).filter(|s| s.1).filter_map(|s| s.0).collect();
     if known.is_empty() {
         return None;
     }
@@ -65,6 +67,26 @@ pub(crate) fn contrast(
     let sigma = f64::from(sample(noise, p[0], p[1])? * frame.noise_factor);
     let spread = 1.0 / inside.1 + 1.0 / (known.len() as f64 * known[0].1);
     Some(Contrast { value: inside.0 - beside, sd: sigma * spread.sqrt() })
+}
+
+/// On which sides of a line of full width `width` at `p` with unit normal `n` the strips of [`contrast`] lie outside the ink of
+/// others; both where neither does.
+#[must_use]
+pub(crate) fn free_sides(owners: &Owners, strand: usize, p: [f64; 2], n: [f64; 2], width: f64) -> [bool; 2] {
+    let (near, far) = strips(width);
+    let free = [1.0, -1.0].map(|side| {
+        [near, 0.5 * (near + far), far].iter().all(|o| {
+            let at = [p[0] + side * o * n[0], p[1] + side * o * n[1]];
+            let pixel = [at[1].round().max(0.0) as usize, at[0].round().max(0.0) as usize];
+            owners.strand.get(pixel).is_none_or(|&s| s == 0 || s as usize == strand + 1)
+        })
+    });
+    if free[0] || free[1] { free } else { [true, true] }
+}
+
+/// Offsets between which the strips beside a line of full width `width` lie, px.
+fn strips(width: f64) -> (f64, f64) {
+    (0.5 * width + 2.0, 0.5 * width + 5.5)
 }
 
 /// Mean of the plane between offsets `a` and `b` along the normal, and the number of pixels it is worth.

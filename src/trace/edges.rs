@@ -7,8 +7,8 @@
 use super::centreline::unit;
 
 /// Longest way to the edge along a line's own direction, in nearest distances, before the nearest point is taken instead: a
-/// slant of 51° off the edge's normal.
-const MOST_ASIDE: f64 = 1.6;
+/// slant of 65° off the edge's normal.
+const MOST_ASIDE: f64 = 2.4;
 
 /// A polyline in pixels (x right, y down), at least two points.
 #[derive(Debug, Clone, PartialEq)]

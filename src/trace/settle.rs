@@ -2,8 +2,8 @@
 
 use super::Root;
 use super::centreline::{Profile, pooled, sample};
-use super::dating::{Contrast, contrast, core_of, positions, strength};
-use super::forest::{SPACING, Strand, vertices_in};
+use super::dating::{Contrast, contrast, core_of, free_sides, positions, strength};
+use super::forest::{SPACING, Strand, Vertex, vertices_in};
 use super::growth::Tracer;
 
 /// Evidence that the first stretch of a new filament must show in each of three frames, sd.
@@ -59,6 +59,8 @@ const YOUNG: usize = 6;
 pub(super) const EDGE_BLUR: f64 = 3.6;
 /// Contrasts of vertices this close to an edge are not read: the electrode's blur, px.
 pub(super) const EDGE_SHADE: f64 = 3.0;
+/// How far beyond the shade a first stretch must show, px.
+const SHADE_MARGIN: f64 = 2.0;
 /// Weight of the newest frame in the running contrast.
 const NEWEST: f32 = 0.4;
 
@@ -79,11 +81,11 @@ fn date_strand(tracer: &mut Tracer, index: usize, confirm: usize) {
     let held = tracer.recent.frames().len();
     let first = (now + 1 - held).max(earliest);
     let strand = &tracer.forest.strands[index];
-    let rows = contrast_rows(tracer, strand, first);
+    let rows = contrast_rows(tracer, index, first);
     let Some(height) = height_of(strand, &rows) else {
         return;
     };
-    let reached = positions(&rows, height);
+    let reached = clear_of_shade(&tracer.forest.strands[index], positions(&rows, height));
     let decided_frame = now.checked_sub(confirm).filter(|&k| k >= first);
     let known = decided_frame.map_or(0, |k| k + 1 - first);
     if known == 0 || !confirmed(tracer, index, &rows, reached[known - 1], known, height) {
@@ -103,6 +105,17 @@ fn date_strand(tracer: &mut Tracer, index: usize, confirm: usize) {
     if reached[known - 1] > 0 {
         picture_tip(tracer, index, first + known - 1);
     }
+}
+
+/// Positions of a first stretch that lie in the electrode's shade, where nothing is read, are none: it is dated from the frame that
+/// shows it beyond.
+fn clear_of_shade(strand: &Strand, mut reached: Vec<usize>) -> Vec<usize> {
+    if strand.decided == 0 && strand.parent.is_none() {
+        let shaded = |v: &Vertex| v.depth.min(v.remaining) < EDGE_SHADE + SHADE_MARGIN;
+        let hidden = strand.vertices.iter().take_while(|v| shaded(v)).count();
+        reached.iter_mut().filter(|r| **r <= hidden).for_each(|r| *r = 0);
+    }
+    reached
 }
 
 /// Adds the tip of a strand as the frame of the given ordinal shows it to the run's mean tip.
@@ -139,10 +152,13 @@ pub(super) fn earliest_arrival(tracer: &Tracer, index: usize) -> Option<usize> {
 }
 
 /// Contrast of each proposed vertex in each frame of the window from ordinal `first` on.
-pub(super) fn contrast_rows(tracer: &Tracer, strand: &Strand, first: usize) -> Vec<Vec<Option<Contrast>>> {
+pub(super) fn contrast_rows(tracer: &Tracer, index: usize, first: usize) -> Vec<Vec<Option<Contrast>>> {
+    let strand = &tracer.forest.strands[index];
     let now = tracer.frames.len() - 1;
     let oldest = now + 1 - tracer.recent.frames().len();
     let core = core_of(strand.width, clarity(tracer, strand));
+    let new = &strand.vertices[strand.decided..];
+    let sides: Vec<[bool; 2]> = new.iter().map(|v| free_sides(&tracer.owners, index, v.p, v.n, strand.width)).collect();
     tracer
         .recent
         .frames()
@@ -150,11 +166,11 @@ pub(super) fn contrast_rows(tracer: &Tracer, strand: &Strand, first: usize) -> V
         .enumerate()
         .filter(|(k, _)| oldest + k >= first)
         .map(|(_, frame)| {
-            strand.vertices[strand.decided..]
-                .iter()
-                .map(|v| {
+            new.iter()
+                .zip(&sides)
+                .map(|(v, &free)| {
                     let shaded = tracer.edges.depth(v.p) < EDGE_SHADE || tracer.edges.remaining(v.p) < EDGE_SHADE;
-                    if shaded { None } else { contrast(frame, &tracer.noise, v.p, v.n, strand.width, core) }
+                    if shaded { None } else { contrast(frame, &tracer.noise, v.p, v.n, strand.width, core, free) }
                 })
                 .collect()
         })
@@ -269,11 +285,12 @@ pub(super) fn observe(tracer: &mut Tracer) {
         return;
     };
     let noise = &tracer.noise;
-    for strand in &mut tracer.forest.strands {
+    for (index, strand) in tracer.forest.strands.iter_mut().enumerate() {
         let decided = strand.decided;
         for vertex in &mut strand.vertices[..decided] {
+            let free = free_sides(&tracer.owners, index, vertex.p, vertex.n, vertex.width);
             vertex.profile.add(&frame.residual, vertex.p, vertex.n, PROFILE_MEMORY);
-            if let Some(c) = contrast(frame, noise, vertex.p, vertex.n, vertex.width, MIDDLE) {
+            if let Some(c) = contrast(frame, noise, vertex.p, vertex.n, vertex.width, MIDDLE, free) {
                 let value = c.value as f32;
                 vertex.recent =
                     if vertex.recent.is_nan() { value } else { vertex.recent + NEWEST * (value - vertex.recent) };
@@ -342,7 +359,7 @@ pub(super) fn withdraw(tracer: &mut Tracer) {
         if strand.withdrawn || strand.decided == 0 {
             continue;
         }
-        let seen = |v: &super::forest::Vertex| v.recent.is_nan() || f64::from(v.recent) > GONE * strand.contrast;
+        let seen = |v: &Vertex| v.recent.is_nan() || f64::from(v.recent) > GONE * strand.contrast;
         let visible = strand.vertices[..strand.decided].iter().rposition(seen).map_or(0, |i| i + 1);
         let run = strand.decided - visible;
         if run < vertices_in(GONE_RUN).min(strand.decided) {

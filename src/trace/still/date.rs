@@ -27,7 +27,7 @@ fn date_strand(tracer: &mut Tracer, index: usize, confirm: usize) {
     let Some(earliest) = earliest_arrival(tracer, index) else { return };
     let now = tracer.frames.len() - 1;
     let first = (now + 1 - tracer.recent.frames().len()).max(earliest);
-    let rows = relative(&contrast_rows(tracer, &tracer.forest.strands[index], first));
+    let rows = relative(&contrast_rows(tracer, index, first));
     let mut reached = positions(&rows, 1.0);
     let Some(end) = reached.last_mut() else { return };
     // The line was found in the latest frames: all of it is there by now.
