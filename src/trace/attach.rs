@@ -30,6 +30,8 @@ const MEETING_REACH: f64 = 12.0;
 const MEETING_INK: f64 = 0.4;
 /// How far beyond a strand's half width a line may start and still go on from its end, px.
 const SEAM: f64 = 5.0;
+/// How far straight ahead of an end new ink is looked for that makes no line of its own, px.
+const LOOK_AHEAD: f64 = 10.0;
 /// How far a branch's end must lie from its parent's ink, px.
 const BRANCH_CLEAR: f64 = 4.5;
 /// Cosine of the largest angle between a strand's heading and what it runs into: 50°.
@@ -147,6 +149,27 @@ impl Attachment<'_> {
         strand.vertices.extend(bridge);
         strand.decided = strand.vertices.len();
         strand.meets = Some(joint);
+    }
+
+    /// Looks straight ahead of the end of a strand to which nothing was added: a few px of new ink make no line of their own.
+    /// What lies ahead is only proposed; each frame then tells how far it reaches.
+    pub(crate) fn look_ahead(&self, index: usize, forest: &mut Forest, owners: &Owners) {
+        let strand = &forest.strands[index];
+        let (Some(end), Some(heading)) = (strand.vertices.last(), strand.heading(vertices_in(HEADING))) else { return };
+        let (p, n, width) = (end.p, normal(heading), strand.width);
+        let bare = |v: &Vertex| {
+            let pixel = [v.p[1].round().max(0.0) as usize, v.p[0].round().max(0.0) as usize];
+            let mine = owners.strand.get(pixel).is_some_and(|&s| s == 0 || s as usize == index + 1);
+            mine && v.depth > 0.0 && v.remaining > 0.0
+        };
+        let ahead: Vec<Vertex> = (1..=vertices_in(LOOK_AHEAD))
+            .map(|k| {
+                let reach = k as f64 * SPACING;
+                Vertex::new([p[0] + reach * heading[0], p[1] + reach * heading[1]], n, width, self.edges)
+            })
+            .take_while(bare)
+            .collect();
+        forest.strands[index].vertices.extend(ahead);
     }
 
     /// Whether every step between two points shows at least `level`.

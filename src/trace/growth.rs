@@ -25,6 +25,8 @@ pub const WINDOW: usize = 8;
 const CLAIM_MARGIN: f64 = 2.5;
 /// Distance ahead of a live tip within which less evidence is asked for, px.
 const AHEAD: f64 = 10.0;
+/// Contrast over pixel noise from which a tip that makes no new line is looked ahead of: in noise it would creep.
+const LOOK_CLARITY: f64 = 3.0;
 /// How much less, sd.
 const AHEAD_BONUS: f32 = 1.7;
 /// Pixels of the frame's rim that are not looked at: the evidence needs a neighbourhood.
@@ -172,6 +174,14 @@ impl Tracer {
                 }
             }
             waiting = left;
+        }
+        let attachment = Attachment { plane, edges: &self.edges };
+        for index in 0..self.forest.strands.len() {
+            let strand = &self.forest.strands[index];
+            let rests = strand.live() && strand.vertices.len() == strand.decided && strand.decided > 0;
+            if rests && settle::clarity(self, strand) >= LOOK_CLARITY {
+                attachment.look_ahead(index, &mut self.forest, &self.owners);
+            }
         }
     }
 

@@ -178,8 +178,9 @@ pub(super) fn contrast_rows(tracer: &Tracer, index: usize, first: usize) -> Vec<
 }
 
 /// Contrast of a strand over the noise of a pixel at its end; nothing is clear of which nothing is known.
-fn clarity(tracer: &Tracer, strand: &Strand) -> f64 {
-    let noise = strand.vertices.get(strand.decided).and_then(|v| sample(&tracer.noise, v.p[0], v.p[1]));
+pub(super) fn clarity(tracer: &Tracer, strand: &Strand) -> f64 {
+    let place = strand.vertices.get(strand.decided).or(strand.vertices.last());
+    let noise = place.and_then(|v| sample(&tracer.noise, v.p[0], v.p[1]));
     noise.filter(|n| *n > 0.0).map_or(0.0, |n| strand.contrast / f64::from(n))
 }
 
