@@ -1,7 +1,7 @@
 //! `growth.gif`: the frames with what had grown by each, for a slide. GIF89a with one palette for all frames: greys for
 //! the ceramic, the colours of arrival for the lines.
 //!
-//! Size: greys are few and the picture is made smaller until the file fits [`ROOM`].
+//! Size: greys are few and the picture is made smaller until the file fits its room.
 
 use std::borrow::Cow;
 use std::collections::HashMap;

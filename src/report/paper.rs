@@ -49,7 +49,7 @@ fn one(figure: &Figure, results: &Results, folder: &Path) -> Result<(), Error> {
 /// Writes a drawing as `NAME.svg` and `NAME.png`, so many mm wide.
 ///
 /// # Errors
-/// As [`write`].
+/// As [`write()`].
 pub fn put_drawing(drawing: &Drawing, width_mm: f64, folder: &Path, name: &str) -> Result<(), Error> {
     put(&folder.join(format!("{name}.svg")), svg::write_for_print(drawing, MARGIN, width_mm)?.as_bytes())?;
     let dpi = dpi(drawing, width_mm);

@@ -24,7 +24,7 @@ pub fn write(drawing: &Drawing, margin: f64) -> Result<String, Error> {
 /// The drawing as an SVG document of a width in mm, its words as outlines: for a paper.
 ///
 /// # Errors
-/// As [`write`], and when the typeface cannot be read.
+/// As [`write()`], and when the typeface cannot be read.
 pub fn write_for_print(drawing: &Drawing, margin: f64, width_mm: f64) -> Result<String, Error> {
     let [w, h] = [drawing.width, drawing.height].map(|side| side + 2.0 * margin);
     let size = [format!("{width_mm}mm"), format!("{}mm", short(width_mm * h / w))];

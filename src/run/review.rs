@@ -16,7 +16,7 @@
 //! ```
 //!
 //! Method: serde over TOML with unknown keys refused; faults name file, line and the nearest known key, as those of
-//! `run.toml` do. Limit: a file above [`MAX_BYTES`](super::manifest::MAX_BYTES) is refused unread.
+//! `run.toml` do. Limit: a file above [`MAX_BYTES`] is refused unread.
 
 use std::ops::Range;
 use std::path::Path;
