@@ -1,6 +1,6 @@
 //! Hidden folders beside an output: what is being built, and what a run that was killed left behind.
 //!
-//! A folder is named `.NAME.veerlog-new-PID-XXXX` after the output and the process that builds it. The next run removes
+//! A folder is named `.NAME.veerlog-new-PID-LETTERS` after the output and the process that builds it. The next run removes
 //! those whose process is gone. Limit: where processes cannot be asked after (no `/proc`), a folder is taken for left
 //! behind once it was not touched for a day.
 

@@ -1,6 +1,6 @@
 //! The output folder: built beside its place and swapped in whole, so that a reader never sees half of one.
 //!
-//! Order: write `.NAME.veerlog-new-PID-XXXX`, move the old folder aside, move the new one in, remove the old one. A
+//! Order: write `.NAME.veerlog-new-PID-LETTERS`, move the old folder aside, move the new one in, remove the old one. A
 //! program that is killed meanwhile leaves hidden folders beside the target, which the next run sweeps away
 //! ([`stale`]); killed between the two moves, it leaves the old output whole under its hidden name, and the next run
 //! moves it back first. If the last move fails, the old folder is moved back. A folder without our mark is never
